@@ -1,0 +1,99 @@
+"""Uncertainties common to all solutions of a series, from what the settings state.
+
+Independent errors of each vessel are already in the residuals and are not added again. A half-width a counts as
+a/√3 (JCGM 100:2008, 4.3.7). What nobody stated is listed as absent, never taken as zero silently.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from math import sqrt
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+from rules import units
+
+if TYPE_CHECKING:
+    from numpy.typing import NDArray
+
+    from rules.line import Floats
+    from rules.method import Measure, Method
+    from rules.series import Series
+    from rules.vessels import Vessels
+
+#: JCGM 100:2008, 4.3.7: a rectangular distribution of half-width a has the standard deviation a/√3.
+RECTANGULAR = sqrt(3.0)
+
+
+@dataclass(frozen=True, slots=True)
+class Common:
+    """One relative uncertainty common to the solutions of a series.
+
+    Attributes
+    ----------
+    component
+        ``stock``, ``aliquot``, ``spike_volume``, ``made_up_to`` or ``predilution``.
+    relative
+        float64[m], standard uncertainty as a fraction; NaN where it matters and nobody stated it; 0 where it does not
+        matter.
+    """
+
+    component: str
+    relative: Floats
+
+
+def common(series: Series, vessels: Vessels, method: Method) -> tuple[Common, ...]:
+    """Return the common uncertainties of an additions result, component by component.
+
+    A = c_S v / V_a carries the stock's, the spike volume's and the aliquot's; the vessel volume cancels. A
+    concentration that the export states carries its vessel's and aliquot's only where it must be scaled by them.
+    """
+    spiked = series.spiked
+    members = series.members
+    by_volume = _any(series, spiked & vessels.by_volume[members])
+    scaled = ~by_volume & _any(series, spiked & (np.abs(vessels.dilution[members] - 1) > 1e-9))
+    if method.added_refers_to == "aliquot":
+        scaled &= False
+    predilution = series.segments.max(vessels.predilution[members])
+    tolerances = method.bench.tolerances
+    smallest = _smallest(series, np.where(spiked, vessels.spike_volume[members], np.nan))
+    aliquot, vessel = (_smallest(series, column[members]) for column in (vessels.aliquot, vessels.made_up_to))
+    nothing = np.zeros(len(series))
+    return (
+        Common("stock", np.where(by_volume, _stock(series, vessels, method), nothing)),
+        Common("spike_volume", np.where(by_volume, _relative(tolerances.get("spike_volume"), smallest), nothing)),
+        Common("aliquot", np.where(by_volume | scaled, _relative(tolerances.get("aliquot"), aliquot), nothing)),
+        Common("made_up_to", np.where(scaled, _relative(tolerances.get("made_up_to"), vessel), nothing)),
+        Common(
+            "predilution",
+            np.where(predilution != 1, _relative(tolerances.get("predilution"), predilution), nothing),
+        ),
+    )
+
+
+def _any(series: Series, members: NDArray[np.bool_]) -> NDArray[np.bool_]:
+    return series.segments.sum(members.astype(float)) > 0
+
+
+def _smallest(series: Series, values: Floats) -> Floats:
+    """Smallest finite member; an absolute tolerance weighs most on it, so this errs on the safe side."""
+    lowest = series.segments.min(np.where(np.isfinite(values), values, np.inf))
+    return np.where(np.isfinite(lowest), lowest, np.nan)
+
+
+def _stock(series: Series, vessels: Vessels, method: Method) -> Floats:
+    """The largest relative uncertainty among the stocks that a series used; NaN where one states none."""
+    stated = np.array([np.nan if s.relative_uncertainty is None else s.relative_uncertainty for s in method.stocks] + [0])
+    used = series.spiked & (vessels.stock[series.members] >= 0)
+    return series.segments.max(np.where(used, stated[vessels.stock[series.members]], 0.0))
+
+
+def _relative(tolerance: Measure | None, size: Floats) -> Floats:
+    if tolerance is None:
+        return np.full(len(size), np.nan)
+    if tolerance.unit == "%":
+        return np.full(len(size), tolerance.value / 100 / RECTANGULAR)
+    if tolerance.unit == "":  # of a factor, such as predilution
+        return tolerance.value / RECTANGULAR / size
+    return units.of_measure(tolerance, units.VOLUME) / RECTANGULAR / size

@@ -1,0 +1,137 @@
+"""Everything computed about an export, in one place: what checks judge and what results are written from."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from enum import IntEnum
+from functools import cached_property
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+if TYPE_CHECKING:
+    from numpy.typing import NDArray
+
+    from parsers.readings import Readings
+    from rules.additions import Fits
+    from rules.blanks import Blanks, Keys
+    from rules.calibration import Calibrations
+    from rules.check_standards import CheckStandards
+    from rules.interval import Interval
+    from rules.line import Floats, Integers
+    from rules.method import Method
+    from rules.reading_back import ReadBack
+    from rules.recovery import Recoveries
+    from rules.result import Results
+    from rules.series import Series
+    from rules.solutions import Solutions
+    from rules.vessels import Vessels
+
+
+class Reported(IntEnum):
+    """Which result of a series is reported."""
+
+    ADDITIONS = 1
+    CALIBRATION = 2
+
+
+@dataclass(frozen=True)
+class Case:
+    """One export, computed and not yet judged.
+
+    Arrays have one entry for each series unless said otherwise.
+
+    Attributes
+    ----------
+    key
+        Analyte and channel of each series.
+    fits, additions, interval
+        Lines, results and (for each fit) the interval with g.
+    u_line
+        Standard uncertainty of the line's share, in the sample.
+    back
+        Calibration results.
+    reported
+        Codes of `Reported`.
+    faults
+        Series to the sentences of what its inputs lack.
+    """
+
+    readings: Readings
+    method: Method
+    solutions: Solutions
+    vessels: Vessels
+    series: Series
+    keys: Keys
+    key: Integers
+    blanks: Blanks
+    calibrations: Calibrations
+    check_standards: CheckStandards
+    fits: Fits
+    additions: Results
+    interval: Interval
+    u_line: Floats
+    back: ReadBack
+    recoveries: Recoveries
+    reported: NDArray[np.int8]
+    faults: dict[int, list[str]]
+
+    def __len__(self) -> int:
+        """Return the number of series."""
+        return len(self.series)
+
+    @cached_property
+    def native(self) -> Floats:
+        """Best estimate of what the sample brings to the aliquot: by calibration where there is one.
+
+        Below zero or not detected it counts as measured.
+        """
+        per_aliquot = self.series.segments.max(self.vessels.predilution[self.series.members])
+        by_calibration = self.back.results.value / per_aliquot
+        return np.where(np.isfinite(by_calibration), by_calibration, self.additions.value / per_aliquot)
+
+    @cached_property
+    def top_addition(self) -> Floats:
+        """Largest A of each series; NaN where there is none."""
+        a = np.where(self.series.spiked, self.vessels.addition[self.series.members], -np.inf)
+        top = self.series.segments.max(a)
+        return np.where(np.isfinite(top) & (top > 0), top, np.nan)
+
+    @property
+    def judged(self) -> NDArray[np.bool_]:
+        """Series that additions were made to and that hold an unspiked solution."""
+        return self.series.has_additions & self.series.has_native
+
+    def reported_value(self) -> Floats:
+        """Return the value that each series reports."""
+        return np.where(self.reported == Reported.ADDITIONS, self.additions.value, self.back.results.value)
+
+    def analyte(self, series: int) -> str:
+        """Return the name of a series' analyte."""
+        return self.readings.analyte.names[int(self.series.analyte[series])]
+
+    def sample(self, series: int) -> str:
+        """Return a series' sample."""
+        return self.readings.sample.names[int(self.series.sample[series])]
+
+    def channel(self, series: int) -> str | None:
+        """Return a series' channel, None where there is none."""
+        code = int(self.series.channel[series])
+        return None if code < 0 else self.readings.channel.names[code]
+
+    def name(self, series: int) -> str:
+        """Return sample and analyte, as people call a series."""
+        channel = self.channel(series)
+        return f"{self.sample(series)} {self.analyte(series)}" + (f" {channel}" if channel else "")
+
+    def label(self, solution: int) -> str:
+        """Return the label of a solution."""
+        return self.readings.label[int(self.solutions.rows[solution])] or ""
+
+    def lines_of(self, solutions: list[int]) -> list[int]:
+        """Return the export lines of solutions."""
+        return sorted({int(self.readings.line[row]) for s in solutions for row in self.solutions.rows_of(s)})
+
+    def series_lines(self, series: int) -> list[int]:
+        """Return the export lines of a series."""
+        return self.lines_of(self.series.members_of(series).tolist())

@@ -1,0 +1,141 @@
+"""What a check is: a measured value, a limit, an outcome and one plain sentence, for every series at once.
+
+The checks themselves stand in `line_checks`, `recovery_checks` and `batch_checks`. Simple acceptance on unrounded
+values; a value that is missing or not finite never passes.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from enum import IntEnum
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+from rules.case import Reported
+from rules.limits import DEFAULTS, RECOVERY_AFTER_PREPARATION, CheckLimits
+
+if TYPE_CHECKING:
+    from collections.abc import Callable
+
+    from numpy.typing import NDArray
+
+    from rules.case import Case
+    from rules.line import Floats
+    from rules.method import Method
+
+    Outcomes = NDArray[np.int8]
+
+
+class Outcome(IntEnum):
+    """What a check says of a series."""
+
+    NOT_EVALUATED = 0
+    PASS = 1
+    WARN = 2
+    FAIL = 3
+
+    @property
+    def word(self) -> str:
+        """The word that results and mails use."""
+        return self.name.lower().replace("_", " ")
+
+
+@dataclass(frozen=True, slots=True)
+class Check:
+    """One check on all series of an export.
+
+    Attributes
+    ----------
+    name
+        As in results and settings.
+    judges
+        The reported result that it decides on; None: both.
+    unit
+        Of the value.
+    value
+        float64[m]; NaN where it was not evaluated.
+    outcome
+        int8[m], codes of `Outcome`.
+    limits
+        What each analyte (code) is judged by; None for checks that are a must.
+    sentence
+        Series to one plain sentence.
+    lines
+        Series to the export lines that the check rests on.
+    """
+
+    name: str
+    judges: Reported | None
+    unit: str
+    value: Floats
+    outcome: Outcomes
+    limits: tuple[CheckLimits, ...] | None
+    sentence: Callable[[int], str]
+    lines: Callable[[int], list[int]]
+
+    def decides(self, case: Case) -> NDArray[np.bool_]:
+        """Whether the check's warnings count for the result that each series reports."""
+        if self.judges is None:
+            return np.ones(len(case), dtype=bool)
+        return np.asarray(case.reported == self.judges, dtype=bool)
+
+    def stated_fail(self, case: Case) -> NDArray[np.bool_]:
+        """Whether the laboratory itself stated a fail limit: it decides whatever is reported."""
+        if self.limits is None:
+            return np.zeros(len(case), dtype=bool)
+        stated = np.array([limit.stated and limit.fail is not None for limit in self.limits], dtype=bool)
+        return stated[case.series.analyte]
+
+    def limit_text(self, case: Case, series: int) -> str:
+        """Return the limit in words."""
+        if self.limits is None:
+            return "must"
+        return self.limits[int(case.series.analyte[series])].text
+
+
+def limits_of(method: Method, analytes: tuple[str, ...], check: str) -> tuple[CheckLimits, ...]:
+    """Return the limits of a check for each analyte: the analyte's own, else the laboratory's, else the default."""
+    default = DEFAULTS[check]
+    if check == "recovery" and method.spiked_at == "after preparation":
+        default = RECOVERY_AFTER_PREPARATION
+    general = method.limits.get(check, default)
+    return tuple(method.analyte(name).limits.get(check, general) for name in analytes)
+
+
+def judge(case: Case, limits: tuple[CheckLimits, ...], value: Floats) -> Outcomes:
+    """Judge values by the limits of their analytes; NaN is not evaluated, and neither is a check that is off."""
+    analyte = case.series.analyte
+    outcome = np.full(len(value), Outcome.PASS, dtype=np.int8)
+    for level, severity in (("warn", Outcome.WARN), ("fail", Outcome.FAIL)):
+        chosen = [getattr(limit, level) for limit in limits]
+        low = np.array([-np.inf if limit is None else limit.low for limit in chosen])[analyte]
+        high = np.array([np.inf if limit is None else limit.high for limit in chosen])[analyte]
+        closed = np.array([limit is None or limit.closed for limit in chosen], dtype=bool)[analyte]
+        with np.errstate(invalid="ignore"):
+            inside = np.where(closed, (value >= low) & (value <= high), (value > low) & (value < high))
+        outcome[~inside] = severity
+    off = np.array([limit.off for limit in limits], dtype=bool)[analyte]
+    outcome[np.isnan(value) | off] = Outcome.NOT_EVALUATED
+    return outcome
+
+
+def judged(  # noqa: PLR0913 - one check has so many parts
+    case: Case,
+    name: str,
+    judges: Reported | None,
+    unit: str,
+    value: Floats,
+    sentence: Callable[[int, Outcome], str],
+    lines: Callable[[int], list[int]] | None = None,
+) -> Check:
+    """Make a check that is judged by its configured limits."""
+    limits = limits_of(case.method, case.readings.analyte.names, name)
+    outcome = judge(case, limits, value)
+
+    def say(series: int) -> str:
+        if limits[int(case.series.analyte[series])].off:
+            return f"{name}: switched off in the settings"
+        return sentence(series, Outcome(int(outcome[series])))
+
+    return Check(name, judges, unit, value, outcome, limits, say, lines or case.series_lines)

@@ -1,0 +1,200 @@
+"""Verdicts: which checks decide, what they add up to, and the words that people read.
+
+A series fails if a deciding check fails; it is incomplete if something expected is missing; it warns if a deciding
+check warns; else it passes. An ordinary sample without spikes is `not spiked` and judged by its batch only.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from enum import IntEnum
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+from rules.case import Reported
+from rules.checks import Check, Outcome
+from rules.figures import figure, percent, plus_minus, span
+
+if TYPE_CHECKING:
+    from numpy.typing import NDArray
+
+    from rules.case import Case
+    from rules.result import Results
+
+
+class Verdict(IntEnum):
+    """What is said of a series."""
+
+    PASS = 0
+    WARN = 1
+    FAIL = 2
+    INCOMPLETE = 3
+    NOT_SPIKED = 4
+
+    @property
+    def word(self) -> str:
+        """The word that results and mails use."""
+        return self.name.lower().replace("_", " ")
+
+
+@dataclass(frozen=True)
+class Outcomes:
+    """One export, judged.
+
+    Attributes
+    ----------
+    case
+        Everything computed.
+    checks
+        All checks.
+    verdict
+        int8[m], codes of `Verdict`.
+    missing
+        Series to what is expected and not there.
+    """
+
+    case: Case
+    checks: tuple[Check, ...]
+    verdict: NDArray[np.int8]
+    missing: dict[int, str]
+
+    def verdict_of(self, series: int) -> Verdict:
+        """Return the verdict of a series."""
+        return Verdict(int(self.verdict[series]))
+
+    def deciding(self, series: int, outcome: Outcome) -> list[Check]:
+        """Return the checks that decide on a series with an outcome."""
+        return [
+            check
+            for check in self.checks
+            if check.outcome[series] == outcome
+            and (
+                check.decides(self.case)[series]
+                or (outcome is Outcome.FAIL and check.stated_fail(self.case)[series])
+            )
+        ]
+
+    def reasons(self, series: int) -> list[str]:
+        """Return one sentence for each thing that keeps a series from passing."""
+        found = [check.sentence(series) for check in self.deciding(series, Outcome.FAIL)]
+        if series in self.missing:
+            found.append(self.missing[series])
+        return found + [check.sentence(series) for check in self.deciding(series, Outcome.WARN)]
+
+    def failed_checks(self, series: int) -> tuple[str, ...]:
+        """Return the names of the checks that fail a series, or ``incomplete``."""
+        names = tuple(check.name for check in self.deciding(series, Outcome.FAIL))
+        return names or (("incomplete",) if series in self.missing else ())
+
+    def headline(self, series: int) -> str:
+        """Return what is wrong in one phrase: ``recovery 61 % (limits 75 to 125)``."""
+        failing = self.deciding(series, Outcome.FAIL) or self.deciding(series, Outcome.WARN)
+        if series in self.missing and not self.deciding(series, Outcome.FAIL):
+            return self.missing[series]
+        if not failing:
+            return self.verdict_of(series).word
+        check = min(failing, key=lambda c: _URGENCY.index(c.name))
+        return measured(check, self.case, series)
+
+    def text(self, series: int) -> str:
+        """Return the reported result as people read it, or why there is no number."""
+        results = self.reported(series)
+        return result_text(results, series, self.case, self.case.method.confidence)
+
+    def reported(self, series: int) -> Results:
+        """Return the results that a series is reported from."""
+        by_additions = self.case.reported[series] == Reported.ADDITIONS
+        return self.case.additions if by_additions else self.case.back.results
+
+
+#: Checks from the one whose failure explains most to the one that explains least.
+_URGENCY = (
+    "inputs",
+    "check_standard",
+    "blank",
+    "recovery",
+    "slope_certainty",
+    "curvature",
+    "linear_evidence",
+    "correlation",
+    "residual",
+    "repeatability",
+    "levels",
+    "addition_size",
+    "detection",
+    "spike_size",
+    "matrix_effect",
+)
+
+
+def measured(check: Check, case: Case, series: int) -> str:
+    """Return check, value and limits in one phrase."""
+    name = check.name.replace("_", " ")
+    value = float(check.value[series])
+    if check.name == "inputs" or not np.isfinite(value):
+        return f"{name}: {check.sentence(series)}"
+    number = percent(value) if check.unit == "%" else f"{figure(value)} {check.unit}".rstrip()
+    if check.limits is None:
+        return f"{name} {number}: {check.sentence(series)}"
+    limits = check.limits[int(case.series.analyte[series])]
+    limit = limits.fail if check.outcome[series] == Outcome.FAIL else limits.warn
+    words = "" if limit is None else limit.text.removesuffix("%").removesuffix("LOQ").strip()
+    prefix = "limits" if " to " in words else "limit"
+    return f"{name} {number} ({prefix} {words})"
+
+
+def result_text(results: Results, series: int, case: Case, confidence: float) -> str:
+    """Write a result: ``17.3 ± 1.9 µg/L (95 %, k = 2.57, t with 5 dof)``, ``< 0.02 mg/L``, or why there is none."""
+    unit = case.method.result_unit
+    value, low, high = (float(column[series]) for column in (results.value, results.low, results.high))
+    if series in case.faults:
+        return "no result: the inputs are faulty"
+    if not np.isfinite(value):
+        return results.reasons.get(series, "no result")
+    level = f"{confidence * 100:g} %"
+    if not results.detected[series] and np.isfinite(high) and case.reported[series] == Reported.ADDITIONS:
+        return f"< {figure(high)} {unit} (not detected, {level})"
+    if not np.isfinite(results.expanded_uncertainty[series]):
+        reason = results.reasons.get(series, "uncertainty absent")
+        return f"{figure(value)} {unit} ({reason})"
+    if not results.symmetric(series):
+        return f"{span(value, low, high)} {unit} ({level})"
+    expanded, k = float(results.expanded_uncertainty[series]), float(results.coverage_factor[series])
+    dof = f"{results.dof[series]:g} dof"
+    return f"{plus_minus(value, expanded)} {unit} ({level}, k = {k:.2f}, t with {dof})"
+
+
+def decide(case: Case, checks: tuple[Check, ...]) -> Outcomes:
+    """Add the checks up to a verdict for every series."""
+    count = len(case)
+    failing = np.zeros(count, dtype=bool)
+    warning = np.zeros(count, dtype=bool)
+    for check in checks:
+        decides = check.decides(case)
+        failing |= (check.outcome == Outcome.FAIL) & (decides | check.stated_fail(case))
+        warning |= (check.outcome == Outcome.WARN) & decides
+    missing = _missing(case)
+    lacking = np.zeros(count, dtype=bool)
+    lacking[list(missing)] = True
+    ordinary = ~case.series.has_additions
+    verdict = np.full(count, Verdict.PASS, dtype=np.int8)
+    verdict[warning] = Verdict.WARN
+    verdict[ordinary] = Verdict.NOT_SPIKED
+    verdict[lacking] = Verdict.INCOMPLETE
+    verdict[failing] = Verdict.FAIL
+    return Outcomes(case, checks, verdict, missing)
+
+
+def _missing(case: Case) -> dict[int, str]:
+    """What is expected of a series and not in the export."""
+    missing = {
+        i: "the unspiked solution is missing"
+        for i in np.flatnonzero(case.series.has_additions & ~case.series.has_native).tolist()
+    }
+    wanting = case.judged & (case.reported == Reported.CALIBRATION) & (case.back.calibration < 0)
+    for i in np.flatnonzero(wanting).tolist():
+        if i not in case.faults:
+            reason = case.back.results.reasons.get(i, "no calibration in this export")
+            missing[i] = f"the settings report the calibration's result: {reason}"
+    return missing

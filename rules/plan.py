@@ -1,0 +1,151 @@
+"""What to do next: one sentence for each series that does not pass, written for the person at the bench.
+
+The most telling failed check decides. No pipetting plan is made here.
+"""
+
+from __future__ import annotations
+
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+from rules.case import Reported
+from rules.checks import Outcome
+from rules.figures import figure
+from rules.outcomes import Verdict
+
+if TYPE_CHECKING:
+    from collections.abc import Callable
+
+    from rules.case import Case
+    from rules.outcomes import Outcomes
+
+
+def next_step(outcomes: Outcomes, series: int) -> str:
+    """Return the next step for a series; empty where it passes or is an ordinary sample in order."""
+    verdict = outcomes.verdict_of(series)
+    failing = {check.name for check in outcomes.deciding(series, Outcome.FAIL)}
+    if not failing and series in outcomes.missing:
+        return _complete(outcomes.case, series)
+    warning = {check.name for check in outcomes.deciding(series, Outcome.WARN)}
+    for name, step in _STEPS:
+        if name in (failing or warning):
+            return step(outcomes.case, series)
+    if verdict is Verdict.FAIL:
+        return f"Prepare and measure {outcomes.case.sample(series)} again."
+    return ""
+
+
+def _complete(case: Case, i: int) -> str:
+    if not case.series.has_native[i]:
+        return f"Measure {case.sample(i)} unspiked now, from the same aliquot and dilution as its additions."
+    return (
+        f"Measure the calibration standards for {case.analyte(i)} and export them together with {case.sample(i)}, or "
+        f"state report: additions."
+    )
+
+
+def _inputs(case: Case, i: int) -> str:
+    if np.isfinite(case.fits.spread(case.fits.lines.slope)[i]) or not case.judged[i]:
+        return "Correct what is named, in the instrument's program or in the settings, and export again."
+    return f"Correct the cells or volumes that are named and export again; if a reading is lost, measure {case.sample(i)} again."
+
+
+def _check_standard(case: Case, i: int) -> str:
+    return f"Calibrate again, then measure {case.sample(i)} and every sample since the last good check standard again."
+
+
+def _blank(case: Case, i: int) -> str:
+    return f"Find the contamination or carry-over, measure a clean blank, then {case.sample(i)} again."
+
+
+def _recovery(case: Case, i: int) -> str:
+    low = case.recoveries.headline[i] < 100
+    cause = "the spike volume, the stock and losses in preparation" if low else "the spike volume, the stock and contamination"
+    if case.reported[i] == Reported.CALIBRATION:
+        return (
+            f"Keep the vials: check {cause}; then prepare {case.sample(i)} again with three additions and report the "
+            f"additions' result."
+        )
+    return f"Keep the vials: check {cause}; then prepare {case.sample(i)} again, unspiked and with its additions."
+
+
+def _larger_additions(case: Case, i: int) -> str:
+    native, top = float(case.native[i]), float(case.top_addition[i])
+    unit = case.method.result_unit
+    target = max(3 * native, 2 * top) if np.isfinite(native) and native > 0 else 2 * top
+    return (
+        f"Repeat the additions of {case.sample(i)} with a top addition near {figure(target, 2)} {unit} in the aliquot "
+        f"(it was {figure(top, 2)}), inside the linear range."
+    )
+
+
+def _addition_size(case: Case, i: int) -> str:
+    native, top = float(case.native[i]), float(case.top_addition[i])
+    if top < native:
+        return _larger_additions(case, i)
+    return (
+        f"Repeat the additions of {case.sample(i)} with a top addition near {figure(3 * native, 2)} "
+        f"{case.method.result_unit} in the aliquot (it was {figure(top, 2)})."
+    )
+
+
+def _levels(case: Case, i: int) -> str:
+    native = float(case.native[i])
+    if not np.isfinite(native) or native <= 0:
+        return f"Next time make three additions to {case.sample(i)}, evenly spaced."
+    levels = " / ".join(figure(native * share, 2) for share in (0.5, 1.0, 1.5))
+    return f"Next time make three additions to {case.sample(i)}, near {levels} {case.method.result_unit} in the aliquot."
+
+
+def _dilute(case: Case, i: int) -> str:
+    return f"Dilute {case.sample(i)} so that its highest solution stays in the linear range, and measure it again."
+
+
+def _straighten(case: Case, i: int) -> str:
+    return f"Dilute {case.sample(i)} or make smaller additions so that the response stays linear, and measure it again."
+
+
+def _scatter(case: Case, i: int) -> str:
+    return f"Measure the solutions of {case.sample(i)} again; if they still lie off the line, prepare them again."
+
+
+def _readings(case: Case, i: int) -> str:
+    return f"Check sample introduction and rinse, then measure the named solution and {case.sample(i)} again."
+
+
+def _matrix(case: Case, i: int) -> str:
+    if case.reported[i] == Reported.CALIBRATION:
+        return f"Report {case.sample(i)} by standard additions, or dilute it until the matrix no longer matters."
+    return f"Report the additions' result of {case.sample(i)}; the calibration does not hold in this matrix."
+
+
+def _spike_size(case: Case, i: int) -> str:
+    return (
+        f"Spike {case.sample(i)} with at least {figure(0.25 * float(case.native[i]), 2)} {case.method.result_unit} in the "
+        f"aliquot to judge its recovery."
+    )
+
+
+def _detection(case: Case, i: int) -> str:
+    return f"Check blank and baseline; measure {case.sample(i)} with more replicates or a larger aliquot."
+
+
+#: The most telling check first: a broken batch explains its series, not the other way round.
+_STEPS: tuple[tuple[str, Callable[[Case, int], str]], ...] = (
+    ("inputs", _inputs),
+    ("check_standard", _check_standard),
+    ("blank", _blank),
+    ("linear_evidence", _dilute),
+    ("curvature", _straighten),
+    ("recovery", _recovery),
+    ("slope_certainty", _larger_additions),
+    ("correlation", _scatter),
+    ("residual", _scatter),
+    ("repeatability", _readings),
+    ("addition_size", _addition_size),
+    ("levels", _levels),
+    ("detection", _detection),
+    ("matrix_effect", _matrix),
+    ("spike_size", _spike_size),
+)

@@ -1,0 +1,144 @@
+"""The result of external calibration: unspiked solutions read back from the standards of the same export."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+from rules.interval import Covariance, read_back
+from rules.result import Results, Share, combine
+
+if TYPE_CHECKING:
+    from numpy.typing import NDArray
+
+    from rules.blanks import Blanks
+    from rules.calibration import Calibrations
+    from rules.line import Floats, Integers
+    from rules.method import Method
+    from rules.series import Series
+    from rules.solutions import Solutions
+    from rules.vessels import Vessels
+
+
+@dataclass(frozen=True, slots=True)
+class ReadBack:
+    """Calibration results of the series, with what the checks need to know of them.
+
+    Attributes
+    ----------
+    results
+        The results, in the sample.
+    calibration
+        int64[m], index of the calibration of each series; -1 where there is none.
+    in_vessel
+        float64[m], mean concentration read back in the vessel.
+    highest
+        float64[m], highest concentration read back among the unspiked vessels.
+    above, below
+        bool[m]: beyond the top standard (then there is no number); under the lowest.
+    """
+
+    results: Results
+    calibration: Integers
+    in_vessel: Floats
+    highest: Floats
+    above: NDArray[np.bool_]
+    below: NDArray[np.bool_]
+
+
+def evaluate(
+    series: Series,
+    solutions: Solutions,
+    vessels: Vessels,
+    blanks: Blanks,
+    calibrations: Calibrations,
+    key: Integers,
+    method: Method,
+) -> ReadBack:
+    """Read the mean of each series' unspiked solutions back from its calibration.
+
+    x = (y - a)/b with the variance s²(1/p + …) of p solutions, x then divided by f and times the predilution.
+    S. L. R. Ellison, A. Williams (eds), Quantifying Uncertainty in Analytical Measurement, 3rd ed. 2012, E.4.
+    """
+    count = len(series)
+    of_series = calibrations.of_key[key] if count else np.zeros(0, dtype=np.int64)
+    seg, members = series.segments, series.members
+    native = series.unspiked.astype(float)
+    p = seg.sum(native)
+    with np.errstate(invalid="ignore", divide="ignore"):
+        y, f = solutions.signal[members], vessels.dilution[members]
+        if method.blank == "preparation":
+            y = y - f * blanks.mean[key][seg.owner]
+        mean = np.where(p > 0, seg.sum(np.where(series.unspiked, y, 0.0)) / p, np.nan)
+        dilution = np.where(p > 0, seg.sum(np.where(series.unspiked, f, 0.0)) / p, np.nan)
+        predilution = seg.max(vessels.predilution[members])
+        has = (of_series >= 0) & (p > 0)
+        lines = calibrations.lines
+
+        def of(values: Floats) -> Floats:
+            return np.where(has, values[of_series], np.nan) if len(values) else np.full(count, np.nan)
+
+        slope, intercept, s = of(lines.slope), of(lines.intercept), of(lines.residual_sd)
+        covariance = Covariance(of(lines.var_intercept), of(lines.covariance), of(lines.var_slope))
+        x = (mean - intercept) / slope
+        highest = (seg.max(np.where(series.unspiked, y, -np.inf)) - intercept) / slope
+        top, lowest = of(calibrations.top), of(calibrations.lowest)
+        # the standards' nominals are written with a few digits: a sample equal to the top standard is not above it
+        above, below = highest > top * (1 + 1e-9), x < lowest * (1 - 1e-9)
+        u_line = np.sqrt(s**2 / p + covariance.intercept + 2 * x * covariance.both + x**2 * covariance.slope) / slope
+        interval = read_back(mean, s**2 / p, intercept, slope, covariance, of(calibrations.t))
+        scale = predilution / dilution
+        value = np.where(above, np.nan, x * scale)
+        shown = np.where(np.isfinite(value) & ~(interval.g >= 1), 1.0, np.nan)
+        u_blank = _blank_uncertainty(blanks, key, dilution, slope, method)
+        shares = (
+            Share("line", u_line * scale * shown, of(lines.dof.astype(float))),
+            Share("blank", u_blank * scale, blanks.count[key] - 1),
+        )
+        t_blank = np.nan_to_num(np.sqrt(blanks.variance[key]) / blanks.standard_uncertainty[key])
+        u, expanded, k = combine(shares, (of(calibrations.t), t_blank))
+    results = Results(
+        value=value * shown,
+        low=interval.low * scale * shown,
+        high=interval.high * scale * shown,
+        standard_uncertainty=u,
+        expanded_uncertainty=expanded,
+        coverage_factor=k,
+        dof=of(lines.dof.astype(float)),
+        detected=~(interval.low <= 0),
+        budget=shares,
+        reasons=_reasons(key, has, p, above, calibrations, of_series),
+    )
+    return ReadBack(results, np.where(has, of_series, -1), x, highest, above, below)
+
+
+def _blank_uncertainty(blanks: Blanks, key: Integers, dilution: Floats, slope: Floats, method: Method) -> Floats:
+    """Only a preparation blank moves a read-back; a blank in every vessel moves standards and samples alike."""
+    if method.blank != "preparation":
+        return np.zeros(len(key))
+    return dilution * blanks.standard_uncertainty[key] / slope
+
+
+def _reasons(
+    key: Integers,
+    has: NDArray[np.bool_],
+    p: Floats,
+    above: NDArray[np.bool_],
+    calibrations: Calibrations,
+    of_series: Integers,
+) -> dict[int, str]:
+    reasons: dict[int, str] = {}
+    for series in np.flatnonzero(~has | above).tolist():
+        if above[series]:
+            reasons[series] = "no result: above the top standard"
+        elif p[series] == 0:
+            reasons[series] = "no result: no unspiked solution"
+        elif refused := calibrations.refused.get(int(key[series])):
+            reasons[series] = f"no calibration: {refused[0]}"
+        elif of_series[series] < 0:
+            reasons[series] = "no calibration in this export"
+    return reasons
+
+

@@ -1,0 +1,86 @@
+"""A result with its uncertainty, for all series at once: value, u, U, k, interval, and why there is no number."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, field
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+if TYPE_CHECKING:
+    from numpy.typing import NDArray
+
+    from rules.line import Floats
+
+
+@dataclass(frozen=True, slots=True)
+class Share:
+    """One component of a budget.
+
+    Attributes
+    ----------
+    component
+        What it is: ``line``, ``blank``, ``stock`` …
+    standard_uncertainty
+        float64[m], in the unit of the result; NaN where it matters and nobody stated it.
+    dof
+        float64[m], degrees of freedom; infinite where it was estimated otherwise than from repeats.
+    """
+
+    component: str
+    standard_uncertainty: Floats
+    dof: Floats
+
+
+@dataclass(frozen=True, slots=True)
+class Results:
+    """One result for each series, in the unit of results, in the sample as received.
+
+    Attributes
+    ----------
+    value, low, high
+        float64[m]; NaN where there is no number or no finite interval.
+    standard_uncertainty, expanded_uncertainty, coverage_factor
+        float64[m]; NaN where the uncertainty is absent.
+    dof
+        float64[m], degrees of freedom of the line's share.
+    detected
+        bool[m]: False where the interval cannot exclude zero.
+    budget
+        The components.
+    reasons
+        Series to the sentence of why there is no number, or no uncertainty.
+    """
+
+    value: Floats
+    low: Floats
+    high: Floats
+    standard_uncertainty: Floats
+    expanded_uncertainty: Floats
+    coverage_factor: Floats
+    dof: Floats
+    detected: NDArray[np.bool_]
+    budget: tuple[Share, ...] = ()
+    reasons: dict[int, str] = field(default_factory=dict)
+
+    def symmetric(self, series: int) -> bool:
+        """Whether ± says the truth: the halves of the interval differ by no more than 25 %."""
+        below, above = self.value[series] - self.low[series], self.high[series] - self.value[series]
+        larger = max(below, above)
+        return bool(np.isfinite(larger) and larger > 0 and abs(above - below) <= 0.25 * larger)
+
+
+def combine(shares: tuple[Share, ...], t: tuple[Floats, ...]) -> tuple[Floats, Floats, Floats]:
+    """Return u, U and k = U/u of a budget: U = √Σ(t(ν_i) u_i)².
+
+    Components that nobody stated (NaN) are left out of both; they are listed as absent where the budget is shown.
+    The line's share comes first: where it is absent there is no uncertainty at all.
+    """
+    line = shares[0].standard_uncertainty
+    uncertainties = [line, *(np.nan_to_num(share.standard_uncertainty) for share in shares[1:])]
+    with np.errstate(invalid="ignore", divide="ignore"):
+        u = np.sqrt(sum((part**2 for part in uncertainties), np.zeros(len(line))))
+        expanded = np.sqrt(
+            sum(((q * part) ** 2 for q, part in zip(t, uncertainties, strict=True)), np.zeros(len(line)))
+        )
+        return u, expanded, np.where(u > 0, expanded / u, np.nan)

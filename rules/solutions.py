@@ -1,0 +1,140 @@
+"""Rows of an export become solutions: one prepared vessel each, with the mean of its replicate readings.
+
+Replicate readings of one solution are no independent preparations, so only their mean goes further. What belongs
+to a faulty cell is marked, never left out. Knows no series, no line, no limit.
+"""
+
+from __future__ import annotations
+
+from collections import defaultdict
+from dataclasses import dataclass
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+
+from rules.line import Segments
+
+if TYPE_CHECKING:
+    from numpy.typing import NDArray
+
+    from parsers.readings import Readings
+    from rules.line import Floats, Integers
+
+
+@dataclass(frozen=True, slots=True)
+class Solutions:
+    """The solutions of an export in run order.
+
+    Attributes
+    ----------
+    rows
+        int64[n], the row of the `Readings` that stands for each solution (its first).
+    members
+        int64[r], all rows, those of one solution together; `segments` says where each solution's rows lie.
+    signal
+        float64[n], mean y of the replicate readings; NaN where none can be used.
+    signal_sd
+        float64[n], standard deviation of the readings; NaN where there are fewer than two.
+    readings
+        float64[n], number of readings behind the mean.
+    faults
+        Solution to the sentences of what is wrong with its cells.
+    """
+
+    rows: Integers
+    members: Integers
+    segments: Segments
+    signal: Floats
+    signal_sd: Floats
+    readings: Floats
+    faults: dict[int, list[str]]
+
+    def __len__(self) -> int:
+        """Return the number of solutions."""
+        return len(self.rows)
+
+    def rows_of(self, solution: int) -> Integers:
+        """Return the rows of one solution."""
+        start = int(self.segments.starts[solution])
+        return self.members[start : start + int(self.segments.sizes[solution])]
+
+
+def run_order(readings: Readings) -> Integers:
+    """Return the rows in the order in which they were measured: by time, else by position, else as in the file."""
+    for key in (readings.measured_at, readings.position):
+        if len(key) and np.isfinite(key).all():
+            return np.argsort(key, kind="stable").astype(np.int64)
+    return np.arange(len(readings), dtype=np.int64)
+
+
+def gather(readings: Readings) -> Solutions:
+    """Gather the rows of an export into solutions.
+
+    Rows with a replicate number belong together as long as label, analyte and channel stay the same and the number
+    goes up; every other row is a solution of its own.
+
+    Returns
+    -------
+    Solutions
+        In run order.
+    """
+    order = run_order(readings)
+    members, sizes = _replicates(readings, order)
+    segments = Segments.of_sizes(sizes)
+    rows = members[segments.starts]
+    y = readings.signals[members]
+    present = np.isfinite(y)
+    count = segments.sum(present.sum(axis=1).astype(float))
+    with np.errstate(invalid="ignore", divide="ignore"):
+        signal = segments.sum(np.where(present, y, 0).sum(axis=1)) / count
+        deviations = np.where(present, y - segments.spread(signal)[:, None], 0)
+        sd = np.sqrt(segments.sum((deviations**2).sum(axis=1)) / np.where(count > 1, count - 1, np.nan))
+    sd, count = _stated_scatter(readings, rows, signal, sd, count)
+    return Solutions(rows, members, segments, signal, sd, count, _faults(readings, members, segments))
+
+
+def _replicates(readings: Readings, order: Integers) -> tuple[Integers, NDArray[Any]]:
+    replicate = readings.replicate[order]
+    numbered = np.isfinite(replicate)
+    if not numbered.any():
+        return order, np.ones(len(order), dtype=np.int64)
+    keys = [column.codes[order] for column in (readings.label, readings.analyte, readings.channel)]
+    # stable: within one label, analyte and channel the rows stay in run order
+    label, analyte, channel = keys
+    by_key = np.lexsort((np.arange(len(order)), channel, analyte, label))
+    same = np.ones(len(order) - 1, dtype=bool)
+    for key in keys:
+        same &= key[by_key][1:] == key[by_key][:-1]
+    rising = replicate[by_key][1:] > replicate[by_key][:-1]
+    begins = np.concatenate(([True], ~(same & rising)))
+    solution = np.cumsum(begins) - 1
+    first = np.full(int(solution[-1]) + 1, len(order), dtype=np.int64)
+    np.minimum.at(first, solution, by_key)
+    # solutions in the order of their first row, rows of one solution together
+    place = np.argsort(np.argsort(first, kind="stable"), kind="stable")[solution]
+    final = np.lexsort((by_key, place))
+    return order[by_key[final]], np.bincount(place)
+
+
+def _stated_scatter(
+    readings: Readings, rows: Integers, signal: Floats, sd: Floats, count: Floats
+) -> tuple[Floats, Floats]:
+    """Take standard deviation and number of readings from the export where only a mean is given."""
+    stated_sd = readings.signal_sd[rows]
+    stated_rsd = readings.signal_rsd[rows] / 100 * np.abs(signal)
+    single = count <= 1
+    sd = np.where(single & np.isfinite(stated_sd), stated_sd, sd)
+    sd = np.where(single & ~np.isfinite(sd) & np.isfinite(stated_rsd), stated_rsd, sd)
+    number = readings.readings[rows]
+    return sd, np.where(single & np.isfinite(number), number, count)
+
+
+def _faults(readings: Readings, members: Integers, segments: Segments) -> dict[int, list[str]]:
+    if not readings.faults:
+        return {}
+    solution_of = np.empty(len(readings), dtype=np.int64)
+    solution_of[members] = segments.owner
+    faults: dict[int, list[str]] = defaultdict(list)
+    for fault in readings.faults:
+        faults[int(solution_of[fault.row])].append(str(fault))
+    return dict(faults)

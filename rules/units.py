@@ -1,0 +1,112 @@
+"""Units of volumes and concentrations, on pint. Converts what is stated and refuses the rest.
+
+Parts per million and per billion mean nothing until a laboratory declares them, so they are no units here.
+"""
+
+from __future__ import annotations
+
+from functools import cache
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+
+if TYPE_CHECKING:
+    from parsers.readings import Quantities
+    from rules.method import Measure
+
+#: One unit of each kind, to compare dimensions with and to name in errors.
+VOLUME, CONCENTRATION = "mL", "mg/L"
+_KINDS = {VOLUME: "a volume such as mL or µL", CONCENTRATION: "a concentration such as mg/L or µg/L"}
+
+
+class UnitUnusable(ValueError):
+    """A unit is unknown, or of the wrong kind for the place where it stands."""
+
+
+@cache
+def _registry() -> Any:
+    # imported when first needed: parsing its definitions takes longer than all the rest of a small export
+    import pint  # noqa: PLC0415
+
+    return pint.UnitRegistry(cache_folder=None)
+
+
+@cache
+def factor(unit: str, target: str) -> float:
+    """Return what a number in `unit` must be multiplied with to be in `target`.
+
+    Raises
+    ------
+    UnitUnusable
+        If a unit is not known or the two are not of the same kind.
+
+    >>> factor("mg/L", "µg/L")
+    1000.0
+    >>> factor("µL", "mL")
+    0.001
+    """
+    if unit == target:
+        return 1.0
+    known = [_known(text) for text in (unit, target)]
+    if known[0].dimensionality != known[1].dimensionality:
+        raise UnitUnusable(f"'{unit}' cannot be converted to '{target}': they measure different things")
+    return float(f"{_registry().convert(1.0, known[0], known[1]):.15g}")
+
+
+def require(unit: str, kind: str) -> None:
+    """Check that a unit is known and of a kind, `VOLUME` or `CONCENTRATION`.
+
+    Raises
+    ------
+    UnitUnusable
+        If not.
+    """
+    if _known(unit).dimensionality != _known(kind).dimensionality:
+        raise UnitUnusable(f"expected {_KINDS[kind]}, got '{unit}'")
+
+
+@cache
+def _known(text: str) -> Any:
+    if text.lower() in ("ppm", "ppb", "ppt"):
+        raise UnitUnusable(f"'{text}' does not say per what: write mg/L, µg/L or ng/L")
+    try:
+        unit = _registry().parse_units(text)
+    except Exception as error:  # pint raises its own errors, tokenizer errors and TypeError alike
+        raise UnitUnusable(f"'{text}' is no known unit: write for example mg/L, µg/L, mL or µL") from error
+    if not text or unit.dimensionless:
+        raise UnitUnusable(f"'{text}' is no unit of a volume or a concentration")
+    return unit
+
+
+def of_measure(measure: Measure, target: str) -> float:
+    """Return a stated quantity in another unit."""
+    return measure.value * factor(measure.unit, target)
+
+
+def of_column(column: Quantities, target: str, default: str | None) -> np.ndarray[Any, np.dtype[np.float64]]:
+    """Return a column of quantities in one unit.
+
+    Parameters
+    ----------
+    column
+        Numbers with their units.
+    target
+        The unit wanted.
+    default
+        The unit of rows that state none.
+
+    Raises
+    ------
+    UnitUnusable
+        If a unit that is used cannot be converted.
+    """
+    present = np.isfinite(column.values)
+    factors = np.ones(len(column.units.names) + 1)
+    used = np.unique(column.units.codes[present])
+    for code in used:
+        unit = column.units.names[code] if code >= 0 else default
+        if unit is None:
+            raise UnitUnusable(f"a number without unit where {_KINDS.get(target, target)} is needed")
+        factors[code] = factor(unit, target)
+    # code -1 (no unit) indexes the last factor
+    return column.values * factors[column.units.codes]

@@ -1,0 +1,343 @@
+"""What each solution's vessel holds: dilution f of the sample, addition A scaled to the undiluted aliquot.
+
+    f = V_a / V,   c = c_S v / V,   A = c / f = c_S v / V_a
+
+One form for every bench practice: made up to a volume, standard on top of the aliquot, again and again into one
+vessel. What cannot be known is a fault of the solution, with the sentence that says what is missing; nothing is
+assumed. Knows no signals.
+"""
+
+from __future__ import annotations
+
+from collections import defaultdict
+from dataclasses import dataclass
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+
+from parsers.readings import Role
+from rules import units
+
+if TYPE_CHECKING:
+    from numpy.typing import NDArray
+
+    from parsers.readings import Quantities, Readings
+    from rules.line import Floats
+    from rules.method import Measure, Method
+    from rules.solutions import Solutions
+
+    Bools = NDArray[np.bool_]
+
+#: Where an export gives a concentration and volumes, both must agree within this (method, section 2).
+AGREEMENT = 0.01
+
+
+@dataclass(frozen=True, slots=True)
+class Vessels:
+    """What the vessels hold, one entry for each solution.
+
+    Attributes
+    ----------
+    dilution
+        f, fraction of the vessel that is sample; NaN where unknown.
+    addition
+        A, added concentration scaled to the aliquot, in the unit of results; 0 for unspiked solutions, NaN where
+        unknown.
+    added
+        c, added concentration in the vessel, same unit.
+    predilution
+        Factor from aliquot to sample.
+    stock
+        Index of the stock used in ``Method.stocks``; -1 where none is involved.
+    by_volume
+        Whether A comes from volumes and a stock; else from a concentration.
+    not_added
+        Spiked solutions whose stock does not contain the analyte: no addition of it, only a further vessel.
+    aliquot, made_up_to, spike_volume
+        Volumes in mL; NaN where unknown (`made_up_to` also where the standard goes on top).
+    faults
+        Solution to the sentences of what is wrong.
+    """
+
+    dilution: Floats
+    addition: Floats
+    added: Floats
+    predilution: Floats
+    stock: NDArray[np.int32]
+    by_volume: Bools
+    not_added: Bools
+    aliquot: Floats
+    made_up_to: Floats
+    spike_volume: Floats
+    faults: dict[int, list[str]]
+
+
+def fill(readings: Readings, solutions: Solutions, method: Method, accepted_at: float) -> Vessels:
+    """Work out dilution and addition of every solution.
+
+    Parameters
+    ----------
+    readings, solutions
+        What the export says.
+    method
+        The laboratory's decisions: bench, stocks, what a concentration refers to.
+    accepted_at
+        Seconds since 1970-01-01 in local time; judges the dates of stocks where the export has no times.
+
+    Returns
+    -------
+    Vessels
+        Standards, blanks and check standards are undiluted and hold no addition.
+    """
+    return _Filling(readings, solutions, method, accepted_at).vessels()
+
+
+class _Filling:
+    """The work of `fill`, step by step, on columns of equal length."""
+
+    def __init__(self, readings: Readings, solutions: Solutions, method: Method, accepted_at: float) -> None:
+        self.readings, self.method, self.accepted_at = readings, method, accepted_at
+        self.rows = solutions.rows
+        self.n = len(self.rows)
+        self.faults: dict[int, list[str]] = defaultdict(list)
+        role = readings.role[self.rows]
+        self.spiked = role == Role.SPIKED
+        self.sample = self.spiked | (role == Role.UNSPIKED)
+
+    def vessels(self) -> Vessels:
+        level_volume, level_added = self._levels()
+        aliquot = self._volume("aliquot", self.readings.aliquot, self.method.bench.aliquot)
+        made_up_to = self._volume("made_up_to", self.readings.made_up_to, self.method.bench.made_up_to)
+        stated_volume = self._column("spike_volume", self.readings.spike_volume, units.VOLUME, None)
+        stated_added = self._column("added", self.readings.added, self.method.result_unit, self.method.export_unit)
+        # a level is a default, not a second source: only what the export says row by row must agree
+        silent = np.isnan(stated_volume) & np.isnan(stated_added)
+        spike = np.where(silent, level_volume, stated_volume)
+        added = np.where(silent, level_added, stated_added)
+        spike, added = np.where(self.sample, spike, np.nan), np.where(self.sample, added, np.nan)
+        has_volume, has_added = self.spiked & np.isfinite(spike), self.spiked & np.isfinite(added)
+        self._guard_volumes(aliquot, made_up_to, spike, added)
+        dilution = self._dilution(aliquot, made_up_to, np.where(has_volume, spike, 0.0))
+        stock, concentration, not_added = self._stocks(has_volume)
+        with np.errstate(invalid="ignore", divide="ignore"):
+            by_volume = concentration * spike / aliquot
+        by_added = self._from_concentration(added, has_added, dilution, aliquot, made_up_to)
+        self._agree(by_volume, by_added, has_volume & has_added & ~not_added)
+        addition = np.where(has_volume, by_volume, by_added)
+        addition = np.where(self.spiked & ~not_added, addition, 0.0)
+        self._note(
+            self.spiked & ~not_added & ~has_volume & ~has_added & (self.readings.level.codes[self.rows] < 0),
+            lambda _: "a spiked solution without addition: map added, spike_volume or level, or correct the export",
+        )
+        return Vessels(
+            dilution=dilution,
+            addition=addition,
+            added=addition * dilution,
+            predilution=self._predilution(),
+            stock=stock,
+            by_volume=has_volume,
+            not_added=not_added,
+            aliquot=aliquot,
+            made_up_to=made_up_to,
+            spike_volume=spike,
+            faults=dict(self.faults),
+        )
+
+    def _note(self, where: Bools, sentence: Any) -> None:
+        """Add a fault to every solution of a mask; the sentence is made for each."""
+        for solution in np.flatnonzero(where):
+            row = self.rows[solution]
+            self.faults[int(solution)].append(f"line {self.readings.line[row]}: {sentence(int(solution))}")
+
+    def _column(self, name: str, column: Quantities, unit: str, default: str | None) -> Floats:
+        try:
+            return units.of_column(column.take(self.rows), unit, default)
+        except units.UnitUnusable as error:
+            problem = str(error)
+            self._note(np.isfinite(column.values[self.rows]) & self.sample, lambda _: f"{name}: {problem}")
+            return np.full(self.n, np.nan)
+
+    def _volume(self, name: str, column: Quantities, default: Measure | None) -> Floats:
+        stated = self._column(name, column, units.VOLUME, None)
+        if default is not None:
+            stated = np.where(np.isfinite(stated), stated, units.of_measure(default, units.VOLUME))
+        return np.where(self.sample, stated, np.nan)
+
+    def _levels(self) -> tuple[Floats, Floats]:
+        """Return spike volumes in mL and concentrations in the result unit that named levels stand for."""
+        column = self.readings.level
+        volumes, added = (np.full(len(column.names) + 1, np.nan) for _ in range(2))
+        unknown = np.zeros(len(column.names) + 1, dtype=bool)
+        for code, name in enumerate(column.names):
+            measure = self.method.bench.levels.get(name)
+            if measure is None:
+                unknown[code] = True
+            elif _is_volume(measure):
+                volumes[code] = units.of_measure(measure, units.VOLUME)
+            else:
+                added[code] = units.of_measure(measure, self.method.result_unit)
+        codes = column.codes[self.rows]
+        stated = np.isfinite(self.readings.added.values[self.rows]) | np.isfinite(
+            self.readings.spike_volume.values[self.rows]
+        )
+        known = ", ".join(self.method.bench.levels) or "none"
+        self._note(
+            unknown[codes] & self.spiked & ~stated,
+            lambda solution: (
+                f"level '{column[int(self.rows[solution])]}' is not among bench.levels ({known}): add it there, or "
+                f"correct the label"
+            ),
+        )
+        return volumes[codes], added[codes]
+
+    def _guard_volumes(self, aliquot: Floats, made_up_to: Floats, spike: Floats, added: Floats) -> None:
+        with np.errstate(invalid="ignore"):
+            for name, column, bad in (
+                ("aliquot", aliquot, aliquot <= 0),
+                ("made_up_to", made_up_to, made_up_to <= 0),
+                ("spike_volume", spike, spike < 0),
+                ("added", added, added < 0),
+            ):
+                self._note(
+                    bad & self.sample,
+                    lambda i, n=name, c=column: f"{n} is {c[i]:g}, which cannot be: correct the export",
+                )
+            self._note(
+                self.spiked & ((spike == 0) | (np.isnan(spike) & (added == 0))),
+                lambda _: "a spiked solution to which 0 was added: correct the label or the addition",
+            )
+            content = aliquot + np.where(np.isfinite(spike), spike, 0)
+            self._note(
+                self.sample & (content > made_up_to * (1 + 1e-9)),
+                lambda i: (
+                    f"{content[i]:g} mL of aliquot and standard do not fit into made_up_to {made_up_to[i]:g} mL: "
+                    f"correct the volumes"
+                ),
+            )
+
+    def _dilution(self, aliquot: Floats, made_up_to: Floats, spike: Floats) -> Floats:
+        with np.errstate(invalid="ignore", divide="ignore"):
+            vessel = np.where(np.isfinite(made_up_to), made_up_to, aliquot + spike)
+            dilution = np.where(np.isfinite(aliquot), aliquot / vessel, 1.0)
+        self._note(
+            self.sample & np.isfinite(made_up_to) & np.isnan(aliquot),
+            lambda _: "made_up_to is stated and the aliquot is not: state bench.aliquot or map aliquot",
+        )
+        self._note(
+            self.spiked & (spike > 0) & np.isnan(aliquot),
+            lambda _: "a volume of standard is stated and the aliquot is not: state bench.aliquot or map aliquot",
+        )
+        return np.where(self.sample, dilution, 1.0)
+
+    def _from_concentration(
+        self, added: Floats, has_added: Bools, dilution: Floats, aliquot: Floats, made_up_to: Floats
+    ) -> Floats:
+        """Return A from an added concentration, by what it refers to."""
+        with np.errstate(invalid="ignore", divide="ignore"):
+            differs = has_added & (np.abs(dilution - 1) > 1e-9)  # rounding of two equal volumes
+            refers = self.method.added_refers_to
+            if refers is None:
+                self._note(
+                    differs,
+                    lambda _: (
+                        "aliquot and vessel differ in volume, and nothing says what the added concentration refers "
+                        "to: state added_refers_to: vessel, aliquot or nominal"
+                    ),
+                )
+                return np.where(differs, np.nan, added)
+            if refers == "aliquot":
+                return added
+            if refers == "vessel":
+                return added / dilution
+            nominal = np.where(np.isfinite(made_up_to), made_up_to, aliquot)
+            return np.where(np.isfinite(nominal), added * nominal / aliquot, added)
+
+    def _agree(self, by_volume: Floats, by_added: Floats, both: Bools) -> None:
+        with np.errstate(invalid="ignore", divide="ignore"):
+            apart = both & (np.abs(by_volume - by_added) > AGREEMENT * np.abs(by_added))
+        unit = self.method.result_unit
+        self._note(
+            apart,
+            lambda i: (
+                f"the volumes give an addition of {by_volume[i]:.6g} {unit} and the stated concentration gives "
+                f"{by_added[i]:.6g} {unit}: they must agree within 1 %; correct the one that is wrong"
+            ),
+        )
+
+    def _predilution(self) -> Floats:
+        stated = self.readings.predilution[self.rows]
+        self._note(
+            self.sample & (stated <= 0), lambda i: f"predilution is {stated[i]:g}, which cannot be: correct the export"
+        )
+        return np.where(self.sample & np.isfinite(stated), stated, self.method.bench.predilution)
+
+    def _stocks(self, needed: Bools) -> tuple[NDArray[np.int32], Floats, Bools]:
+        """Choose the stock of every addition by volume.
+
+        The mapped one, else the only one that contains the analyte and is within its dates.
+        """
+        analyte = self.readings.analyte.codes[self.rows]
+        names = self.readings.analyte.names
+        stocks = self.method.stocks
+        content = np.full((len(stocks) + 1, len(names)), np.nan)
+        for s, stock in enumerate(stocks):
+            for a, name in enumerate(names):
+                if name in stock.contains:
+                    content[s, a] = units.of_measure(stock.contains[name], self.method.result_unit)
+        mapped_codes = self.readings.stock.codes[self.rows]
+        mapped = mapped_codes >= 0
+        chosen = np.full(self.n, -1, dtype=np.int32)
+        valid_count = np.zeros(self.n, dtype=np.int32)
+        for s, stock in enumerate(stocks):
+            valid = needed & ~mapped & np.isfinite(content[s, analyte]) & self._within_dates(s)
+            chosen[valid] = s
+            valid_count += valid
+            wanted = [code for code, name in enumerate(self.readings.stock.names) if name == stock.name]
+            by_name = needed & mapped & np.isin(mapped_codes, wanted)
+            chosen[by_name & self._within_dates(s)] = s
+        self._note_stock_faults(needed, mapped, chosen, valid_count, np.isfinite(content).any(axis=0)[analyte])
+        concentration = content[chosen, analyte]
+        nowhere = ~np.isfinite(content).any(axis=0)[analyte] & ~mapped
+        not_added = needed & (nowhere | ((chosen >= 0) & np.isnan(concentration)))
+        return chosen, concentration, not_added
+
+    def _note_stock_faults(
+        self, needed: Bools, mapped: Bools, chosen: NDArray[np.int32], count: NDArray[np.int32], somewhere: Bools
+    ) -> None:
+        names, stocks = self.readings.analyte.names, self.method.stocks
+        analyte = self.readings.analyte.codes[self.rows]
+        known = {stock.name for stock in stocks}
+        listed = ", ".join(stock.name for stock in stocks) or "none"
+        self._note(
+            needed & mapped & (chosen < 0),
+            lambda i: (
+                f"stock '{(name := self.readings.stock[int(self.rows[i])])}' "
+                + ("was not valid when measured" if name in known else f"is not among the stocks ({listed})")
+                + ": correct the name in the export or the stocks in the settings"
+            ),
+        )
+        self._note(
+            needed & (count > 1),
+            lambda i: (
+                f"{count[i]} stocks contain {names[analyte[i]]}, and nothing says which was used: map stock, or "
+                f"give the stocks dates"
+            ),
+        )
+        self._note(
+            needed & ~mapped & (count == 0) & somewhere,
+            lambda i: f"no stock that contains {names[analyte[i]]} was valid when measured: add its dates",
+        )
+
+    def _within_dates(self, stock: int) -> Bools:
+        measured = self.readings.measured_at[self.rows]
+        when = np.where(np.isfinite(measured), measured, self.accepted_at)
+        begin, end = self.method.stocks[stock].valid_from, self.method.stocks[stock].valid_until
+        return (when >= (-np.inf if begin is None else begin)) & (when <= (np.inf if end is None else end))
+
+
+def _is_volume(measure: Measure) -> bool:
+    try:
+        units.factor(measure.unit, units.VOLUME)
+    except units.UnitUnusable:
+        return False
+    return True

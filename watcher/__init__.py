@@ -1,0 +1,4 @@
+"""Everything that touches the world: folders, the ledger, the worker process, result files, mail.
+
+Start at `watcher.service`.
+"""
