@@ -132,7 +132,9 @@ def _scaled(y: Floats, f: Floats, y_blank: Floats, method: Method) -> Floats:
         return y / f
 
 
-def _blank_term(f: Floats, additions: Floats, segments: line.Segments, variance: Floats, method: Method) -> BlankTerm:
+def _blank_term(
+    f: Floats, additions: Floats, segments: line.Segments, variance: Floats, method: Method
+) -> BlankTerm:
     """How intercept and slope move with the blank: the line of -1/f on A, or a plain shift."""
     if method.blank == "subtract":
         with np.errstate(invalid="ignore", divide="ignore"):
@@ -151,7 +153,9 @@ def _covariance(
     covariance = Covariance(lines.var_intercept, lines.covariance, lines.var_slope)
     none = np.full(len(lines.n), np.nan)
     usable = lines.scatter & (lines.dof > 0)
-    covariance = Covariance(*(np.where(usable, getattr(covariance, f.name), none) for f in fields(covariance)))
+    covariance = Covariance(
+        *(np.where(usable, getattr(covariance, f.name), none) for f in fields(covariance))
+    )
     dof = np.where(usable, lines.dof, np.nan)
     known = method.bench.preparation
     if known is None:
@@ -251,7 +255,9 @@ def _reasons(fits: Fits, g: Floats) -> dict[int, str]:
         elif not lines.slope[place] > 0:
             reasons[series] = "no result: the signal does not rise with the additions"
         elif g[place] >= 1:
-            reasons[series] = f"no result: the slope is too uncertain for a finite interval (g = {g[place]:.2g})"
+            reasons[series] = (
+                f"no result: the slope is too uncertain for a finite interval (g = {g[place]:.2g})"
+            )
         elif lines.n[place] == 2:
             reasons[series] = "uncertainty absent: a single addition shows no scatter of preparations"
         else:

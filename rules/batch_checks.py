@@ -33,9 +33,7 @@ def inputs(case: Case) -> Check:
             return "all cells readable, volumes and concentrations possible"
         return several(case.faults[i], most=3)
 
-    return Check(
-        "inputs", None, "", np.full(len(case), np.nan), outcome, None, sentence, case.series_lines
-    )
+    return Check("inputs", None, "", np.full(len(case), np.nan), outcome, None, sentence, case.series_lines)
 
 
 def _worst(values: Floats, owner: NDArray[np.int64], count: int) -> tuple[Floats, NDArray[np.int64]]:
@@ -161,7 +159,11 @@ def blank(case: Case) -> Check:
         if outcome is Outcome.NOT_EVALUATED:
             if not counts[i]:
                 return "no blank in this export"
-            missing = "calibration" if np.isfinite(loq[case.series.analyte[i]]) else "limit of quantification (analytes.loq)"
+            missing = (
+                "calibration"
+                if np.isfinite(loq[case.series.analyte[i]])
+                else "limit of quantification (analytes.loq)"
+            )
             return f"no {missing} to judge blanks by"
         label = case.label(int(blanks.solutions[place[i]]))
         reads = f"blank {label} reads {figure(concentration[place[i]])} {case.method.result_unit}"
@@ -207,7 +209,9 @@ def _spoilt(case: Case) -> dict[int, list[str]]:
         for solution, key in zip(standards.tolist(), _key_of(case, standards), strict=True)
         if solution in case.solutions.faults or not np.isfinite(case.solutions.signal[solution])
     }
-    nominals = {key for key, said in case.calibrations.refused.items() if any("nominal" in text for text in said)}
+    nominals = {
+        key for key, said in case.calibrations.refused.items() if any("nominal" in text for text in said)
+    }
     return {key: case.calibrations.refused[key] for key in bad | nominals if key in case.calibrations.refused}
 
 
@@ -225,14 +229,20 @@ def _series_faults(case: Case) -> list[tuple[int, str]]:
     use = case.method.blank
     if use is None:
         found += [
-            (i, "blanks were measured and the settings do not say what to do with them: state blank: subtract, "
-                "preparation or none")
+            (
+                i,
+                "blanks were measured and the settings do not say what to do with them: state blank: subtract, "
+                "preparation or none",
+            )
             for i in np.flatnonzero(blanks > 0).tolist()
         ]
     elif use != "none":
         found += [
-            (i, f"the settings say blank: {use}, and the export holds no blank for {case.analyte(i)}: measure one, or "
-                f"state blank: none")
+            (
+                i,
+                f"the settings say blank: {use}, and the export holds no blank for {case.analyte(i)}: measure one, or "
+                f"state blank: none",
+            )
             for i in np.flatnonzero(case.judged & (blanks == 0)).tolist()
         ]
     found += [

@@ -71,9 +71,7 @@ class Calibrations:
         return Covariance(self.lines.var_intercept, self.lines.covariance, self.lines.var_slope)
 
 
-def nominal_of(
-    readings: Readings, rows: Integers, method: Method
-) -> tuple[Floats, str | None]:
+def nominal_of(readings: Readings, rows: Integers, method: Method) -> tuple[Floats, str | None]:
     """Return nominal concentrations in the result unit, or NaN and the reason why they cannot be converted."""
     try:
         return units.of_column(readings.nominal.take(rows), method.result_unit, method.export_unit), None
@@ -135,7 +133,9 @@ def _refusals(
     for place in np.flatnonzero(~np.isfinite(nominal) | ~np.isfinite(solutions.signal[standard])).tolist():
         solution = int(standard[place])
         at = f"line {readings.line[solutions.rows[solution]]}"
-        sentences = solutions.faults.get(solution) or [f"{at}: {problem or 'a standard without nominal or signal'}"]
+        sentences = solutions.faults.get(solution) or [
+            f"{at}: {problem or 'a standard without nominal or signal'}"
+        ]
         refused.setdefault(int(key[place]), []).extend(sentences)
     for place, index in enumerate(standard.tolist()):
         if index in solutions.faults and int(key[place]) not in refused:

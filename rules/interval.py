@@ -105,7 +105,12 @@ def extrapolation(
 
 
 def read_back(
-    signal: Floats, signal_variance: Floats, intercept: Floats, slope: Floats, covariance: Covariance, t: Floats
+    signal: Floats,
+    signal_variance: Floats,
+    intercept: Floats,
+    slope: Floats,
+    covariance: Covariance,
+    t: Floats,
 ) -> Interval:
     """Return the interval of x = (y - a)/b where y was measured with a variance of its own.
 

@@ -97,7 +97,11 @@ class CheckLimits:
     @property
     def text(self) -> str:
         """Both limits in words."""
-        parts = [f"{word} unless {limit.text}" for word, limit in (("fail", self.fail), ("warn", self.warn)) if limit]
+        parts = [
+            f"{word} unless {limit.text}"
+            for word, limit in (("fail", self.fail), ("warn", self.warn))
+            if limit
+        ]
         return "; ".join(parts) or "off"
 
 
@@ -161,18 +165,3 @@ DEFAULTS: dict[str, CheckLimits] = {
 }
 #: EPA SW-846 7000B, 9.8.1: a spike after preparation is judged more narrowly.
 RECOVERY_AFTER_PREPARATION = _default(fail="80 to 120 %")
-#: The unit that the limits of a check must carry.
-UNITS = {
-    "levels": "",
-    "slope_certainty": "",
-    "correlation": "",
-    "curvature": "",
-    "residual": "%",
-    "addition_size": "",
-    "recovery": "%",
-    "spike_size": "%",
-    "matrix_effect": "%",
-    "repeatability": "%",
-    "check_standard": "%",
-    "blank": "LOQ",
-}

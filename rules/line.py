@@ -188,7 +188,9 @@ def _curvature(
     """p of the quadratic term: the part of it that a line cannot follow, regressed on the residuals."""
     f, dof = quadratic_f(dx, residuals, weights, ss, segments)
     with np.errstate(invalid="ignore"):
-        return np.where(scatter & (dof > 0) & ~np.isnan(f), fdtrc(1.0, np.maximum(dof, 1), np.maximum(f, 0)), np.nan)
+        return np.where(
+            scatter & (dof > 0) & ~np.isnan(f), fdtrc(1.0, np.maximum(dof, 1), np.maximum(f, 0)), np.nan
+        )
 
 
 def quadratic_f(

@@ -33,7 +33,9 @@ def levels(case: Case) -> Check:
         counted = f"{count} distinct addition{'s' if count != 1 else ''}"
         if outcome is Outcome.PASS:
             return counted
-        return f"{counted}: linearity cannot be seen; three near 50, 100 and 150 % of the native level show it"
+        return (
+            f"{counted}: linearity cannot be seen; three near 50, 100 and 150 % of the native level show it"
+        )
 
     return judged(case, "levels", Reported.ADDITIONS, "", value, sentence)
 
@@ -190,7 +192,9 @@ def linear_evidence(case: Case) -> Check:
         ).astype(bool)
     known = np.isfinite(highest) & np.isfinite(limit)
     outcome = np.where(known, np.where(beyond, Outcome.FAIL, Outcome.PASS), Outcome.NOT_EVALUATED)
-    outcome = np.where(known & by_calibration & ~beyond & case.back.below, Outcome.WARN, outcome).astype(np.int8)
+    outcome = np.where(known & by_calibration & ~beyond & case.back.below, Outcome.WARN, outcome).astype(
+        np.int8
+    )
     unit = case.method.result_unit
 
     def sentence(i: int) -> str:

@@ -61,7 +61,11 @@ def _blank(case: Case, i: int) -> str:
 
 def _recovery(case: Case, i: int) -> str:
     low = case.recoveries.headline[i] < 100
-    cause = "the spike volume, the stock and losses in preparation" if low else "the spike volume, the stock and contamination"
+    cause = (
+        "the spike volume, the stock and losses in preparation"
+        if low
+        else "the spike volume, the stock and contamination"
+    )
     if case.reported[i] == Reported.CALIBRATION:
         return (
             f"Keep the vials: check {cause}; then prepare {case.sample(i)} again with three additions and report the "
@@ -116,7 +120,9 @@ def _readings(case: Case, i: int) -> str:
 
 def _matrix(case: Case, i: int) -> str:
     if case.reported[i] == Reported.CALIBRATION:
-        return f"Report {case.sample(i)} by standard additions, or dilute it until the matrix no longer matters."
+        return (
+            f"Report {case.sample(i)} by standard additions, or dilute it until the matrix no longer matters."
+        )
     return f"Report the additions' result of {case.sample(i)}; the calibration does not hold in this matrix."
 
 

@@ -87,7 +87,10 @@ def evaluate(
         top, lowest = of(calibrations.top), of(calibrations.lowest)
         # the standards' nominals are written with a few digits: a sample equal to the top standard is not above it
         above, below = highest > top * (1 + 1e-9), x < lowest * (1 - 1e-9)
-        u_line = np.sqrt(s**2 / p + covariance.intercept + 2 * x * covariance.both + x**2 * covariance.slope) / slope
+        u_line = (
+            np.sqrt(s**2 / p + covariance.intercept + 2 * x * covariance.both + x**2 * covariance.slope)
+            / slope
+        )
         interval = read_back(mean, s**2 / p, intercept, slope, covariance, of(calibrations.t))
         scale = predilution / dilution
         value = np.where(above, np.nan, x * scale)
@@ -114,7 +117,9 @@ def evaluate(
     return ReadBack(results, np.where(has, of_series, -1), x, highest, above, below)
 
 
-def _blank_uncertainty(blanks: Blanks, key: Integers, dilution: Floats, slope: Floats, method: Method) -> Floats:
+def _blank_uncertainty(
+    blanks: Blanks, key: Integers, dilution: Floats, slope: Floats, method: Method
+) -> Floats:
     """Only a preparation blank moves a read-back; a blank in every vessel moves standards and samples alike."""
     if method.blank != "preparation":
         return np.zeros(len(key))
@@ -140,5 +145,3 @@ def _reasons(
         elif of_series[series] < 0:
             reasons[series] = "no calibration in this export"
     return reasons
-
-

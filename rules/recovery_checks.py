@@ -60,7 +60,11 @@ def recovery(case: Case, size: Check) -> Check:
         if outcome is Outcome.NOT_EVALUATED:
             if broken[i]:
                 return "no recovery can be computed: the inputs are faulty"
-            return NOTHING_INDEPENDENT if case.back.calibration[i] < 0 else "the spike is too small for a recovery"
+            return (
+                NOTHING_INDEPENDENT
+                if case.back.calibration[i] < 0
+                else "the spike is too small for a recovery"
+            )
         what = "slope recovery" if levels[i] >= 2 else "recovery"
         found = f"{what} {percent(value[i])}"
         if outcome is Outcome.PASS:

@@ -109,7 +109,9 @@ class _Filling:
         aliquot = self._volume("aliquot", self.readings.aliquot, self.method.bench.aliquot)
         made_up_to = self._volume("made_up_to", self.readings.made_up_to, self.method.bench.made_up_to)
         stated_volume = self._column("spike_volume", self.readings.spike_volume, units.VOLUME, None)
-        stated_added = self._column("added", self.readings.added, self.method.result_unit, self.method.export_unit)
+        stated_added = self._column(
+            "added", self.readings.added, self.method.result_unit, self.method.export_unit
+        )
         # a level is a default, not a second source: only what the export says row by row must agree
         silent = np.isnan(stated_volume) & np.isnan(stated_added)
         spike = np.where(silent, level_volume, stated_volume)
@@ -127,7 +129,9 @@ class _Filling:
         addition = np.where(self.spiked & ~not_added, addition, 0.0)
         self._note(
             self.spiked & ~not_added & ~has_volume & ~has_added & (self.readings.level.codes[self.rows] < 0),
-            lambda _: "a spiked solution without addition: map added, spike_volume or level, or correct the export",
+            lambda _: (
+                "a spiked solution without addition: map added, spike_volume or level, or correct the export"
+            ),
         )
         return Vessels(
             dilution=dilution,
@@ -225,7 +229,9 @@ class _Filling:
         )
         self._note(
             self.spiked & (spike > 0) & np.isnan(aliquot),
-            lambda _: "a volume of standard is stated and the aliquot is not: state bench.aliquot or map aliquot",
+            lambda _: (
+                "a volume of standard is stated and the aliquot is not: state bench.aliquot or map aliquot"
+            ),
         )
         return np.where(self.sample, dilution, 1.0)
 
@@ -267,7 +273,8 @@ class _Filling:
     def _predilution(self) -> Floats:
         stated = self.readings.predilution[self.rows]
         self._note(
-            self.sample & (stated <= 0), lambda i: f"predilution is {stated[i]:g}, which cannot be: correct the export"
+            self.sample & (stated <= 0),
+            lambda i: f"predilution is {stated[i]:g}, which cannot be: correct the export",
         )
         return np.where(self.sample & np.isfinite(stated), stated, self.method.bench.predilution)
 
@@ -295,14 +302,21 @@ class _Filling:
             wanted = [code for code, name in enumerate(self.readings.stock.names) if name == stock.name]
             by_name = needed & mapped & np.isin(mapped_codes, wanted)
             chosen[by_name & self._within_dates(s)] = s
-        self._note_stock_faults(needed, mapped, chosen, valid_count, np.isfinite(content).any(axis=0)[analyte])
+        self._note_stock_faults(
+            needed, mapped, chosen, valid_count, np.isfinite(content).any(axis=0)[analyte]
+        )
         concentration = content[chosen, analyte]
         nowhere = ~np.isfinite(content).any(axis=0)[analyte] & ~mapped
         not_added = needed & (nowhere | ((chosen >= 0) & np.isnan(concentration)))
         return chosen, concentration, not_added
 
     def _note_stock_faults(
-        self, needed: Bools, mapped: Bools, chosen: NDArray[np.int32], count: NDArray[np.int32], somewhere: Bools
+        self,
+        needed: Bools,
+        mapped: Bools,
+        chosen: NDArray[np.int32],
+        count: NDArray[np.int32],
+        somewhere: Bools,
     ) -> None:
         names, stocks = self.readings.analyte.names, self.method.stocks
         analyte = self.readings.analyte.codes[self.rows]

@@ -1,0 +1,170 @@
+"""Bytes to lines: a strict decoding with the declared encodings, marks honoured, line ends of every kind.
+
+A character that does not belong refuses the export; nothing is ever replaced. Lines are numbered as an editor numbers
+them. Nothing here knows what a line means.
+"""
+
+from __future__ import annotations
+
+import codecs
+from dataclasses import dataclass
+from typing import TYPE_CHECKING
+
+from parsers.errors import ExportRefused
+from parsers.patterns import literal_start
+
+if TYPE_CHECKING:
+    import re
+    from collections.abc import Sequence
+
+#: Largest export in bytes: fifty times the longest seen.
+MOST_BYTES = 512 * 1024 * 1024
+#: Longest line in characters: a thousand columns fit, and no pattern runs for minutes.
+MOST_CHARACTERS = 50_000
+
+#: Marks at the beginning of a file, the longer ones first, and the encodings that must be declared for them.
+_MARKS = (
+    (codecs.BOM_UTF32_LE, "utf-32"),
+    (codecs.BOM_UTF32_BE, "utf-32"),
+    (codecs.BOM_UTF8, "utf-8"),
+    (codecs.BOM_UTF16_LE, "utf-16"),
+    (codecs.BOM_UTF16_BE, "utf-16"),
+)
+_REFUSED = "Nothing of this export is read."
+
+
+@dataclass(frozen=True, slots=True)
+class Lines:
+    """A decoded export.
+
+    Attributes
+    ----------
+    name
+        The export, for errors.
+    encoding
+        The declared encoding that matched.
+    text
+        All of it, every line end a line feed.
+    lines
+        Its lines without line ends; line number 1 is ``lines[0]``.
+    """
+
+    name: str
+    encoding: str
+    text: str
+    lines: list[str]
+
+    def __len__(self) -> int:
+        """Return the number of lines."""
+        return len(self.lines)
+
+    def matching(self, pattern: re.Pattern[str], first: int, last: int) -> list[int]:
+        """Return the indices in [first, last) of the lines in which a pattern is found."""
+        start = literal_start(pattern)
+        if start and not self.text.startswith(start) and f"\n{start}" not in self.text:
+            return []
+        search, lines = pattern.search, self.lines
+        if start:
+            return [at for at in range(first, last) if lines[at].startswith(start) and search(lines[at])]
+        return [at for at, line in enumerate(lines[first:last], first) if search(line)]
+
+    def refusal(self, at: int | None, sentence: str, todo: str, column: str | None = None) -> ExportRefused:
+        """Make the error for the line of an index: what is wrong, and what to do."""
+        line = None if at is None else at + 1
+        return ExportRefused(self.name, line, column, f"{sentence}. {_REFUSED} {todo}.")
+
+
+def decode(data: bytes, encodings: Sequence[str], name: str) -> Lines:
+    """Decode an export.
+
+    Parameters
+    ----------
+    data
+        The whole export.
+    encodings
+        Declared encodings, tried in order. A mark at the beginning decides instead, if its encoding is declared.
+    name
+        The export, for errors.
+
+    Raises
+    ------
+    ExportRefused
+        If it is empty or too large, no declared encoding fits, it holds NUL characters, or a line is too long.
+    """
+    if not data:
+        raise _refusal(name, None, "expected lines of text, got an empty file", "Export again")
+    if len(data) > MOST_BYTES:
+        raise _refusal(name, None, f"expected at most {MOST_BYTES} bytes, got {len(data)}", "Export fewer runs at once")
+    encoding, text = _decoded(data, encodings, name)
+    if "\r" in text:
+        text = text.replace("\r\n", "\n").replace("\r", "\n")
+    lines = text.split("\n")
+    if not lines[-1]:
+        lines.pop()
+    longest = max(map(len, lines), default=0)
+    if longest > MOST_CHARACTERS:
+        at = next(at for at, line in enumerate(lines) if len(line) > MOST_CHARACTERS)
+        sentence = f"expected at most {MOST_CHARACTERS} characters in a line, got {len(lines[at])}"
+        raise _refusal(name, at + 1, sentence, "Look whether this is a text export")
+    return Lines(name, encoding, text, lines)
+
+
+def _decoded(data: bytes, encodings: Sequence[str], name: str) -> tuple[str, str]:
+    for mark, marked in _MARKS:
+        if data.startswith(mark):
+            return _marked(data, mark, marked, encodings, name)
+    failures: list[ExportRefused] = []
+    for encoding in encodings:
+        try:
+            if _plain(encoding) in ("utf-16", "utf-32"):
+                sentence = f"expected the mark of {encoding} at the beginning, got none"
+                raise _refusal(name, 1, sentence, f"Declare {encoding}-le or {encoding}-be")
+            text = data.decode("utf-8" if _plain(encoding) == "utf-8" else encoding, "strict")
+            _refuse_nul(text, name)
+        except UnicodeDecodeError as error:
+            failures.append(_undecodable(data, error, encoding, name))
+        except ExportRefused as error:
+            failures.append(error)
+        else:
+            return encoding, text
+    # A NUL says more about what the file is than a byte that another encoding did not know.
+    raise next((failure for failure in failures if "NUL" in failure.sentence), failures[0])
+
+
+def _marked(data: bytes, mark: bytes, marked: str, encodings: Sequence[str], name: str) -> tuple[str, str]:
+    declared = [encoding for encoding in encodings if _plain(encoding).startswith(marked)]
+    if not declared:
+        sentence = f"the file begins with the mark of {marked}, which is not among the declared encodings"
+        raise _refusal(name, 1, f"{sentence} ({', '.join(encodings)})", f"Add {marked} to encodings in the layout")
+    try:
+        text = data.decode("utf-8-sig" if mark == codecs.BOM_UTF8 else marked, "strict")
+    except UnicodeDecodeError as error:
+        raise _undecodable(data, error, marked, name) from error
+    _refuse_nul(text, name)
+    return declared[0], text
+
+
+def _plain(encoding: str) -> str:
+    """Return the usual name of an encoding; the mark of UTF-8 is looked for in any case."""
+    return codecs.lookup(encoding).name.removesuffix("-sig")
+
+
+def _undecodable(data: bytes, error: UnicodeDecodeError, encoding: str, name: str) -> ExportRefused:
+    line = data.count(b"\n", 0, error.start) + 1
+    sentence = f"expected text in {encoding}, got the byte 0x{data[error.start]:02X}, which does not belong there"
+    return _refusal(name, line, sentence, "Declare the right encodings in the layout")
+
+
+def _refuse_nul(text: str, name: str) -> None:
+    at = text.find("\0")
+    if at < 0:
+        return
+    line = text.count("\n", 0, at) + 1
+    todo = "Look whether this is a text export"
+    if text.count("\0") * 3 > len(text):
+        todo = "It looks like UTF-16 without a mark: declare utf-16-le or utf-16-be in the layout"
+    raise _refusal(name, line, "expected text, got a NUL character", todo)
+
+
+def _refusal(name: str, line: int | None, sentence: str, todo: str) -> ExportRefused:
+    return ExportRefused(name, line, None, f"{sentence}. {_REFUSED} {todo}.")

@@ -1,0 +1,174 @@
+"""One export through the worker and into the ledger: its fate is decided here, in one place.
+
+Bad input is refused, a failing sample is an ordinary result, a worker that dies costs an attempt, a defect of the
+program refuses the export and is mailed once. A stop of the service costs nothing. What is computed, and what a
+mail about a sample says, comes from the worker.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, field
+from datetime import timedelta
+from typing import TYPE_CHECKING, Any
+
+import structlog
+
+from watcher import notices
+from watcher.clock import moment
+from watcher.ledger_rows import Fate
+from watcher.outgoing import TargetTaken
+from watcher.replies import Reply, ReplyBroken, read_reply
+from watcher.worker import WorkerFailed
+
+if TYPE_CHECKING:
+    from collections.abc import Mapping
+    from pathlib import Path
+
+    from watcher.addressing import Addressing
+    from watcher.clock import Clock
+    from watcher.copies import Copies
+    from watcher.ledger import Ledger
+    from watcher.ledger_rows import AdoptedSettings, ExportRow
+    from watcher.replies import WantedMail
+    from watcher.service_settings import ServiceSettings
+    from watcher.troubles import Troubles
+    from watcher.worker import Worker
+
+#: Where the worker puts result files, in the records folder.
+STAGING_NAME = "outgoing"
+
+_log = structlog.get_logger("spikewarden.assessment")
+
+
+@dataclass(frozen=True, slots=True)
+class Assessed:
+    """An export as it stands after an evaluation, with the number of series for each verdict."""
+
+    export: ExportRow
+    counts: Mapping[str, int] = field(default_factory=dict)
+
+
+class Assessment:
+    """Evaluates exports.
+
+    Parameters
+    ----------
+    settings
+        Folders and times.
+    adopted
+        The settings in force.
+    worker, ledger, copies, addressing, troubles, clock
+        The parts it works with.
+    """
+
+    def __init__(
+        self,
+        settings: ServiceSettings,
+        adopted: AdoptedSettings,
+        *,
+        worker: Worker,
+        ledger: Ledger,
+        copies: Copies,
+        addressing: Addressing,
+        troubles: Troubles,
+        clock: Clock,
+    ) -> None:
+        self._adopted = adopted
+        self._staging = settings.records / STAGING_NAME
+        self._complete_after = timedelta(seconds=settings.complete_after_seconds)
+        self._worker = worker
+        self._ledger = ledger
+        self._copies = copies
+        self._addressing = addressing
+        self._troubles = troubles
+        self._clock = clock
+
+    def prepare(self) -> None:
+        """Make the folder of result files and remove what an evaluation left that was cut short."""
+        self._staging.mkdir(parents=True, exist_ok=True)
+        wanted = self._ledger.outgoing.staged_files()
+        for path in self._staging.iterdir():
+            if path not in wanted:
+                path.unlink(missing_ok=True)
+
+    def evaluate(self, export: ExportRow, *, final: bool) -> Assessed:
+        """Evaluate an export and record what became of it.
+
+        Parameters
+        ----------
+        export
+            A pending one.
+        final
+            Nothing more is waited for: neither for its last line nor before mails about incomplete samples.
+
+        Raises
+        ------
+        WorkerUnfit, WorkerStopped
+            Nothing was recorded; the export stays as it is.
+        """
+        copy = self._copies.path_of(export.sha256)
+        if not copy.is_file():
+            return self._refuse(
+                export, f"its copy {copy} is missing. Put it back, or export it again changed"
+            )
+        try:
+            request = self._request(export, copy, final=final)
+            reply = read_reply(self._worker.ask(request), self._staging)
+            if reply.fate == "waiting" and request["final"]:
+                raise ReplyBroken("fate", "another one, since nothing more is waited for", "waiting")
+        except (WorkerFailed, ReplyBroken) as error:
+            return self._attempt_failed(export, str(error))
+        if reply.fate == "bug":
+            self._troubles.defect(reply.error or "unnamed", reply.traceback or "")
+            return self._finish(export, _refused(f"defect of the program: {reply.error}"), at_once=final)
+        return self._finish(export, reply, at_once=final)
+
+    def _request(self, export: ExportRow, copy: Path, *, final: bool) -> dict[str, Any]:
+        complete = self._clock.now() - moment(export.accepted_at) >= self._complete_after
+        return {
+            "do": "evaluate",
+            "copy": str(copy),
+            "name": export.name,
+            "sha256": export.sha256,
+            "bytes": export.size,
+            "revision": export.revision,
+            "accepted_at": export.accepted_at,
+            "settings_number": self._adopted.number,
+            "settings_sha256": self._adopted.sha256,
+            "staging": str(self._staging),
+            "final": final or complete,
+            "alerted": sorted(self._ledger.alerted_keys(export.name)),
+        }
+
+    def _finish(self, export: ExportRow, reply: Reply, *, at_once: bool) -> Assessed:
+        mails = (self._addressing.address(wanted, at_once=at_once) for wanted in reply.mails)
+        fate = Fate(
+            state=reply.fate,
+            settings_number=self._adopted.number,
+            layout=reply.layout,
+            files=reply.files,
+            mails=tuple(mail for mail in mails if mail is not None),
+            series=reply.series,
+            counts=reply.counts,
+            problem=reply.problem,
+        )
+        try:
+            self._ledger.finish(export, fate)
+        except TargetTaken as error:
+            return self._refuse(export, str(error))
+        _log.info(
+            "export evaluated", export=export.name, fate=fate.state, counts=fate.counts, problem=fate.problem
+        )
+        return Assessed(self._ledger.export(export.id), reply.counts)
+
+    def _refuse(self, export: ExportRow, reason: str) -> Assessed:
+        return self._finish(export, _refused(reason, notices.refused(export, reason)), at_once=True)
+
+    def _attempt_failed(self, export: ExportRow, reason: str) -> Assessed:
+        _log.warning("evaluation failed", export=export.name, reason=reason)
+        mail = self._addressing.address(notices.poison(export, self._adopted.number, reason))
+        return Assessed(self._ledger.failed_attempt(export, self._adopted.number, reason, mail))
+
+
+def _refused(reason: str, *mails: WantedMail) -> Reply:
+    return Reply("refused", mails=mails, problem=reason)

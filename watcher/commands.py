@@ -1,0 +1,129 @@
+"""The command line: what people type, what they see, and the exit codes that scripts rely on.
+
+Stays light to import, because `watch` runs for months: whatever reads YAML, computes or draws is imported by the
+commands that need it.
+"""
+
+from __future__ import annotations
+
+import sys
+from pathlib import Path
+from typing import TYPE_CHECKING, NoReturn
+
+import click
+
+from watcher.errors import WatcherError
+from watcher.opening import open_laboratory, version
+
+if TYPE_CHECKING:
+    from collections.abc import Callable
+
+#: Exit codes of `once` and `explain`: everything passes; a sample fails or is incomplete; something was not done.
+ALL_PASS, SAMPLE_FAILS, NOT_DONE = 0, 1, 2
+#: Exit codes of `status`.
+WELL, ATTENTION, NOT_RUNNING = 0, 1, 2
+
+_FILE = click.Path(path_type=Path, dir_okay=False)
+
+
+def _with_config(command: Callable[..., None]) -> Callable[..., None]:
+    return click.option(
+        "--config", type=_FILE, default=Path("config.yaml"), show_default=True, help="The laboratory's settings."
+    )(command)
+
+
+@click.group(context_settings={"help_option_names": ["-h", "--help"], "max_content_width": 80})
+@click.version_option(version(), prog_name="spikewarden")
+def main() -> None:
+    """Judge standard additions and recoveries while the vials are on the rack.
+
+    Watches a folder for an instrument's text exports, evaluates each one, writes
+    result files and mails what fails with what to do next.
+    """
+
+
+@main.command()
+@_with_config
+def watch(config: Path) -> None:
+    """Watch the exports folder until stopped."""
+    try:
+        with open_laboratory(config, "watch") as laboratory:
+            folders = ", ".join(str(folder) for folder in laboratory.settings.exports)
+            click.echo(f"Watching {folders}; results go to {laboratory.settings.results}. Stop with Ctrl-C.", err=True)
+            laboratory.service.run()
+    except WatcherError as error:
+        _give_up(error)
+
+
+@main.command()
+@_with_config
+def once(config: Path) -> None:
+    """Take in what is there, evaluate it, and end.
+
+    Exit 0: all pass. 1: a sample fails or is incomplete. 2: something could not be
+    read or done.
+    """
+    from watcher import account_of_once  # noqa: PLC0415 - see the module's docstring
+
+    try:
+        with open_laboratory(config, "once") as laboratory:
+            report = laboratory.service.once()
+            code = account_of_once.show(report, laboratory.settings, laboratory.ledger)
+    except WatcherError as error:
+        _give_up(error)
+    sys.exit(code)
+
+
+@main.command()
+@_with_config
+def check(config: Path) -> None:
+    """Check settings and layouts; name all faults at once.
+
+    Exit 0: nothing to find fault with. 2: faults.
+    """
+    from watcher import inspection  # noqa: PLC0415
+
+    sys.exit(inspection.check(config))
+
+
+@main.command()
+@click.argument("export", type=_FILE)
+@_with_config
+def explain(export: Path, config: Path) -> None:
+    """Show how EXPORT is understood and what would come of it; write nothing.
+
+    Exit codes as for once.
+    """
+    from watcher import inspection  # noqa: PLC0415
+
+    sys.exit(inspection.explain(config, export))
+
+
+@main.command()
+@_with_config
+def status(config: Path) -> None:
+    """Tell how the service is.
+
+    Exit 0: well. 1: something needs attention. 2: it is not running.
+    """
+    from watcher import inspection  # noqa: PLC0415
+
+    sys.exit(inspection.status(config))
+
+
+@main.command()
+@click.argument("folder", type=click.Path(path_type=Path, file_okay=False), default=Path("spikewarden-demo"))
+def demo(folder: Path) -> None:
+    """Run an invented laboratory in FOLDER and show what arrives.
+
+    Writes settings, layouts and exports there, runs the real service on them with a
+    mail server of its own on this computer, and shows results and mails.
+    """
+    from watcher import demo as demonstration  # noqa: PLC0415
+
+    sys.exit(demonstration.run(folder))
+
+
+def _give_up(error: WatcherError) -> NoReturn:
+    click.echo(str(error), err=True)
+    sys.exit(NOT_DONE)

@@ -1,0 +1,273 @@
+"""The worker: reads a copied export through its layout, evaluates it and writes its result files into the records.
+
+Runs in a process of its own (`python -m watcher.evaluation`), asked by the service; see `watcher.worker_loop` for the
+conversation. It knows no ledger and sends nothing: it answers with what should be recorded, delivered and mailed.
+"""
+
+from __future__ import annotations
+
+import calendar
+import hashlib
+from dataclasses import dataclass
+from functools import partial
+from importlib import metadata
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+from parsers.errors import ExportRefused
+from parsers.read import claims, is_finished, read
+from rules.evaluate import evaluate
+from watcher import mail, results
+from watcher.clock import moment
+from watcher.disk import Disk
+from watcher.names import target
+from watcher.record import Export, number
+from watcher.settings import Settings, SettingsInvalid, Snapshot, compile_snapshot, read_files
+from watcher.worker_loop import serve
+
+if TYPE_CHECKING:
+    from parsers.layout import Layout
+    from rules.method import Method
+    from rules.outcomes import Outcomes
+
+
+def program_version() -> str:
+    """Return the version that stands in every record."""
+    return metadata.version("spikewarden")
+
+
+@dataclass(frozen=True, slots=True)
+class Job:
+    """One export that is to be evaluated."""
+
+    name: str
+    data: bytes
+    revision: int
+    accepted_at: str
+
+    @property
+    def sha256(self) -> str:
+        """Hash of the content."""
+        return hashlib.sha256(self.data).hexdigest()
+
+
+@dataclass(frozen=True, slots=True)
+class Evaluated:
+    """An export that was evaluated, with the words for its record."""
+
+    export: Export
+    layout: Layout
+    outcomes: Outcomes
+
+
+class Unclaimed(Exception):
+    """No layout claims the export."""
+
+
+class Unfinished(Exception):
+    """The line that ends the export is not there yet."""
+
+    def __init__(self, layout: str) -> None:
+        super().__init__(layout)
+        self.layout = layout
+
+
+def choose_layout(settings: Settings, job: Job) -> tuple[Layout, Method]:
+    """Return the only layout that claims an export.
+
+    Raises
+    ------
+    Unclaimed
+        If none does.
+    ExportRefused
+        If several do.
+    """
+    claiming = [pair for pair in settings.layouts if claims(pair[0], job.name, job.data)]
+    if not claiming:
+        raise Unclaimed
+    if len(claiming) > 1:
+        names = " and ".join(f"'{layout.layout}' ({layout.document.path})" for layout, _ in claiming)
+        raise ExportRefused(
+            job.name,
+            None,
+            None,
+            f"expected one layout to claim it, got {names}. Nothing of it was evaluated. Narrow claims.file or claims.text "
+            f"of one of them.",
+        )
+    return claiming[0]
+
+
+def evaluate_job(settings: Settings, job: Job, *, final: bool) -> Evaluated:
+    """Read and evaluate one export.
+
+    Raises
+    ------
+    Unclaimed, Unfinished, ExportRefused
+        If there is nothing to evaluate, or not yet.
+    """
+    layout, method = choose_layout(settings, job)
+    if not final and not is_finished(layout, job.data):
+        raise Unfinished(layout.layout)
+    readings = read(job.data, layout, job.name)
+    outcomes = evaluate(readings, method, _local_seconds(job.accepted_at))
+    export = Export(
+        name=job.name,
+        sha256=job.sha256,
+        size=len(job.data),
+        revision=job.revision,
+        accepted_at=job.accepted_at,
+        layout=layout.layout,
+        settings=settings.sha256,
+        program=program_version(),
+    )
+    return Evaluated(export, layout, outcomes)
+
+
+def _local_seconds(accepted_at: str) -> float:
+    """Return a moment of the ledger as seconds of local time, the time that exports and bottles are labelled with."""
+    return float(calendar.timegm(moment(accepted_at).astimezone().timetuple()))
+
+
+def stage(evaluated: Evaluated, settings: Settings, folder: Path, disk: Disk) -> list[dict[str, str]]:
+    """Write the result files durably into the records; return where each belongs."""
+    export = evaluated.export
+    contents = {
+        "csv": results.csv_bytes(evaluated.outcomes, export, settings.file.csv),
+        "json": results.json_bytes(evaluated.outcomes, export),
+    }
+    names = {
+        extension: target(export.name, export.revision, export.accepted_at, extension)
+        for extension in contents
+    }
+    staged = {extension: f"{export.sha256[:16]}-{Path(name).name}" for extension, name in names.items()}
+    folder.mkdir(parents=True, exist_ok=True)
+    disk.write_all(folder, {staged[extension]: content for extension, content in contents.items()}, "stage")
+    return [
+        {
+            "target": names[extension],
+            "staged": str(folder / staged[extension]),
+            "sha256": hashlib.sha256(content).hexdigest(),
+        }
+        for extension, content in contents.items()
+    ]
+
+
+class Worker:
+    """Answers the service's requests with the settings that it was last given."""
+
+    def __init__(self) -> None:
+        self._settings: Settings | None = None
+        self._disk = Disk()
+
+    def handle(self, request: dict[str, Any]) -> dict[str, Any]:
+        """Answer one request."""
+        match request["do"]:
+            case "read settings":
+                return self._read_settings(Path(request["config"]))
+            case "adopt":
+                self._settings = compile_snapshot(Snapshot.of_plain(request["snapshot"]))
+                return {"ok": True}
+            case "evaluate":
+                return self._evaluate(request)
+            case unknown:
+                raise ValueError(f"unknown request {unknown!r}")
+
+    def _read_settings(self, config: Path) -> dict[str, Any]:
+        """Read and validate the settings, which the service itself cannot, and work with them from now on."""
+        try:
+            self._settings = settings = compile_snapshot(read_files(config))
+        except SettingsInvalid as invalid:
+            return {"faults": [str(fault) for fault in invalid.faults], "body": None, "service": None}
+        return {"faults": [], "body": settings.snapshot.body, "service": settings.service()}
+
+    def _evaluate(self, request: dict[str, Any]) -> dict[str, Any]:
+        if self._settings is None:
+            raise ValueError("asked to evaluate before settings were adopted")
+        job = Job(
+            request["name"], Path(request["copy"]).read_bytes(), request["revision"], request["accepted_at"]
+        )
+        answer = partial(_answer, name=job.name)
+        try:
+            evaluated = evaluate_job(self._settings, job, final=request["final"])
+        except Unclaimed:
+            return answer("unclaimed", problem=unclaimed_sentence(self._settings))
+        except Unfinished as unfinished:
+            return answer("waiting", layout=unfinished.layout)
+        except ExportRefused as refused:
+            letter = mail.refusal(job.name, str(refused), job.sha256)
+            return answer("refused", problem=str(refused), mails=[letter.plain()])
+        outcomes = evaluated.outcomes
+        letters = mail.mails(
+            outcomes, evaluated.export, self._settings.file.complete_after, request["alerted"]
+        )
+        return answer(
+            "done",
+            layout=evaluated.layout.layout,
+            files=stage(evaluated, self._settings, Path(request["staging"]), self._disk),
+            mails=[letter.plain() for letter in letters],
+            series=series_index(outcomes),
+            verdicts=verdict_counts(outcomes),
+            problems=[str(problem) for problem in outcomes.case.readings.problems],
+        )
+
+
+def _answer(  # noqa: PLR0913 - the reply has these parts
+    fate: str,
+    *,
+    name: str,
+    layout: str | None = None,
+    problem: str | None = None,
+    files: list[dict[str, str]] | None = None,
+    mails: list[dict[str, Any]] | None = None,
+    series: list[dict[str, Any]] | None = None,
+    verdicts: dict[str, int] | None = None,
+    problems: list[str] | None = None,
+) -> dict[str, Any]:
+    return {
+        "fate": fate,
+        "name": name,
+        "layout": layout,
+        "problem": problem,
+        "files": files or [],
+        "mails": mails or [],
+        "series": series or [],
+        "verdicts": verdicts or {},
+        "problems": problems or [],
+    }
+
+
+def unclaimed_sentence(settings: Settings) -> str:
+    """Say that no layout claims an export, and which were tried."""
+    tried = ", ".join(f"'{layout.layout}'" for layout, _ in settings.layouts)
+    return f"no layout claims it (tried {tried}). Nothing of it was evaluated. Widen claims of a layout, or write one."
+
+
+def series_index(outcomes: Outcomes) -> list[dict[str, Any]]:
+    """Return one line for each series, for the ledger's index."""
+    case = outcomes.case
+    values = case.reported_value()
+    return [
+        {
+            "sample": case.sample(i),
+            "analyte": case.analyte(i),
+            "channel": case.channel(i),
+            "attempt": int(case.series.attempt[i]),
+            "verdict": outcomes.verdict_of(i).word,
+            "value": None if i in case.faults else number(values[i]),
+            "unit": case.method.result_unit,
+        }
+        for i in range(len(case))
+    ]
+
+
+def verdict_counts(outcomes: Outcomes) -> dict[str, int]:
+    """Count the series of each verdict."""
+    counts: dict[str, int] = {}
+    for i in range(len(outcomes.case)):
+        word = outcomes.verdict_of(i).word
+        counts[word] = counts.get(word, 0) + 1
+    return counts
+
+
+if __name__ == "__main__":
+    serve(Worker().handle)

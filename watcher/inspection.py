@@ -1,0 +1,208 @@
+"""Commands that look and change nothing: `check`, `explain`, `status`."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from datetime import UTC, datetime
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+from parsers.errors import ExportRefused
+from parsers.read import claims
+from rules.outcomes import Verdict
+from watcher.clock import SystemClock, moment, stamp
+from watcher.evaluation import Job, Unclaimed, evaluate_job, unclaimed_sentence
+from watcher.explanation import explain as print_explanation
+from watcher.folder import Folder
+from watcher.health import read_status
+from watcher.settings import Settings, SettingsInvalid, compile_snapshot, read_files
+from watcher.terminal import console, heading, lines, table
+
+if TYPE_CHECKING:
+    from collections.abc import Iterator
+
+    from rules.outcomes import Outcomes
+
+ALL_PASS, SAMPLE_FAILS, NOT_DONE = 0, 1, 2
+WELL, ATTENTION, NOT_RUNNING = 0, 1, 2
+#: A heartbeat older than so many scans says that the service hangs.
+STALE_SCANS = 6
+#: … but never sooner than this, since an evaluation may take its time.
+STALE_SECONDS = 180.0
+
+
+def _settings(config: Path) -> Settings | None:
+    """Return the settings, or None after naming their faults on standard error."""
+    try:
+        return compile_snapshot(read_files(config))
+    except SettingsInvalid as invalid:
+        faults = sorted(invalid.faults, key=lambda fault: (fault.path, fault.line))
+        err = console(error=True)
+        lines(err, (str(fault) for fault in faults))
+        lines(err, [f"{len(faults)} fault{'s' if len(faults) != 1 else ''} in all."])
+        return None
+
+
+def check(config: Path) -> int:
+    """Name every fault of settings and layouts, and exports that two layouts claim."""
+    settings = _settings(config)
+    if settings is None:
+        return NOT_DONE
+    doubled = list(_claimed_twice(settings))
+    if doubled:
+        lines(console(error=True), doubled)
+        return NOT_DONE
+    out = console()
+    file = settings.file
+    lines(out, [f"{config}: no fault found. {file.laboratory}, settings {settings.sha256[:12]}"])
+    heading(out, "Layouts")
+    table(out, ("layout", "file", "reports", "blank"), [
+        (layout.layout, layout.document.path, method.report, method.blank or "not stated")
+        for layout, method in settings.layouts
+    ])  # fmt: skip
+    heading(out, "Limits")
+    lines(out, _limits(settings))
+    return ALL_PASS
+
+
+def _limits(settings: Settings) -> Iterator[str]:
+    stated = settings.file.limits.stated()
+    if stated:
+        yield from (f"{name}: {limits.text}" for name, limits in stated.items())
+    from rules.limits import DEFAULTS  # noqa: PLC0415
+
+    defaults = [name for name in DEFAULTS if name not in stated]
+    if defaults:
+        yield f"Not the laboratory's decision yet, defaults hold: {', '.join(defaults)}"
+
+
+def _claimed_twice(settings: Settings) -> Iterator[str]:
+    for folder in settings.file.folders.exports:
+        root = settings.path(folder)
+        if not root.is_dir():
+            yield f"{root}: expected the exports folder. Nothing can be taken in. Make it or correct folders.exports."
+            continue
+        pattern = "**/*" if settings.file.watching.subfolders else "*"
+        for path in sorted(root.glob(pattern)):
+            if path.is_file() and not path.is_symlink():
+                name = path.relative_to(root).as_posix()
+                data = path.read_bytes()
+                claiming = [layout.layout for layout, _ in settings.layouts if claims(layout, name, data)]
+                if len(claiming) > 1:
+                    yield (
+                        f"{name}: expected one layout to claim it, got {' and '.join(claiming)}. It would be refused. "
+                        f"Narrow claims.file or claims.text of one of them."
+                    )
+
+
+def explain(config: Path, export: Path) -> int:
+    """Show how an export is understood and what would come of it."""
+    settings = _settings(config)
+    if settings is None:
+        return NOT_DONE
+    err = console(error=True)
+    try:
+        data = export.read_bytes()
+    except OSError as error:
+        lines(err, [f"{export}: {(error.strerror or str(error)).lower()}. Nothing to explain. Correct the path."])
+        return NOT_DONE
+    job = Job(_name(settings, export), data, 1, stamp(SystemClock().now()))
+    try:
+        evaluated = evaluate_job(settings, job, final=True)
+    except Unclaimed:
+        lines(err, [f"{job.name}: {unclaimed_sentence(settings)}"])
+        return NOT_DONE
+    except ExportRefused as refused:
+        lines(err, [f"refused: {refused}"])
+        return NOT_DONE
+    print_explanation(console(), evaluated, settings.file.complete_after)
+    return _code(evaluated.outcomes)
+
+
+def _name(settings: Settings, export: Path) -> str:
+    """Return the export's name as the service would call it."""
+    for folder in settings.file.folders.exports:
+        root = settings.path(folder).resolve()
+        if export.resolve().is_relative_to(root):
+            return export.resolve().relative_to(root).as_posix()
+    return export.name
+
+
+def _code(outcomes: Outcomes) -> int:
+    failing = any(outcomes.verdict_of(i) in (Verdict.FAIL, Verdict.INCOMPLETE) for i in range(len(outcomes.case)))
+    return SAMPLE_FAILS if failing else ALL_PASS
+
+
+def status(config: Path) -> int:
+    """Tell how the service is, from the heartbeat that it leaves and the lock that it holds."""
+    settings = _settings(config)
+    if settings is None:
+        return NOT_RUNNING
+    records = settings.path(settings.file.folders.records)
+    found = read_status(records)
+    out = console()
+    if found.heartbeat is None:
+        lines(out, [f"Not running: no service has worked with {records} yet. Start it with `spikewarden watch`."])
+        return NOT_RUNNING
+    account = _Account(found.heartbeat, settings)
+    attention = account.attention()
+    age = (datetime.now(UTC) - moment(found.heartbeat["written_at"])).total_seconds()
+    if not found.held:
+        lines(out, [f"Not running. Last heartbeat {account.age(age)} ago, at {found.heartbeat['written_at']}."])
+    elif age > max(STALE_SECONDS, STALE_SCANS * settings.file.watching.scan):
+        attention.insert(0, f"The service holds its records and has not moved for {account.age(age)}: restart it.")
+    else:
+        lines(out, [f"Running since {found.heartbeat['started_at']}, pid {found.heartbeat['pid']}."])
+    account.show()
+    if attention:
+        heading(out, "Needs attention")
+        lines(out, attention)
+    if not found.held:
+        return NOT_RUNNING
+    return ATTENTION if attention else WELL
+
+
+@dataclass(frozen=True, slots=True)
+class _Account:
+    """The heartbeat in words."""
+
+    beat: dict[str, Any]
+    settings: Settings
+
+    def show(self) -> None:
+        out = console()
+        counts = ", ".join(f"{count} {state}" for state, count in sorted(self.beat["counts"].items())) or "none yet"
+        lines(
+            out,
+            [
+                f"exports      {counts}",
+                f"last export  {self.beat['last_export'] or 'none since start'}",
+                f"last scan    {self.beat['last_scan_at'] or 'none yet'}",
+                f"mails        {self.beat['undelivered_mails']['count']} waiting, "
+                f"{self.beat['refused_mails']['count']} refused by the server",
+                f"files        {self.beat['undelivered_files']['count']} waiting",
+            ],
+        )
+
+    def attention(self) -> list[str]:
+        found = list(self.beat["problems"])
+        for export in self.beat["refused"]:
+            problem = export["problem"] or "not evaluated"
+            prefix = "" if problem.startswith(export["name"]) else f"{export['name']}: "
+            found.append(f"{export['state']}: {prefix}{problem}")
+        for what, word in (("undelivered_mails", "mails wait"), ("refused_mails", "mails were refused for good")):
+            waiting = self.beat[what]
+            if waiting["count"] and waiting["last_error"]:
+                found.append(f"{waiting['count']} {word}: {waiting['last_error']}")
+        files = self.beat["undelivered_files"]
+        if files["count"] and files["last_error"]:
+            found.append(f"{files['count']} result files wait: {files['last_error']}")
+        return found
+
+    @staticmethod
+    def age(seconds: float) -> str:
+        """Write a length of time roughly."""
+        for size, unit in ((86400.0, "days"), (3600.0, "hours"), (60.0, "minutes")):
+            if seconds >= 2 * size:
+                return f"{seconds / size:.0f} {unit}"
+        return f"{seconds:.0f} s"

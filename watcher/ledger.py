@@ -1,0 +1,351 @@
+"""The ledger: what was adopted, what came in, what became of it. The only memory of the service.
+
+Each method is one transaction; either all it says is recorded, durably, or nothing is. What waits for delivery is
+kept by `watcher.outgoing`, reached as `Ledger.outgoing`. Nothing here reads exports or computes.
+"""
+
+from __future__ import annotations
+
+import hashlib
+import json
+from datetime import timedelta
+from typing import TYPE_CHECKING
+
+from watcher.clock import SystemClock, stamp
+from watcher.database import Database, LedgerUnusable
+from watcher.ledger_entries import append_entry
+from watcher.ledger_rows import AdoptedSettings, ExportRow, RefusedExport, SeriesRow
+from watcher.outgoing import WITHDRAWABLE, Outgoing, queue_files, queue_mail, withdraw_incomplete
+
+if TYPE_CHECKING:
+    import sqlite3
+    from pathlib import Path
+
+    from watcher.clock import Clock
+    from watcher.ledger_rows import Fate, QueuedMail
+
+#: The ledger's file in the records folder.
+LEDGER_NAME = "ledger.sqlite"
+#: Evaluations that may end with the worker's death before an export is refused.
+ATTEMPTS_ALLOWED = 3
+
+
+class Ledger:
+    """The open ledger of a records folder; use it as a context manager or close it.
+
+    Parameters
+    ----------
+    records
+        The records folder; made if it is not there.
+    clock
+        Where times come from.
+
+    Raises
+    ------
+    LedgerUnusable
+        It is damaged, newer than this program, held by another process, or was removed while the copies were not.
+    """
+
+    def __init__(self, records: Path, clock: Clock | None = None) -> None:
+        self._clock = clock or SystemClock()
+        records.mkdir(parents=True, exist_ok=True)
+        path = records / LEDGER_NAME
+        copies = records / "copies"
+        if not path.exists() and copies.is_dir() and any(copies.iterdir()):
+            raise LedgerUnusable(
+                path,
+                f"it is missing, although {copies} holds copies of exports taken in before",
+                "Put the ledger back from the backup; or, to begin anew and be mailed everything again, "
+                "move the whole records folder away.",
+            )
+        self._database = Database(path)
+        self.outgoing = Outgoing(self._database, self._clock)
+
+    def __enter__(self) -> Ledger:
+        return self
+
+    def __exit__(self, *_: object) -> None:
+        self.close()
+
+    @property
+    def changes(self) -> int:
+        """A number that grows with every transaction; tells whether anything changed."""
+        return self._database.changes
+
+    def close(self) -> None:
+        """Close the file."""
+        self._database.close()
+
+    # -- settings ----------------------------------------------------------------------------------------------
+
+    def current_settings(self) -> AdoptedSettings | None:
+        """Return the settings in force, or None where nothing was adopted yet."""
+        rows = self._database.rows("SELECT number, sha256, body FROM settings ORDER BY number DESC LIMIT 1")
+        return AdoptedSettings(*rows[0]) if rows else None
+
+    def adopt_settings(self, body: str, account: str, reason: str, difference: str = "") -> int:
+        """Put settings in force.
+
+        Parameters
+        ----------
+        body
+            The whole of them as JSON text; kept and hashed as given.
+        account, reason
+            Who adopted them and why.
+        difference
+            How they differ from those before, key by key.
+
+        Returns
+        -------
+        int
+            Their number; that of the current ones where the text is the same.
+        """
+        sha256 = hashlib.sha256(body.encode()).hexdigest()
+        now = self._clock.now()
+        with self._database.transaction("adopt") as txn:
+            current = txn.execute(
+                "SELECT number, sha256 FROM settings ORDER BY number DESC LIMIT 1"
+            ).fetchone()
+            if current is not None and current["sha256"] == sha256:
+                return int(current["number"])
+            number = 1 if current is None else int(current["number"]) + 1
+            txn.execute(
+                "INSERT INTO settings VALUES (?, ?, ?, ?, ?, ?, ?)",
+                (number, sha256, body, stamp(now), account, reason, difference),
+            )
+            facts = {"number": number, "sha256": sha256, "account": account, "reason": reason}
+            append_entry(txn, "adopt", None, now, facts)
+            return number
+
+    # -- exports -----------------------------------------------------------------------------------------------
+
+    def knows(self, name: str, sha256: str) -> bool:
+        """Tell whether this content was taken in under this name before."""
+        query = "SELECT 1 FROM exports WHERE name = ? AND sha256 = ?"
+        return bool(self._database.rows(query, (name, sha256)))
+
+    def accept(self, name: str, sha256: str, size: int) -> ExportRow | None:
+        """Take in an export whose copy is durable.
+
+        An older content of the same name that still waited for its last line is superseded.
+
+        Returns
+        -------
+        ExportRow or None
+            None where this content was taken in under this name before.
+        """
+        now = self._clock.now()
+        with self._database.transaction("accept") as txn:
+            export_id = txn.execute(
+                "INSERT INTO exports (name, sha256, bytes, state, accepted_at) VALUES (?, ?, ?, 'accepted', ?) "
+                "ON CONFLICT DO NOTHING RETURNING id",
+                (name, sha256, size, stamp(now)),
+            ).fetchone()
+            if export_id is None:
+                return None
+            txn.execute(
+                "UPDATE exports SET state = 'superseded', finished_at = ? "
+                "WHERE name = ? AND state = 'waiting' AND id <> ?",
+                (stamp(now), name, export_id["id"]),
+            )
+            append_entry(txn, "accept", export_id["id"], now, {"name": name, "sha256": sha256, "bytes": size})
+            return _export(txn.execute(f"{_EXPORTS} WHERE e.id = ?", (export_id["id"],)).fetchone())
+
+    def export(self, export_id: int) -> ExportRow:
+        """Return an export as it stands."""
+        return _export(self._database.rows(f"{_EXPORTS} WHERE e.id = ?", (export_id,))[0])
+
+    def series_of(self, export_id: int) -> list[SeriesRow]:
+        """Return the index of an export's series."""
+        query = "SELECT sample, analyte, channel, attempt, verdict, result, unit FROM series WHERE export_id = ?"
+        return [SeriesRow(*row) for row in self._database.rows(query, (export_id,))]
+
+    def pending(
+        self, settings_number: int, *, complete_after_seconds: float, limit: int = 100
+    ) -> list[ExportRow]:
+        """Exports to evaluate now, fewest attempts first, then oldest first.
+
+        Those are: accepted; waiting for longer than `complete_after_seconds`; and refused, unclaimed or waiting
+        under other settings than `settings_number`. Only the newest content of a name is taken in again, and no
+        content comes before an older one of its name: revisions keep their order.
+        """
+        long_ago = stamp(self._clock.now() - timedelta(seconds=complete_after_seconds))
+        rows = self._database.rows(
+            f"{_EXPORTS} WHERE (e.state = 'accepted' "
+            "AND NOT EXISTS (SELECT 1 FROM exports o WHERE o.name = e.name AND o.id < e.id "
+            "AND o.state = 'accepted')) "
+            "OR (e.state = 'waiting' AND (e.accepted_at <= :long_ago OR e.settings_number <> :settings)) "
+            "OR (e.state IN ('refused', 'unclaimed') AND e.settings_number <> :settings "
+            "AND NOT EXISTS (SELECT 1 FROM exports n WHERE n.name = e.name AND n.id > e.id)) "
+            "ORDER BY e.attempts, e.id LIMIT :limit",
+            {"settings": settings_number, "long_ago": long_ago, "limit": limit},
+        )
+        return [_export(row) for row in rows]
+
+    def finish(self, export: ExportRow, fate: Fate) -> int:
+        """Record what became of an export: state, index of series, result files, mails and entry, all or nothing.
+
+        Undelivered mails about incomplete samples in earlier content of the same name are withdrawn.
+
+        Returns
+        -------
+        int
+            The number of the entry.
+
+        Raises
+        ------
+        TargetTaken
+            A result file belongs to another export; nothing was recorded.
+        """
+        now = self._clock.now()
+        with self._database.transaction("finish") as txn:
+            txn.execute(
+                "UPDATE exports SET state = ?, revision = ?, settings_number = ?, layout = ?, finished_at = ?, "
+                "problem = ?, counts = ? WHERE id = ?",
+                (
+                    fate.state,
+                    export.revision if fate.state == "done" else None,
+                    fate.settings_number,
+                    fate.layout,
+                    stamp(now),
+                    fate.problem,
+                    json.dumps(dict(fate.counts), sort_keys=True),
+                    export.id,
+                ),
+            )
+            _index_series(txn, export.id, fate)
+            queue_files(txn, export.id, fate.files, now)
+            withdrawn = withdraw_incomplete(txn, export.name)
+            queued = [mail.message_id for mail in fate.mails if queue_mail(txn, export.id, mail, now)]
+            return append_entry(
+                txn,
+                fate.state,
+                export.id,
+                now,
+                _facts(export, fate) | {"mails": queued, "withdrawn": withdrawn},
+            )
+
+    def failed_attempt(
+        self, export: ExportRow, settings_number: int, reason: str, last_mail: QueuedMail | None
+    ) -> ExportRow:
+        """Record that an evaluation ended with the worker's death; the third one refuses the export.
+
+        Parameters
+        ----------
+        export
+            The export; one that was taken in again under new settings starts counting anew.
+        settings_number
+            The settings it was evaluated under.
+        reason
+            What happened.
+        last_mail
+            What to mail if this was the last attempt.
+
+        Returns
+        -------
+        ExportRow
+            The export as it stands now.
+        """
+        now = self._clock.now()
+        attempts = export.attempts + 1 if export.state == "accepted" else 1
+        refused = attempts >= ATTEMPTS_ALLOWED
+        with self._database.transaction("attempt") as txn:
+            txn.execute(
+                "UPDATE exports SET state = ?, attempts = ?, settings_number = ?, problem = ?, finished_at = ? "
+                "WHERE id = ?",
+                (
+                    "refused" if refused else "accepted",
+                    attempts,
+                    settings_number,
+                    reason,
+                    stamp(now) if refused else None,
+                    export.id,
+                ),
+            )
+            if refused and last_mail is not None:
+                queue_mail(txn, export.id, last_mail, now)
+            facts = {"attempts": attempts, "reason": reason, "refused": refused}
+            append_entry(txn, "attempt failed", export.id, now, facts)
+        return self.export(export.id)
+
+    # -- mails that belong to no export, and what was mailed ------------------------------------------------------
+
+    def report(self, mail: QueuedMail) -> bool:
+        """Queue a mail of the service itself; returns False where it was mailed before."""
+        now = self._clock.now()
+        with self._database.transaction("report") as txn:
+            queued = queue_mail(txn, None, mail, now)
+            if queued:
+                append_entry(txn, "report", None, now, {"keys": list(mail.keys), "mail": mail.message_id})
+            return queued
+
+    def mailed(self, key: str) -> bool:
+        """Tell whether something was mailed before."""
+        return bool(self._database.rows("SELECT 1 FROM alerts WHERE key = ?", (key,)))
+
+    def alerted_keys(self, name: str) -> set[str]:
+        """What was mailed about an export name, without what newer content would withdraw."""
+        rows = self._database.rows(
+            "SELECT key FROM alerts JOIN exports ON exports.id = alerts.export_id WHERE exports.name = :name "
+            f"AND (mail_id IS NULL OR mail_id NOT IN ({WITHDRAWABLE}))",
+            {"name": name},
+        )
+        return {row["key"] for row in rows}
+
+    def unclaimed(self) -> list[ExportRow]:
+        """Exports that no layout claims, newest content of each name, oldest first."""
+        rows = self._database.rows(
+            f"{_EXPORTS} WHERE e.state = 'unclaimed' "
+            "AND NOT EXISTS (SELECT 1 FROM exports n WHERE n.name = e.name AND n.id > e.id) ORDER BY e.id"
+        )
+        return [_export(row) for row in rows]
+
+    # -- how things stand ----------------------------------------------------------------------------------------
+
+    def counts(self) -> dict[str, int]:
+        """State to number of exports."""
+        return dict(map(tuple, self._database.rows("SELECT state, count(*) FROM exports GROUP BY state")))
+
+    def refused(self, limit: int = 50) -> list[RefusedExport]:
+        """Exports that gave no results, newest first; older contents of a name that has newer ones are left out."""
+        rows = self._database.rows(
+            "SELECT name, state, problem, attempts FROM exports e "
+            "WHERE (state IN ('refused', 'unclaimed') OR (state = 'accepted' AND attempts > 0)) "
+            "AND NOT EXISTS (SELECT 1 FROM exports n WHERE n.name = e.name AND n.id > e.id) "
+            "ORDER BY id DESC LIMIT ?",
+            (limit,),
+        )
+        return [RefusedExport(*row) for row in rows]
+
+
+_EXPORTS = (
+    "SELECT e.id, e.name, e.sha256, e.bytes, e.state, coalesce(e.revision, 1 + (SELECT count(*) FROM exports d "
+    "WHERE d.name = e.name AND d.id < e.id AND d.state = 'done')), e.settings_number, e.attempts, e.accepted_at, "
+    "e.problem FROM exports e"
+)
+
+
+def _export(row: sqlite3.Row) -> ExportRow:
+    return ExportRow(*row)
+
+
+def _index_series(txn: sqlite3.Connection, export_id: int, fate: Fate) -> None:
+    txn.execute("DELETE FROM series WHERE export_id = ?", (export_id,))
+    txn.executemany(
+        "INSERT INTO series VALUES (?, ?, ?, ?, ?, ?, ?, ?)",
+        [
+            (export_id, s.sample, s.analyte, s.channel, s.attempt, s.verdict, s.result, s.unit)
+            for s in fate.series
+        ],
+    )
+
+
+def _facts(export: ExportRow, fate: Fate) -> dict[str, object]:
+    return {
+        "revision": export.revision,
+        "settings": fate.settings_number,
+        "layout": fate.layout,
+        "counts": dict(fate.counts),
+        "files": {each.target: each.sha256 for each in fate.files},
+        "problem": fate.problem,
+    }

@@ -1,0 +1,293 @@
+"""What a mail says: first what to do, then what is affected, where the vials are, why, the numbers, the record.
+
+Plain text of 72 columns for a phone. One mail for the failures of an export, grouped by cause. Nothing here knows a
+mail server, a clock or a queue.
+"""
+
+from __future__ import annotations
+
+import math
+import textwrap
+from collections import Counter, defaultdict
+from dataclasses import dataclass
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+
+from parsers.readings import line_ranges
+from rules import plan
+from rules.checks import Outcome
+from rules.figures import several
+from rules.outcomes import Verdict, measured
+from watcher.names import target
+from watcher.record import local_time
+
+if TYPE_CHECKING:
+    from collections.abc import Iterable
+
+    from rules.outcomes import Outcomes
+    from watcher.record import Export
+
+COLUMNS = 72
+#: Causes that one mail spells out; the rest is counted, and stands in the result files.
+MOST_CAUSES = 12
+#: Checks that judge the batch: their failure is one cause for all series of the analyte.
+BATCH_CHECKS = ("check_standard", "blank")
+
+
+@dataclass(frozen=True, slots=True)
+class Mail:
+    """A mail before it has a recipient.
+
+    Attributes
+    ----------
+    kind
+        ``fail``, ``incomplete`` or ``problem``.
+    keys
+        What it reports, one key for each; a key is never mailed twice.
+    after_seconds
+        How long it waits: newer content of the export may settle the matter.
+    """
+
+    kind: str
+    subject: str
+    body: str
+    keys: tuple[str, ...]
+    after_seconds: float = 0.0
+
+    def plain(self) -> dict[str, Any]:
+        """Return the mail as JSON values."""
+        return {
+            "kind": self.kind,
+            "subject": self.subject,
+            "body": self.body,
+            "keys": list(self.keys),
+            "after_seconds": self.after_seconds,
+        }
+
+
+@dataclass(frozen=True, slots=True)
+class _Cause:
+    """Series that fail for one reason."""
+
+    series: tuple[int, ...]
+
+    @property
+    def first(self) -> int:
+        return self.series[0]
+
+
+def mails(
+    outcomes: Outcomes, export: Export, complete_after_seconds: float, known: Iterable[str]
+) -> list[Mail]:
+    """Return the mails that an evaluated export gives rise to, without what was mailed before.
+
+    Parameters
+    ----------
+    outcomes, export
+        The export, judged.
+    complete_after_seconds
+        How long what is missing may still come.
+    known
+        Keys that were mailed for this export already.
+    """
+    mailed = set(known)
+    written = []
+    for kind, verdict, wait in (
+        ("fail", Verdict.FAIL, 0.0),
+        ("incomplete", Verdict.INCOMPLETE, complete_after_seconds),
+    ):
+        keys = {
+            i: _key(kind, outcomes, i, export) for i in np.flatnonzero(outcomes.verdict == verdict).tolist()
+        }
+        new = {i: key for i, key in keys.items() if key not in mailed}
+        if new:
+            written.append(_of_series(kind, outcomes, export, list(new), tuple(new.values()), wait))
+    problems = {
+        f"problem|{export.name}|{problem}": str(problem) for problem in outcomes.case.readings.problems
+    }
+    unseen = {key: text for key, text in problems.items() if key not in mailed}
+    if unseen:
+        written.append(_of_problems(export, list(unseen.values()), tuple(unseen)))
+    return written
+
+
+def _key(kind: str, outcomes: Outcomes, i: int, export: Export) -> str:
+    case = outcomes.case
+    parts = (case.sample(i), case.analyte(i), case.channel(i) or "", str(int(case.series.attempt[i])))
+    return "|".join((kind, export.name, *parts, "+".join(outcomes.failed_checks(i))))
+
+
+def refusal(name: str, sentence: str, sha256: str) -> Mail:
+    """Return the mail about an export that gave no results."""
+    body = _body(
+        f"PROBLEM {name} was not evaluated",
+        [
+            (
+                "DO",
+                [
+                    "Do what the reason says; the export is taken in again by itself when it or the layout changes."
+                ],
+            ),
+            ("HOLD", [f"Everything measured in {name}: it has no results. Other exports are not affected."]),
+            ("WHY", [sentence]),
+            ("RECORD", [f"export {name}, sha256 {sha256[:12]}"]),
+        ],
+    )
+    return Mail(
+        "problem", f"PROBLEM {name}: {_cut(sentence)}", body, (f"refused|{name}|{sha256}|{sentence}",)
+    )
+
+
+def _of_problems(export: Export, sentences: list[str], keys: tuple[str, ...]) -> Mail:
+    body = _body(
+        f"PROBLEM in {export.name}",
+        [
+            ("DO", ["Correct the rows in the instrument's program and export again."]),
+            ("HOLD", ["What these rows measured is in no result; everything else was evaluated."]),
+            ("WHY", _capped(sentences)),
+            ("RECORD", _record(export, None)),
+        ],
+    )
+    return Mail("problem", f"PROBLEM {export.name}: {_cut(sentences[0])}", body, keys)
+
+
+def _of_series(
+    kind: str, outcomes: Outcomes, export: Export, series: list[int], keys: tuple[str, ...], wait: float
+) -> Mail:
+    causes = _causes(outcomes, series)
+    headline = f"{kind.upper()} {_names(outcomes, series)}: {outcomes.headline(causes[0].first)}"
+    shown = causes[:MOST_CAUSES]
+    more = len(causes) - len(shown)
+    tail = [f"and {more} more: see the result files"] if more else []
+    lines = [line for i in series for line in outcomes.case.series_lines(i)]
+    body = _body(
+        headline,
+        [
+            ("DO", [_do(outcomes, cause) for cause in shown] + tail),
+            ("HOLD", _hold(outcomes, series)),
+            ("WHERE", [_where(outcomes, cause) for cause in shown] + _people(outcomes)),
+            ("WHY", [_why(outcomes, cause) for cause in shown]),
+            ("NUMBERS", [line for cause in shown for line in _numbers(outcomes, cause)]),
+            ("RECORD", _record(export, lines)),
+        ],
+    )
+    return Mail(kind, headline, body, keys, wait)
+
+
+def _causes(outcomes: Outcomes, series: list[int]) -> list[_Cause]:
+    """Group series by cause: a failed batch check is one cause for all of them, any other belongs to its series."""
+    groups: dict[tuple[Any, ...], list[int]] = defaultdict(list)
+    for i in series:
+        failed = outcomes.failed_checks(i)
+        batch = next((name for name in BATCH_CHECKS if name in failed and "inputs" not in failed), None)
+        key = (batch, int(outcomes.case.key[i])) if batch else ("series", i)
+        groups[key].append(i)
+    return [_Cause(tuple(group)) for group in groups.values()]
+
+
+def _names(outcomes: Outcomes, series: list[int]) -> str:
+    first = outcomes.case.name(series[0])
+    attempt = int(outcomes.case.series.attempt[series[0]])
+    first += f" (attempt {attempt})" if attempt > 1 else ""
+    return first if len(series) == 1 else f"{first} and {len(series) - 1} more"
+
+
+def _all_names(outcomes: Outcomes, series: Iterable[int]) -> str:
+    return several(list(dict.fromkeys(outcomes.case.name(i) for i in series)), most=8)
+
+
+def _do(outcomes: Outcomes, cause: _Cause) -> str:
+    sentence = plan.next_step(outcomes, cause.first) or "Look at the result files."
+    return (
+        sentence
+        if len(cause.series) == 1
+        else f"{sentence} The same holds for {_all_names(outcomes, cause.series[1:])}."
+    )
+
+
+def _hold(outcomes: Outcomes, series: list[int]) -> list[str]:
+    counts = Counter(outcomes.verdict_of(i) for i in range(len(outcomes.case)))
+    sound = [f"{counts[v]} {v.word}" for v in (Verdict.PASS, Verdict.WARN, Verdict.NOT_SPIKED) if counts[v]]
+    rest = f"Not affected: {' and '.join(sound)}." if sound else "Nothing else was measured in this export."
+    return [f"Do not release {_all_names(outcomes, series)}.", rest]
+
+
+def _where(outcomes: Outcomes, cause: _Cause) -> str:
+    case = outcomes.case
+    rows = [int(case.solutions.rows[s]) for i in cause.series for s in case.series.members_of(i).tolist()]
+    parts = [_all_names(outcomes, cause.series)]
+    positions = case.readings.position[rows]
+    if np.isfinite(positions).any():
+        known = sorted({f"{p:g}" for p in positions[np.isfinite(positions)].tolist()}, key=float)
+        parts.append(f"position {several(known, most=12)}")
+    times = case.readings.measured_at[rows]
+    if np.isfinite(times).any():
+        begin, end = (local_time(float(t)) or "" for t in (np.nanmin(times), np.nanmax(times)))
+        parts.append(f"measured {begin.replace('T', ' ')}" + (f" to {end[11:]}" if end != begin else ""))
+    lines = [line for i in cause.series for line in case.series_lines(i)]
+    parts.append(f"lines {line_ranges(lines)}")
+    return ", ".join(parts)
+
+
+def _people(outcomes: Outcomes) -> list[str]:
+    readings = outcomes.case.readings
+    parts = [
+        f"{word} {several(list(column.names))}"
+        for word, column in (
+            ("batch", readings.batch),
+            ("analyst", readings.analyst),
+            ("instrument", readings.instrument),
+        )
+        if column.names
+    ]
+    return [", ".join(parts)] if parts else []
+
+
+def _why(outcomes: Outcomes, cause: _Cause) -> str:
+    failing = [check.sentence(cause.first) for check in outcomes.deciding(cause.first, Outcome.FAIL)]
+    reasons = failing or outcomes.reasons(cause.first)
+    return f"{_all_names(outcomes, cause.series)}: {'; '.join(reasons)}"
+
+
+def _numbers(outcomes: Outcomes, cause: _Cause) -> list[str]:
+    case, i = outcomes.case, cause.first
+    lines = [
+        f"{case.name(i)}: {measured(check, case, i)}"
+        for check in outcomes.deciding(i, Outcome.FAIL)
+        if math.isfinite(check.value[i])
+    ]
+    return [*lines, *(f"{case.name(k)}: result {outcomes.text(k)}" for k in cause.series[:8])]
+
+
+def _record(export: Export, lines: list[int] | None) -> list[str]:
+    entries = [f"export {export.name}, revision {export.revision}, sha256 {export.sha256[:12]}"]
+    if lines:
+        entries.append(f"lines {line_ranges(lines)}")
+    entries.append(f"results {target(export.name, export.revision, export.accepted_at, 'csv')}")
+    entries.append(f"layout {export.layout}, settings {export.settings[:12]}, program {export.program}")
+    return entries
+
+
+def _capped(sentences: list[str]) -> list[str]:
+    rest = len(sentences) - MOST_CAUSES
+    return sentences[:MOST_CAUSES] + ([f"and {rest} more"] if rest > 0 else [])
+
+
+def _cut(sentence: str, most: int = 90) -> str:
+    """Shorten a sentence for a subject."""
+    return sentence if len(sentence) <= most else f"{sentence[: most - 1].rstrip()}…"
+
+
+def _body(headline: str, sections: list[tuple[str, list[str]]]) -> str:
+    parts = [textwrap.fill(headline, COLUMNS, break_long_words=False)]
+    for title, paragraphs in sections:
+        if paragraphs:
+            wrapped = [
+                textwrap.fill(p, COLUMNS, initial_indent="- ", subsequent_indent="  ", break_long_words=False)
+                if len(paragraphs) > 1
+                else textwrap.fill(p, COLUMNS, break_long_words=False)
+                for p in paragraphs
+            ]
+            parts.append("\n".join([title, *wrapped]))
+    return "\n\n".join(parts) + "\n"

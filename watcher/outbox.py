@@ -1,0 +1,260 @@
+"""The two deliverers: result files and mails, each with its own thread, so that neither waits for the other.
+
+Both do the same: take what is due from the ledger, try it once, write down how that ended, and sleep until the
+next is due or somebody rings. `once` does a single round of the same without the threads.
+"""
+
+from __future__ import annotations
+
+import contextlib
+import threading
+from dataclasses import replace
+from typing import TYPE_CHECKING, Protocol
+
+import structlog
+
+from watcher.backoff import Backoff
+from watcher.clock import stamp
+from watcher.delivery import deliver
+from watcher.disk import sweep
+from watcher.errors import WatcherError
+from watcher.kill_points import at
+from watcher.ledger_rows import RecipientOutcome
+from watcher.letter import compose
+from watcher.wake import Wake
+
+if TYPE_CHECKING:
+    from collections.abc import Callable
+    from pathlib import Path
+
+    from watcher.clock import Clock
+    from watcher.disk import Disk
+    from watcher.ledger_rows import DueFile, DueMail
+    from watcher.outgoing import Outgoing
+    from watcher.post import Post
+
+#: A spreadsheet that holds a file open is closed within minutes; a share may be away for a day.
+FILE_BACKOFF = Backoff(5.0, 300.0)
+#: An alert counts while the vials are on the rack: the first retries come fast.
+MAIL_BACKOFF = Backoff(10.0, 900.0)
+#: The longest sleep, whatever the ledger says: a clock that was set back must not stop deliveries.
+LONGEST_SLEEP = 60.0
+#: After a round that failed as a whole.
+FAULT_PAUSE = 10.0
+
+_log = structlog.get_logger("spikewarden.outbox")
+
+
+class Deliverer(Protocol):
+    """What a thread of the outbox runs."""
+
+    def deliver_due(self) -> int:
+        """Try everything that is due once; returns how many attempts were made."""
+        ...
+
+    def seconds_to_next(self) -> float:
+        """How long nothing is due."""
+        ...
+
+    def close(self) -> None:
+        """Break off an attempt under way."""
+        ...
+
+
+class Files:
+    """Delivers result files.
+
+    Parameters
+    ----------
+    outgoing
+        The queue.
+    results
+        The results folder.
+    disk, clock
+        The world.
+    backoff
+        When to try again.
+    """
+
+    def __init__(
+        self, outgoing: Outgoing, results: Path, disk: Disk, clock: Clock, backoff: Backoff = FILE_BACKOFF
+    ) -> None:
+        self._outgoing = outgoing
+        self._results = results
+        self._disk = disk
+        self._clock = clock
+        self._backoff = backoff
+        self._closed = False
+
+    def prepare(self) -> None:
+        """Make the results folder before the first delivery ever; remove what a killed run left in it."""
+        if not self._outgoing.any_file_delivered():
+            self._results.mkdir(parents=True, exist_ok=True)
+        with contextlib.suppress(OSError):  # a share that is away is swept another time
+            for folder in (self._results, *(each for each in self._results.iterdir() if each.is_dir())):
+                sweep(folder)
+
+    def deliver_due(self) -> int:
+        """Try every due file once."""
+        due = self._outgoing.due_files(self._clock.now())
+        for each in due:
+            if self._closed:
+                break
+            self._deliver(each)
+        return len(due)
+
+    def seconds_to_next(self) -> float:
+        """How long nothing is due."""
+        return _seconds_to_next(self._outgoing, "files", self._clock)
+
+    def close(self) -> None:
+        """Begin no further attempt; one under way is short."""
+        self._closed = True
+
+    def _deliver(self, due: DueFile) -> None:
+        try:
+            deliver(due, self._results, self._disk)
+        except (OSError, WatcherError) as error:
+            again = self._clock.now() + self._backoff.after(due.attempts + 1)
+            self._outgoing.file_failed(due, str(error), again)
+            _log.warning("result file not delivered", target=due.target, error=str(error), again=stamp(again))
+            return
+        self._outgoing.file_delivered(due)
+        due.staged.unlink(missing_ok=True)
+        at("staged-removed")
+        _log.info("result file delivered", target=due.target)
+
+
+class Mails:
+    """Delivers mails.
+
+    Parameters
+    ----------
+    outgoing
+        The queue.
+    post
+        The way to the server; None: no mail is sent, what is queued stays.
+    clock
+        The world.
+    backoff
+        When to try again.
+    """
+
+    def __init__(
+        self, outgoing: Outgoing, post: Post | None, clock: Clock, backoff: Backoff = MAIL_BACKOFF
+    ) -> None:
+        self._outgoing = outgoing
+        self._post = post
+        self._clock = clock
+        self._backoff = backoff
+        self._closed = False
+
+    def deliver_due(self) -> int:
+        """Try every due mail once."""
+        if self._post is None:
+            return 0
+        due = self._outgoing.due_mails(self._clock.now())
+        for each in due:
+            if self._closed:
+                break
+            self._send(each, self._post)
+        return len(due)
+
+    def seconds_to_next(self) -> float:
+        """How long nothing is due."""
+        return LONGEST_SLEEP if self._post is None else _seconds_to_next(self._outgoing, "mails", self._clock)
+
+    def close(self) -> None:
+        """Break off the attempt under way; its outcome is written down as what it is."""
+        self._closed = True
+        if self._post is not None:
+            self._post.close()
+
+    def _send(self, due: DueMail, post: Post) -> None:
+        message = compose(due, post.sender, due.recipients, self._clock.now())
+        if not self._outgoing.sending(due):
+            return
+        outcomes = post.send(message, due.recipients)
+        at("mail-answered")
+        again = stamp(self._clock.now() + self._backoff.after(due.attempts + 1))
+        self._outgoing.outcome(due, [self._planned(each, again) for each in outcomes])
+        for each in outcomes:
+            _log.log(
+                20 if each.state == "delivered" else 30,
+                "mail",
+                message_id=due.message_id,
+                subject=due.subject,
+                address=each.address,
+                outcome=each.state,
+                error=each.error,
+            )
+
+    def _planned(self, outcome: RecipientOutcome, again: str) -> RecipientOutcome:
+        return replace(outcome, due_at=again) if outcome.state in ("waiting", "unknown") else outcome
+
+
+class OutboxThread:
+    """Runs a deliverer until told to stop.
+
+    Parameters
+    ----------
+    name
+        For the log.
+    deliverer
+        What to run.
+    survive
+        Runs a round and deals with whatever stops it (a full disk under the ledger, a defect).
+    clock
+        For `last_round`.
+    """
+
+    def __init__(
+        self,
+        name: str,
+        deliverer: Deliverer,
+        survive: Callable[[str, Callable[[], float]], float | None],
+        clock: Clock,
+    ) -> None:
+        self._deliverer = deliverer
+        self._name = name
+        self._survive = survive
+        self._clock = clock
+        self._wake = Wake()
+        self._stopping = False
+        self._thread = threading.Thread(target=self._run, name=name, daemon=True)
+        self.last_round_at: str | None = None
+
+    def start(self) -> None:
+        """Begin."""
+        self._thread.start()
+
+    def ring(self) -> None:
+        """Something was queued."""
+        self._wake.ring()
+
+    def stop(self, seconds: float) -> bool:
+        """Break off and wait for the end at most so long; returns whether it ended."""
+        self._stopping = True
+        self._deliverer.close()
+        self._wake.ring()
+        if self._thread.is_alive():
+            self._thread.join(seconds)
+        return not self._thread.is_alive()
+
+    def _run(self) -> None:
+        while not self._stopping:
+            seconds = self._survive(self._name, self._round)
+            if not self._stopping:
+                self._wake.wait(FAULT_PAUSE if seconds is None else seconds)
+
+    def _round(self) -> float:
+        self._deliverer.deliver_due()
+        self.last_round_at = stamp(self._clock.now())
+        return self._deliverer.seconds_to_next()
+
+
+def _seconds_to_next(outgoing: Outgoing, what: str, clock: Clock) -> float:
+    due = outgoing.next_due(what)
+    if due is None:
+        return LONGEST_SLEEP
+    return min(max((due - clock.now()).total_seconds(), 0.05), LONGEST_SLEEP)

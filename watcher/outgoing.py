@@ -1,0 +1,280 @@
+"""The ledger's queue of what must leave: result files and mails, with the state of each delivery.
+
+What is queued stays until it is delivered, refused for good (and then stays visible) or, for a mail about an
+incomplete sample, withdrawn because newer content of the export came before anyone had it. Delivering itself is
+the work of `watcher.delivery` and `watcher.post`.
+"""
+
+from __future__ import annotations
+
+from collections import defaultdict
+from dataclasses import dataclass
+from datetime import timedelta
+from pathlib import Path
+from typing import TYPE_CHECKING
+
+from watcher.clock import moment, stamp
+from watcher.errors import WatcherError
+from watcher.ledger_entries import append_entry
+from watcher.ledger_rows import DueFile, DueMail, UndeliveredFile, UndeliveredMail
+
+if TYPE_CHECKING:
+    import sqlite3
+    from collections.abc import Iterable
+    from datetime import datetime
+
+    from watcher.clock import Clock
+    from watcher.database import Database
+    from watcher.ledger_rows import QueuedMail, RecipientOutcome, StagedFile
+
+#: No retry is ever planned further ahead; a later one means that the computer's date was set back.
+FARTHEST_RETRY = timedelta(hours=2)
+
+
+@dataclass(eq=False)
+class TargetTaken(WatcherError):
+    """Two exports claim the same result file.
+
+    Attributes
+    ----------
+    target
+        The path under the results folder.
+    owner
+        The export whose result file it is.
+    """
+
+    target: str
+    owner: str
+
+    def __str__(self) -> str:
+        return (
+            f"Result file {self.target} belongs to export {self.owner}. "
+            "This export gave no results, so that the others are not overwritten. Rename one of the two exports."
+        )
+
+
+class Outgoing:
+    """Files and mails that wait for delivery; each method is one transaction.
+
+    Parameters
+    ----------
+    database
+        The open ledger file.
+    clock
+        For the times of entries.
+    """
+
+    def __init__(self, database: Database, clock: Clock) -> None:
+        self._database = database
+        self._clock = clock
+
+    def recover(self) -> int:
+        """At start: an attempt that was under way has an unknown outcome and is due now; returns how many."""
+        now = stamp(self._clock.now())
+        with self._database.transaction("recover") as txn:
+            cut_short = txn.execute(
+                "UPDATE recipients SET state = 'unknown', due_at = ?, "
+                "last_error = 'the service ended during the attempt' WHERE state = 'sending'",
+                (now,),
+            ).rowcount
+            txn.execute("UPDATE recipients SET due_at = ? WHERE state = 'unknown'", (now,))
+            return cut_short
+
+    # -- result files ------------------------------------------------------------------------------------------
+
+    def due_files(self, now: datetime) -> list[DueFile]:
+        """Result files whose delivery is due, oldest first."""
+        rows = self._database.rows(
+            "SELECT files.id, exports.name, target, staged, files.sha256, files.attempts FROM files "
+            "JOIN exports ON exports.id = export_id "
+            f"WHERE files.state = 'waiting' AND {_DUE.format('files')} ORDER BY files.id",
+            _due_values(now),
+        )
+        return [DueFile(r[0], r[1], r[2], Path(r[3]), r[4], r[5]) for r in rows]
+
+    def file_delivered(self, due: DueFile) -> None:
+        """Record that the file is durable in the results folder."""
+        with self._database.transaction("delivered") as txn:
+            txn.execute(
+                "UPDATE files SET state = 'delivered', attempts = attempts + 1, last_error = NULL WHERE id = ?",
+                (due.id,),
+            )
+            (export_id,) = txn.execute("SELECT export_id FROM files WHERE id = ?", (due.id,)).fetchone()
+            append_entry(
+                txn,
+                "file delivered",
+                export_id,
+                self._clock.now(),
+                {"target": due.target, "sha256": due.sha256},
+            )
+
+    def file_failed(self, due: DueFile, error: str, due_at: datetime) -> None:
+        """Record a failed attempt; the file stays in the queue."""
+        with self._database.transaction("undelivered") as txn:
+            txn.execute(
+                "UPDATE files SET attempts = attempts + 1, last_error = ?, due_at = ? WHERE id = ?",
+                (error, stamp(due_at), due.id),
+            )
+
+    def undelivered_files(self) -> list[UndeliveredFile]:
+        """Result files that are not in the results folder yet, oldest first."""
+        rows = self._database.rows(
+            "SELECT target, due_at, attempts, last_error FROM files WHERE state = 'waiting' ORDER BY id"
+        )
+        return [UndeliveredFile(*row) for row in rows]
+
+    def any_file_delivered(self) -> bool:
+        """Tell whether the results folder was ever written to."""
+        return bool(self._database.rows("SELECT 1 FROM files WHERE state = 'delivered' LIMIT 1"))
+
+    def staged_files(self) -> set[Path]:
+        """Files in the records that still wait to be delivered."""
+        return {Path(r[0]) for r in self._database.rows("SELECT staged FROM files WHERE state = 'waiting'")}
+
+    # -- mails -------------------------------------------------------------------------------------------------
+
+    def due_mails(self, now: datetime) -> list[DueMail]:
+        """Mails for which an attempt is due, oldest first; one with recipients of both sorts comes twice."""
+        rows = self._database.rows(
+            "SELECT mail_id, message_id, subject, body, created_at, mails.due_at AS first_due_at, address, state, "
+            "recipients.attempts AS attempts FROM recipients JOIN mails ON mails.id = mail_id "
+            f"WHERE state IN ('waiting', 'unknown') AND {_DUE.format('recipients')} ORDER BY mail_id, address",
+            _due_values(now),
+        )
+        together: dict[tuple[int, bool], list[sqlite3.Row]] = defaultdict(list)
+        for row in rows:
+            together[row["mail_id"], row["state"] == "unknown"].append(row)
+        return [
+            DueMail(
+                id=mail_id,
+                message_id=found[0]["message_id"],
+                subject=found[0]["subject"],
+                body=found[0]["body"],
+                created_at=found[0]["created_at"],
+                first_due_at=found[0]["first_due_at"],
+                recipients=tuple(row["address"] for row in found),
+                possible_repeat=repeat,
+                attempts=max(row["attempts"] for row in found),
+            )
+            for (mail_id, repeat), found in together.items()
+        ]
+
+    def sending(self, due: DueMail) -> bool:
+        """Record that an attempt begins; False where the mail was withdrawn in the meantime."""
+        with self._database.transaction("sending") as txn:
+            txn.executemany(
+                "UPDATE recipients SET state = 'sending', attempts = attempts + 1 "
+                "WHERE mail_id = ? AND address = ? AND state IN ('waiting', 'unknown')",
+                [(due.id, address) for address in due.recipients],
+            )
+            (taken,) = txn.execute("SELECT changes()").fetchone()
+            return bool(taken)
+
+    def outcome(self, due: DueMail, outcomes: Iterable[RecipientOutcome]) -> None:
+        """Record how an attempt ended for each recipient."""
+        outcomes = list(outcomes)
+        with self._database.transaction("outcome") as txn:
+            for each in outcomes:
+                # Once an outcome was unknown, a later "not now" does not make it known.
+                state = "unknown" if due.possible_repeat and each.state == "waiting" else each.state
+                txn.execute(
+                    "UPDATE recipients SET state = ?, last_error = ?, due_at = coalesce(?, due_at) "
+                    "WHERE mail_id = ? AND address = ?",
+                    (state, each.error, each.due_at, due.id, each.address),
+                )
+            body = {"message_id": due.message_id, "outcomes": {o.address: o.state for o in outcomes}}
+            (export_id,) = txn.execute("SELECT export_id FROM mails WHERE id = ?", (due.id,)).fetchone()
+            append_entry(txn, "mail", export_id, self._clock.now(), body)
+
+    def undelivered_mails(self) -> list[UndeliveredMail]:
+        """Mails that are due and undelivered, and those refused for good, oldest first."""
+        rows = self._database.rows(
+            "SELECT subject, address, state, mails.due_at, recipients.attempts, last_error FROM recipients "
+            "JOIN mails ON mails.id = mail_id WHERE state NOT IN ('delivered', 'withdrawn') "
+            "AND mails.due_at <= ? ORDER BY mail_id, address",
+            (stamp(self._clock.now()),),
+        )
+        return [UndeliveredMail(*row) for row in rows]
+
+    def next_due(self, what: str) -> datetime | None:
+        """When the next attempt is due; `what` is ``files`` or ``mails``."""
+        query = (
+            "SELECT min(due_at) FROM files WHERE state = 'waiting'"
+            if what == "files"
+            else "SELECT min(due_at) FROM recipients WHERE state IN ('waiting', 'unknown')"
+        )
+        (first,) = self._database.rows(query)[0]
+        return None if first is None else moment(first)
+
+
+#: An attempt is due when its time has come, or when a retry lies further ahead than any is ever planned.
+_DUE = "({0}.due_at <= :now OR ({0}.attempts > 0 AND {0}.due_at > :horizon))"
+
+
+def _due_values(now: datetime) -> dict[str, str]:
+    return {"now": stamp(now), "horizon": stamp(now + FARTHEST_RETRY)}
+
+
+# -- what `Ledger` puts into the queue, inside its own transactions ---------------------------------------------
+
+
+def queue_files(txn: sqlite3.Connection, export_id: int, staged: Iterable[StagedFile], now: datetime) -> None:
+    """Queue result files.
+
+    Raises
+    ------
+    TargetTaken
+        A target is a result file of another export.
+    """
+    for each in staged:
+        owner = txn.execute(
+            "SELECT exports.name FROM files JOIN exports ON exports.id = export_id "
+            "WHERE target = ? AND export_id <> ?",
+            (each.target, export_id),
+        ).fetchone()
+        if owner is not None:
+            raise TargetTaken(each.target, owner[0])
+        txn.execute(
+            "INSERT INTO files (export_id, target, staged, sha256, state, due_at) "
+            "VALUES (?, ?, ?, ?, 'waiting', ?) "
+            "ON CONFLICT (target) DO UPDATE SET staged = excluded.staged, sha256 = excluded.sha256, "
+            "state = 'waiting', attempts = 0, due_at = excluded.due_at, last_error = NULL",
+            (export_id, each.target, str(each.staged), each.sha256, stamp(now)),
+        )
+
+
+def queue_mail(txn: sqlite3.Connection, export_id: int | None, mail: QueuedMail, now: datetime) -> bool:
+    """Queue a mail unless everything it is about was mailed before; returns whether it was queued."""
+    known = {key for key in mail.keys if txn.execute("SELECT 1 FROM alerts WHERE key = ?", (key,)).fetchone()}
+    if mail.keys and known.issuperset(mail.keys):
+        return False
+    mail_id = txn.execute(
+        "INSERT INTO mails (export_id, kind, message_id, subject, body, created_at, due_at) "
+        "VALUES (?, ?, ?, ?, ?, ?, ?)",
+        (export_id, mail.kind, mail.message_id, mail.subject, mail.body, stamp(now), mail.due_at),
+    ).lastrowid
+    txn.executemany(
+        "INSERT INTO recipients (mail_id, address, state, due_at) VALUES (?, ?, 'waiting', ?)",
+        [(mail_id, address, mail.due_at) for address in dict.fromkeys(mail.recipients)],
+    )
+    txn.executemany(
+        "INSERT INTO alerts (key, export_id, mail_id, created_at) VALUES (?, ?, ?, ?)",
+        [(key, export_id, mail_id, stamp(now)) for key in dict.fromkeys(mail.keys) if key not in known],
+    )
+    return True
+
+
+#: Mails about incomplete samples of an export name of which nobody has had an attempt under way or behind it.
+WITHDRAWABLE = (
+    "SELECT mails.id FROM mails JOIN exports ON exports.id = mails.export_id "
+    "WHERE exports.name = :name AND mails.kind = 'incomplete' AND NOT EXISTS ("
+    "SELECT 1 FROM recipients WHERE mail_id = mails.id AND state <> 'waiting')"
+)
+
+
+def withdraw_incomplete(txn: sqlite3.Connection, name: str) -> int:
+    """Withdraw mails about incomplete samples that newer content has overtaken, and free their keys."""
+    mail_ids = txn.execute(WITHDRAWABLE, {"name": name}).fetchall()
+    txn.executemany("UPDATE recipients SET state = 'withdrawn' WHERE mail_id = ?", mail_ids)
+    txn.executemany("DELETE FROM alerts WHERE mail_id = ?", mail_ids)
+    return len(mail_ids)

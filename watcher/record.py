@@ -1,0 +1,308 @@
+"""The JSON record of one export: everything that was computed and judged, in values that JSON has.
+
+Every key is always there; what is absent is null, never NaN. The record depends only on the export, the settings and
+the ledger's record of acceptance.
+"""
+
+from __future__ import annotations
+
+import math
+from dataclasses import dataclass
+from datetime import UTC, datetime, timedelta
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+
+from parsers.readings import Role, line_ranges
+from rules import plan
+from rules.case import Reported
+from rules.checks import Check, Outcome
+from rules.outcomes import result_text
+
+if TYPE_CHECKING:
+    from collections.abc import Iterable
+
+    from rules.case import Case
+    from rules.outcomes import Outcomes
+    from rules.result import Results
+
+FORMAT = 1
+
+
+@dataclass(frozen=True, slots=True)
+class Export:
+    """What the ledger knows of an export: the words of its acceptance."""
+
+    name: str
+    sha256: str
+    size: int
+    revision: int
+    accepted_at: str
+    layout: str
+    settings: str
+    program: str
+
+    def plain(self) -> dict[str, Any]:
+        """Return it as it stands in the record."""
+        return {
+            "name": self.name,
+            "sha256": self.sha256,
+            "bytes": self.size,
+            "revision": self.revision,
+            "accepted_at": self.accepted_at,
+            "layout": self.layout,
+            "settings": self.settings,
+            "program": self.program,
+        }
+
+
+def number(value: Any) -> float | None:
+    """Return a finite number, else None."""
+    converted = float(value)
+    return converted if math.isfinite(converted) else None
+
+
+def whole(value: Any) -> int | None:
+    """Return a whole number, else None."""
+    converted = number(value)
+    return None if converted is None else int(converted)
+
+
+def local_time(seconds: float) -> str | None:
+    """Return the local time that an export wrote, without a zone, because the export gave none."""
+    if not math.isfinite(seconds):
+        return None
+    return (datetime(1970, 1, 1, tzinfo=UTC) + timedelta(seconds=seconds)).strftime("%Y-%m-%dT%H:%M:%S")
+
+
+def record(outcomes: Outcomes, export: Export) -> dict[str, Any]:
+    """Return the whole record of an export."""
+    case = outcomes.case
+    return {
+        "format": FORMAT,
+        "export": export.plain(),
+        "series": [_series(outcomes, i) for i in range(len(case))],
+        "blanks": _blanks(case),
+        "check_standards": _check_standards(outcomes),
+        "calibrations": _calibrations(case),
+        "set_aside": [
+            {"line": one.line, "reason": one.reason, "text": one.text} for one in case.readings.set_aside
+        ],
+        "problems": [str(problem) for problem in case.readings.problems],
+        "seal": None,
+    }
+
+
+def _series(outcomes: Outcomes, i: int) -> dict[str, Any]:
+    case = outcomes.case
+    reported = outcomes.reported(i)
+    by = Reported(int(case.reported[i]))
+    return {
+        "sample": case.sample(i),
+        "analyte": case.analyte(i),
+        "channel": case.channel(i),
+        "attempt": int(case.series.attempt[i]),
+        "verdict": outcomes.verdict_of(i).word,
+        "result": result(outcomes, i),
+        "additions_result": _result(case, case.additions, i, Reported.ADDITIONS) if case.judged[i] else None,
+        "calibration_result": _result(case, case.back.results, i, Reported.CALIBRATION)
+        if case.back.calibration[i] >= 0
+        else None,
+        "fit": _fit(case, i),
+        "solutions": _solutions(case, i),
+        "recoveries": _recoveries(case, i),
+        "matrix_effect": _matrix_effect(case, i),
+        "budget": _budget(case, reported, i, by),
+        "checks": [_check(check, case, i) for check in outcomes.checks],
+        "next_step": {"sentence": plan.next_step(outcomes, i) or None, "plan": None},
+    }
+
+
+def result(outcomes: Outcomes, i: int) -> dict[str, Any]:
+    """Return the reported result of a series."""
+    case = outcomes.case
+    values = _result(case, outcomes.reported(i), i, Reported(int(case.reported[i])))
+    return values | {"text": outcomes.text(i)}
+
+
+def _result(case: Case, results: Results, i: int, by: Reported) -> dict[str, Any]:
+    faulty = i in case.faults
+    columns = ("value", "standard_uncertainty", "expanded_uncertainty", "coverage_factor", "low", "high")
+    numbers = {name: None if faulty else number(getattr(results, name)[i]) for name in columns}
+    return {
+        "value": numbers["value"],
+        "unit": case.method.result_unit,
+        "standard_uncertainty": numbers["standard_uncertainty"],
+        "expanded_uncertainty": numbers["expanded_uncertainty"],
+        "coverage_factor": numbers["coverage_factor"],
+        "low": numbers["low"],
+        "high": numbers["high"],
+        "by": by.name.lower(),
+        "text": result_text(results, i, case, case.method.confidence),
+    }
+
+
+def _fit(case: Case, i: int) -> dict[str, Any] | None:
+    at = int(case.fits.of_series[i])
+    if at < 0:
+        return None
+    lines = case.fits.lines
+    predilution = float(case.vessels.predilution[case.series.members_of(i)].max())
+    return {
+        "slope": number(lines.slope[at]),
+        "intercept": number(lines.intercept[at]),
+        "correlation": number(lines.correlation[at]),
+        "residual_sd": number(lines.residual_sd[at]),
+        "n": int(lines.n[at]),
+        "dof": int(lines.dof[at]),
+        "variance": "constant",
+        "g": number(case.interval.g[at]),
+        "u_line": number(case.u_line[i] / predilution),
+    }
+
+
+def _solutions(case: Case, i: int) -> list[dict[str, Any]]:
+    readings = case.readings
+    listed = []
+    for solution in case.series.members_of(i).tolist():
+        row = int(case.solutions.rows[solution])
+        values = readings.signals[case.solutions.rows_of(solution)]
+        listed.append(
+            {
+                "label": case.label(solution),
+                "role": Role(int(readings.role[row])).word,
+                "added": number(case.vessels.added[solution]),
+                "dilution": number(case.vessels.dilution[solution]),
+                "signal": number(case.solutions.signal[solution]),
+                "readings": values[np.isfinite(values)].tolist(),
+                "position": number(readings.position[row]),
+                "measured_at": local_time(float(readings.measured_at[row])),
+                "export_lines": line_ranges(case.lines_of([solution])),
+            }
+        )
+    return listed
+
+
+def _recoveries(case: Case, i: int) -> list[dict[str, Any]]:
+    start = int(case.series.segments.starts[i])
+    members = case.series.members_of(i).tolist()
+    return [
+        {
+            "label": case.label(solution),
+            "added": number(case.vessels.added[solution]),
+            "recovery": number(case.recoveries.each[start + offset]),
+            "export_lines": line_ranges(case.lines_of([solution])),
+        }
+        for offset, solution in enumerate(members)
+        if case.series.spiked[start + offset] and number(case.recoveries.each[start + offset]) is not None
+    ]
+
+
+def _matrix_effect(case: Case, i: int) -> dict[str, Any]:
+    return {"value": number(case.recoveries.matrix_effect[i]), "unit": "%", "low": None, "high": None}
+
+
+def _budget(case: Case, results: Results, i: int, by: Reported) -> list[dict[str, Any]]:
+    """List the components that matter, those that nobody stated with null."""
+    if i in case.faults or number(results.value[i]) is None:
+        return []
+    total = number(results.standard_uncertainty[i])
+    entries = []
+    for share in results.budget:
+        u, dof = share.standard_uncertainty[i], share.dof[i]
+        if u == 0 or (
+            share.component == "blank" and (case.method.blank in (None, "none") or by is Reported.CALIBRATION)
+        ):
+            continue
+        part = number(u)
+        entries.append(
+            {
+                "component": share.component,
+                "standard_uncertainty": part,
+                "unit": case.method.result_unit,
+                "dof": number(dof),
+                "share": None if part is None or not total else 100 * part**2 / total**2,
+            }
+        )
+    return entries
+
+
+def _check(check: Check, case: Case, i: int) -> dict[str, Any]:
+    return {
+        "check": check.name,
+        "value": number(check.value[i]),
+        "limit": check.limit_text(case, i),
+        "unit": check.unit,
+        "outcome": Outcome(int(check.outcome[i])).word,
+        "sentence": check.sentence(i),
+        "export_lines": line_ranges(check.lines(i)),
+    }
+
+
+def _place(case: Case, solution: int, key: int) -> dict[str, Any]:
+    analyte, channel = case.keys.split(key)
+    return {
+        "label": case.label(solution),
+        "analyte": case.readings.analyte.names[analyte],
+        "channel": None if channel < 0 else case.readings.channel.names[channel],
+        "signal": number(case.solutions.signal[solution]),
+        "export_lines": line_ranges(case.lines_of([solution])),
+    }
+
+
+def _pairs(solutions: Iterable[int], keys: Iterable[int]) -> Iterable[tuple[int, int]]:
+    return zip(solutions, keys, strict=True)
+
+
+def _blanks(case: Case) -> list[dict[str, Any]]:
+    pairs = _pairs(case.blanks.solutions.tolist(), case.blanks.key.tolist())
+    return [_place(case, solution, key) for solution, key in pairs]
+
+
+def _check_standards(outcomes: Outcomes) -> list[dict[str, Any]]:
+    case = outcomes.case
+    checks = case.check_standards
+    return [
+        _place(case, solution, key)
+        | {
+            "nominal": number(checks.nominal[place]),
+            "measured": number(checks.measured[place]),
+            "unit": case.method.result_unit,
+            "percent_of_nominal": number(checks.percent[place]),
+        }
+        for place, (solution, key) in enumerate(_pairs(checks.solutions.tolist(), checks.key.tolist()))
+    ]
+
+
+def _calibrations(case: Case) -> list[dict[str, Any]]:
+    calibrations = case.calibrations
+    lines, segments = calibrations.lines, calibrations.segments
+    listed = []
+    for at, key in enumerate(calibrations.key.tolist()):
+        analyte, channel = case.keys.split(key)
+        start, size = int(segments.starts[at]), int(segments.sizes[at])
+        standards = calibrations.solutions[start : start + size].tolist()
+        listed.append(
+            {
+                "analyte": case.readings.analyte.names[analyte],
+                "channel": None if channel < 0 else case.readings.channel.names[channel],
+                "slope": number(lines.slope[at]),
+                "intercept": number(lines.intercept[at]),
+                "slope_standard_uncertainty": number(math.sqrt(lines.var_slope[at])),
+                "intercept_standard_uncertainty": number(math.sqrt(lines.var_intercept[at])),
+                "correlation": number(lines.correlation[at]),
+                "residual_sd": number(lines.residual_sd[at]),
+                "n": int(lines.n[at]),
+                "dof": int(lines.dof[at]),
+                "unit": case.method.result_unit,
+                "standards": [
+                    {"label": case.label(s), "nominal": number(calibrations.nominal[start + offset])}
+                    | {
+                        "signal": number(case.solutions.signal[s]),
+                        "export_lines": line_ranges(case.lines_of([s])),
+                    }
+                    for offset, s in enumerate(standards)
+                ],
+            }
+        )
+    return listed

@@ -1,0 +1,181 @@
+"""Texts of the settings as values: durations, quantities, percentages, dates. Every scalar arrives as text.
+
+Each function says in its error what was expected and what was found; nothing here knows a key.
+"""
+
+from __future__ import annotations
+
+import calendar
+import re
+from datetime import datetime
+from math import sqrt
+
+from parsers.cells import Grammar
+from rules import units
+from rules.method import Measure
+
+_NUMBER = r"[-+]?\d+(?:\.\d+)?(?:[eE][-+]?\d+)?"
+_MEASURE = re.compile(rf"^(?P<number>{_NUMBER})\s*(?P<unit>.*)$")
+_SECONDS = {"ms": 0.001, "s": 1.0, "min": 60.0, "h": 3600.0, "d": 86400.0}
+_UNCERTAINTY = re.compile(rf"^(?P<value>{_NUMBER})\s*%(?:\s*,\s*k\s*=\s*(?P<k>{_NUMBER}))?$")
+_DAY = "%Y-%m-%d"
+SECONDS_PER_DAY = 86400
+
+
+def number(text: str) -> float:
+    """Read a number with a decimal point.
+
+    >>> number("0.95")
+    0.95
+    """
+    if not re.fullmatch(_NUMBER, text.strip()):
+        raise ValueError(f"expected a number with a decimal point, got '{text}'")
+    return float(text)
+
+
+def yes_or_no(text: str) -> bool:
+    """Read a choice.
+
+    >>> yes_or_no("no")
+    False
+    """
+    try:
+        return {"yes": True, "true": True, "on": True, "no": False, "false": False, "off": False}[
+            text.strip()
+        ]
+    except KeyError:
+        raise ValueError(f"expected yes or no, got '{text}'") from None
+
+
+def seconds(text: str) -> float:
+    """Read a duration.
+
+    >>> seconds("2 h"), seconds("250 ms")
+    (7200.0, 0.25)
+    """
+    found = _MEASURE.match(text.strip())
+    unit = found["unit"].strip() if found else ""
+    if found is None or unit not in _SECONDS or float(found["number"]) < 0:
+        raise ValueError(f"expected a duration such as '5 s', '10 min' or '2 h', got '{text}'")
+    return float(found["number"]) * _SECONDS[unit]
+
+
+def measure(text: str) -> Measure:
+    """Read a number with a unit.
+
+    >>> measure("5 mg/L")
+    Measure(value=5.0, unit='mg/L')
+    """
+    found = _MEASURE.match(text.strip())
+    if found is None:
+        raise ValueError(f"expected a number with a unit, such as '5 mL' or '5 mg/L', got '{text}'")
+    return Measure(float(found["number"]), found["unit"].strip())
+
+
+def volume(text: str) -> Measure:
+    """Read a volume above zero."""
+    return _of_kind(text, units.VOLUME)
+
+
+def concentration(text: str) -> Measure:
+    """Read a concentration above zero."""
+    return _of_kind(text, units.CONCENTRATION)
+
+
+def volume_or_concentration(text: str) -> Measure:
+    """Read what a level adds: a volume of stock, or a concentration."""
+    stated = measure(text)
+    for kind in (units.VOLUME, units.CONCENTRATION):
+        try:
+            units.require(stated.unit, kind)
+        except units.UnitUnusable:
+            continue
+        return _positive(stated, text)
+    raise ValueError(f"expected a volume such as '5 mL' or a concentration such as '2 mg/L', got '{text}'")
+
+
+def concentration_unit(text: str) -> str:
+    """Read a unit of concentrations."""
+    units.require(text.strip(), units.CONCENTRATION)
+    return text.strip()
+
+
+def tolerance(text: str) -> Measure:
+    """Read a half-width: ``0.02 mL``, ``0.5 %``, or a bare number for a factor."""
+    stated = measure(text)
+    if stated.unit not in ("", "%"):
+        units.require(stated.unit, units.VOLUME)
+    return _positive(stated, text)
+
+
+def relative_tolerance(text: str) -> float:
+    """Read a half-width in percent as a relative standard uncertainty, a/√3 (JCGM 100:2008, 4.3.7).
+
+    >>> round(relative_tolerance("1 %"), 6)
+    0.005774
+    """
+    return percentage(text) / sqrt(3)
+
+
+def relative_uncertainty(text: str) -> float:
+    """Read a certificate's uncertainty as a relative standard uncertainty: divided by its k.
+
+    >>> relative_uncertainty("0.4 %, k=2")
+    0.002
+    """
+    found = _UNCERTAINTY.match(text.strip())
+    if found is None or found["k"] is None or float(found["k"]) <= 0:
+        raise ValueError(
+            f"expected an uncertainty with its coverage factor, such as '0.4 %, k=2', got '{text}'"
+        )
+    return float(found["value"]) / 100 / float(found["k"])
+
+
+def percentage(text: str) -> float:
+    """Read a percentage as a fraction.
+
+    >>> percentage("2.5 %")
+    0.025
+    """
+    stated = measure(text)
+    if stated.unit != "%" or stated.value < 0:
+        raise ValueError(f"expected a percentage such as '0.5 %', got '{text}'")
+    return stated.value / 100
+
+
+def dilution(text: str) -> float:
+    """Read a predilution as the factor from aliquot to sample.
+
+    >>> dilution("1 in 10"), dilution("1+9")
+    (10.0, 10.0)
+    """
+    factor = Grammar().predilution(text)
+    if factor is None or factor <= 0:
+        raise ValueError(f"expected a dilution such as '10', '1 in 10' or '1+9', got '{text}'")
+    return factor
+
+
+def day_begins(text: str) -> float:
+    """Read a date as the first second of that day, in seconds since 1970-01-01 of local time."""
+    try:
+        day = datetime.strptime(text.strip(), _DAY)  # noqa: DTZ007 - dates of bottles are local and have no zone
+    except ValueError:
+        raise ValueError(f"expected a date such as 2026-03-01, got '{text}'") from None
+    return float(calendar.timegm(day.timetuple()))
+
+
+def day_ends(text: str) -> float:
+    """Read a date as the last moment of that day."""
+    return day_begins(text) + SECONDS_PER_DAY - 1e-3
+
+
+def _of_kind(text: str, kind: str) -> Measure:
+    stated = measure(text)
+    units.require(stated.unit, kind)
+    return _positive(stated, text)
+
+
+def _positive(stated: Measure, text: str) -> Measure:
+    if stated.value <= 0:
+        raise ValueError(f"expected more than 0, got '{text}'")
+    return stated

@@ -1,0 +1,354 @@
+"""START HERE: the service waits, accepts, evaluates, records and delivers, until it is stopped.
+
+`Service.run` is the unattended service, `Service.once` takes in what is there and ends; both go through the same
+parts. Whoever opens a service holds the records folder (`watcher.instance`) and has adopted settings in the
+ledger. What is computed is the worker's work; what is wrong is kept and told by `watcher.troubles`.
+"""
+
+from __future__ import annotations
+
+import json
+import os
+import signal
+import threading
+from contextlib import contextmanager
+from dataclasses import dataclass
+from typing import TYPE_CHECKING
+
+import structlog
+
+from watcher import notices
+from watcher.addressing import Addressing
+from watcher.assessment import Assessed, Assessment
+from watcher.clock import SystemClock, stamp
+from watcher.copies import Copies
+from watcher.cut_short import CutShort
+from watcher.disk import Disk
+from watcher.errors import WatcherError
+from watcher.events import Events
+from watcher.folder import Trouble
+from watcher.intake import Intake, Taken
+from watcher.outbox import Files, Mails, OutboxThread
+from watcher.post import Post
+from watcher.pulse import Pulse
+from watcher.troubles import Troubles
+from watcher.wake import Wake
+from watcher.worker import WorkerStopped, WorkerUnfit
+
+if TYPE_CHECKING:
+    from collections.abc import Iterator
+
+    from watcher.clock import Clock
+    from watcher.ledger import Ledger
+    from watcher.ledger_rows import ExportRow, UndeliveredFile, UndeliveredMail
+    from watcher.service_settings import ServiceSettings
+    from watcher.worker import Worker
+
+#: Seconds a clean stop may take for the threads that deliver.
+STOP_SECONDS = 1.5
+#: The shortest time between two looks, however many events ring.
+LOOK_GAP_SECONDS = 0.2
+
+_log = structlog.get_logger("spikewarden.service")
+
+
+class ServiceUnready(WatcherError):
+    """The ledger holds no settings to work with."""
+
+    def __str__(self) -> str:
+        return "No settings were adopted yet. Nothing was taken in. Adopt the configuration first."
+
+
+@dataclass(frozen=True, slots=True)
+class OnceReport:
+    """What `Service.once` did.
+
+    Attributes
+    ----------
+    assessed
+        Every export that was evaluated, as it stands now.
+    unsettled
+        Names of files that were still changing or could not be read.
+    troubles
+        What is wrong, in sentences.
+    undelivered_mails, undelivered_files
+        What is still in the queue.
+    stopped
+        It was told to stop before it was done.
+    """
+
+    assessed: tuple[Assessed, ...]
+    unsettled: tuple[str, ...]
+    troubles: tuple[str, ...]
+    undelivered_mails: tuple[UndeliveredMail, ...]
+    undelivered_files: tuple[UndeliveredFile, ...]
+    stopped: bool
+
+
+class Service:
+    """The service over one records folder.
+
+    Parameters
+    ----------
+    settings
+        The adopted settings as plain records.
+    ledger
+        Open, with settings adopted.
+    worker
+        Computes; given its settings here.
+    version
+        The program's, for the heartbeat.
+    disk, clock
+        The world; for tests.
+
+    Raises
+    ------
+    ServiceUnready
+        No settings were adopted.
+    """
+
+    def __init__(
+        self,
+        settings: ServiceSettings,
+        ledger: Ledger,
+        worker: Worker,
+        *,
+        version: str = "unknown",
+        disk: Disk | None = None,
+        clock: Clock | None = None,
+    ) -> None:
+        adopted = ledger.current_settings()
+        if adopted is None:
+            raise ServiceUnready
+        disk, clock = disk or Disk(), clock or SystemClock()
+        self._settings = settings
+        self._adopted = adopted
+        self._ledger = ledger
+        self._worker = worker
+        self._clock = clock
+        self._stopping = False
+        self._wake = Wake()
+        self._halt = Wake()
+        worker.on_start = [{"do": "adopt", "snapshot": json.loads(adopted.body)}]
+        self._addressing = Addressing(settings.mail, clock)
+        self._troubles = Troubles(ledger, self._addressing, clock)
+        self._copies = Copies(
+            settings.records,
+            disk,
+            size_limit_bytes=settings.size_limit_bytes,
+            reserve_bytes=settings.reserve_bytes,
+        )
+        self._intake = Intake(settings, ledger, self._copies, clock)
+        self._assessment = Assessment(
+            settings,
+            adopted,
+            worker=worker,
+            ledger=ledger,
+            copies=self._copies,
+            addressing=self._addressing,
+            troubles=self._troubles,
+            clock=clock,
+        )
+        self._files = Files(ledger.outgoing, settings.results, disk, clock)
+        self._mails = Mails(ledger.outgoing, Post(settings.mail) if settings.mail else None, clock)
+        self._pulse = Pulse(
+            settings, ledger, self._troubles, clock, version=version, settings_number=adopted.number
+        )
+        self._cut_short = CutShort(settings.records)
+        self._threads: list[OutboxThread] = []
+        self._rung_for = ledger.changes
+
+    # -- the three that say it all -----------------------------------------------------------------------------
+
+    def run(self) -> None:
+        """Wait, accept, evaluate, record and deliver, until stopped by a signal or `stop`."""
+        with self._stopped_by_signals(), self._open(), self._delivering(), self._listening() as events:
+            while not self._stopping:
+                events.renew()
+                seconds = self._troubles.survive("taking in and evaluating", self._round)
+                self._troubles.survive("reporting", self._tell)
+                self._rest(self._settings.scan_seconds if seconds is None else seconds)
+
+    def once(self) -> OnceReport:
+        """Take in what is there now, evaluate it, try each delivery that is due once, and end."""
+        with self._stopped_by_signals(), self._open():
+            self._take_in()
+            self._halt.wait(self._settings.settle_seconds + 0.01)
+            taken = self._take_in()
+            assessed = self._evaluate_everything()
+            self._tell()
+            if not self._stopping:
+                self._files.deliver_due()
+                self._mails.deliver_due()
+            return self._report(taken, assessed)
+
+    def _round(self) -> float:
+        """Look, take in, evaluate for a while; returns how long to wait before the next round."""
+        taken = self._take_in()
+        more = self._evaluate_for_a_while()
+        self._worker.retire_if_idle()
+        if more:
+            return 0.0
+        if taken.settles_at is not None:
+            return max(taken.settles_at - self._clock.monotonic(), 0.0) + 0.005
+        return self._settings.scan_seconds
+
+    # -- stopping ----------------------------------------------------------------------------------------------
+
+    def stop(self) -> None:
+        """End soon; safe to call from a signal handler and from any thread. Accepted exports stay accepted."""
+        self._stopping = True
+        self._worker.interrupt()
+        self._halt.ring()
+        self._wake.ring()
+
+    # -- the steps of a round ----------------------------------------------------------------------------------
+
+    def _take_in(self) -> Taken:
+        taken = self._intake.take_in(lambda: self._stopping)
+        self._troubles.set("folders", taken.troubles)
+        self._pulse.looked(taken)
+        return taken
+
+    def _evaluate_for_a_while(self) -> bool:
+        """Evaluate pending exports until the next look is due; returns whether some are left."""
+        until = self._clock.monotonic() + self._settings.scan_seconds
+        for export in self._pending():
+            if self._stopping or not self._evaluate(export, final=False):
+                return False
+            if self._clock.monotonic() >= until:
+                return True
+        return bool(self._pending()) and not self._stopping
+
+    def _evaluate_everything(self) -> dict[int, Assessed]:
+        """Evaluate until nothing is pending; for `once`, where nothing more is waited for."""
+        assessed: dict[int, Assessed] = {}
+        while exports := self._pending(complete_after_seconds=0.0):
+            for export in exports:
+                if self._stopping or not (found := self._evaluate(export, final=True)):
+                    return assessed
+                assessed[export.id] = found
+        return assessed
+
+    def _pending(self, complete_after_seconds: float | None = None) -> list[ExportRow]:
+        if complete_after_seconds is None:
+            complete_after_seconds = self._settings.complete_after_seconds
+        exports = self._ledger.pending(self._adopted.number, complete_after_seconds=complete_after_seconds)
+        # The one that the last run did not survive comes last, so that it cannot keep the others waiting.
+        return sorted(exports, key=lambda each: each.id == self._cut_short.export_id)
+
+    def _evaluate(self, export: ExportRow, *, final: bool) -> Assessed | None:
+        """Evaluate one export; None where the worker cannot work now, and nothing was recorded."""
+        self._cut_short.begins(export.id)
+        self._pulse.evaluates(export.name)
+        try:
+            assessed = self._assessment.evaluate(export, final=final)
+        except WorkerStopped:
+            return None
+        except WorkerUnfit as error:
+            self._troubles.set("worker", [Trouble("worker-unfit", str(error))])
+            return None
+        finally:
+            self._cut_short.ends()
+            self._pulse.evaluates(None)
+        self._troubles.set("worker", [])
+        self._ring_deliverers()
+        return assessed
+
+    def _tell(self) -> None:
+        """Mail what is new about troubles and unclaimed exports; write the heartbeat."""
+        self._troubles.report_new()
+        self._digest_unclaimed()
+        self._ring_deliverers()
+        self._pulse.beat(running=True)
+
+    def _ring_deliverers(self) -> None:
+        """Wake the threads that deliver where something was recorded that may be for them."""
+        if self._rung_for != self._ledger.changes:
+            self._rung_for = self._ledger.changes
+            for thread in self._threads:
+                thread.ring()
+
+    def _digest_unclaimed(self) -> None:
+        """Mail once a day which exports no layout claims, all those that no such mail named yet."""
+        today = f"unclaimed:{self._clock.now():%Y-%m-%d}"
+        if self._settings.mail is None or self._ledger.mailed(today):
+            return
+        keys = {f"unclaimed:{each.name}:{each.sha256}": each for each in self._ledger.unclaimed()}
+        new = {key: each for key, each in keys.items() if not self._ledger.mailed(key)}
+        mail = self._addressing.address(notices.unclaimed(list(new.values()), (today, *new))) if new else None
+        if mail is not None:
+            self._ledger.report(mail)
+
+    def _rest(self, seconds: float) -> None:
+        """Wait for a ring; many rings in a row do not make many looks."""
+        if self._stopping or not self._wake.wait(seconds):
+            return
+        self._halt.wait(min(LOOK_GAP_SECONDS, self._settings.settle_seconds))
+
+    def _report(self, taken: Taken, assessed: dict[int, Assessed]) -> OnceReport:
+        outgoing = self._ledger.outgoing
+        return OnceReport(
+            assessed=tuple(assessed.values()),
+            unsettled=taken.unsettled,
+            troubles=tuple(self._troubles.sentences()),
+            undelivered_mails=tuple(outgoing.undelivered_mails()),
+            undelivered_files=tuple(outgoing.undelivered_files()),
+            stopped=self._stopping,
+        )
+
+    # -- opening and closing -----------------------------------------------------------------------------------
+
+    @contextmanager
+    def _open(self) -> Iterator[None]:
+        """Put the records in order after whatever the last run went through; leave them in order."""
+        unknown = self._ledger.outgoing.recover()
+        self._copies.prepare()
+        self._assessment.prepare()
+        self._files.prepare()
+        _log.info("service begins", pid=os.getpid(), attempts_of_unknown_outcome=unknown)
+        try:
+            yield
+        finally:
+            self._worker.close()
+            self._pulse.beat(running=False)
+            _log.info("service ends", stopped=self._stopping)
+
+    @contextmanager
+    def _delivering(self) -> Iterator[None]:
+        """Run the two threads that deliver."""
+        self._threads = [
+            OutboxThread("delivering result files", self._files, self._troubles.survive, self._clock),
+            OutboxThread("mailing", self._mails, self._troubles.survive, self._clock),
+        ]
+        self._pulse.follow(self._threads[1])
+        for thread in self._threads:
+            thread.start()
+        try:
+            yield
+        finally:
+            for thread in self._threads:
+                thread.stop(STOP_SECONDS)
+
+    @contextmanager
+    def _listening(self) -> Iterator[Events]:
+        settings = self._settings
+        events = Events(settings.exports, self._wake, subfolders=settings.subfolders, enabled=settings.events)
+        try:
+            yield events
+        finally:
+            events.close()
+
+    @contextmanager
+    def _stopped_by_signals(self) -> Iterator[None]:
+        """Let the signals that ask a process to end call `stop`, while this runs in the main thread."""
+        if threading.current_thread() is not threading.main_thread():
+            yield
+            return
+        names = [name for name in ("SIGTERM", "SIGINT", "SIGBREAK") if hasattr(signal, name)]
+        before = {name: signal.signal(getattr(signal, name), lambda *_: self.stop()) for name in names}
+        try:
+            yield
+        finally:
+            for name, handler in before.items():
+                signal.signal(getattr(signal, name), handler)
