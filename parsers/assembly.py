@@ -26,7 +26,7 @@ from parsers.readings import (
     Texts,
     line_ranges,
 )
-from parsers.spelling import fold, listed, renamed, shown
+from parsers.spelling import folded, listed, looked_up, renamed, shown
 from parsers.values import Odd, Values
 
 if TYPE_CHECKING:
@@ -34,7 +34,6 @@ if TYPE_CHECKING:
 
     from parsers.columns import Plan
     from parsers.heading import Heading
-    from parsers.labels import Understood
     from parsers.layout import Layout
     from parsers.readings import Floats
     from parsers.table import Frame, Table
@@ -45,6 +44,7 @@ EMPTY_ROW = "no cell is filled"
 NO_SAMPLE = "row without sample ID"
 NO_ANALYTE = "row without analyte"
 UNMATCHED = "label matches no rule"
+_ROLES = [role.word for role in Role]
 _FOLLOWS = "Its series is not evaluated."
 
 
@@ -59,7 +59,7 @@ def assemble(
         If labels match no rule and the layout does not set them aside, or no reading remains.
     """
     label = _label(layout, plan, table, heading)
-    understood = understand(label.names, layout.labels) if layout.labels else [None] * len(label.names)
+    understood = understand(folded(label.names), layout.labels)
     values = Values(frame, layout, plan, table, heading, label, understood)
     return _Assembly(values, keep=np.ones(len(table.line), dtype=bool)).readings()
 
@@ -83,7 +83,7 @@ def filled(texts: Texts, other: Texts) -> Texts:
         return texts
     together = Texts.of([*texts.names, *other.names])
     codes = np.where(gaps & (other.codes >= 0), other.codes + np.int32(len(texts.names)), texts.codes)
-    return Texts(np.append(together.codes, np.int32(-1))[codes], together.names)
+    return looked_up(together, Texts(codes, (*texts.names, *other.names)))
 
 
 @dataclass(slots=True)
@@ -138,10 +138,9 @@ class _Assembly:
 
     def leave_out(self, rows: NDArray[np.bool_], reason: str) -> None:
         """Set rows aside; one that says something and belongs to no sample or analyte is a problem as well."""
-        lines = self.values.frame.lines.lines
         for row in np.flatnonzero(rows & self.keep).tolist():
             line = int(self.values.table.line[row])
-            text = lines[line - 1]
+            text = self.values.frame.lines.lines[line - 1]
             empty = not text.replace(self.values.layout.separator, "").replace('"', "").strip()
             self.set_aside.append(SetAside(line, EMPTY_ROW if empty else reason, text))
             if not empty and reason in (NO_SAMPLE, NO_ANALYTE):
@@ -157,10 +156,10 @@ class _Assembly:
 
     def unmatched(self) -> None:
         layout, label = self.values.layout, self.values.label
-        unmatched = np.array([found is None for found in self.values.understood] + [False])
+        unmatched = self.values.understood.rule < 0
         if not layout.labels or not unmatched.any():
             return
-        rows = unmatched[label.codes]
+        rows = np.append(unmatched, False)[label.codes]  # noqa: FBT003 (a row without label is another matter)
         if layout.unmatched == "set aside":
             self.leave_out(rows, UNMATCHED)
             return
@@ -186,8 +185,7 @@ class _Assembly:
 
     def role(self, added: Quantities, spike_volume: Quantities, level: Texts, nominal: Quantities) -> NDArray[np.int8]:
         values = self.values
-        by_rule = [roles.UNKNOWN if found is None or found.role is None else found.role for found in values.understood]
-        by_label = np.array([*by_rule, roles.UNKNOWN], dtype=np.int8)[values.label.codes]
+        by_label = np.append(values.understood.role, np.int8(roles.UNKNOWN))[values.label.codes]
         said = values.texts("role")
         by_word = np.array([ROLE_WORDS.get(word, roles.UNKNOWN) for word in (*said.names, "")], dtype=np.int8)
         by_column = by_word[said.codes]
@@ -227,13 +225,14 @@ class _Assembly:
     def sample(self, role: NDArray[np.int8]) -> Texts:
         """Return what groups spiked with unspiked; standards, blanks and checks may go by their label."""
         values = self.values
-        label = renamed(values.label, lambda text: fold(text) or None)
-        by_rule = any("sample" in rule.words for rule in values.layout.labels)
+        by_rule = "sample" in values.understood.said
         if values.layout.columns.sample is None and "sample" not in values.heading and not by_rule:
-            return label
+            return renamed(values.label, folded(values.label.names))
         sample = values.texts("sample")
-        from_label = Texts(np.where(_is_sample(role), np.int32(-1), label.codes), label.names)
-        sample = filled(sample, from_label)
+        gaps = sample.codes < 0
+        if (gaps & ~_is_sample(role)).any():
+            label = renamed(values.label, folded(values.label.names))
+            sample = filled(sample, Texts(np.where(_is_sample(role), np.int32(-1), label.codes), label.names))
         self.leave_out(sample.codes < 0, NO_SAMPLE)
         return sample
 
@@ -329,16 +328,20 @@ class _Assembly:
         first[label.codes[rows][::-1]] = rows[::-1]
         differs = rows[(role[rows] != role[first[label.codes[rows]]])]
         mixed = set(label.codes[differs].tolist())
-        uses = []
-        for code, (text, found, row) in enumerate(zip(label.names, values.understood, first.tolist(), strict=True)):
-            rule = "" if found is None else values.layout.labels[found.rule].written
-            if found is None and values.layout.labels:
-                uses.append(LabelUse(text, "", "", "", "", counts[code]))
-                continue
-            word = "by row" if code in mixed else Role(role[row]).word
-            level = "" if found is None else found.said.get("level", "")
-            uses.append(LabelUse(text, rule, word, sample[row] or "", level, counts[code]))
-        return tuple(uses)
+        words = [_ROLES[code] for code in role[first].tolist()]
+        for code in mixed:
+            words[code] = "by row"
+        number = values.understood.rule.tolist()
+        rules = [*(rule.written for rule in values.layout.labels), ""]  # the index -1 of no rule picks the last one
+        written = [rules[at] for at in number]
+        levels = values.understood.said.get("level", Texts.absent(len(number)))
+        level = [*levels.names, ""]
+        name = [*sample.names, ""]
+        samples = [name[code] for code in sample.codes[first].tolist()]
+        if values.layout.labels and -1 in number:
+            words = ["" if at < 0 else word for at, word in zip(number, words, strict=True)]
+            samples = ["" if at < 0 else text for at, text in zip(number, samples, strict=True)]
+        return tuple(map(LabelUse, label.names, written, words, samples, [level[code] for code in levels.codes.tolist()], counts))
 
 
 def _is_sample(role: NDArray[np.int8]) -> NDArray[np.bool_]:

@@ -21,10 +21,11 @@ from parsers import table
 from parsers.cells import Cell, Grammar, Kind, Numbers
 from parsers.patterns import literal_start
 from parsers.readings import SetAside, Texts
-from parsers.spelling import renamed
+from parsers.spelling import looked_up
+from parsers.text import MOST_CHARACTERS
 
 if TYPE_CHECKING:
-    from collections.abc import Iterator
+    from collections.abc import Iterator, Mapping, Sequence
 
     from numpy.typing import NDArray
 
@@ -36,9 +37,12 @@ if TYPE_CHECKING:
 
 #: Rows from which the C parser pays: it costs a millisecond before it starts.
 FEWEST_ROWS = 1500
-#: Longest plain number in bytes: up to here the C parser rounds as Python does; longer ones are converted by Python.
+#: Longest plain number in bytes where cells are looked at one by one.
 LONGEST_NUMBER = 17
+#: Share of cells that are no plain numbers from which a column is read as texts.
+MOST_DOUBTFUL = 0.1
 _NEWLINE = 10
+_PIECE = 1 << 18
 _CLASS = re.compile(r"\[([^\]\\^-]+)\][+*]?")
 
 
@@ -82,34 +86,57 @@ def _spares_numbers(pattern: re.Pattern[str] | tuple[str, ...] | None) -> bool:
 
 @dataclass(slots=True)
 class _Fates:
-    """Which lines behind the header are rows, and why the others are not."""
+    """Which lines behind the header are rows, and why the others are not.
+
+    Attributes
+    ----------
+    frame
+        Where the table begins.
+    last, end
+        Index of the line behind the table, and where it begins in the text.
+    reasons
+        Why lines before `last`, and the line `last` itself, are no rows.
+    """
 
     frame: Frame
     last: int
+    end: int
     reasons: dict[int, str]
 
     @classmethod
     def of(cls, frame: Frame, layout: Layout) -> _Fates:
         """Apply the patterns of a layout in the order of `parsers.table.fate`."""
-        lines, first, last = frame.lines, frame.first, len(frame.lines)
-        reasons: dict[int, str] = {}
+        lines, first, offset = frame.lines, frame.first, frame.offset
+        fates = cls(frame, len(lines), len(lines.text), {})
         if layout.until is not None:
-            ends = lines.matching(layout.until, first, last)
-            end = next((at for at in ends if lines.lines[at].strip()), None)
-            if end is not None:
-                reasons[end], last = table.UNTIL, end
+            ends = lines.matching(layout.until, first, offset)
+            last = next((at for at in ends if lines.lines[at].strip()), None)
+            if last is not None:
+                behind = sum(len(line) + 1 for line in lines.lines[last:]) - (not lines.text.endswith("\n"))
+                fates = cls(frame, last, len(lines.text) - behind, {last: table.UNTIL})
         searches = [(layout.finished, table.FINISHED), *((pattern, table.SKIPPED) for pattern in layout.skip)]
         for pattern, reason in searches:
-            for at in lines.matching(pattern, first, last) if pattern is not None else ():
-                reasons.setdefault(at, reason)
-        header = lines.lines[frame.header_at].strip()
-        again = [at for at in range(first, last) if header in lines.lines[at]] if lines.text.count(header) > 1 else []
-        if layout.header is not None:
-            again += lines.matching(layout.header, first, last)
+            for at in lines.matching(pattern, first, offset) if pattern is not None else ():
+                fates.note(at, reason)
+        fates.headers_again(layout)
+        return fates
+
+    def note(self, at: int, reason: str) -> None:
+        if at < self.last and at not in self.reasons and self.frame.lines.lines[at].strip():
+            self.reasons[at] = reason
+
+    def headers_again(self, layout: Layout) -> None:
+        frame, lines = self.frame, self.frame.lines
+        if layout.header is not None:  # the header itself matches its pattern, so a repetition does
+            again = lines.matching(layout.header, frame.first, frame.offset)
+        elif lines.text.find(frame.header, frame.offset, self.end) >= 0:
+            again = [at for at in range(frame.first, self.last) if lines.lines[at] == frame.header]
+        else:
+            again = []
         for at in again:
-            if at not in reasons and lines.lines[at].strip() and table.header_again(frame, at, layout):
-                reasons[at] = table.HEADER_AGAIN
-        return cls(frame, last, reasons)
+            other = at < self.last and at not in self.reasons and lines.lines[at].strip()
+            if other and table.header_again(frame, at, lines.lines[at], layout):
+                self.reasons[at] = table.HEADER_AGAIN
 
     def leave_out_blanks(self) -> bool:
         """Set blank lines aside; tell whether there were any."""
@@ -127,15 +154,12 @@ class _Fates:
 
     def data(self) -> bytes:
         """Return the rows as UTF-8, each with a line feed."""
-        lines, first = self.frame.lines, self.frame.first
-        cut = set(self._cut())
-        if cut:
-            chunk = "\n".join([lines.lines[at] for at in range(first, self.last) if at not in cut])
+        lines, cut = self.frame.lines, set(self._cut())
+        if not cut:
+            chunk = lines.text[self.frame.offset : self.end]
         else:
-            begin = sum(len(line) + 1 for line in lines.lines[:first])
-            behind = sum(len(line) + 1 for line in lines.lines[self.last :])
-            chunk = lines.text[begin : len(lines.text.removesuffix("\n")) + 1 - behind].removesuffix("\n")
-        return f"{chunk}\n".encode()
+            chunk = "\n".join([lines.lines[at] for at in range(self.frame.first, self.last) if at not in cut])
+        return (chunk if chunk.endswith("\n") else f"{chunk}\n").encode()
 
     def line_numbers(self) -> LineNumbers:
         """Return the line of each row."""
@@ -145,10 +169,11 @@ class _Fates:
 
     def set_aside(self) -> list[SetAside]:
         """Return every line that is no row."""
-        lines = self.frame.lines
-        aside = [*self.frame.set_aside]
+        aside, lines = [*self.frame.set_aside], self.frame.lines
         aside += [SetAside(at + 1, reason, lines.lines[at]) for at, reason in sorted(self.reasons.items())]
-        return aside + table.behind_table(lines, self.last + (self.last in self.reasons))
+        if self.last in self.reasons:
+            aside += table.behind_table(lines.lines[self.last + 1 :], self.last + 1)
+        return aside
 
 
 @dataclass(slots=True)
@@ -169,6 +194,10 @@ class _Spans:
     codes: NDArray[np.uint8]
     ends: NDArray[np.int64]
 
+    def __len__(self) -> int:
+        """Return the number of rows."""
+        return len(self.ends)
+
     @classmethod
     def of(cls, fates: _Fates, separator: str, width: int) -> _Spans | None:
         """Find the cells; None where a row has another number of fields than the header or a quote stands in it."""
@@ -181,15 +210,17 @@ class _Spans:
     def _regular(cls, fates: _Fates, separator: str, width: int) -> _Spans | None:
         data, rows = fates.data(), fates.rows()
         codes = np.frombuffer(data, dtype=np.uint8)
-        if rows == 0 or b'"' in data:
+        # A mark of UTF-8 at the beginning would vanish in the C parser.
+        if rows == 0 or b'"' in data or data.startswith(b"\xef\xbb\xbf"):
             return None
-        marks = np.flatnonzero((codes == ord(separator)) | (codes == _NEWLINE))
+        marks = _marks(codes, ord(separator))
         if len(marks) != rows * width:
             return None
         ends = marks.reshape(rows, width)
-        # As many line feeds as rows, and all at the ends of rows: no row is short while another is long.
-        regular = (codes[ends[:, -1]] == _NEWLINE).all() and data.count(b"\n") == rows
-        return cls(data, codes, ends) if regular else None
+        # There are as many line feeds as rows. Where all stand at ends of rows, no row is short while another is long.
+        regular = bool((codes[ends[:, -1]] == _NEWLINE).all())
+        longest = int(np.diff(ends[:, -1], prepend=-1).max())
+        return cls(data, codes, ends) if regular and longest <= MOST_CHARACTERS else None
 
     def span(self, column: int) -> tuple[NDArray[np.int64], NDArray[np.int64]]:
         """Return begin and end of the cells of a column."""
@@ -204,6 +235,15 @@ class _Spans:
         begin, end = self.span(column)
         for start, stop in zip(begin[rows].tolist(), end[rows].tolist(), strict=True):
             yield self.data[start:stop].decode()
+
+
+def _marks(codes: NDArray[np.uint8], separator: int) -> NDArray[np.int64]:
+    """Return the indices of separators and line feeds, looked for in pieces that fit the processor's cache."""
+    found = []
+    for begin in range(0, len(codes), _PIECE):
+        piece = codes[begin : begin + _PIECE]
+        found.append(np.flatnonzero((piece == separator) | (piece == _NEWLINE)) + begin)
+    return np.concatenate(found)
 
 
 @dataclass(slots=True)
@@ -228,43 +268,58 @@ class BlockTable:
         return values if isinstance(values, Numbers) else grammar.column(values)
 
     def read(self, separator: str, plan: Plan, grammar: Grammar) -> None:
-        """Convert the columns of a plan.
+        """Convert the columns of a plan, all at once where each number column holds plain numbers only.
 
         Raises
         ------
         ValueError
             If a cell made of the characters of a number is none.
         """
-        plain = _plain_cells(self.cells, plan.number_columns, grammar.decimal)
-        enough = {column for column, rows in plain.items() if rows.mean() > 0.9}
-        frame = pd.read_csv(
+        numbers = plan.number_columns
+        try:
+            frame = self._parsed(separator, plan, grammar.decimal, dict.fromkeys(numbers, ()))
+            doubtful = {at: np.zeros(len(self.cells), dtype=bool) for at in numbers}
+            if any(_may_be_words(frame[at].to_numpy()) for at in numbers):
+                raise ValueError("perhaps a column of True and False")  # noqa: TRY301
+        except ValueError:
+            doubtful = {at: _doubtful(self.cells, at, grammar.decimal) for at in numbers}
+            numbers = frozenset(at for at in numbers if doubtful[at].mean() < MOST_DOUBTFUL)
+            words = {at: sorted(set(self.cells.texts(at, np.flatnonzero(doubtful[at])))) for at in numbers}
+            frame = self._parsed(separator, plan, grammar.decimal, words)
+        for at in frame.columns:
+            if at in numbers:
+                self.columns[at] = self._numbers(at, frame[at].to_numpy(copy=True), doubtful[at], grammar)
+            else:
+                self.columns[at] = _texts(frame[at])
+
+    def _parsed(
+        self, separator: str, plan: Plan, decimal: str, number_columns: Mapping[int, Sequence[str]]
+    ) -> pd.DataFrame:
+        """Let the C parser split and convert; `number_columns` names the words that are no numbers."""
+        wanted = plan.text_columns | plan.number_columns
+        return pd.read_csv(
             BytesIO(self.cells.data),
             sep=separator,
             header=None,
             names=list(range(len(self.headers))),
-            usecols=sorted(plan.text_columns | plan.number_columns),
-            dtype={at: "float64" if at in enough else "category" for at in plan.text_columns | plan.number_columns},
-            na_values={at: sorted(set(self.cells.texts(at, np.flatnonzero(~plain[at])))) for at in enough},
+            usecols=sorted(wanted),
+            dtype={at: "float64" if at in number_columns else "object" for at in wanted},
+            na_values={at: list(words) for at, words in number_columns.items() if words} or None,
+            na_filter=any(number_columns.values()),
             keep_default_na=False,
             index_col=False,
             quoting=csv.QUOTE_NONE,
             on_bad_lines="error",
             skip_blank_lines=False,
             lineterminator="\n",
-            decimal=grammar.decimal,
-            low_memory=False,
+            decimal=decimal,
         )
-        for at in frame.columns:
-            if at in enough:
-                self.columns[at] = self._numbers(at, frame[at].to_numpy(dtype=np.float64, copy=True), plain[at], grammar)
-            else:
-                self.columns[at] = _texts(frame[at])
 
-    def _numbers(self, column: int, values: Floats, plain: NDArray[np.bool_], grammar: Grammar) -> Numbers:
+    def _numbers(self, column: int, values: Floats, doubtful: NDArray[np.bool_], grammar: Grammar) -> Numbers:
         """Put what is no plain number through the grammar."""
         words = (*grammar.missing, *(word for some in (grammar.below, grammar.above) if isinstance(some, tuple) for word in some))
         written = [value for word in words if (value := grammar.value(word)) is not None]
-        doubtful = ~plain | ~np.isfinite(values)
+        doubtful = doubtful | ~np.isfinite(values)
         if written:
             doubtful |= np.isin(values, written)
         rows = np.flatnonzero(doubtful)
@@ -280,26 +335,28 @@ class BlockTable:
         return Numbers(values, odd)
 
 
-def _plain_cells(cells: _Spans, columns: frozenset[int], decimal: str) -> dict[int, NDArray[np.bool_]]:
-    """Tell for each cell of the number columns whether it is short, not empty and made of the characters of a number."""
-    if not columns:
-        return {}
-    foreign = np.ones(256, dtype=np.uint8)
-    foreign[list(b"0123456789+-eE" + decimal.encode())] = 0
-    so_far = np.empty(len(cells.codes) + 1, dtype=np.int32)
-    so_far[0] = 0
-    np.cumsum(foreign[cells.codes], dtype=np.int32, out=so_far[1:])
-    plain = {}
-    for column in columns:
-        begin, end = cells.span(column)
-        length = end - begin
-        plain[column] = (so_far[end] == so_far[begin]) & (length > 0) & (length <= LONGEST_NUMBER)
-    return plain
+def _may_be_words(values: Floats) -> bool:
+    """Tell whether a column may be made of True and False, which the C parser takes for numbers."""
+    return bool(((values == 0) | (values == 1)).all())
+
+
+def _doubtful(cells: _Spans, column: int, decimal: str) -> NDArray[np.bool_]:
+    """Tell which cells of a column are empty, long, or hold a character that no plain number has."""
+    begin, end = cells.span(column)
+    length = end - begin
+    foreign = np.ones(256, dtype=bool)
+    foreign[list(b"0123456789+-eE" + decimal.encode())] = False
+    doubtful = (length == 0) | (length > LONGEST_NUMBER)
+    for place in range(min(int(length.max()), LONGEST_NUMBER)):
+        doubtful |= foreign[cells.codes[np.minimum(begin + place, end - 1)]] & (length > place)
+    return doubtful
 
 
 def _texts(column: pd.Series) -> Texts:
-    """Return a column of categories as trimmed texts, numbered in the order in which they first appear."""
-    names = column.cat.categories.to_list()
-    codes, order = pd.factorize(column.cat.codes.to_numpy())
-    texts = Texts(codes.astype(np.int32), tuple(names[code] for code in order.tolist()))
-    return renamed(texts, lambda name: name.strip() or None)
+    """Return a column as trimmed texts, numbered in the order in which they first appear."""
+    codes, names = pd.factorize(column.to_numpy(dtype=object))
+    trimmed = [name.strip() for name in names.tolist()]
+    if "" in trimmed or len(set(trimmed)) < len(trimmed):
+        of_names = Texts.of([name or None for name in trimmed])
+        return looked_up(of_names, Texts(codes.astype(np.int32), tuple(trimmed)))
+    return Texts(codes.astype(np.int32), tuple(trimmed))

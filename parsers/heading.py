@@ -33,7 +33,7 @@ def read_heading(frame: Frame, layout: Layout) -> dict[str, Heading]:
     """
     found = {}
     for name, pattern in layout.heading.items():
-        above = frame.lines.lines[: frame.header_at]
+        above = frame.lines.head(frame.header_at)
         at, match = next(((at, match) for at, line in enumerate(above) if (match := pattern.search(line))), (0, None))
         value = fold(match.group(1) or "") if match else ""
         if not value:

@@ -11,16 +11,21 @@ from dataclasses import dataclass
 from functools import cached_property
 from typing import TYPE_CHECKING, Literal
 
+import numpy as np
 from pydantic import BaseModel, ConfigDict, model_validator
 
 from parsers.fields import FROM_LABEL
 from parsers.patterns import Pattern
-from parsers.readings import ROLE_WORDS, Role
-from parsers.spelling import fold, suggestion
+from parsers.readings import ROLE_WORDS, Texts
+from parsers.spelling import fold, renamed, suggestion
 
 if TYPE_CHECKING:
-    from collections.abc import Iterable, Sequence
+    from collections.abc import Sequence
 
+    from numpy.typing import NDArray
+
+#: Labels matched at once: so few matches live at a time that the garbage collector has no reason to start.
+_AT_ONCE = 500
 _WORD = re.compile(r"\{([^{}]*)\}")
 
 
@@ -92,52 +97,65 @@ class LabelRule(BaseModel):
         """The rule as it stands in the layout."""
         return self.like if self.like is not None else self.regex.pattern
 
-    def match(self, label: str) -> dict[str, str] | None:
-        """Return what a folded label says under this rule, None where it does not match."""
-        found = self.regex.search(label) if self.like is None else self.regex.fullmatch(label)
-        if found is None:
-            return None
-        return {word: fold(text) for word, text in found.groupdict().items() if text}
-
 
 @dataclass(frozen=True, slots=True)
-class Understood:
-    """A label that a rule matched.
+class Understanding:
+    """What distinct labels say.
 
     Attributes
     ----------
     rule
-        Index of the rule.
+        int32[labels], index of the rule that matched, -1 where none did.
     role
-        What the rule says, or None.
+        int8[labels], code of the role that the rule says, -1 where it says none.
     said
-        Field to text, as captured.
+        Field to one text for each label, absent where it says nothing.
     """
 
-    rule: int
-    role: Role | None
-    said: dict[str, str]
+    rule: NDArray[np.int32]
+    role: NDArray[np.int8]
+    said: dict[str, Texts]
 
 
-def understand(labels: Iterable[str], rules: Sequence[LabelRule]) -> list[Understood | None]:
-    """Match each distinct label; None where no rule matches.
+def understand(labels: Sequence[str], rules: Sequence[LabelRule]) -> Understanding:
+    """Match each distinct label; the first rule that matches wins.
 
     Parameters
     ----------
     labels
-        Distinct labels, in any spelling of blanks.
+        Distinct labels, blanks folded.
     rules
-        The rules of the layout, the first match wins.
+        The rules of the layout.
     """
-    tried = [(number, rule.match, ROLE_WORDS.get(rule.role or "")) for number, rule in enumerate(rules)]
-    results: list[Understood | None] = []
-    for label in labels:
-        folded = fold(label)
-        result = None
-        for number, match, role in tried:
-            said = match(folded)
-            if said is not None:
-                result = Understood(number, role, said)
-                break
-        results.append(result)
-    return results
+    matched = [-1] * len(labels)
+    said: dict[str, list[str | None]] = {word: [None] * len(labels) for rule in rules for word in rule.words}
+    for begin in range(0, len(labels), _AT_ONCE):
+        _match(labels[begin : begin + _AT_ONCE], begin, rules, matched, said)
+    roles = [*(ROLE_WORDS.get(rule.role or "", -1) for rule in rules), -1]  # the index -1 of no rule picks the last one
+    role = np.array(roles, dtype=np.int8)[matched]
+    return Understanding(np.array(matched, dtype=np.int32), role, {word: _trimmed(said[word]) for word in said})
+
+
+def _match(
+    labels: Sequence[str], begin: int, rules: Sequence[LabelRule], matched: list[int], said: dict[str, list[str | None]]
+) -> None:
+    """Note which rule each label matches and what it says, from the index `begin` on."""
+    left = list(enumerate(labels, begin))
+    for number, rule in enumerate(rules):
+        match = rule.regex.fullmatch if rule.like is not None else rule.regex.search
+        found = list(map(match, [label for _, label in left]))
+        if not any(found):
+            continue
+        hits = [(at, match) for (at, _), match in zip(left, found, strict=True) if match]
+        for at, _ in hits:
+            matched[at] = number
+        for word in rule.words:
+            column = said[word]
+            for at, hit in hits:
+                column[at] = hit[word]
+        left = [entry for entry, match in zip(left, found, strict=True) if not match]
+
+
+def _trimmed(column: list[str | None]) -> Texts:
+    texts = Texts.of(column)
+    return renamed(texts, [name.strip() or None for name in texts.names])

@@ -6,6 +6,7 @@ Nothing here knows what a text is for.
 from __future__ import annotations
 
 import difflib
+import re
 import unicodedata
 from typing import TYPE_CHECKING
 
@@ -14,7 +15,9 @@ import numpy as np
 from parsers.readings import Texts
 
 if TYPE_CHECKING:
-    from collections.abc import Callable, Iterable
+    from collections.abc import Callable, Iterable, Sequence
+
+_OTHER_BLANKS = re.compile(r"[\t\v\f\r\x1c-\x1f]")
 
 #: Longest piece of an export that an error quotes, in characters.
 SHOWN_CHARACTERS = 80
@@ -30,6 +33,13 @@ def fold(text: str) -> str:
     """
     folded = " ".join(text.split())
     return folded if folded.isascii() else unicodedata.normalize("NFC", folded)
+
+
+def folded(texts: Sequence[str]) -> Sequence[str]:
+    """Fold many trimmed texts; where all of them are plain, as in most exports, they are returned as they are."""
+    together = "\n".join(texts)
+    plain = together.isascii() and "  " not in together and not _OTHER_BLANKS.search(together)
+    return texts if plain and together.count("\n") == max(len(texts) - 1, 0) else [fold(text) for text in texts]
 
 
 def shown(text: str) -> str:
@@ -53,11 +63,14 @@ def suggestion(word: str, known: Iterable[str]) -> str:
     return f" Did you mean {lowered[close[0]]!r}?" if close else ""
 
 
-def renamed(texts: Texts, rename: Callable[[str], str | None]) -> Texts:
-    """Return the column with each distinct text replaced once; equal results become one text, None is absent."""
-    names = [rename(name) for name in texts.names]
-    if names == list(texts.names):
+def renamed(texts: Texts, names: Sequence[str | None]) -> Texts:
+    """Return the column with its distinct texts replaced in order; equal ones become one text, None is absent."""
+    if names is texts.names:
         return texts
-    distinct = Texts.of(names)
+    return looked_up(Texts.of(names), texts)
+
+
+def looked_up(of_names: Texts, texts: Texts) -> Texts:
+    """Return for each row what belongs to its text; `of_names` has one entry for each of the distinct texts."""
     # The code -1 of an absent text picks the element appended at the end, which is -1 again.
-    return Texts(np.append(distinct.codes, np.int32(-1))[texts.codes], distinct.names)
+    return Texts(np.append(of_names.codes, np.int32(-1))[texts.codes], of_names.names)

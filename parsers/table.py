@@ -29,6 +29,9 @@ if TYPE_CHECKING:
 #: Most lines of one quoted cell: more of them mean a quote that was never closed.
 MOST_LINES_IN_CELL = 20
 
+#: Lines in which a header is looked for before the whole export is split.
+_LIKELY_HEAD = 200
+
 BLANK = "blank line"
 BEFORE = "before the table"
 HEADER = "header"
@@ -69,16 +72,22 @@ class Frame:
         The export.
     headers
         Header names with folded blanks.
+    header
+        The header line as written.
     header_at, first
         Indices of the header line and of the first line behind it.
+    offset
+        Where that line begins in the text.
     set_aside
         The lines up to there.
     """
 
     lines: Lines
     headers: tuple[str, ...]
+    header: str
     header_at: int
     first: int
+    offset: int
     set_aside: tuple[SetAside, ...]
 
 
@@ -90,19 +99,28 @@ def find_table(lines: Lines, layout: Layout) -> Frame:
     ExportRefused
         If no line is the header.
     """
-    for at, line in enumerate(lines.lines):
-        if not line.strip() or any(pattern.search(line) for pattern in layout.skip):
-            continue
-        if layout.header.search(line) if layout.header else not _SEPARATOR_NOTE.match(line):
+    for count in (_LIKELY_HEAD, len(lines)):
+        at = _header_index(lines.head(count), layout)
+        if at is not None:
             record, behind = read_record(lines, at, layout.separator)
-            aside = [SetAside(number, BEFORE if text.strip() else BLANK, text)
-                     for number, text in enumerate(lines.lines[:at], 1)]
-            aside += [SetAside(number + 1, HEADER, lines.lines[number]) for number in range(at, behind)]
-            return Frame(lines, tuple(map(fold, record)), at, behind, tuple(aside))
+            above = lines.head(behind)
+            aside = [SetAside(number, BEFORE if text.strip() else BLANK, text) for number, text in enumerate(above[:at], 1)]
+            aside += [SetAside(number, HEADER, text) for number, text in enumerate(above[at:], at + 1)]
+            offset = sum(len(text) + 1 for text in above)
+            return Frame(lines, tuple(map(fold, record)), above[at], at, behind, offset, tuple(aside))
     if layout.header is None:
         raise lines.refusal(None, "expected a header line, got blank lines only", "Export again")
     sentence = f"expected a header line that matches {layout.header.pattern!r}, got none in {len(lines)} lines"
     raise lines.refusal(None, sentence, "Correct header in the layout, or export again")
+
+
+def _header_index(head: Sequence[str], layout: Layout) -> int | None:
+    for at, line in enumerate(head):
+        if not line.strip() or any(pattern.search(line) for pattern in layout.skip):
+            continue
+        if layout.header.search(line) if layout.header else not _SEPARATOR_NOTE.match(line):
+            return at
+    return None
 
 
 def read_record(lines: Lines, at: int, separator: str) -> tuple[list[str], int]:
@@ -113,7 +131,7 @@ def read_record(lines: Lines, at: int, separator: str) -> tuple[list[str], int]:
     ExportRefused
         If a quote is left open or followed by anything but a separator.
     """
-    line = lines.lines[at]
+    line = lines.head(at + 1)[at]
     if separator == " ":
         return line.split(), at + 1
     if '"' not in line:
@@ -132,7 +150,7 @@ def read_record(lines: Lines, at: int, separator: str) -> tuple[list[str], int]:
     return record, at + reader.line_num
 
 
-def header_again(frame: Frame, at: int, layout: Layout) -> bool:
+def header_again(frame: Frame, at: int, line: str, layout: Layout) -> bool:
     """Tell whether a line repeats the header.
 
     Raises
@@ -140,8 +158,7 @@ def header_again(frame: Frame, at: int, layout: Layout) -> bool:
     ExportRefused
         If it is a header by its pattern, but another one.
     """
-    line = frame.lines.lines[at]
-    if line.strip() == frame.lines.lines[frame.header_at].strip():
+    if line == frame.header:
         return True
     if layout.header is None or not layout.header.search(line):
         return False
@@ -185,8 +202,8 @@ def read_rows(frame: Frame, layout: Layout) -> RowTable:
     rows: list[list[str]] = []
     starts: list[int] = []
     aside = list(frame.set_aside)
-    at = frame.first
-    while at < len(lines):
+    at, end = frame.first, len(lines)
+    while at < end:
         line = lines.lines[at]
         reason = fate(frame, at, layout)
         if reason is not None:
@@ -202,7 +219,7 @@ def read_rows(frame: Frame, layout: Layout) -> RowTable:
         starts.append(at + 1)
         aside += [SetAside(number + 1, CONTINUED, lines.lines[number]) for number in range(at + 1, behind)]
         at = behind
-    aside += behind_table(lines, at)
+    aside += behind_table(lines.lines[at:], at)
     return RowTable(frame.headers, np.asarray(starts, dtype=np.int64), aside, rows)
 
 
@@ -217,12 +234,9 @@ def fate(frame: Frame, at: int, layout: Layout) -> str | None:
         return FINISHED
     if any(pattern.search(line) for pattern in layout.skip):
         return SKIPPED
-    return HEADER_AGAIN if header_again(frame, at, layout) else None
+    return HEADER_AGAIN if header_again(frame, at, line, layout) else None
 
 
-def behind_table(lines: Lines, at: int) -> list[SetAside]:
-    """Return the fate of the lines behind the end of the table."""
-    return [
-        SetAside(number, AFTER if text.strip() else BLANK, text)
-        for number, text in enumerate(lines.lines[at:], at + 1)
-    ]
+def behind_table(lines: Sequence[str], at: int) -> list[SetAside]:
+    """Return the fate of the lines behind the end of the table, the first of which has the index `at`."""
+    return [SetAside(number, AFTER if text.strip() else BLANK, text) for number, text in enumerate(lines, at + 1)]

@@ -7,7 +7,7 @@ them. Nothing here knows what a line means.
 from __future__ import annotations
 
 import codecs
-from dataclasses import dataclass
+from functools import cached_property
 from typing import TYPE_CHECKING
 
 from parsers.errors import ExportRefused
@@ -15,7 +15,7 @@ from parsers.patterns import literal_start
 
 if TYPE_CHECKING:
     import re
-    from collections.abc import Sequence
+    from collections.abc import Iterator, Sequence
 
 #: Largest export in bytes: fifty times the longest seen.
 MOST_BYTES = 512 * 1024 * 1024
@@ -33,9 +33,8 @@ _MARKS = (
 _REFUSED = "Nothing of this export is read."
 
 
-@dataclass(frozen=True, slots=True)
 class Lines:
-    """A decoded export.
+    """A decoded export; it is split into lines as far as somebody looks.
 
     Attributes
     ----------
@@ -45,33 +44,84 @@ class Lines:
         The declared encoding that matched.
     text
         All of it, every line end a line feed.
-    lines
-        Its lines without line ends; line number 1 is ``lines[0]``.
     """
 
-    name: str
-    encoding: str
-    text: str
-    lines: list[str]
+    def __init__(self, name: str, encoding: str, text: str) -> None:
+        self.name = name
+        self.encoding = encoding
+        self.text = text
+        self._length = text.count("\n") + (not text.endswith("\n"))
 
     def __len__(self) -> int:
         """Return the number of lines."""
-        return len(self.lines)
+        return self._length
 
-    def matching(self, pattern: re.Pattern[str], first: int, last: int) -> list[int]:
-        """Return the indices in [first, last) of the lines in which a pattern is found."""
+    @cached_property
+    def lines(self) -> list[str]:
+        """The lines without line ends; line number 1 is ``lines[0]``.
+
+        Raises
+        ------
+        ExportRefused
+            If a line is too long.
+        """
+        return self._split(self.text.removesuffix("\n").split("\n"))
+
+    def head(self, count: int) -> list[str]:
+        """Return the first lines, fewer where the export is shorter.
+
+        Raises
+        ------
+        ExportRefused
+            If one of them is too long.
+        """
+        if "lines" in self.__dict__ or count >= len(self):
+            return self.lines[:count]
+        end = -1
+        for _ in range(count):
+            end = self.text.find("\n", end + 1)
+        return self._split(self.text[:end].split("\n"))
+
+    def matching(self, pattern: re.Pattern[str], first: int, offset: int) -> list[int]:
+        """Return the indices of the lines in which a pattern is found.
+
+        Parameters
+        ----------
+        pattern
+            Searched in each line.
+        first, offset
+            Index of the first line to look at, and where it begins in the text.
+        """
         start = literal_start(pattern)
-        if start and not self.text.startswith(start) and f"\n{start}" not in self.text:
-            return []
-        search, lines = pattern.search, self.lines
-        if start:
-            return [at for at in range(first, last) if lines[at].startswith(start) and search(lines[at])]
-        return [at for at, line in enumerate(lines[first:last], first) if search(line)]
+        if not start:
+            return [at for at, line in enumerate(self.lines[first:], first) if pattern.search(line)]
+        return [at for at, line in self._beginning(start, first, offset) if pattern.search(line)]
+
+    def _beginning(self, start: str, first: int, offset: int) -> Iterator[tuple[int, str]]:
+        """Yield index and text of the lines that begin with a text, and of some others."""
+        # A search is several times faster where its last character is rare: a separator seldom is.
+        needle = "\n" + (start.rstrip(" ,;\t0123456789.") or start)
+        at = first
+        place = offset if self.text.startswith(needle[1:], offset) else self.text.find(needle, offset) + 1
+        while place or at == offset == 0:
+            at, offset = at + self.text.count("\n", offset, place), place
+            end = self.text.find("\n", place)
+            yield at, self.text[place : len(self.text) if end < 0 else end]
+            place = self.text.find(needle, place) + 1
+            if not place:
+                return
 
     def refusal(self, at: int | None, sentence: str, todo: str, column: str | None = None) -> ExportRefused:
         """Make the error for the line of an index: what is wrong, and what to do."""
         line = None if at is None else at + 1
-        return ExportRefused(self.name, line, column, f"{sentence}. {_REFUSED} {todo}.")
+        return _refusal(self.name, line, sentence, todo, column)
+
+    def _split(self, lines: list[str]) -> list[str]:
+        if max(map(len, lines), default=0) > MOST_CHARACTERS:
+            at = next(at for at, line in enumerate(lines) if len(line) > MOST_CHARACTERS)
+            sentence = f"expected at most {MOST_CHARACTERS} characters in a line, got {len(lines[at])}"
+            raise self.refusal(at, sentence, "Look whether this is a text export")
+        return lines
 
 
 def decode(data: bytes, encodings: Sequence[str], name: str) -> Lines:
@@ -89,7 +139,7 @@ def decode(data: bytes, encodings: Sequence[str], name: str) -> Lines:
     Raises
     ------
     ExportRefused
-        If it is empty or too large, no declared encoding fits, it holds NUL characters, or a line is too long.
+        If it is empty or too large, no declared encoding fits, or it holds NUL characters.
     """
     if not data:
         raise _refusal(name, None, "expected lines of text, got an empty file", "Export again")
@@ -98,15 +148,7 @@ def decode(data: bytes, encodings: Sequence[str], name: str) -> Lines:
     encoding, text = _decoded(data, encodings, name)
     if "\r" in text:
         text = text.replace("\r\n", "\n").replace("\r", "\n")
-    lines = text.split("\n")
-    if not lines[-1]:
-        lines.pop()
-    longest = max(map(len, lines), default=0)
-    if longest > MOST_CHARACTERS:
-        at = next(at for at, line in enumerate(lines) if len(line) > MOST_CHARACTERS)
-        sentence = f"expected at most {MOST_CHARACTERS} characters in a line, got {len(lines[at])}"
-        raise _refusal(name, at + 1, sentence, "Look whether this is a text export")
-    return Lines(name, encoding, text, lines)
+    return Lines(name, encoding, text)
 
 
 def _decoded(data: bytes, encodings: Sequence[str], name: str) -> tuple[str, str]:
@@ -166,5 +208,5 @@ def _refuse_nul(text: str, name: str) -> None:
     raise _refusal(name, line, "expected text, got a NUL character", todo)
 
 
-def _refusal(name: str, line: int | None, sentence: str, todo: str) -> ExportRefused:
-    return ExportRefused(name, line, None, f"{sentence}. {_REFUSED} {todo}.")
+def _refusal(name: str, line: int | None, sentence: str, todo: str, column: str | None = None) -> ExportRefused:
+    return ExportRefused(name, line, column, f"{sentence}. {_REFUSED} {todo}.")

@@ -16,14 +16,14 @@ import numpy as np
 from parsers import fields
 from parsers.cells import Cell, Grammar, Kind, Numbers, converted
 from parsers.readings import Quantities, Texts
-from parsers.spelling import fold, renamed, shown
+from parsers.spelling import fold, folded, looked_up, renamed, shown
 
 if TYPE_CHECKING:
     from collections.abc import Callable, Sequence
 
     from parsers.columns import Mapped, Plan
     from parsers.heading import Heading
-    from parsers.labels import Understood
+    from parsers.labels import Understanding
     from parsers.layout import Layout
     from parsers.readings import Floats
     from parsers.source import Source
@@ -69,7 +69,7 @@ class Values:
     table: Table
     heading: dict[str, Heading]
     label: Texts
-    understood: Sequence[Understood | None]
+    understood: Understanding
     odd: list[Odd] = field(default_factory=list)
 
     @property
@@ -89,7 +89,8 @@ class Values:
         if mapped is not None:
             words = {fold(code): word for code, word in mapped.source.map.items()}
             raw = self.table.texts(mapped.columns[0])
-            return renamed(raw, lambda text: words.get(fold(text), fold(text)) or None)
+            names = folded(raw.names)
+            return renamed(raw, [words.get(name, name) or None for name in names] if words else names)
         if source is not None and source.constant is not None:
             return Texts.constant(source.constant, self.rows)
         if name in self.heading:
@@ -143,10 +144,8 @@ class Values:
             self.odd.append(Odd(name, self.table.headers[column], entry, numbers.odd, optional, in_table=True))
 
     def _captured(self, name: str) -> Texts:
-        if not any(name in rule.words for rule in self.layout.labels):
-            return Texts.absent(self.rows)
-        said = Texts.of([None if found is None else found.said.get(name) for found in self.understood])
-        return Texts(np.append(said.codes, np.int32(-1))[self.label.codes], said.names)
+        said = self.understood.said.get(name)
+        return Texts.absent(self.rows) if said is None else looked_up(said, self.label)
 
     def _elsewhere(self, name: str, convert: Callable[[str, Grammar], tuple[Cell, str]], *, units: bool) -> Quantities:
         """Return a number from a constant, a heading or the label."""
@@ -166,7 +165,7 @@ class Values:
         absent = Cell(Kind.MISSING, math.nan, "")
         numbers = converted(texts, lambda text: known[text][0] if text else absent)
         self.odd.append(Odd(name, self.label_header(), None, numbers.odd, optional=True, in_table=False))
-        return Quantities(numbers.values, renamed(texts, lambda text: known[text][1] or None))
+        return Quantities(numbers.values, renamed(texts, [known[text][1] or None for text in texts.names]))
 
     def _everywhere(self, value: float, unit: str) -> Quantities:
         units = Texts.constant(unit, self.rows) if unit else Texts.absent(self.rows)

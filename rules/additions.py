@@ -74,9 +74,7 @@ class Fits:
         return np.where(self.of_series >= 0, values[self.of_series], np.nan)
 
 
-def fit(
-    series: Series, solutions: Solutions, vessels: Vessels, blanks: Blanks, key: Integers, method: Method
-) -> Fits:
+def fit(series: Series, solutions: Solutions, vessels: Vessels, blanks: Blanks, key: Integers, method: Method) -> Fits:
     """Fit the line of every series that has additions and an unspiked solution.
 
     Parameters
@@ -132,9 +130,7 @@ def _scaled(y: Floats, f: Floats, y_blank: Floats, method: Method) -> Floats:
         return y / f
 
 
-def _blank_term(
-    f: Floats, additions: Floats, segments: line.Segments, variance: Floats, method: Method
-) -> BlankTerm:
+def _blank_term(f: Floats, additions: Floats, segments: line.Segments, variance: Floats, method: Method) -> BlankTerm:
     """How intercept and slope move with the blank: the line of -1/f on A, or a plain shift."""
     if method.blank == "subtract":
         with np.errstate(invalid="ignore", divide="ignore"):
@@ -153,9 +149,7 @@ def _covariance(
     covariance = Covariance(lines.var_intercept, lines.covariance, lines.var_slope)
     none = np.full(len(lines.n), np.nan)
     usable = lines.scatter & (lines.dof > 0)
-    covariance = Covariance(
-        *(np.where(usable, getattr(covariance, f.name), none) for f in fields(covariance))
-    )
+    covariance = Covariance(*(np.where(usable, getattr(covariance, f.name), none) for f in fields(covariance)))
     dof = np.where(usable, lines.dof, np.nan)
     known = method.bench.preparation
     if known is None:
@@ -222,7 +216,8 @@ def evaluate(
     usable = fits.spread((lines.slope > 0).astype(float)) == 1
     printable = usable & ~(fits.spread(interval.g) >= 1)
     value = np.where(printable, fits.spread(c) * factor, np.nan)
-    tested = fits.spread(lines.intercept**2 - t_line**2 * fits.covariance.intercept - _blank_square(fits))
+    # the line alone: zero inside the interval because of the blank is a doubt, and a check says so (method, 7)
+    tested = fits.spread(lines.intercept**2 - t_line**2 * fits.covariance.intercept)
     shown = np.where(printable, 1.0, np.nan)
     results = Results(
         value=value,
@@ -239,10 +234,6 @@ def evaluate(
     return results, interval, shares[0].standard_uncertainty
 
 
-def _blank_square(fits: Fits) -> Floats:
-    return fits.blank.variance * fits.blank.intercept**2
-
-
 def _reasons(fits: Fits, g: Floats) -> dict[int, str]:
     """Why a series has no number, or no uncertainty."""
     reasons: dict[int, str] = {}
@@ -255,9 +246,7 @@ def _reasons(fits: Fits, g: Floats) -> dict[int, str]:
         elif not lines.slope[place] > 0:
             reasons[series] = "no result: the signal does not rise with the additions"
         elif g[place] >= 1:
-            reasons[series] = (
-                f"no result: the slope is too uncertain for a finite interval (g = {g[place]:.2g})"
-            )
+            reasons[series] = f"no result: the slope is too uncertain for a finite interval (g = {g[place]:.2g})"
         elif lines.n[place] == 2:
             reasons[series] = "uncertainty absent: a single addition shows no scatter of preparations"
         else:

@@ -9,8 +9,9 @@ import numpy as np
 
 from parsers.readings import Role
 from rules import units
+from rules.calibration import nominal_of
 from rules.case import Reported
-from rules.checks import Check, Outcome, judged
+from rules.checks import Check, Outcome, judged, limits_of, severest
 from rules.figures import figure, percent, several
 
 if TYPE_CHECKING:
@@ -19,6 +20,9 @@ if TYPE_CHECKING:
     from rules.case import Case
     from rules.line import Floats
 
+UNDECIDED_BLANK = (
+    "blanks were measured and the settings do not say what to do with them: state blank: subtract, preparation or none"
+)
 #: Without a limit of quantification, readings below so many times the blanks' signal scatter by nature (method, 8).
 BLANK_MULTIPLE = 10
 
@@ -45,6 +49,11 @@ def _worst(values: Floats, owner: NDArray[np.int64], count: int) -> tuple[Floats
     hits = finite[values[finite] == largest[owner[finite]]]
     place[owner[hits[::-1]]] = hits[::-1]
     return np.where(np.isfinite(largest), largest, np.nan), place
+
+
+def _at(values: Floats, place: NDArray[np.int64]) -> Floats:
+    """Values at places; NaN where the place is -1."""
+    return np.append(values, np.nan)[place]
 
 
 def repeatability(case: Case) -> Check:
@@ -118,9 +127,10 @@ def _loq(case: Case, analyte: str) -> float:
 def check_standard(case: Case) -> Check:
     """Every check standard of the analyte, read back, in % of nominal. EPA SW-846 6010D and 7000B."""
     checks = case.check_standards
-    away, place = _worst(np.abs(checks.percent - 100), checks.key, case.keys.count)
-    value = np.where(place >= 0, checks.percent[place], np.nan) if len(checks.percent) else away
-    value, place = value[case.key], place[case.key]
+    limits = limits_of(case.method, case.readings.analyte.names, "check_standard")
+    analyte, away = checks.key // case.keys.channels, np.abs(checks.percent - 100)
+    place = severest(limits, analyte, checks.percent, away, checks.key, case.keys.count)[case.key]
+    value = _at(checks.percent, place)
     counts = np.bincount(checks.key, minlength=case.keys.count)[case.key]
 
     def sentence(i: int, outcome: Outcome) -> str:
@@ -151,8 +161,10 @@ def blank(case: Case) -> Check:
         with np.errstate(invalid="ignore", divide="ignore"):
             concentration = np.where(at >= 0, (signal - lines.intercept[at]) / lines.slope[at], np.nan)
     analyte = blanks.key // case.keys.channels
-    value, place = _worst(concentration / loq[analyte], blanks.key, case.keys.count)
-    value, place = value[case.key], place[case.key]
+    relative = concentration / loq[analyte]
+    limits = limits_of(case.method, case.readings.analyte.names, "blank")
+    place = severest(limits, analyte, relative, relative, blanks.key, case.keys.count)[case.key]
+    value = _at(relative, place)
     counts = blanks.count[case.key]
 
     def sentence(i: int, outcome: Outcome) -> str:
@@ -160,9 +172,7 @@ def blank(case: Case) -> Check:
             if not counts[i]:
                 return "no blank in this export"
             missing = (
-                "calibration"
-                if np.isfinite(loq[case.series.analyte[i]])
-                else "limit of quantification (analytes.loq)"
+                "calibration" if np.isfinite(loq[case.series.analyte[i]]) else "limit of quantification (analytes.loq)"
             )
             return f"no {missing} to judge blanks by"
         label = case.label(int(blanks.solutions[place[i]]))
@@ -185,6 +195,8 @@ def collect_faults(case: Case) -> dict[int, list[str]]:
     faults: dict[int, list[str]] = defaultdict(list)
     owner = dict(zip(case.series.members.tolist(), case.series.segments.owner.tolist(), strict=True))
     shared: dict[int, list[str]] = defaultdict(list, {k: list(v) for k, v in _spoilt(case).items()})
+    for key, sentence in _unusable(case):
+        shared[key].append(sentence)
     keys = _key_of(case, np.arange(len(case.solutions)))
     for source in (case.solutions.faults, case.vessels.faults):
         for solution, sentences in source.items():
@@ -209,10 +221,33 @@ def _spoilt(case: Case) -> dict[int, list[str]]:
         for solution, key in zip(standards.tolist(), _key_of(case, standards), strict=True)
         if solution in case.solutions.faults or not np.isfinite(case.solutions.signal[solution])
     }
-    nominals = {
-        key for key, said in case.calibrations.refused.items() if any("nominal" in text for text in said)
-    }
+    nominals = {key for key, said in case.calibrations.refused.items() if any("nominal" in text for text in said)}
     return {key: case.calibrations.refused[key] for key in bad | nominals if key in case.calibrations.refused}
+
+
+def _unusable(case: Case) -> list[tuple[int, str]]:
+    """Blanks and check standards that say nothing although no cell is marked: they must not vanish from the batch."""
+    rows, signal = case.solutions.rows, case.solutions.signal
+    role = case.readings.role[rows]
+    verifies = role == Role.CHECK_STANDARD
+    chosen = np.flatnonzero(verifies)
+    nominal = np.full(len(rows), np.nan)
+    nominal[chosen], problem = nominal_of(case.readings, rows[chosen], case.method)
+    silent = (verifies | (role == Role.BLANK)) & ~np.isfinite(signal)
+    with np.errstate(invalid="ignore"):
+        unknown = verifies & ~(nominal > 0)
+    found = []
+    for solution, key in zip(
+        np.flatnonzero(silent | unknown).tolist(), _key_of(case, np.flatnonzero(silent | unknown)).tolist(), strict=True
+    ):
+        if solution not in case.solutions.faults:
+            what = "no signal" if silent[solution] else problem or "no nominal concentration above zero"
+            found.append((key, f"{_place(case, solution)}: {what}: correct the export or measure it again"))
+    return found
+
+
+def _place(case: Case, solution: int) -> str:
+    return f"line {case.readings.line[case.solutions.rows[solution]]}, {case.label(solution)}"
 
 
 def _series_faults(case: Case) -> list[tuple[int, str]]:
@@ -231,8 +266,7 @@ def _series_faults(case: Case) -> list[tuple[int, str]]:
         found += [
             (
                 i,
-                "blanks were measured and the settings do not say what to do with them: state blank: subtract, "
-                "preparation or none",
+                UNDECIDED_BLANK,
             )
             for i in np.flatnonzero(blanks > 0).tolist()
         ]
@@ -240,8 +274,10 @@ def _series_faults(case: Case) -> list[tuple[int, str]]:
         found += [
             (
                 i,
-                f"the settings say blank: {use}, and the export holds no blank for {case.analyte(i)}: measure one, or "
-                f"state blank: none",
+                (
+                    f"the settings say blank: {use}, and the export holds no blank for {case.analyte(i)}: measure one, or "
+                    f"state blank: none"
+                ),
             )
             for i in np.flatnonzero(case.judged & (blanks == 0)).tolist()
         ]
@@ -249,9 +285,15 @@ def _series_faults(case: Case) -> list[tuple[int, str]]:
         (i, "the sample was measured again, and the settings say repeats: refuse")
         for i in np.flatnonzero(case.series.repeated).tolist()
     ]
-    missing = case.judged & np.isnan(case.fits.spread(case.fits.lines.slope))
+    silent = ~np.isfinite(case.solutions.signal[members])
     found += [
-        (i, "no line can be drawn: the additions do not differ, or a signal is missing")
+        (int(seg.owner[at]), f"{_place(case, int(members[at]))}: no signal: correct the export or measure it again")
+        for at in np.flatnonzero(silent).tolist()
+        if int(members[at]) not in case.solutions.faults
+    ]
+    missing = case.judged & np.isnan(case.fits.spread(case.fits.lines.slope)) & ~(seg.sum(silent.astype(float)) > 0)
+    found += [
+        (i, "no line can be drawn: the additions do not differ, or a blank has no signal")
         for i in np.flatnonzero(missing).tolist()
         if not _explained(case, i)
     ]

@@ -62,12 +62,8 @@ def common(series: Series, vessels: Vessels, method: Method) -> tuple[Common, ..
     nothing = np.zeros(len(series))
     return (
         Common("stock", np.where(by_volume, _stock(series, vessels, method), nothing)),
-        Common(
-            "spike_volume", np.where(by_volume, _relative(tolerances.get("spike_volume"), smallest), nothing)
-        ),
-        Common(
-            "aliquot", np.where(by_volume | scaled, _relative(tolerances.get("aliquot"), aliquot), nothing)
-        ),
+        Common("spike_volume", np.where(by_volume, _relative(tolerances.get("spike_volume"), smallest), nothing)),
+        Common("aliquot", np.where(by_volume | scaled, _relative(tolerances.get("aliquot"), aliquot), nothing)),
         Common("made_up_to", np.where(scaled, _relative(tolerances.get("made_up_to"), vessel), nothing)),
         Common(
             "predilution",
@@ -89,14 +85,15 @@ def _smallest(series: Series, values: Floats) -> Floats:
 def _stock(series: Series, vessels: Vessels, method: Method) -> Floats:
     """The largest relative uncertainty among the stocks that a series used; NaN where one states none."""
     stated = np.array(
-        [np.nan if s.relative_uncertainty is None else s.relative_uncertainty for s in method.stocks] + [0]
+        # zero means that nobody stated it (method, section 6)
+        [s.relative_uncertainty or np.nan for s in method.stocks] + [0]
     )
     used = series.spiked & (vessels.stock[series.members] >= 0)
     return series.segments.max(np.where(used, stated[vessels.stock[series.members]], 0.0))
 
 
 def _relative(tolerance: Measure | None, size: Floats) -> Floats:
-    if tolerance is None:
+    if tolerance is None or tolerance.value == 0:
         return np.full(len(size), np.nan)
     if tolerance.unit == "%":
         return np.full(len(size), tolerance.value / 100 / RECTANGULAR)

@@ -67,8 +67,9 @@ class Calibrations:
 
     @property
     def covariance(self) -> Covariance:
-        """Covariance of intercept and slope."""
-        return Covariance(self.lines.var_intercept, self.lines.covariance, self.lines.var_slope)
+        """Covariance of intercept and slope; NaN where the standards show no scatter at the export's resolution."""
+        shown = np.where(self.lines.scatter, 1.0, np.nan)
+        return Covariance(self.lines.var_intercept * shown, self.lines.covariance * shown, self.lines.var_slope * shown)
 
 
 def nominal_of(readings: Readings, rows: Integers, method: Method) -> tuple[Floats, str | None]:
@@ -133,9 +134,7 @@ def _refusals(
     for place in np.flatnonzero(~np.isfinite(nominal) | ~np.isfinite(solutions.signal[standard])).tolist():
         solution = int(standard[place])
         at = f"line {readings.line[solutions.rows[solution]]}"
-        sentences = solutions.faults.get(solution) or [
-            f"{at}: {problem or 'a standard without nominal or signal'}"
-        ]
+        sentences = solutions.faults.get(solution) or [f"{at}: {problem or 'a standard without nominal or signal'}"]
         refused.setdefault(int(key[place]), []).extend(sentences)
     for place, index in enumerate(standard.tolist()):
         if index in solutions.faults and int(key[place]) not in refused:
@@ -146,6 +145,8 @@ def _refusals(
 def _distinct(key: Integers, nominal: Floats, count: int) -> NDArray[Any]:
     """Count the distinct finite nominals of each key; `key` is sorted."""
     finite = np.isfinite(nominal)
+    # 0.7 mg/L and 700 µg/L differ in their last bit and are one standard
+    nominal = np.array([float(f"{value:.12g}") for value in nominal.tolist()])
     pairs = np.unique(np.column_stack((key[finite].astype(float), nominal[finite])), axis=0)
     return np.bincount(pairs[:, 0].astype(np.int64), minlength=count)
 

@@ -51,9 +51,7 @@ def read(
     if len(calibrations.key):
         lines = calibrations.lines
         with np.errstate(invalid="ignore", divide="ignore"):
-            measured = np.where(
-                at >= 0, (solutions.signal[chosen] - lines.intercept[at]) / lines.slope[at], np.nan
-            )
+            measured = np.where(at >= 0, (solutions.signal[chosen] - lines.intercept[at]) / lines.slope[at], np.nan)
     with np.errstate(invalid="ignore", divide="ignore"):
         percent = np.where(nominal > 0, 100 * measured / nominal, np.nan)
     return CheckStandards(chosen, key, nominal, measured, percent)

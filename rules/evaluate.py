@@ -128,10 +128,6 @@ def _without_explanation(case: Case, checks: tuple[Check, ...]) -> dict[int, lis
     silent = case.judged & ~np.isfinite(case.reported_value()) & ~said & ~no_calibration
     by_additions = case.reported == Reported.ADDITIONS
     return {
-        i: [
-            (case.additions if by_additions[i] else case.back.results).reasons.get(
-                i, "no result can be given"
-            )
-        ]
+        i: [(case.additions if by_additions[i] else case.back.results).reasons.get(i, "no result can be given")]
         for i in np.flatnonzero(silent).tolist()
     }

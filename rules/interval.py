@@ -98,10 +98,10 @@ def extrapolation(
     """
     tt = t * t
     with np.errstate(invalid="ignore", divide="ignore"):
-        lead = slope**2 - tt * covariance.slope - common * slope**2 - blank.variance * blank.slope**2
+        excess = tt * covariance.slope + common * slope**2 + blank.variance * blank.slope**2
         middle = intercept * slope - tt * covariance.both - blank.variance * blank.intercept * blank.slope
         last = intercept**2 - tt * covariance.intercept - blank.variance * blank.intercept**2
-        return _between(lead, middle, last, 1 - lead / slope**2)
+        return _between(slope**2 - excess, middle, last, excess / slope**2)
 
 
 def read_back(
@@ -124,10 +124,10 @@ def read_back(
     tt = t * t
     net = signal - intercept
     with np.errstate(invalid="ignore", divide="ignore"):
-        lead = slope**2 - tt * covariance.slope
+        excess = tt * covariance.slope
         middle = net * slope + tt * covariance.both
         last = net**2 - tt * (signal_variance + covariance.intercept)
-        return _between(lead, middle, last, 1 - lead / slope**2)
+        return _between(slope**2 - excess, middle, last, excess / slope**2)
 
 
 def _between(lead: Floats, middle: Floats, last: Floats, g: Floats) -> Interval:

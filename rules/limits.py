@@ -61,7 +61,7 @@ class Limit:
             low, high = _number(found["low"]), _number(found["high"])
             if low > high:
                 raise LimitUnreadable(f"expected the smaller number first, got '{text}'")
-            return cls(low, high, True, found["unit"] or "", wording)
+            return cls(low, high, closed=True, unit=found["unit"] or "", text=wording)
         if found := _ONE_SIDED.match(wording):
             bound = _number(found["bound"])
             upper = found["word"] in ("at most", "below")
@@ -97,11 +97,7 @@ class CheckLimits:
     @property
     def text(self) -> str:
         """Both limits in words."""
-        parts = [
-            f"{word} unless {limit.text}"
-            for word, limit in (("fail", self.fail), ("warn", self.warn))
-            if limit
-        ]
+        parts = [f"{word} unless {limit.text}" for word, limit in (("fail", self.fail), ("warn", self.warn)) if limit]
         return "; ".join(parts) or "off"
 
 

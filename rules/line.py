@@ -138,7 +138,8 @@ def fit(x: Floats, y: Floats, weights: Floats, segments: Segments) -> Lines:
         See there. S. L. R. Ellison, A. Williams (eds), Quantifying Uncertainty in Analytical Measurement,
         3rd ed. 2012, E.3 gives the covariances; J. Mandel (1964) the test of the quadratic term.
 
-    >>> two = fit(np.array([0.0, 1, 0, 1, 2]), np.array([1.0, 3, 2, 3, 4.3]), np.ones(5), Segments.of_sizes(np.array([2, 3])))
+    >>> segments = Segments.of_sizes(np.array([2, 3]))
+    >>> two = fit(np.array([0.0, 1, 0, 1, 2]), np.array([1.0, 3, 2, 3, 4.3]), np.ones(5), segments)
     >>> two.slope.round(3).tolist(), two.dof.tolist()
     ([2.0, 1.15], [0, 1])
     """
@@ -185,12 +186,10 @@ def fit(x: Floats, y: Floats, weights: Floats, segments: Segments) -> Lines:
 def _curvature(
     dx: Floats, residuals: Floats, weights: Floats, ss: Floats, segments: Segments, scatter: NDArray[np.bool_]
 ) -> Floats:
-    """p of the quadratic term: the part of it that a line cannot follow, regressed on the residuals."""
+    """Return p of the quadratic term: the part of it that a line cannot follow, regressed on the residuals."""
     f, dof = quadratic_f(dx, residuals, weights, ss, segments)
     with np.errstate(invalid="ignore"):
-        return np.where(
-            scatter & (dof > 0) & ~np.isnan(f), fdtrc(1.0, np.maximum(dof, 1), np.maximum(f, 0)), np.nan
-        )
+        return np.where(scatter & (dof > 0) & ~np.isnan(f), fdtrc(1.0, np.maximum(dof, 1), np.maximum(f, 0)), np.nan)
 
 
 def quadratic_f(

@@ -20,6 +20,7 @@ if TYPE_CHECKING:
 LEAST_OF_HIGHEST = 0.1
 #: Below so many degrees of freedom a droop of 10 % stays unseen more often than not (method, section 8).
 FEW_DOF = 5
+NO_LINE = "no line can be drawn"
 
 
 def levels(case: Case) -> Check:
@@ -28,14 +29,12 @@ def levels(case: Case) -> Check:
 
     def sentence(i: int, outcome: Outcome) -> str:
         if outcome is Outcome.NOT_EVALUATED:
-            return "no additions were made"
+            return NO_LINE
         count = int(value[i])
         counted = f"{count} distinct addition{'s' if count != 1 else ''}"
         if outcome is Outcome.PASS:
             return counted
-        return (
-            f"{counted}: linearity cannot be seen; three near 50, 100 and 150 % of the native level show it"
-        )
+        return f"{counted}: linearity cannot be seen; three near 50, 100 and 150 % of the native level show it"
 
     return judged(case, "levels", Reported.ADDITIONS, "", value, sentence)
 
@@ -46,17 +45,18 @@ def slope_certainty(case: Case) -> Check:
     with np.errstate(invalid="ignore"):
         flat = slope <= 0
     value = np.where(flat, np.inf, case.fits.spread(case.interval.g))
+    drawn = np.isfinite(slope)
     n = case.fits.spread(case.fits.lines.n.astype(float))
 
     def sentence(i: int, outcome: Outcome) -> str:
         if outcome is Outcome.NOT_EVALUATED:
-            return "the scatter of the line is unknown, so the certainty of its slope is too"
+            return "the scatter of the line is unknown, so the certainty of its slope is too" if drawn[i] else NO_LINE
         if flat[i]:
             return "the signal does not rise with the additions: no concentration can be given"
         if outcome is Outcome.FAIL:
             return f"the slope is too uncertain (g = {figure(value[i])}): no finite interval, so no concentration"
         if outcome is Outcome.WARN and n[i] == 3:
-            return f"three solutions leave one degree of freedom, so the slope is hardly certain (g = {figure(value[i])})"
+            return f"three solutions leave one degree of freedom: a slope is hardly certain (g = {figure(value[i])})"
         if outcome is Outcome.WARN:
             return f"the slope is uncertain (g = {figure(value[i])}): the interval is wide and lopsided"
         return f"the slope is certain (g = {figure(value[i])})"
@@ -76,16 +76,19 @@ def slope_certainty(case: Case) -> Check:
 
 
 def correlation(case: Case) -> Check:
-    """r of the additions line. EPA SW-846 7000B, 9.10; not evaluated for two solutions, where it is always 1."""
+    """Judge r of the additions line. EPA SW-846 7000B, 9.10; not evaluated for two solutions, where it is always 1."""
     value = case.fits.spread(case.fits.lines.correlation)
     short_span = case.top_addition < case.native
+    n, drawn = case.fits.spread(case.fits.lines.n.astype(float)), np.isfinite(case.fits.spread(case.fits.lines.slope))
 
     def sentence(i: int, outcome: Outcome) -> str:
         if outcome is Outcome.NOT_EVALUATED:
-            return "two solutions always lie on a line"
+            if n[i] == 2:
+                return "two solutions always lie on a line"
+            return "the signal does not change with the additions" if drawn[i] else NO_LINE
         r = f"r = {value[i]:.5f}"
         if outcome is Outcome.PASS:
-            return f"{r} over {int(case.fits.lines.n[case.fits.of_series[i]])} solutions"
+            return f"{r} over {int(n[i])} solutions"
         if short_span[i]:
             return f"{r} with additions smaller than the native level: larger additions, before doubting linearity"
         return f"{r}: the solutions do not lie on a line"
@@ -94,13 +97,16 @@ def correlation(case: Case) -> Check:
 
 
 def curvature(case: Case) -> Check:
-    """p of the quadratic term. J. Mandel, The Statistical Analysis of Experimental Data (1964)."""
+    """Judge p of the quadratic term. J. Mandel, The Statistical Analysis of Experimental Data (1964)."""
     value = case.fits.spread(case.fits.lines.curvature_p)
     dof = case.fits.spread(case.fits.lines.dof.astype(float)) - 1
     scatter = case.fits.spread(case.fits.lines.scatter.astype(float))
+    drawn = np.isfinite(case.fits.spread(case.fits.lines.slope))
 
     def sentence(i: int, outcome: Outcome) -> str:
         if outcome is Outcome.NOT_EVALUATED:
+            if not drawn[i]:
+                return NO_LINE
             if scatter[i] == 0 and dof[i] > 0:
                 return "no scatter at the export's resolution, so a bend cannot be told from rounding"
             return "a bend needs three distinct levels and four solutions"
@@ -124,7 +130,7 @@ def residual(case: Case) -> Check:
 
     def sentence(i: int, outcome: Outcome) -> str:
         if outcome is Outcome.NOT_EVALUATED:
-            return "an exact line has no residuals"
+            return NO_LINE if np.isnan(case.fits.spread(fits.lines.slope)[i]) else "an exact line has no residuals"
         worst = case.label(worst_solution(case, each, i))
         if outcome is Outcome.PASS:
             return f"largest residual {percent(value[i])}, at {worst}"
@@ -150,11 +156,11 @@ def addition_size(case: Case) -> Check:
     results = case.additions
     with np.errstate(invalid="ignore", divide="ignore"):
         c = case.fits.spread(case.fits.lines.intercept / case.fits.lines.slope)
-        value = np.where((c > 0) & results.detected, case.top_addition / c, np.nan)
+        value = np.where((c > 0) & results.detected & np.isfinite(results.value), case.top_addition / c, np.nan)
 
     def sentence(i: int, outcome: Outcome) -> str:
         if outcome is Outcome.NOT_EVALUATED:
-            return "the native level is not detected, so additions have nothing to be compared with"
+            return "no native level was found, so additions have nothing to be compared with"
         ratio = f"the top addition is {figure(value[i], 2)} times the native level"
         if outcome is Outcome.PASS:
             return ratio
@@ -174,9 +180,7 @@ def linear_evidence(case: Case) -> Check:
     members = case.series.members
     with np.errstate(invalid="ignore"):
         c = case.fits.spread(case.fits.lines.intercept / case.fits.lines.slope)
-        in_vessel = case.vessels.dilution[members] * (
-            case.series.segments.spread(c) + case.vessels.addition[members]
-        )
+        in_vessel = case.vessels.dilution[members] * (case.series.segments.spread(c) + case.vessels.addition[members])
         highest_addition = case.series.segments.max(in_vessel)
         top_standard, top_signal = (
             _of_calibration(case, column) for column in (case.calibrations.top, case.calibrations.top_signal)
@@ -192,9 +196,7 @@ def linear_evidence(case: Case) -> Check:
         ).astype(bool)
     known = np.isfinite(highest) & np.isfinite(limit)
     outcome = np.where(known, np.where(beyond, Outcome.FAIL, Outcome.PASS), Outcome.NOT_EVALUATED)
-    outcome = np.where(known & by_calibration & ~beyond & case.back.below, Outcome.WARN, outcome).astype(
-        np.int8
-    )
+    outcome = np.where(known & by_calibration & ~beyond & case.back.below, Outcome.WARN, outcome).astype(np.int8)
     unit = case.method.result_unit
 
     def sentence(i: int) -> str:

@@ -69,10 +69,7 @@ class Outcomes:
             check
             for check in self.checks
             if check.outcome[series] == outcome
-            and (
-                check.decides(self.case)[series]
-                or (outcome is Outcome.FAIL and check.stated_fail(self.case)[series])
-            )
+            and (check.decides(self.case)[series] or (outcome is Outcome.FAIL and check.stated_fail(self.case)[series]))
         ]
 
     def reasons(self, series: int) -> list[str]:
@@ -188,10 +185,8 @@ def decide(case: Case, checks: tuple[Check, ...]) -> Outcomes:
 
 def _missing(case: Case) -> dict[int, str]:
     """What is expected of a series and not in the export."""
-    missing = {
-        i: "the unspiked solution is missing"
-        for i in np.flatnonzero(case.series.has_additions & ~case.series.has_native).tolist()
-    }
+    orphans = np.flatnonzero(case.series.has_additions & ~case.series.has_native).tolist()
+    missing = dict.fromkeys(orphans, "the unspiked solution is missing")
     wanting = case.judged & (case.reported == Reported.CALIBRATION) & (case.back.calibration < 0)
     for i in np.flatnonzero(wanting).tolist():
         if i not in case.faults:

@@ -48,7 +48,10 @@ def _complete(case: Case, i: int) -> str:
 def _inputs(case: Case, i: int) -> str:
     if np.isfinite(case.fits.spread(case.fits.lines.slope)[i]) or not case.judged[i]:
         return "Correct what is named, in the instrument's program or in the settings, and export again."
-    return f"Correct the cells or volumes that are named and export again; if a reading is lost, measure {case.sample(i)} again."
+    return (
+        f"Correct the cells or volumes that are named and export again; if a reading is lost, measure {case.sample(i)} "
+        f"again."
+    )
 
 
 def _check_standard(case: Case, i: int) -> str:
@@ -85,7 +88,10 @@ def _larger_additions(case: Case, i: int) -> str:
 
 
 def _addition_size(case: Case, i: int) -> str:
-    native, top = float(case.native[i]), float(case.top_addition[i])
+    # the check compares with the additions' own native level, so the advice does too
+    place = case.fits.of_series[i]
+    native = float(case.fits.lines.intercept[place] / case.fits.lines.slope[place])
+    top = float(case.top_addition[i])
     if top < native:
         return _larger_additions(case, i)
     return (
@@ -99,7 +105,8 @@ def _levels(case: Case, i: int) -> str:
     if not np.isfinite(native) or native <= 0:
         return f"Next time make three additions to {case.sample(i)}, evenly spaced."
     levels = " / ".join(figure(native * share, 2) for share in (0.5, 1.0, 1.5))
-    return f"Next time make three additions to {case.sample(i)}, near {levels} {case.method.result_unit} in the aliquot."
+    unit = case.method.result_unit
+    return f"Next time make three additions to {case.sample(i)}, near {levels} {unit} in the aliquot."
 
 
 def _dilute(case: Case, i: int) -> str:
@@ -120,17 +127,13 @@ def _readings(case: Case, i: int) -> str:
 
 def _matrix(case: Case, i: int) -> str:
     if case.reported[i] == Reported.CALIBRATION:
-        return (
-            f"Report {case.sample(i)} by standard additions, or dilute it until the matrix no longer matters."
-        )
+        return f"Report {case.sample(i)} by standard additions, or dilute it until the matrix no longer matters."
     return f"Report the additions' result of {case.sample(i)}; the calibration does not hold in this matrix."
 
 
 def _spike_size(case: Case, i: int) -> str:
-    return (
-        f"Spike {case.sample(i)} with at least {figure(0.25 * float(case.native[i]), 2)} {case.method.result_unit} in the "
-        f"aliquot to judge its recovery."
-    )
+    least = f"{figure(0.25 * float(case.native[i]), 2)} {case.method.result_unit}"
+    return f"Spike {case.sample(i)} with at least {least} in the aliquot to judge its recovery."
 
 
 def _detection(case: Case, i: int) -> str:

@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from rules.interval import Covariance, read_back
+from rules.interval import Covariance, Interval, read_back
 from rules.result import Results, Share, combine
 
 if TYPE_CHECKING:
@@ -87,21 +87,20 @@ def evaluate(
         top, lowest = of(calibrations.top), of(calibrations.lowest)
         # the standards' nominals are written with a few digits: a sample equal to the top standard is not above it
         above, below = highest > top * (1 + 1e-9), x < lowest * (1 - 1e-9)
-        u_line = (
-            np.sqrt(s**2 / p + covariance.intercept + 2 * x * covariance.both + x**2 * covariance.slope)
-            / slope
-        )
-        interval = read_back(mean, s**2 / p, intercept, slope, covariance, of(calibrations.t))
+        u_line = np.sqrt(s**2 / p + covariance.intercept + 2 * x * covariance.both + x**2 * covariance.slope) / slope
+        t = of(calibrations.t)
+        t_u_blank = _blank_signal(dilution, np.nan_to_num(np.sqrt(blanks.variance[key])), method)
+        interval = read_back(mean, s**2 / p + (t_u_blank / t) ** 2, intercept, slope, covariance, t)
         scale = predilution / dilution
         value = np.where(above, np.nan, x * scale)
         shown = np.where(np.isfinite(value) & ~(interval.g >= 1), 1.0, np.nan)
-        u_blank = _blank_uncertainty(blanks, key, dilution, slope, method)
+        u_blank = _blank_signal(dilution, blanks.standard_uncertainty[key], method) / slope
         shares = (
             Share("line", u_line * scale * shown, of(lines.dof.astype(float))),
             Share("blank", u_blank * scale, blanks.count[key] - 1),
         )
         t_blank = np.nan_to_num(np.sqrt(blanks.variance[key]) / blanks.standard_uncertainty[key])
-        u, expanded, k = combine(shares, (of(calibrations.t), t_blank))
+        u, expanded, k = combine(shares, (t, t_blank))
     results = Results(
         value=value * shown,
         low=interval.low * scale * shown,
@@ -112,18 +111,28 @@ def evaluate(
         dof=of(lines.dof.astype(float)),
         detected=~(interval.low <= 0),
         budget=shares,
-        reasons=_reasons(key, has, p, above, calibrations, of_series),
+        reasons=_doubts(calibrations, of_series, interval) | _reasons(key, has, p, above, calibrations, of_series),
     )
     return ReadBack(results, np.where(has, of_series, -1), x, highest, above, below)
 
 
-def _blank_uncertainty(
-    blanks: Blanks, key: Integers, dilution: Floats, slope: Floats, method: Method
-) -> Floats:
+def _blank_signal(dilution: Floats, uncertainty: Floats, method: Method) -> Floats:
     """Only a preparation blank moves a read-back; a blank in every vessel moves standards and samples alike."""
-    if method.blank != "preparation":
-        return np.zeros(len(key))
-    return dilution * blanks.standard_uncertainty[key] / slope
+    return dilution * uncertainty if method.blank == "preparation" else np.zeros(len(dilution))
+
+
+def _doubts(calibrations: Calibrations, of_series: Integers, interval: Interval) -> dict[int, str]:
+    """Why a calibration gives no number, or no uncertainty."""
+    found: dict[int, str] = {}
+    for series in np.flatnonzero(of_series >= 0).tolist():
+        if interval.g[series] >= 1:
+            found[series] = (
+                f"no result: the calibration's slope is too uncertain for a finite interval "
+                f"(g = {interval.g[series]:.2g})"
+            )
+        elif not calibrations.lines.scatter[of_series[series]]:
+            found[series] = "uncertainty absent: no scatter of the standards at the export's resolution"
+    return found
 
 
 def _reasons(

@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from rules.case import Reported
-from rules.checks import Check, Outcome, judged
+from rules.checks import Check, Outcome, judged, limits_of, severest
 from rules.figures import figure, percent
 
 if TYPE_CHECKING:
@@ -18,9 +18,13 @@ NOTHING_INDEPENDENT = "nothing independent of the additions: their own line alwa
 
 
 def spike_ratio(case: Case) -> Floats:
-    """Return the top addition in % of the native level; infinite where there is no native to speak of."""
+    """Return the top addition in % of the native level.
+
+    Infinite where there is no native to speak of; NaN where nobody knows it.
+    """
     with np.errstate(invalid="ignore", divide="ignore"):
-        return np.where(case.native > 0, 100 * case.top_addition / case.native, np.inf * case.top_addition)
+        ratio = np.where(case.native > 0, 100 * case.top_addition / case.native, np.inf * case.top_addition)
+    return np.where(np.isnan(case.native), np.nan, ratio)
 
 
 def spike_size(case: Case) -> Check:
@@ -30,7 +34,7 @@ def spike_size(case: Case) -> Check:
 
     def sentence(i: int, outcome: Outcome) -> str:
         if outcome is Outcome.NOT_EVALUATED:
-            return NOTHING_INDEPENDENT if not has_calibration[i] else "no addition to compare"
+            return NOTHING_INDEPENDENT if not has_calibration[i] else "no addition or no native level to compare"
         if np.isinf(ratio[i]):
             return "no native level to speak of: any spike is large enough"
         size = f"the spike is {percent(ratio[i])} of the native level"
@@ -40,9 +44,7 @@ def spike_size(case: Case) -> Check:
 
     check = judged(case, "spike_size", Reported.CALIBRATION, "%", ratio, sentence)
     value = np.where(np.isinf(ratio), np.nan, ratio)
-    return Check(
-        check.name, check.judges, check.unit, value, check.outcome, check.limits, check.sentence, check.lines
-    )
+    return Check(check.name, check.judges, check.unit, value, check.outcome, check.limits, check.sentence, check.lines)
 
 
 def recovery(case: Case, size: Check) -> Check:
@@ -51,7 +53,7 @@ def recovery(case: Case, size: Check) -> Check:
         (size.outcome == Outcome.NOT_EVALUATED) & (case.back.calibration >= 0)
     )
     levels = case.recoveries.levels
-    headline = np.where(case.judged, case.recoveries.headline, np.nan)
+    headline = np.where(case.judged, np.where(levels >= 2, case.recoveries.slope, _hardest(case)), np.nan)
     value = np.where(large_enough, headline, np.nan)
     # a recovery that cannot be computed although everything is there must not pass for "not evaluated"
     broken = case.judged & (case.back.calibration >= 0) & ~np.isfinite(headline)
@@ -60,11 +62,7 @@ def recovery(case: Case, size: Check) -> Check:
         if outcome is Outcome.NOT_EVALUATED:
             if broken[i]:
                 return "no recovery can be computed: the inputs are faulty"
-            return (
-                NOTHING_INDEPENDENT
-                if case.back.calibration[i] < 0
-                else "the spike is too small for a recovery"
-            )
+            return NOTHING_INDEPENDENT if case.back.calibration[i] < 0 else "the spike is too small for a recovery"
         what = "slope recovery" if levels[i] >= 2 else "recovery"
         found = f"{what} {percent(value[i])}"
         if outcome is Outcome.PASS:
@@ -73,6 +71,14 @@ def recovery(case: Case, size: Check) -> Check:
         return f"{found}: {amount} of the added {case.analyte(i)} is found than was added"
 
     return judged(case, "recovery", Reported.CALIBRATION, "%", value, sentence)
+
+
+def _hardest(case: Case) -> Floats:
+    """Of the recoveries of single additions the one that the limits judge hardest; NaN where there is none."""
+    limits = limits_of(case.method, case.readings.analyte.names, "recovery")
+    each, owner = case.recoveries.each, case.series.segments.owner
+    place = severest(limits, case.series.analyte[owner], each, np.abs(each - 100), owner, len(case))
+    return np.append(each, np.nan)[place]
 
 
 def matrix_effect(case: Case) -> Check:

@@ -45,7 +45,7 @@ class Results:
     dof
         float64[m], degrees of freedom of the line's share.
     detected
-        bool[m]: False where the interval cannot exclude zero.
+        bool[m]: False where the line alone cannot exclude zero.
     budget
         The components.
     reasons

@@ -94,7 +94,7 @@ def group(readings: Readings, solutions: Solutions, vessels: Vessels, method: Me
     spiked = (role[members] == Role.SPIKED) & ~vessels.not_added[members]
     further = (role[members] == Role.SPIKED) & vessels.not_added[members]
     unspiked = role[members] == Role.UNSPIKED
-    opens = _attempts_open(group_begins, spiked, unspiked)
+    opens = _attempts_open(group_begins, spiked, unspiked, further)
     repeated_group = _group_any(group_begins, opens)
     if method.repeats != "new attempt":
         opens[:] = False
@@ -146,7 +146,7 @@ def _group_any(group_begins: Bools, values: Bools) -> Bools:
     return np.asarray(np.isin(group, group[values]), dtype=bool)
 
 
-def _attempts_open(group_begins: Bools, spiked: Bools, unspiked: Bools) -> Bools:
+def _attempts_open(group_begins: Bools, spiked: Bools, unspiked: Bools, further: Bools) -> Bools:
     """Members at which a further attempt opens."""
     n = len(spiked)
     if not n:
@@ -160,8 +160,9 @@ def _attempts_open(group_begins: Bools, spiked: Bools, unspiked: Bools) -> Bools
     natives = np.cumsum(unspiked)
     native_before = natives - unspiked - _at_group_begin(natives - unspiked, group_begins) > 0
     # the previous unspiked or spiked member of the analyte; vessels without it say nothing
+    latest = np.maximum.accumulate(np.where(further, 0, np.arange(n)))
     previous_spiked = np.zeros(n, dtype=bool)
-    previous_spiked[1:] = spiked[:-1]
+    previous_spiked[1:] = spiked[latest[:-1]]
     started = before - _at_group_begin(before, group_begins) > 0
     opens: Bools = unspiked & previous_spiked & followed & native_before & started & ~group_begins
     return opens

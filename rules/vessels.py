@@ -109,9 +109,7 @@ class _Filling:
         aliquot = self._volume("aliquot", self.readings.aliquot, self.method.bench.aliquot)
         made_up_to = self._volume("made_up_to", self.readings.made_up_to, self.method.bench.made_up_to)
         stated_volume = self._column("spike_volume", self.readings.spike_volume, units.VOLUME, None)
-        stated_added = self._column(
-            "added", self.readings.added, self.method.result_unit, self.method.export_unit
-        )
+        stated_added = self._column("added", self.readings.added, self.method.result_unit, self.method.export_unit)
         # a level is a default, not a second source: only what the export says row by row must agree
         silent = np.isnan(stated_volume) & np.isnan(stated_added)
         spike = np.where(silent, level_volume, stated_volume)
@@ -129,9 +127,7 @@ class _Filling:
         addition = np.where(self.spiked & ~not_added, addition, 0.0)
         self._note(
             self.spiked & ~not_added & ~has_volume & ~has_added & (self.readings.level.codes[self.rows] < 0),
-            lambda _: (
-                "a spiked solution without addition: map added, spike_volume or level, or correct the export"
-            ),
+            lambda _: "a spiked solution without addition: map added, spike_volume or level, or correct the export",
         )
         return Vessels(
             dilution=dilution,
@@ -229,9 +225,7 @@ class _Filling:
         )
         self._note(
             self.spiked & (spike > 0) & np.isnan(aliquot),
-            lambda _: (
-                "a volume of standard is stated and the aliquot is not: state bench.aliquot or map aliquot"
-            ),
+            lambda _: "a volume of standard is stated and the aliquot is not: state bench.aliquot or map aliquot",
         )
         return np.where(self.sample, dilution, 1.0)
 
@@ -302,9 +296,7 @@ class _Filling:
             wanted = [code for code, name in enumerate(self.readings.stock.names) if name == stock.name]
             by_name = needed & mapped & np.isin(mapped_codes, wanted)
             chosen[by_name & self._within_dates(s)] = s
-        self._note_stock_faults(
-            needed, mapped, chosen, valid_count, np.isfinite(content).any(axis=0)[analyte]
-        )
+        self._note_stock_faults(needed, mapped, chosen, valid_count, np.isfinite(content).any(axis=0)[analyte])
         concentration = content[chosen, analyte]
         nowhere = ~np.isfinite(content).any(axis=0)[analyte] & ~mapped
         not_added = needed & (nowhere | ((chosen >= 0) & np.isnan(concentration)))

@@ -4,18 +4,20 @@ from __future__ import annotations
 
 from typing import TYPE_CHECKING
 
+from watcher.exit_codes import ALL_PASS, NOT_DONE, SAMPLE_FAILS
 from watcher.names import target
 from watcher.terminal import console, heading, lines, table, word
 
 if TYPE_CHECKING:
     from collections.abc import Iterable
 
+    from rich.text import Text
+
     from watcher.assessment import Assessed
     from watcher.ledger import Ledger
     from watcher.service import OnceReport
     from watcher.service_settings import ServiceSettings
 
-ALL_PASS, SAMPLE_FAILS, NOT_DONE = 0, 1, 2
 #: Verdicts that keep an export from passing.
 FAILING = ("fail", "incomplete")
 
@@ -40,14 +42,14 @@ def show(report: OnceReport, settings: ServiceSettings, ledger: Ledger) -> int:
     return NOT_DONE if undone else SAMPLE_FAILS if failing else ALL_PASS
 
 
-def _row(each: Assessed) -> tuple[object, ...]:
+def _row(each: Assessed) -> tuple[str | Text, ...]:
     export = each.export
     counts = ", ".join(f"{count} {verdict}" for verdict, count in sorted(each.counts.items()))
     file = target(export.name, export.revision, export.accepted_at, "csv") if export.state == "done" else ""
     return export.name, word(export.state), counts, file
 
 
-def _failing(failing: Iterable[Assessed], ledger: Ledger) -> Iterable[tuple[object, ...]]:
+def _failing(failing: Iterable[Assessed], ledger: Ledger) -> Iterable[tuple[str | Text, ...]]:
     for each in failing:
         for series in ledger.series_of(each.export.id):
             if series.verdict in FAILING:
@@ -64,7 +66,8 @@ def _undone(report: OnceReport) -> Iterable[str]:
     yield from (f"not settled: {name} was still being written. Run once again later." for name in report.unsettled)
     yield from report.troubles
     for mail in report.undelivered_mails:
-        yield f"undelivered: mail to {mail.address}: {mail.subject} ({mail.last_error or 'not tried'}). It stays queued."
+        reason = mail.last_error or "not tried"
+        yield f"undelivered: mail to {mail.address}: {mail.subject} ({reason}). It stays queued."
     for file in report.undelivered_files:
         yield f"undelivered: {file.target} ({file.last_error or 'not tried'}). It stays queued."
     if report.stopped:

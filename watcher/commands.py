@@ -13,22 +13,22 @@ from typing import TYPE_CHECKING, NoReturn
 import click
 
 from watcher.errors import WatcherError
+from watcher.exit_codes import NOT_DONE
 from watcher.opening import open_laboratory, version
 
 if TYPE_CHECKING:
     from collections.abc import Callable
-
-#: Exit codes of `once` and `explain`: everything passes; a sample fails or is incomplete; something was not done.
-ALL_PASS, SAMPLE_FAILS, NOT_DONE = 0, 1, 2
-#: Exit codes of `status`.
-WELL, ATTENTION, NOT_RUNNING = 0, 1, 2
 
 _FILE = click.Path(path_type=Path, dir_okay=False)
 
 
 def _with_config(command: Callable[..., None]) -> Callable[..., None]:
     return click.option(
-        "--config", type=_FILE, default=Path("config.yaml"), show_default=True, help="The laboratory's settings."
+        "--config",
+        type=_FILE,
+        default=Path("config.yaml"),
+        show_default=True,
+        help="The laboratory's settings.",
     )(command)
 
 
@@ -49,7 +49,10 @@ def watch(config: Path) -> None:
     try:
         with open_laboratory(config, "watch") as laboratory:
             folders = ", ".join(str(folder) for folder in laboratory.settings.exports)
-            click.echo(f"Watching {folders}; results go to {laboratory.settings.results}. Stop with Ctrl-C.", err=True)
+            click.echo(
+                f"Watching {folders}; results go to {laboratory.settings.results}. Stop with Ctrl-C.",
+                err=True,
+            )
             laboratory.service.run()
     except WatcherError as error:
         _give_up(error)

@@ -20,8 +20,9 @@ from typing import TYPE_CHECKING, Any
 
 from aiosmtpd.controller import Controller
 
+from watcher.exit_codes import ALL_PASS, NOT_DONE
 from watcher.health import read_status
-from watcher.terminal import console, heading, lines, table, word
+from watcher.terminal import console, heading, lines, short, table, word
 
 if TYPE_CHECKING:
     from collections.abc import Callable, Iterator
@@ -29,6 +30,7 @@ if TYPE_CHECKING:
 
     from aiosmtpd.smtp import SMTP, Envelope, Session
     from rich.console import Console
+    from rich.text import Text
 
 #: The first words of the demonstration's settings, by which an earlier one is recognised and may be replaced.
 MARK = "# The Skerry Point laboratory is invented"
@@ -44,7 +46,6 @@ EXPORTS = {
 MAILS = 2
 PATIENCE_SECONDS = 90.0
 LOOK_SECONDS = 0.1
-DONE, NOT_DONE = 0, 2
 
 
 class _Catcher:
@@ -85,7 +86,7 @@ def run(folder: Path) -> int:
     finally:
         controller.stop()
     _show(out, folder, catcher.mails)
-    return DONE
+    return ALL_PASS
 
 
 def _free_port() -> int:
@@ -154,14 +155,19 @@ def _records(folder: Path) -> list[dict[str, Any]]:
 def _show(out: Console, folder: Path, mails: list[EmailMessage]) -> None:
     heading(out, "Results")
     records = {record["export"]["name"]: record for record in _records(folder)}
-    table(out, ("export", "sample", "verdict", "result"), _rows([records[name] for name in EXPORTS if name in records]))
+    table(
+        out,
+        ("export", "sample", "verdict", "result"),
+        _rows([records[name] for name in EXPORTS if name in records]),
+    )
     beat = read_status(folder / "records").heartbeat or {}
     for refused in beat.get("refused", []):
         heading(out, f"Refused: {refused['name']}")
         lines(out, [refused["problem"]])
     for number, message in enumerate(mails, start=1):
         heading(out, f"Mail {number} of {len(mails)}, to {message['To']}")
-        lines(out, [f"Subject: {message['Subject']}", "", message.get_content().rstrip()])
+        body = message.get_content().replace("\r\n", "\n").rstrip()
+        lines(out, [f"Subject: {message['Subject']}", "", body])
     heading(out, "Files")
     lines(out, [str(file) for file in sorted(folder.glob("results/*/*"))])
     lines(
@@ -174,10 +180,10 @@ def _show(out: Console, folder: Path, mails: list[EmailMessage]) -> None:
     )
 
 
-def _rows(records: list[dict[str, Any]]) -> Iterator[tuple[object, ...]]:
+def _rows(records: list[dict[str, Any]]) -> Iterator[tuple[str | Text, ...]]:
     for record in records:
         name = record["export"]["name"]
         for series in record["series"]:
             sample = " ".join(part for part in (series["sample"], series["analyte"], series["channel"]) if part)
-            yield name, sample, word(series["verdict"]), series["result"]["text"]
+            yield name, sample, word(series["verdict"]), short(series["result"]["text"])
             name = ""

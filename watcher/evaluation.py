@@ -91,8 +91,8 @@ def choose_layout(settings: Settings, job: Job) -> tuple[Layout, Method]:
             job.name,
             None,
             None,
-            f"expected one layout to claim it, got {names}. Nothing of it was evaluated. Narrow claims.file or claims.text "
-            f"of one of them.",
+            f"expected one layout to claim it, got {names}. Nothing of it was evaluated. Narrow claims.file or "
+            f"claims.text of one of them.",
         )
     return claiming[0]
 
@@ -135,10 +135,7 @@ def stage(evaluated: Evaluated, settings: Settings, folder: Path, disk: Disk) ->
         "csv": results.csv_bytes(evaluated.outcomes, export, settings.file.csv),
         "json": results.json_bytes(evaluated.outcomes, export),
     }
-    names = {
-        extension: target(export.name, export.revision, export.accepted_at, extension)
-        for extension in contents
-    }
+    names = {extension: target(export.name, export.revision, export.accepted_at, extension) for extension in contents}
     staged = {extension: f"{export.sha256[:16]}-{Path(name).name}" for extension, name in names.items()}
     folder.mkdir(parents=True, exist_ok=True)
     disk.write_all(folder, {staged[extension]: content for extension, content in contents.items()}, "stage")
@@ -183,9 +180,7 @@ class Worker:
     def _evaluate(self, request: dict[str, Any]) -> dict[str, Any]:
         if self._settings is None:
             raise ValueError("asked to evaluate before settings were adopted")
-        job = Job(
-            request["name"], Path(request["copy"]).read_bytes(), request["revision"], request["accepted_at"]
-        )
+        job = Job(request["name"], Path(request["copy"]).read_bytes(), request["revision"], request["accepted_at"])
         answer = partial(_answer, name=job.name)
         try:
             evaluated = evaluate_job(self._settings, job, final=request["final"])
@@ -197,9 +192,7 @@ class Worker:
             letter = mail.refusal(job.name, str(refused), job.sha256)
             return answer("refused", problem=str(refused), mails=[letter.plain()])
         outcomes = evaluated.outcomes
-        letters = mail.mails(
-            outcomes, evaluated.export, self._settings.file.complete_after, request["alerted"]
-        )
+        letters = mail.mails(outcomes, evaluated.export, self._settings.file.complete_after, request["alerted"])
         return answer(
             "done",
             layout=evaluated.layout.layout,

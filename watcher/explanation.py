@@ -1,4 +1,4 @@
-"""What `explain` shows of one export: how it was understood, what was computed, which mails would go. Writes nothing."""
+"""What `explain` shows of an export: how it was understood, what was computed, which mails would go. Writes nothing."""
 
 from __future__ import annotations
 
@@ -10,7 +10,7 @@ from parsers.readings import line_ranges
 from rules import plan
 from rules.figures import several
 from watcher import mail
-from watcher.terminal import heading, lines, table, word
+from watcher.terminal import heading, lines, short, table, word
 
 if TYPE_CHECKING:
     from rich.console import Console
@@ -81,11 +81,7 @@ def _cells(out: Console, outcomes: Outcomes) -> None:
 def _results(out: Console, outcomes: Outcomes) -> None:
     heading(out, "Results")
     results(out, outcomes)
-    notes = [
-        (i, plan.next_step(outcomes, i))
-        for i in range(min(len(outcomes.case), MOST_ROWS))
-        if outcomes.reasons(i)
-    ]
+    notes = [(i, plan.next_step(outcomes, i)) for i in range(min(len(outcomes.case), MOST_ROWS)) if outcomes.reasons(i)]
     for i, step in notes:
         heading(out, f"{outcomes.case.name(i)}: {outcomes.verdict_of(i).word}")
         lines(out, [f"why  {reason}" for reason in outcomes.reasons(i)])
@@ -100,7 +96,7 @@ def results(out: Console, outcomes: Outcomes) -> None:
     rows = []
     for i in shown:
         name = case.name(i) + (f" (attempt {case.series.attempt[i]})" if case.series.attempt[i] > 1 else "")
-        rows.append((name, word(outcomes.verdict_of(i).word), outcomes.text(i)))
+        rows.append((name, word(outcomes.verdict_of(i).word), short(outcomes.text(i))))
     table(out, ("sample", "verdict", "result"), rows)
     if len(case) > MOST_ROWS:
         lines(out, [f"and {len(case) - MOST_ROWS} more series"])

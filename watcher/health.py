@@ -77,7 +77,7 @@ class Heartbeat:
 def write_heartbeat(records: Path, heartbeat: Heartbeat) -> None:
     """Write the file. It is not forced to disk: after a power cut nothing is behind it anyway."""
     temporary = records / f"{TEMPORARY_PREFIX}status.tmp"
-    temporary.write_text(json.dumps(asdict(heartbeat), indent=1, ensure_ascii=False) + "\n", "utf-8")
+    temporary.write_text(json.dumps(asdict(heartbeat), ensure_ascii=False) + "\n", "utf-8")
     temporary.replace(records / STATUS_NAME)
 
 

@@ -9,11 +9,12 @@ from typing import TYPE_CHECKING, Any
 
 from parsers.errors import ExportRefused
 from parsers.read import claims
+from rules.limits import DEFAULTS
 from rules.outcomes import Verdict
 from watcher.clock import SystemClock, moment, stamp
 from watcher.evaluation import Job, Unclaimed, evaluate_job, unclaimed_sentence
+from watcher.exit_codes import ALL_PASS, ATTENTION, NOT_DONE, NOT_RUNNING, SAMPLE_FAILS, WELL
 from watcher.explanation import explain as print_explanation
-from watcher.folder import Folder
 from watcher.health import read_status
 from watcher.settings import Settings, SettingsInvalid, compile_snapshot, read_files
 from watcher.terminal import console, heading, lines, table
@@ -23,8 +24,6 @@ if TYPE_CHECKING:
 
     from rules.outcomes import Outcomes
 
-ALL_PASS, SAMPLE_FAILS, NOT_DONE = 0, 1, 2
-WELL, ATTENTION, NOT_RUNNING = 0, 1, 2
 #: A heartbeat older than so many scans says that the service hangs.
 STALE_SCANS = 6
 #: … but never sooner than this, since an evaluation may take its time.
@@ -69,8 +68,6 @@ def _limits(settings: Settings) -> Iterator[str]:
     stated = settings.file.limits.stated()
     if stated:
         yield from (f"{name}: {limits.text}" for name, limits in stated.items())
-    from rules.limits import DEFAULTS  # noqa: PLC0415
-
     defaults = [name for name in DEFAULTS if name not in stated]
     if defaults:
         yield f"Not the laboratory's decision yet, defaults hold: {', '.join(defaults)}"
@@ -104,7 +101,10 @@ def explain(config: Path, export: Path) -> int:
     try:
         data = export.read_bytes()
     except OSError as error:
-        lines(err, [f"{export}: {(error.strerror or str(error)).lower()}. Nothing to explain. Correct the path."])
+        lines(
+            err,
+            [f"{export}: {(error.strerror or str(error)).lower()}. Nothing to explain. Correct the path."],
+        )
         return NOT_DONE
     job = Job(_name(settings, export), data, 1, stamp(SystemClock().now()))
     try:
@@ -142,7 +142,10 @@ def status(config: Path) -> int:
     found = read_status(records)
     out = console()
     if found.heartbeat is None:
-        lines(out, [f"Not running: no service has worked with {records} yet. Start it with `spikewarden watch`."])
+        lines(
+            out,
+            [f"Not running: no service has worked with {records} yet. Start it with `spikewarden watch`."],
+        )
         return NOT_RUNNING
     account = _Account(found.heartbeat, settings)
     attention = account.attention()
@@ -172,14 +175,14 @@ class _Account:
     def show(self) -> None:
         out = console()
         counts = ", ".join(f"{count} {state}" for state, count in sorted(self.beat["counts"].items())) or "none yet"
+        waiting, refused = (self.beat[what]["count"] for what in ("undelivered_mails", "refused_mails"))
         lines(
             out,
             [
                 f"exports      {counts}",
                 f"last export  {self.beat['last_export'] or 'none since start'}",
                 f"last scan    {self.beat['last_scan_at'] or 'none yet'}",
-                f"mails        {self.beat['undelivered_mails']['count']} waiting, "
-                f"{self.beat['refused_mails']['count']} refused by the server",
+                f"mails        {waiting} waiting, {refused} refused by the server",
                 f"files        {self.beat['undelivered_files']['count']} waiting",
             ],
         )
@@ -190,7 +193,10 @@ class _Account:
             problem = export["problem"] or "not evaluated"
             prefix = "" if problem.startswith(export["name"]) else f"{export['name']}: "
             found.append(f"{export['state']}: {prefix}{problem}")
-        for what, word in (("undelivered_mails", "mails wait"), ("refused_mails", "mails were refused for good")):
+        for what, word in (
+            ("undelivered_mails", "mails wait"),
+            ("refused_mails", "mails were refused for good"),
+        ):
             waiting = self.beat[what]
             if waiting["count"] and waiting["last_error"]:
                 found.append(f"{waiting['count']} {word}: {waiting['last_error']}")

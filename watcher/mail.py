@@ -25,6 +25,8 @@ from watcher.record import local_time
 if TYPE_CHECKING:
     from collections.abc import Iterable
 
+    from numpy.typing import NDArray
+
     from rules.outcomes import Outcomes
     from watcher.record import Export
 
@@ -77,9 +79,7 @@ class _Cause:
         return self.series[0]
 
 
-def mails(
-    outcomes: Outcomes, export: Export, complete_after_seconds: float, known: Iterable[str]
-) -> list[Mail]:
+def mails(outcomes: Outcomes, export: Export, complete_after_seconds: float, known: Iterable[str]) -> list[Mail]:
     """Return the mails that an evaluated export gives rise to, without what was mailed before.
 
     Parameters
@@ -97,15 +97,11 @@ def mails(
         ("fail", Verdict.FAIL, 0.0),
         ("incomplete", Verdict.INCOMPLETE, complete_after_seconds),
     ):
-        keys = {
-            i: _key(kind, outcomes, i, export) for i in np.flatnonzero(outcomes.verdict == verdict).tolist()
-        }
+        keys = {i: _key(kind, outcomes, i, export) for i in np.flatnonzero(outcomes.verdict == verdict).tolist()}
         new = {i: key for i, key in keys.items() if key not in mailed}
         if new:
             written.append(_of_series(kind, outcomes, export, list(new), tuple(new.values()), wait))
-    problems = {
-        f"problem|{export.name}|{problem}": str(problem) for problem in outcomes.case.readings.problems
-    }
+    problems = {f"problem|{export.name}|{problem}": str(problem) for problem in outcomes.case.readings.problems}
     unseen = {key: text for key, text in problems.items() if key not in mailed}
     if unseen:
         written.append(_of_problems(export, list(unseen.values()), tuple(unseen)))
@@ -125,18 +121,14 @@ def refusal(name: str, sentence: str, sha256: str) -> Mail:
         [
             (
                 "DO",
-                [
-                    "Do what the reason says; the export is taken in again by itself when it or the layout changes."
-                ],
+                ["Do what the reason says; the export is taken in again by itself when it or the layout changes."],
             ),
             ("HOLD", [f"Everything measured in {name}: it has no results. Other exports are not affected."]),
             ("WHY", [sentence]),
             ("RECORD", [f"export {name}, sha256 {sha256[:12]}"]),
         ],
     )
-    return Mail(
-        "problem", f"PROBLEM {name}: {_cut(sentence)}", body, (f"refused|{name}|{sha256}|{sentence}",)
-    )
+    return Mail("problem", f"PROBLEM {name}: {_cut(sentence)}", body, (f"refused|{name}|{sha256}|{sentence}",))
 
 
 def _of_problems(export: Export, sentences: list[str], keys: tuple[str, ...]) -> Mail:
@@ -207,9 +199,10 @@ def _do(outcomes: Outcomes, cause: _Cause) -> str:
 
 
 def _hold(outcomes: Outcomes, series: list[int]) -> list[str]:
-    counts = Counter(outcomes.verdict_of(i) for i in range(len(outcomes.case)))
-    sound = [f"{counts[v]} {v.word}" for v in (Verdict.PASS, Verdict.WARN, Verdict.NOT_SPIKED) if counts[v]]
-    rest = f"Not affected: {' and '.join(sound)}." if sound else "Nothing else was measured in this export."
+    held = set(series)
+    others = Counter(outcomes.verdict_of(i).word for i in range(len(outcomes.case)) if i not in held)
+    listed = ", ".join(f"{count} {verdict}" for verdict, count in others.items())
+    rest = f"The rest of this export is not affected by it: {listed}." if others else "It holds nothing else."
     return [f"Do not release {_all_names(outcomes, series)}.", rest]
 
 
@@ -219,8 +212,7 @@ def _where(outcomes: Outcomes, cause: _Cause) -> str:
     parts = [_all_names(outcomes, cause.series)]
     positions = case.readings.position[rows]
     if np.isfinite(positions).any():
-        known = sorted({f"{p:g}" for p in positions[np.isfinite(positions)].tolist()}, key=float)
-        parts.append(f"position {several(known, most=12)}")
+        parts.append(f"position {_positions(positions[np.isfinite(positions)])}")
     times = case.readings.measured_at[rows]
     if np.isfinite(times).any():
         begin, end = (local_time(float(t)) or "" for t in (np.nanmin(times), np.nanmax(times)))
@@ -228,6 +220,12 @@ def _where(outcomes: Outcomes, cause: _Cause) -> str:
     lines = [line for i in cause.series for line in case.series_lines(i)]
     parts.append(f"lines {line_ranges(lines)}")
     return ", ".join(parts)
+
+
+def _positions(positions: NDArray[np.float64]) -> str:
+    if (positions == np.round(positions)).all():
+        return line_ranges(positions.astype(int).tolist())
+    return several([f"{p:g}" for p in np.unique(positions).tolist()], most=12)
 
 
 def _people(outcomes: Outcomes) -> list[str]:

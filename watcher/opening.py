@@ -73,7 +73,9 @@ def open_laboratory(config: Path, reason: str) -> Iterator[Laboratory]:
 def _read_settings(worker: Worker, config: Path) -> dict[str, Any]:
     answer = worker.ask({"do": "read settings", "config": str(config.absolute())})
     if answer.get("fate") == "bug":
-        raise SettingsRefused((f"{config}: {answer['error']}. This is a defect of the program.\n{answer['traceback']}",))
+        raise SettingsRefused(
+            (f"{config}: {answer['error']}. This is a defect of the program.\n{answer['traceback']}",)
+        )
     if answer["faults"]:
         raise SettingsRefused(tuple(answer["faults"]))
     return answer

@@ -26,6 +26,8 @@ if TYPE_CHECKING:
 
 #: Figures that change with time alone are read again after so many seconds.
 REREAD_SECONDS = 60.0
+#: How often an idle service shows that it lives.
+BEAT_SECONDS = 30.0
 #: How old the heartbeat may be when an evaluation begins that may take minutes.
 SHOW_SECONDS = 1.0
 
@@ -85,9 +87,12 @@ class Pulse:
             self._write(running=True)
 
     def beat(self, *, running: bool) -> None:
-        """Write the heartbeat."""
-        self._reread()
-        self._write(running=running)
+        """Write the heartbeat; while nothing but the time changes, only now and then."""
+        problems = self._troubles.sentences()
+        news = self._reread() or problems != self._last.problems or running != self._last.running
+        if news or self._clock.monotonic() - self._written >= BEAT_SECONDS:
+            self._last = replace(self._last, problems=problems)
+            self._write(running=running)
 
     def _write(self, *, running: bool) -> None:
         self._written = self._clock.monotonic()
@@ -96,14 +101,14 @@ class Pulse:
             running=running,
             written_at=stamp(self._clock.now()),
             last_delivery_at=None if self._mailing is None else self._mailing.last_round_at,
-            problems=self._troubles.sentences(),
         )
         write_heartbeat(self._records, self._last)
 
-    def _reread(self) -> None:
+    def _reread(self) -> bool:
+        """Read the figures of the ledger again where they may have changed."""
         now = self._clock.monotonic()
         if self._read and self._read[0] == self._ledger.changes and now - self._read[1] < REREAD_SECONDS:
-            return
+            return False
         self._read = (self._ledger.changes, now)
         mails = self._ledger.outgoing.undelivered_mails()
         files = self._ledger.outgoing.undelivered_files()
@@ -118,6 +123,7 @@ class Pulse:
                 len(files), files[0].due_at if files else None, file_errors[-1] if file_errors else None
             ),
         )
+        return True
 
 
 def _undelivered(mails: Sequence[UndeliveredMail]) -> Undelivered:

@@ -85,9 +85,7 @@ def record(outcomes: Outcomes, export: Export) -> dict[str, Any]:
         "blanks": _blanks(case),
         "check_standards": _check_standards(outcomes),
         "calibrations": _calibrations(case),
-        "set_aside": [
-            {"line": one.line, "reason": one.reason, "text": one.text} for one in case.readings.set_aside
-        ],
+        "set_aside": [{"line": one.line, "reason": one.reason, "text": one.text} for one in case.readings.set_aside],
         "problems": [str(problem) for problem in case.readings.problems],
         "seal": None,
     }

@@ -9,6 +9,7 @@ import csv
 import io
 import json
 import math
+import re
 from typing import TYPE_CHECKING, Any
 
 from parsers.readings import line_ranges
@@ -47,8 +48,9 @@ COLUMNS = (
     "revision",
     "accepted_at",
 )
-#: A spreadsheet takes a cell that begins so for a formula (OWASP, CSV injection), also behind blanks.
-_FORMULA = ("=", "+", "-", "@", "\t", "\r", "\n", "＝", "＋", "－", "＠")  # noqa: RUF001 - full-width forms are meant
+#: A spreadsheet takes a cell that begins so for a formula (OWASP, CSV injection), also behind blanks of any kind, and
+#: in the full-width forms of the signs.
+_FORMULA = re.compile(r"\s*[=+\-@\uff1d\uff0b\uff0d\uff20]|[\t\r]")
 
 
 def json_bytes(outcomes: Outcomes, export: Export) -> bytes:
@@ -74,10 +76,7 @@ def inert(text: str) -> str:
     >>> inert("=1+1"), inert("RIV-17")
     ("'=1+1", 'RIV-17')
     """
-    begins = text.lstrip("  ")
-    risky = begins.startswith(_FORMULA) or any(
-        part.lstrip("  ").startswith(_FORMULA) for part in text.splitlines()[1:]
-    )
+    risky = any(_FORMULA.match(part) for part in text.split("\n"))
     return f"'{text}" if risky else text
 
 

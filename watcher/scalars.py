@@ -40,9 +40,7 @@ def yes_or_no(text: str) -> bool:
     False
     """
     try:
-        return {"yes": True, "true": True, "on": True, "no": False, "false": False, "off": False}[
-            text.strip()
-        ]
+        return {"yes": True, "true": True, "on": True, "no": False, "false": False, "off": False}[text.strip()]
     except KeyError:
         raise ValueError(f"expected yes or no, got '{text}'") from None
 
@@ -125,9 +123,7 @@ def relative_uncertainty(text: str) -> float:
     """
     found = _UNCERTAINTY.match(text.strip())
     if found is None or found["k"] is None or float(found["k"]) <= 0:
-        raise ValueError(
-            f"expected an uncertainty with its coverage factor, such as '0.4 %, k=2', got '{text}'"
-        )
+        raise ValueError(f"expected an uncertainty with its coverage factor, such as '0.4 %, k=2', got '{text}'")
     return float(found["value"]) / 100 / float(found["k"])
 
 

@@ -57,18 +57,13 @@ def _limit_in(unit: str) -> BeforeValidator:
     """Convert a limit, or the keys warn and fail with one each, in the unit that the check is measured in."""
 
     def validate(value: object) -> object:
-        if isinstance(value, dict):
-            texts = list(value.values())
-        else:
-            texts = [value]
+        texts = list(value.values()) if isinstance(value, dict) else [value]
         if not all(isinstance(text, str) for text in texts):
             raise ValueError(f"expected a limit, or the keys warn and fail with one each, got {got(value)}")
         limits = parse_check_limits(value)  # type: ignore[arg-type]
         for limit in (limits.warn, limits.fail):
             if limit is not None and limit.unit != unit:
-                raise ValueError(
-                    f"expected a limit {f'in {unit}' if unit else 'without unit'}, got '{limit.text}'"
-                )
+                raise ValueError(f"expected a limit {f'in {unit}' if unit else 'without unit'}, got '{limit.text}'")
         return limits
 
     return BeforeValidator(validate)
@@ -196,9 +191,7 @@ class MailPart(Part):
 
     server: str = Field(min_length=1)
     from_: str = Field(alias="from")
-    to: Annotated[tuple[str, ...], BeforeValidator(lambda v: [v] if isinstance(v, str) else v)] = Field(
-        min_length=1
-    )
+    to: Annotated[tuple[str, ...], BeforeValidator(lambda v: [v] if isinstance(v, str) else v)] = Field(min_length=1)
     port: Annotated[int | None, _read(lambda t: int(scalars.number(t)))] = Field(default=None, gt=0, lt=65536)
     security: Literal["starttls", "tls", "none"] = "starttls"
     user: str | None = None
@@ -219,8 +212,8 @@ class MailPart(Part):
     @classmethod
     def _no_password(cls, _: object) -> None:
         raise ValueError(
-            "a password never stands in this file\nPut it alone into a file that only the service's account can read, and name "
-            "that file in mail.password_file"
+            "a password never stands in this file\n"
+            "Put it alone into a file that only the service's account can read, and name that in mail.password_file"
         )
 
     @model_validator(mode="after")

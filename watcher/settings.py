@@ -157,9 +157,7 @@ def read_files(config: Path) -> Snapshot:
             layouts.append(File(path, _text(folder / path, path)))
         except SettingsInvalid as invalid:
             reason = invalid.faults[0].sentence
-            faults.append(
-                DocumentFault(file.path, document.line(("layouts", index)), f"layouts[{index + 1}]", reason)
-            )
+            faults.append(DocumentFault(file.path, document.line(("layouts", index)), f"layouts[{index + 1}]", reason))
     snapshot = Snapshot(str(folder), file, tuple(layouts))
     if faults:
         raise SettingsInvalid((*faults, *_faults_of(snapshot)))
@@ -207,9 +205,7 @@ def compile_snapshot(snapshot: Snapshot) -> Settings:
     faults: list[DocumentFault] = []
     file: SettingsFile | None = None
     try:
-        file = validate(
-            load(snapshot.config.text, snapshot.config.path, CONSEQUENCE), SettingsFile, CONSEQUENCE
-        )
+        file = validate(load(snapshot.config.text, snapshot.config.path, CONSEQUENCE), SettingsFile, CONSEQUENCE)
     except DocumentInvalid as invalid:
         faults += invalid.faults
     read: list[tuple[Layout, Decisions]] = []
@@ -233,9 +229,7 @@ def _same_names(layouts: list[Layout]) -> list[DocumentFault]:
         document = layout.document
         if layout.layout in seen:
             what = f"the name '{layout.layout}' belongs to {seen[layout.layout]} already"
-            faults.append(
-                document.fault(("layout",), what, LAYOUT_CONSEQUENCE, "Give each layout a name of its own")
-            )
+            faults.append(document.fault(("layout",), what, LAYOUT_CONSEQUENCE, "Give each layout a name of its own"))
         seen.setdefault(layout.layout, document.path)
     return faults
 

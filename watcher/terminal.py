@@ -5,6 +5,7 @@ Colour is never the only sign: every verdict stands there as a word. Nothing her
 
 from __future__ import annotations
 
+import re
 import sys
 from typing import TYPE_CHECKING
 
@@ -17,6 +18,8 @@ if TYPE_CHECKING:
 
 #: Widest line; a wider terminal gains nothing, since sentences are read in columns.
 COLUMNS = 80
+#: What follows a result in brackets: ``(95 %, k = 2.57, t with 5 dof)``, ``(not detected, 95 %)``.
+_DETAILS = re.compile(r" \((?:not detected, )?\d[\d.]* %[^()]*\)$")
 _STYLES = {
     "pass": "green",
     "done": "green",
@@ -50,7 +53,9 @@ def word(verdict: str) -> Text:
     return Text(verdict, style=_STYLES.get(verdict, ""))
 
 
-def table(out: Console, header: Sequence[str], rows: Iterable[Sequence[str | Text]], *, numbers: Sequence[int] = ()) -> None:
+def table(
+    out: Console, header: Sequence[str], rows: Iterable[Sequence[str | Text]], *, numbers: Sequence[int] = ()
+) -> None:
     """Print a table; the columns in `numbers` are set flush right, long texts are folded."""
     made = Table(box=None, pad_edge=False, padding=(0, 2, 0, 0), header_style="bold underline")
     for index, title in enumerate(header):
@@ -59,6 +64,15 @@ def table(out: Console, header: Sequence[str], rows: Iterable[Sequence[str | Tex
         # texts come from exports: nothing in them is markup
         made.add_row(*(cell if isinstance(cell, Text) else Text(_visible(cell)) for cell in row))
     out.print(made)
+
+
+def short(result: str) -> str:
+    """Return a result without its last bracket, which says confidence, k and degrees of freedom.
+
+    >>> short("17.3 ± 1.9 µg/L (95 %, k = 2.57, t with 5 dof)")
+    '17.3 ± 1.9 µg/L'
+    """
+    return _DETAILS.sub("", result)
 
 
 def lines(out: Console, sentences: Iterable[str], *, indent: str = "") -> None:
