@@ -48,9 +48,7 @@ _ROLES = [role.word for role in Role]
 _FOLLOWS = "Its series is not evaluated."
 
 
-def assemble(
-    frame: Frame, layout: Layout, plan: Plan, table: Table, heading: dict[str, Heading]
-) -> Readings:
+def assemble(frame: Frame, layout: Layout, plan: Plan, table: Table, heading: dict[str, Heading]) -> Readings:
     """Put the readings of an export together.
 
     Raises
@@ -203,7 +201,9 @@ class _Assembly:
         for row in np.flatnonzero(rows).tolist():
             word = said[row] or ""
             expected = f"expected a role ({listed(ROLE_WORDS)}), got {shown(word)}"
-            cells[row] = Cell(Kind.UNREADABLE, np.nan, word, expected, "Explain the word in the layout: columns.role.map")
+            cells[row] = Cell(
+                Kind.UNREADABLE, np.nan, word, expected, "Explain the word in the layout: columns.role.map"
+            )
         self.doubt("role", self.header_of("role"), cells)
 
     def unsettled(self, rows: NDArray[np.bool_]) -> None:
@@ -215,7 +215,9 @@ class _Assembly:
         cells = {}
         for row in set(np.flatnonzero(rows).tolist()) - known:
             text = "" if names else self.values.label[row] or ""
-            cells[row] = Cell(Kind.UNREADABLE, np.nan, text, expected, "Complete the export, or add a label rule to the layout")
+            cells[row] = Cell(
+                Kind.UNREADABLE, np.nan, text, expected, "Complete the export, or add a label rule to the layout"
+            )
         self.doubt("role", header, cells)
 
     def doubt(self, name: str, header: str, cells: dict[int, Cell]) -> None:
@@ -270,8 +272,12 @@ class _Assembly:
 
     def signalless(self, rows: NDArray[np.bool_]) -> None:
         odd = {row for odd in self.values.odd for row, cell in odd.cells.items() if cell.kind is not Kind.MISSING}
-        cell = Cell(Kind.UNREADABLE, np.nan, "", "expected at least one reading, got empty cells", "Complete the export")
-        self.doubt("signal", self.header_of("signal"), {row: cell for row in np.flatnonzero(rows).tolist() if row not in odd})
+        cell = Cell(
+            Kind.UNREADABLE, np.nan, "", "expected at least one reading, got empty cells", "Complete the export"
+        )
+        self.doubt(
+            "signal", self.header_of("signal"), {row: cell for row in np.flatnonzero(rows).tolist() if row not in odd}
+        )
 
     def statistic(self, name: str) -> Floats:
         """Return a statistic of each reading, before rows are left out."""
@@ -341,7 +347,9 @@ class _Assembly:
         if values.layout.labels and -1 in number:
             words = ["" if at < 0 else word for at, word in zip(number, words, strict=True)]
             samples = ["" if at < 0 else text for at, text in zip(number, samples, strict=True)]
-        return tuple(map(LabelUse, label.names, written, words, samples, [level[code] for code in levels.codes.tolist()], counts))
+        return tuple(
+            map(LabelUse, label.names, written, words, samples, [level[code] for code in levels.codes.tolist()], counts)
+        )
 
 
 def _is_sample(role: NDArray[np.int8]) -> NDArray[np.bool_]:

@@ -317,7 +317,10 @@ class BlockTable:
 
     def _numbers(self, column: int, values: Floats, doubtful: NDArray[np.bool_], grammar: Grammar) -> Numbers:
         """Put what is no plain number through the grammar."""
-        words = (*grammar.missing, *(word for some in (grammar.below, grammar.above) if isinstance(some, tuple) for word in some))
+        words = (
+            *grammar.missing,
+            *(word for some in (grammar.below, grammar.above) if isinstance(some, tuple) for word in some),
+        )
         written = [value for word in words if (value := grammar.value(word)) is not None]
         doubtful = doubtful | ~np.isfinite(values)
         if written:

@@ -186,8 +186,15 @@ class Grammar:
 
     def _explained(self, text: str) -> Cell | None:
         if text in self.missing:
-            return Cell(Kind.MISSING, math.nan, text, "expected a number, got an empty cell" if not text else
-                        f"expected a number, got {shown(text)}, which means missing", "Complete the export")
+            return Cell(
+                Kind.MISSING,
+                math.nan,
+                text,
+                "expected a number, got an empty cell"
+                if not text
+                else f"expected a number, got {shown(text)}, which means missing",
+                "Complete the export",
+            )
         for kind, words, where in ((Kind.BELOW, self.below, "below"), (Kind.ABOVE, self.above, "above")):
             if text in words if isinstance(words, tuple) else words.search(text):
                 expected = f"expected a number, got {shown(text)}, which means {where} the instrument's range"

@@ -157,7 +157,9 @@ def _spread(frame: Frame, unfold: Unfold, taken: set[int]) -> tuple[Entry, ...]:
         columns[field] = at
     entries = tuple(Entry(analyte, channel, columns) for (analyte, channel), columns in groups.items())
     if not entries:
-        sentence = f"no column matches unfold.pattern {unfold.pattern.pattern!r}; the header holds {listed(frame.headers)}"
+        sentence = (
+            f"no column matches unfold.pattern {unfold.pattern.pattern!r}; the header holds {listed(frame.headers)}"
+        )
         raise frame.lines.refusal(frame.header_at, sentence, "Correct the pattern in the layout")
     for entry in entries:
         _complete(frame, unfold, entry)
@@ -184,9 +186,7 @@ def _complete(frame: Frame, unfold: Unfold, entry: Entry) -> None:
         raise frame.lines.refusal(frame.header_at, "unfold.pattern finds no analyte in this header", todo, header)
 
 
-def _uses(
-    headers: Iterable[str], mapped: dict[str, Mapped], entries: tuple[Entry, ...]
-) -> tuple[ColumnUse, ...]:
+def _uses(headers: Iterable[str], mapped: dict[str, Mapped], entries: tuple[Entry, ...]) -> tuple[ColumnUse, ...]:
     feeds: dict[int, list[str]] = {}
     for field, found in mapped.items():
         for at in found.columns:

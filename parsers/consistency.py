@@ -174,9 +174,17 @@ def _unfold(layout: Layout) -> Iterator[Finding]:
         hint = suggestion(group, fields.UNFOLD_GROUPS).strip() or f"Known: {', '.join(fields.UNFOLD_GROUPS)}"
         yield ("unfold", "pattern"), f"{group!r} is no group that a header can say", hint
     if "field" in groups and not unfold.fields:
-        yield ("unfold",), "the pattern has a group 'field', but no word of it is explained", "Add fields: {Mean: signal}"
+        yield (
+            ("unfold",),
+            "the pattern has a group 'field', but no word of it is explained",
+            "Add fields: {Mean: signal}",
+        )
     if "field" not in groups and unfold.fields:
-        yield ("unfold", "fields"), "the pattern has no group 'field'", "Add (?P<field>…) to the pattern, or take fields out"
+        yield (
+            ("unfold", "fields"),
+            "the pattern has no group 'field'",
+            "Add (?P<field>…) to the pattern, or take fields out",
+        )
     given = list(unfold.fields.values())
     if given and "signal" not in given:
         yield ("unfold", "fields"), "no word means signal", "Add the word of the readings, as in fields: {Mean: signal}"

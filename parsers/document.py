@@ -286,8 +286,12 @@ class _Builder:
                 if self.stack[-1].flow if self.stack else False:
                     raise _Stop  # the comment ate the closing bracket as well
         elif event.style in ("|", ">") and not event.value.strip():
-            self.fault(line, self.here(), f"a lone {event.style} begins a text of several lines, and none follows",
-                       traps.remedy(event.style))
+            self.fault(
+                line,
+                self.here(),
+                f"a lone {event.style} begins a text of several lines, and none follows",
+                traps.remedy(event.style),
+            )
         elif event.style == '"' and any(character < " " and character != "\t" for character in event.value):
             value = traps.rest_of_value(self.text, start.index if start else 0).strip('"')
             self.fault(line, self.here(), "a backslash in double quotes makes a control character", traps.remedy(value))

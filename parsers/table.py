@@ -104,7 +104,9 @@ def find_table(lines: Lines, layout: Layout) -> Frame:
         if at is not None:
             record, behind = read_record(lines, at, layout.separator)
             above = lines.head(behind)
-            aside = [SetAside(number, BEFORE if text.strip() else BLANK, text) for number, text in enumerate(above[:at], 1)]
+            aside = [
+                SetAside(number, BEFORE if text.strip() else BLANK, text) for number, text in enumerate(above[:at], 1)
+            ]
             aside += [SetAside(number, HEADER, text) for number, text in enumerate(above[at:], at + 1)]
             offset = sum(len(text) + 1 for text in above)
             return Frame(lines, tuple(map(fold, record)), above[at], at, behind, offset, tuple(aside))
@@ -169,7 +171,9 @@ def header_again(frame: Frame, at: int, line: str, layout: Layout) -> bool:
 def wrong_count(frame: Frame, at: int, got: int) -> Exception:
     """Make the error for a row of another length than the header."""
     sentence = f"expected {len(frame.headers)} fields as in the header, got {got} in {shown(frame.lines.lines[at])}"
-    return frame.lines.refusal(at, sentence, "Correct the row, or leave such lines out with skip or until in the layout")
+    return frame.lines.refusal(
+        at, sentence, "Correct the row, or leave such lines out with skip or until in the layout"
+    )
 
 
 @dataclass(slots=True)

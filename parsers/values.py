@@ -120,7 +120,9 @@ class Values:
         """Return the factor from aliquot to sample."""
         mapped = self.plan.mapped.get("predilution")
         if mapped is None:
-            return self._elsewhere("predilution", lambda text, grammar: (_predilution(text, grammar), ""), units=False).values
+            return self._elsewhere(
+                "predilution", lambda text, grammar: (_predilution(text, grammar), ""), units=False
+            ).values
         texts = self.table.texts(mapped.columns[0])
         numbers = converted(texts, lambda text: _predilution(text, self.layout.grammar))
         self._keep("predilution", mapped.columns[0], numbers, mapped, None)

@@ -275,8 +275,8 @@ def _series_faults(case: Case) -> list[tuple[int, str]]:
             (
                 i,
                 (
-                    f"the settings say blank: {use}, and the export holds no blank for {case.analyte(i)}: measure one, or "
-                    f"state blank: none"
+                    f"the settings say blank: {use}, and the export holds no blank for {case.analyte(i)}: measure one, "
+                    f"or state blank: none"
                 ),
             )
             for i in np.flatnonzero(case.judged & (blanks == 0)).tolist()

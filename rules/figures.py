@@ -33,8 +33,8 @@ def percent(value: float) -> str:
 def places_of(uncertainty: float) -> int:
     """Return the decimals that show an uncertainty to its second significant digit.
 
-    >>> places_of(1.92246), places_of(0.0995), places_of(250.0)
-    (1, 3, -1)
+    >>> places_of(1.92246), places_of(0.0994), places_of(0.0996), places_of(250.0)
+    (1, 3, 2, -1)
     """
     exponent = floor(log10(uncertainty))
     # rounding may carry into the next power of ten: 0.0996 reads 0.10, not 0.100

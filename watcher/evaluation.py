@@ -53,11 +53,18 @@ class Job:
 
 @dataclass(frozen=True, slots=True)
 class Evaluated:
-    """An export that was evaluated, with the words for its record."""
+    """An export that was evaluated, with the words for its record.
+
+    Attributes
+    ----------
+    problems
+        What a person must see and what belongs to no series: rows without sample, a missing last line.
+    """
 
     export: Export
     layout: Layout
     outcomes: Outcomes
+    problems: tuple[str, ...]
 
 
 class Unclaimed(Exception):
@@ -106,9 +113,13 @@ def evaluate_job(settings: Settings, job: Job, *, final: bool) -> Evaluated:
         If there is nothing to evaluate, or not yet.
     """
     layout, method = choose_layout(settings, job)
-    if not final and not is_finished(layout, job.data):
+    finished = is_finished(layout, job.data)
+    if not final and not finished:
         raise Unfinished(layout.layout)
     readings = read(job.data, layout, job.name)
+    problems = [str(problem) for problem in readings.problems]
+    if not finished:
+        problems.append(_no_end(layout, complete_after_seconds=settings.file.complete_after))
     outcomes = evaluate(readings, method, _local_seconds(job.accepted_at))
     export = Export(
         name=job.name,
@@ -120,7 +131,17 @@ def evaluate_job(settings: Settings, job: Job, *, final: bool) -> Evaluated:
         settings=settings.sha256,
         program=program_version(),
     )
-    return Evaluated(export, layout, outcomes)
+    return Evaluated(export, layout, outcomes, tuple(problems))
+
+
+def _no_end(layout: Layout, complete_after_seconds: float) -> str:
+    """Say that an export was evaluated although its last line never came."""
+    pattern = layout.finished.pattern if layout.finished else ""
+    hours = complete_after_seconds / 3600
+    return (
+        f"expected a line that matches '{pattern}' (finished), which says that the export is complete, and none came. "
+        f"What is there was evaluated, because it did not change for {hours:g} h. Look whether the run was cut short."
+    )
 
 
 def _local_seconds(accepted_at: str) -> float:
@@ -133,7 +154,7 @@ def stage(evaluated: Evaluated, settings: Settings, folder: Path, disk: Disk) ->
     export = evaluated.export
     contents = {
         "csv": results.csv_bytes(evaluated.outcomes, export, settings.file.csv),
-        "json": results.json_bytes(evaluated.outcomes, export),
+        "json": results.json_bytes(evaluated.outcomes, export, evaluated.problems),
     }
     names = {extension: target(export.name, export.revision, export.accepted_at, extension) for extension in contents}
     staged = {extension: f"{export.sha256[:16]}-{Path(name).name}" for extension, name in names.items()}
@@ -192,7 +213,9 @@ class Worker:
             letter = mail.refusal(job.name, str(refused), job.sha256)
             return answer("refused", problem=str(refused), mails=[letter.plain()])
         outcomes = evaluated.outcomes
-        letters = mail.mails(outcomes, evaluated.export, self._settings.file.complete_after, request["alerted"])
+        letters = mail.mails(
+            outcomes, evaluated.export, evaluated.problems, self._settings.file.complete_after, request["alerted"]
+        )
         return answer(
             "done",
             layout=evaluated.layout.layout,
@@ -200,7 +223,7 @@ class Worker:
             mails=[letter.plain() for letter in letters],
             series=series_index(outcomes),
             verdicts=verdict_counts(outcomes),
-            problems=[str(problem) for problem in outcomes.case.readings.problems],
+            problems=list(evaluated.problems),
         )
 
 

@@ -29,7 +29,8 @@ def explain(out: Console, evaluated: Evaluated, complete_after_seconds: float) -
     _labels(out, evaluated.outcomes)
     _cells(out, evaluated.outcomes)
     _results(out, evaluated.outcomes)
-    _mails(out, mail.mails(evaluated.outcomes, evaluated.export, complete_after_seconds, ()))
+    letters = mail.mails(evaluated.outcomes, evaluated.export, evaluated.problems, complete_after_seconds, ())
+    _mails(out, letters)
 
 
 def _summary(out: Console, evaluated: Evaluated) -> None:
@@ -57,9 +58,9 @@ def _summary(out: Console, evaluated: Evaluated) -> None:
     if reasons:
         heading(out, "Set aside")
         table(out, ("lines", "why"), [(line_ranges(at), reason) for reason, at in reasons.items()])
-    if readings.problems:
+    if evaluated.problems:
         heading(out, "Problems")
-        lines(out, [str(problem) for problem in readings.problems])
+        lines(out, evaluated.problems)
 
 
 def _labels(out: Console, outcomes: Outcomes) -> None:

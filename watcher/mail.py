@@ -79,13 +79,21 @@ class _Cause:
         return self.series[0]
 
 
-def mails(outcomes: Outcomes, export: Export, complete_after_seconds: float, known: Iterable[str]) -> list[Mail]:
+def mails(
+    outcomes: Outcomes,
+    export: Export,
+    problems: tuple[str, ...],
+    complete_after_seconds: float,
+    known: Iterable[str],
+) -> list[Mail]:
     """Return the mails that an evaluated export gives rise to, without what was mailed before.
 
     Parameters
     ----------
     outcomes, export
         The export, judged.
+    problems
+        What belongs to no series and must be seen.
     complete_after_seconds
         How long what is missing may still come.
     known
@@ -101,8 +109,8 @@ def mails(outcomes: Outcomes, export: Export, complete_after_seconds: float, kno
         new = {i: key for i, key in keys.items() if key not in mailed}
         if new:
             written.append(_of_series(kind, outcomes, export, list(new), tuple(new.values()), wait))
-    problems = {f"problem|{export.name}|{problem}": str(problem) for problem in outcomes.case.readings.problems}
-    unseen = {key: text for key, text in problems.items() if key not in mailed}
+    keyed = {f"problem|{export.name}|{problem}": problem for problem in problems}
+    unseen = {key: problem for key, problem in keyed.items() if key not in mailed}
     if unseen:
         written.append(_of_problems(export, list(unseen.values()), tuple(unseen)))
     return written
@@ -135,8 +143,8 @@ def _of_problems(export: Export, sentences: list[str], keys: tuple[str, ...]) ->
     body = _body(
         f"PROBLEM in {export.name}",
         [
-            ("DO", ["Correct the rows in the instrument's program and export again."]),
-            ("HOLD", ["What these rows measured is in no result; everything else was evaluated."]),
+            ("DO", ["Correct what is named in the instrument's program and export again."]),
+            ("HOLD", ["What is named is in no result, or not all of it; everything else was evaluated."]),
             ("WHY", _capped(sentences)),
             ("RECORD", _record(export, None)),
         ],

@@ -88,9 +88,9 @@ class Files:
 
     def prepare(self) -> None:
         """Make the results folder before the first delivery ever; remove what a killed run left in it."""
-        if not self._outgoing.any_file_delivered():
-            self._results.mkdir(parents=True, exist_ok=True)
-        with contextlib.suppress(OSError):  # a share that is away is swept another time
+        with contextlib.suppress(OSError):  # each delivery says what is wrong; mails must not wait for it
+            if not self._outgoing.any_file_delivered():
+                self._results.mkdir(parents=True, exist_ok=True)
             for folder in (self._results, *(each for each in self._results.iterdir() if each.is_dir())):
                 sweep(folder)
 

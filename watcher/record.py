@@ -75,7 +75,7 @@ def local_time(seconds: float) -> str | None:
     return (datetime(1970, 1, 1, tzinfo=UTC) + timedelta(seconds=seconds)).strftime("%Y-%m-%dT%H:%M:%S")
 
 
-def record(outcomes: Outcomes, export: Export) -> dict[str, Any]:
+def record(outcomes: Outcomes, export: Export, problems: tuple[str, ...]) -> dict[str, Any]:
     """Return the whole record of an export."""
     case = outcomes.case
     return {
@@ -86,7 +86,7 @@ def record(outcomes: Outcomes, export: Export) -> dict[str, Any]:
         "check_standards": _check_standards(outcomes),
         "calibrations": _calibrations(case),
         "set_aside": [{"line": one.line, "reason": one.reason, "text": one.text} for one in case.readings.set_aside],
-        "problems": [str(problem) for problem in case.readings.problems],
+        "problems": list(problems),
         "seal": None,
     }
 

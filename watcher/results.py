@@ -53,9 +53,9 @@ COLUMNS = (
 _FORMULA = re.compile(r"\s*[=+\-@\uff1d\uff0b\uff0d\uff20]|[\t\r]")
 
 
-def json_bytes(outcomes: Outcomes, export: Export) -> bytes:
+def json_bytes(outcomes: Outcomes, export: Export, problems: tuple[str, ...]) -> bytes:
     """Return the JSON record."""
-    text = json.dumps(record(outcomes, export), ensure_ascii=False, allow_nan=False, indent=1)
+    text = json.dumps(record(outcomes, export, problems), ensure_ascii=False, allow_nan=False, indent=1)
     return (text + "\n").encode()
 
 
