@@ -11,23 +11,14 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
-from parsers import fields, roles
+from parsers import fields
 from parsers.cells import Cell, Kind
+from parsers.judgement import find_faults, label_uses
 from parsers.labels import understand
-from parsers.readings import (
-    ROLE_WORDS,
-    Fault,
-    LabelUse,
-    Problem,
-    Quantities,
-    Readings,
-    Role,
-    SetAside,
-    Texts,
-    line_ranges,
-)
-from parsers.spelling import folded, listed, looked_up, renamed, shown
-from parsers.values import Odd, Values
+from parsers.readings import Problem, Quantities, Readings, Role, SetAside, Texts, line_ranges
+from parsers.roles import find_roles, is_sample
+from parsers.spelling import folded, looked_up, renamed, shown
+from parsers.values import Values
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
@@ -44,8 +35,6 @@ EMPTY_ROW = "no cell is filled"
 NO_SAMPLE = "row without sample ID"
 NO_ANALYTE = "row without analyte"
 UNMATCHED = "label matches no rule"
-_ROLES = [role.word for role in Role]
-_FOLLOWS = "Its series is not evaluated."
 
 
 def assemble(frame: Frame, layout: Layout, plan: Plan, table: Table, heading: dict[str, Heading]) -> Readings:
@@ -90,7 +79,6 @@ class _Assembly:
     keep: NDArray[np.bool_]
     set_aside: list[SetAside] = field(default_factory=list)
     problems: list[Problem] = field(default_factory=list)
-    doubts: list[Odd] = field(default_factory=list)
 
     def readings(self) -> Readings:
         values, table = self.values, self.values.table
@@ -98,7 +86,7 @@ class _Assembly:
         self.unmatched()
         added, nominal = values.quantities("added"), values.quantities("nominal")
         spike_volume, level = values.quantities("spike_volume"), values.texts("level")
-        role = self.role(added, spike_volume, level, nominal)
+        role = find_roles(values, added, spike_volume, level, nominal)
         sample = self.sample(role)
         analyte = self.analyte()
         signals = self.signals()
@@ -123,16 +111,14 @@ class _Assembly:
         columns["signals"] = signals if everything else signals[flat]
         return Readings(
             **columns,
-            faults=self.faults(present, role),
+            faults=find_faults(values, present, role),
             set_aside=tuple(sorted([*table.set_aside, *self.set_aside], key=lambda aside: aside.line)),
             problems=tuple(sorted(self.problems, key=lambda problem: problem.line)),
-            labels=self.label_uses(role, sample),
+            labels=label_uses(values, role, sample),
             columns=values.plan.uses,
             heading={name: found.value for name, found in values.heading.items()},
             lines=len(values.frame.lines),
         )
-
-    # --- rows that are no readings ---------------------------------------------------------------------------------
 
     def leave_out(self, rows: NDArray[np.bool_], reason: str) -> None:
         """Set rows aside; one that says something and belongs to no sample or analyte is a problem as well."""
@@ -144,20 +130,16 @@ class _Assembly:
             if not empty and reason in (NO_SAMPLE, NO_ANALYTE):
                 what = "sample ID" if reason == NO_SAMPLE else "analyte"
                 sentence = f"expected a {what}, got an empty cell in {shown(text)}. The row belongs to no result. "
-                header = self.header_of("analyte") if reason == NO_ANALYTE else self.values.label_header()
+                header = self.values.header_of("analyte") if reason == NO_ANALYTE else self.values.label_header()
                 self.problems.append(Problem(line, header, f"{sentence}Complete the export."))
         self.keep &= ~rows
-
-    def header_of(self, name: str) -> str:
-        mapped = self.values.plan.mapped.get(name)
-        return self.values.table.headers[mapped.columns[0]] if mapped else self.values.label_header()
 
     def unmatched(self) -> None:
         layout, label = self.values.layout, self.values.label
         unmatched = self.values.understood.rule < 0
         if not layout.labels or not unmatched.any():
             return
-        rows = np.append(unmatched, False)[label.codes]  # noqa: FBT003 (a row without label is another matter)
+        rows = np.append(unmatched, False)[label.codes]  # a row without label is another matter
         if layout.unmatched == "set aside":
             self.leave_out(rows, UNMATCHED)
             return
@@ -179,51 +161,6 @@ class _Assembly:
         todo = f"Look at the labels ({', '.join(sorted({aside.reason for aside in self.set_aside}))})"
         return self.values.frame.lines.refusal(self.values.frame.header_at, sentence, todo)
 
-    # --- what a row is ---------------------------------------------------------------------------------------------
-
-    def role(self, added: Quantities, spike_volume: Quantities, level: Texts, nominal: Quantities) -> NDArray[np.int8]:
-        values = self.values
-        by_label = np.append(values.understood.role, np.int8(roles.UNKNOWN))[values.label.codes]
-        said = values.texts("role")
-        by_word = np.array([ROLE_WORDS.get(word, roles.UNKNOWN) for word in (*said.names, "")], dtype=np.int8)
-        by_column = by_word[said.codes]
-        strange = (said.codes >= 0) & (by_column == roles.UNKNOWN) & (by_label == roles.UNKNOWN)
-        role = roles.settle(
-            by_label, by_column, (added.values, spike_volume.values), level.codes >= 0, np.isfinite(nominal.values)
-        )
-        self.doubtful_words(strange, said)
-        self.unsettled((role == roles.UNKNOWN) & ~strange)
-        # Whatever is in doubt counts as spiked: its addition is unknown, and must never be taken for none.
-        return np.where(strange | (role == roles.UNKNOWN), np.int8(Role.SPIKED), role).astype(np.int8)
-
-    def doubtful_words(self, rows: NDArray[np.bool_], said: Texts) -> None:
-        cells = {}
-        for row in np.flatnonzero(rows).tolist():
-            word = said[row] or ""
-            expected = f"expected a role ({listed(ROLE_WORDS)}), got {shown(word)}"
-            cells[row] = Cell(
-                Kind.UNREADABLE, np.nan, word, expected, "Explain the word in the layout: columns.role.map"
-            )
-        self.doubt("role", self.header_of("role"), cells)
-
-    def unsettled(self, rows: NDArray[np.bool_]) -> None:
-        known = {row for odd in self.values.odd for row, cell in odd.cells.items() if cell.kind is not Kind.MISSING}
-        names = [name for name in ("added", "spike_volume") if name in self.values.plan.mapped]
-        header = self.header_of(names[0]) if names else self.values.label_header()
-        what = "expected an addition, got an empty cell, and nothing else says" if names else "nothing says"
-        expected = f"{what} whether this is unspiked, spiked or a standard"
-        cells = {}
-        for row in set(np.flatnonzero(rows).tolist()) - known:
-            text = "" if names else self.values.label[row] or ""
-            cells[row] = Cell(
-                Kind.UNREADABLE, np.nan, text, expected, "Complete the export, or add a label rule to the layout"
-            )
-        self.doubt("role", header, cells)
-
-    def doubt(self, name: str, header: str, cells: dict[int, Cell]) -> None:
-        if cells:
-            self.doubts.append(Odd(name, header, None, cells, optional=False, in_table=True))
-
     def sample(self, role: NDArray[np.int8]) -> Texts:
         """Return what groups spiked with unspiked; standards, blanks and checks may go by their label."""
         values = self.values
@@ -232,9 +169,9 @@ class _Assembly:
             return renamed(values.label, folded(values.label.names))
         sample = values.texts("sample")
         gaps = sample.codes < 0
-        if (gaps & ~_is_sample(role)).any():
+        if (gaps & ~is_sample(role)).any():
             label = renamed(values.label, folded(values.label.names))
-            sample = filled(sample, Texts(np.where(_is_sample(role), np.int32(-1), label.codes), label.names))
+            sample = filled(sample, Texts(np.where(is_sample(role), np.int32(-1), label.codes), label.names))
         self.leave_out(sample.codes < 0, NO_SAMPLE)
         return sample
 
@@ -253,8 +190,6 @@ class _Assembly:
             found.append(Texts(np.repeat(texts.codes, max(len(entries), 1)), texts.names))
         return found[0], found[1]
 
-    # --- what was measured -----------------------------------------------------------------------------------------
-
     def signals(self) -> Floats:
         """Return the signals of each reading, before rows are left out."""
         values, plan = self.values, self.values.plan
@@ -267,17 +202,16 @@ class _Assembly:
         mapped = plan.mapped["signal"]
         signals = np.stack([values.numbers("signal", column=column) for column in mapped.columns], axis=1)
         if mapped.source.optional:
-            self.signalless(np.isnan(signals).all(axis=1))
+            self.signalless(np.all(np.isnan(signals), axis=1))
         return signals
 
     def signalless(self, rows: NDArray[np.bool_]) -> None:
+        """Note rows whose optional replicates are all empty."""
         odd = {row for odd in self.values.odd for row, cell in odd.cells.items() if cell.kind is not Kind.MISSING}
-        cell = Cell(
-            Kind.UNREADABLE, np.nan, "", "expected at least one reading, got empty cells", "Complete the export"
-        )
-        self.doubt(
-            "signal", self.header_of("signal"), {row: cell for row in np.flatnonzero(rows).tolist() if row not in odd}
-        )
+        expected = "expected at least one reading, got empty cells"
+        cell = Cell(Kind.UNREADABLE, np.nan, "", expected, "Complete the export")
+        empty = [row for row in np.flatnonzero(rows).tolist() if row not in odd]
+        self.values.doubt("signal", self.values.header_of("signal"), dict.fromkeys(empty, cell))
 
     def statistic(self, name: str) -> Floats:
         """Return a statistic of each reading, before rows are left out."""
@@ -293,78 +227,23 @@ class _Assembly:
         return np.stack(columns, axis=1).ravel()
 
     def present(self, role: NDArray[np.int8]) -> NDArray[np.bool_]:
-        """Return bool[rows, entries]: which readings there are. A standard need not hold every analyte of a wide table."""
+        """Return bool[rows, entries]: which readings there are.
+
+        A standard, blank or check standard of a wide table need not hold every analyte; a sample must.
+        """
         entries = max(len(self.values.plan.entries), 1)
         present = np.repeat(self.keep[:, np.newaxis], entries, axis=1)
-        is_sample = _is_sample(role)
+        samples = is_sample(role)
         for odd in self.values.odd:
             if odd.field != "signal" or odd.entry is None:
                 continue
             for row, cell in odd.cells.items():
-                if cell.kind is Kind.MISSING and not is_sample[row] and self.keep[row]:
+                if cell.kind is Kind.MISSING and not samples[row] and self.keep[row]:
                     present[row, odd.entry] = False
                     reason = f"no reading in column {odd.header!r}: the {Role(role[row]).word} does not hold it"
                     text = self.values.label[row] or ""
                     self.set_aside.append(SetAside(int(self.values.table.line[row]), reason, text))
         return present
-
-    def faults(self, present: NDArray[np.bool_], role: NDArray[np.int8]) -> tuple[Fault, ...]:
-        """Return the faults of the readings that remain, in the order of the rows."""
-        number = (np.cumsum(present.ravel()) - 1).reshape(present.shape)
-        is_sample = _is_sample(role)
-        faults = []
-        for odd in [*self.values.odd, *self.doubts]:
-            for row, cell in odd.cells.items():
-                if not _fails(odd, cell, is_sample=bool(is_sample[row])):
-                    continue
-                sentence = f"{cell.expected}. {_FOLLOWS} {cell.remedy}."
-                line = int(self.values.table.line[row])
-                for entry in range(present.shape[1]) if odd.entry is None else (odd.entry,):
-                    if present[row, entry]:
-                        at = int(number[row, entry])
-                        faults.append(Fault(at, line, odd.header, cell.text, odd.field, sentence))
-        return tuple(sorted(faults, key=lambda fault: fault.row))
-
-    def label_uses(self, role: NDArray[np.int8], sample: Texts) -> tuple[LabelUse, ...]:
-        """Return how each distinct label was understood."""
-        values, label = self.values, self.values.label
-        rows = np.flatnonzero(label.codes >= 0)
-        counts = np.bincount(label.codes[rows], minlength=len(label.names)).tolist()
-        first = np.zeros(len(label.names), dtype=np.int64)
-        first[label.codes[rows][::-1]] = rows[::-1]
-        differs = rows[(role[rows] != role[first[label.codes[rows]]])]
-        mixed = set(label.codes[differs].tolist())
-        words = [_ROLES[code] for code in role[first].tolist()]
-        for code in mixed:
-            words[code] = "by row"
-        number = values.understood.rule.tolist()
-        rules = [*(rule.written for rule in values.layout.labels), ""]  # the index -1 of no rule picks the last one
-        written = [rules[at] for at in number]
-        levels = values.understood.said.get("level", Texts.absent(len(number)))
-        level = [*levels.names, ""]
-        name = [*sample.names, ""]
-        samples = [name[code] for code in sample.codes[first].tolist()]
-        if values.layout.labels and -1 in number:
-            words = ["" if at < 0 else word for at, word in zip(number, words, strict=True)]
-            samples = ["" if at < 0 else text for at, text in zip(number, samples, strict=True)]
-        return tuple(
-            map(LabelUse, label.names, written, words, samples, [level[code] for code in levels.codes.tolist()], counts)
-        )
-
-
-def _is_sample(role: NDArray[np.int8]) -> NDArray[np.bool_]:
-    return (role == Role.UNSPIKED) | (role == Role.SPIKED)
-
-
-def _fails(odd: Odd, cell: Cell, *, is_sample: bool) -> bool:
-    """Tell whether a cell that gave no value spoils its series."""
-    if cell.kind is Kind.UNREADABLE:
-        return True
-    if cell.kind is not Kind.MISSING:
-        return odd.field not in fields.STATISTICS
-    if odd.optional or not odd.in_table:
-        return False
-    return odd.field == "signal" or (odd.field in fields.NEEDED_ON_SAMPLES and is_sample)
 
 
 def _take(column: Any, rows: NDArray[np.int64]) -> Any:

@@ -164,12 +164,12 @@ class Grammar:
         if match is None:
             return None
         value, unit = self.value(match.group()), folded[match.end() :].strip()
-        if value is None or math.isinf(value) or unit[:1] in "0123456789.,'’_+-−<>:;" and unit:
+        if value is None or math.isinf(value) or (unit and unit[0] in "0123456789.,'’_+-−<>:;"):
             return None
         return value, unit
 
     def predilution(self, text: str) -> float | None:
-        """Return the factor that a predilution says: ``10``, ``1 in 10``, ``1:10`` (1 in 10) or ``1+9``; None for others.
+        """Return the factor that a predilution says, None where it says none; ``1:10`` means 1 in 10.
 
         >>> [Grammar().predilution(text) for text in ("10", "1 in 10", "1:10", "1+9", "1 to 10")]
         [10.0, 10.0, 10.0, 10.0, None]

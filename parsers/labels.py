@@ -15,7 +15,7 @@ import numpy as np
 from pydantic import BaseModel, ConfigDict, model_validator
 
 from parsers.fields import FROM_LABEL
-from parsers.patterns import Pattern
+from parsers.patterns import Pattern  # noqa: TC001 (pydantic reads annotations)
 from parsers.readings import ROLE_WORDS, Texts
 from parsers.spelling import fold, renamed, suggestion
 
@@ -54,7 +54,7 @@ def like_pattern(like: str) -> re.Pattern[str]:
         if piece in seen:
             raise ValueError(f"the word {{{piece}}} stands twice in {like!r}\nWrite a pattern instead")
         seen.add(piece)
-        pattern += rf"(?P<{piece}>\S(?:.*?\S)??)"
+        pattern += rf"(?P<{piece}>\S|\S.*?\S)"
     return re.compile(pattern)
 
 
@@ -140,20 +140,20 @@ def _match(
     labels: Sequence[str], begin: int, rules: Sequence[LabelRule], matched: list[int], said: dict[str, list[str | None]]
 ) -> None:
     """Note which rule each label matches and what it says, from the index `begin` on."""
-    left = list(enumerate(labels, begin))
+    places: Sequence[int] = range(begin, begin + len(labels))
     for number, rule in enumerate(rules):
-        match = rule.regex.fullmatch if rule.like is not None else rule.regex.search
-        found = list(map(match, [label for _, label in left]))
+        found = list(map(rule.regex.fullmatch if rule.like is not None else rule.regex.search, labels))
         if not any(found):
             continue
-        hits = [(at, match) for (at, _), match in zip(left, found, strict=True) if match]
+        hits = [(at, match) for at, match in zip(places, found, strict=True) if match]
         for at, _ in hits:
             matched[at] = number
         for word in rule.words:
             column = said[word]
             for at, hit in hits:
                 column[at] = hit[word]
-        left = [entry for entry, match in zip(left, found, strict=True) if not match]
+        places = [at for at, match in zip(places, found, strict=True) if not match]
+        labels = [label for label, match in zip(labels, found, strict=True) if not match]
 
 
 def _trimmed(column: list[str | None]) -> Texts:

@@ -15,7 +15,7 @@ from parsers import consistency
 from parsers.cells import Grammar
 from parsers.document import Document, load, validate
 from parsers.errors import DocumentInvalid
-from parsers.labels import LabelRule
+from parsers.labels import LabelRule  # noqa: TC001 (pydantic reads annotations)
 from parsers.patterns import Pattern, compiled
 from parsers.source import Source
 from parsers.wording import got
@@ -167,7 +167,7 @@ class Layout(_Part):
             With every fault.
         """
         layout = validate(document, cls, CONSEQUENCE)
-        layout._document = document
+        layout._document = document  # noqa: SLF001 (its own)
         faults = tuple(document.fault(loc, what, CONSEQUENCE, todo) for loc, what, todo in consistency.faults(layout))
         if faults:
             raise DocumentInvalid(faults)

@@ -5,8 +5,8 @@
     resolve       header + layout → columns of fields   parsers.columns
     assemble      rows → readings                       parsers.assembly
 
-What breaks the structure raises `ExportRefused`; a cell that cannot be used is a fault of its row, and the rest is read.
-Nothing here opens a file.
+What breaks the structure raises `ExportRefused`; a cell that cannot be used is a fault of its row, and the rest is
+read. Nothing here opens a file.
 """
 
 from __future__ import annotations

@@ -15,7 +15,7 @@ import numpy as np
 from parsers.readings import Texts
 
 if TYPE_CHECKING:
-    from collections.abc import Callable, Iterable, Sequence
+    from collections.abc import Iterable, Sequence
 
 _OTHER_BLANKS = re.compile(r"[\t\v\f\r\x1c-\x1f]")
 

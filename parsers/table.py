@@ -15,6 +15,7 @@ from typing import TYPE_CHECKING, Protocol
 
 import numpy as np
 
+from parsers import fates
 from parsers.readings import SetAside, Texts
 from parsers.spelling import fold, shown
 
@@ -31,16 +32,6 @@ MOST_LINES_IN_CELL = 20
 
 #: Lines in which a header is looked for before the whole export is split.
 _LIKELY_HEAD = 200
-
-BLANK = "blank line"
-BEFORE = "before the table"
-HEADER = "header"
-HEADER_AGAIN = "header again"
-SKIPPED = "left out by skip"
-FINISHED = "end mark of the export"
-UNTIL = "end of the table"
-AFTER = "after the table"
-CONTINUED = "continues the line above"
 
 #: A line by which spreadsheets note their separator.
 _SEPARATOR_NOTE = re.compile(r"^sep=.$", re.IGNORECASE)
@@ -104,10 +95,8 @@ def find_table(lines: Lines, layout: Layout) -> Frame:
         if at is not None:
             record, behind = read_record(lines, at, layout.separator)
             above = lines.head(behind)
-            aside = [
-                SetAside(number, BEFORE if text.strip() else BLANK, text) for number, text in enumerate(above[:at], 1)
-            ]
-            aside += [SetAside(number, HEADER, text) for number, text in enumerate(above[at:], at + 1)]
+            aside = fates.outside(above[:at], 0, fates.BEFORE)
+            aside += [SetAside(number, fates.HEADER, text) for number, text in enumerate(above[at:], at + 1)]
             offset = sum(len(text) + 1 for text in above)
             return Frame(lines, tuple(map(fold, record)), above[at], at, behind, offset, tuple(aside))
     if layout.header is None:
@@ -133,7 +122,7 @@ def read_record(lines: Lines, at: int, separator: str) -> tuple[list[str], int]:
     ExportRefused
         If a quote is left open or followed by anything but a separator.
     """
-    line = lines.head(at + 1)[at]
+    line = lines.line(at)
     if separator == " ":
         return line.split(), at + 1
     if '"' not in line:
@@ -150,22 +139,6 @@ def read_record(lines: Lines, at: int, separator: str) -> tuple[list[str], int]:
             sentence = f"a quote stands where none belongs ({error}): {shown(line)}"
         raise lines.refusal(at, sentence, todo) from error
     return record, at + reader.line_num
-
-
-def header_again(frame: Frame, at: int, line: str, layout: Layout) -> bool:
-    """Tell whether a line repeats the header.
-
-    Raises
-    ------
-    ExportRefused
-        If it is a header by its pattern, but another one.
-    """
-    if line == frame.header:
-        return True
-    if layout.header is None or not layout.header.search(line):
-        return False
-    sentence = f"expected rows under the header of line {frame.header_at + 1}, got another header: {shown(line)}"
-    raise frame.lines.refusal(at, sentence, "Export each batch on its own, or set until in the layout")
 
 
 def wrong_count(frame: Frame, at: int, got: int) -> Exception:
@@ -209,11 +182,11 @@ def read_rows(frame: Frame, layout: Layout) -> RowTable:
     at, end = frame.first, len(lines)
     while at < end:
         line = lines.lines[at]
-        reason = fate(frame, at, layout)
+        reason = fates.fate(frame, at, layout)
         if reason is not None:
             aside.append(SetAside(at + 1, reason, line))
             at += 1
-            if reason == UNTIL:
+            if reason == fates.UNTIL:
                 break
             continue
         record, behind = read_record(lines, at, layout.separator)
@@ -221,26 +194,7 @@ def read_rows(frame: Frame, layout: Layout) -> RowTable:
             raise wrong_count(frame, at, len(record))
         rows.append(record)
         starts.append(at + 1)
-        aside += [SetAside(number + 1, CONTINUED, lines.lines[number]) for number in range(at + 1, behind)]
+        aside += [SetAside(number + 1, fates.CONTINUED, lines.lines[number]) for number in range(at + 1, behind)]
         at = behind
-    aside += behind_table(lines.lines[at:], at)
+    aside += fates.outside(lines.lines[at:], at, fates.AFTER)
     return RowTable(frame.headers, np.asarray(starts, dtype=np.int64), aside, rows)
-
-
-def fate(frame: Frame, at: int, layout: Layout) -> str | None:
-    """Return why the line of an index is no row, None where it is one."""
-    line = frame.lines.lines[at]
-    if not line.strip():
-        return BLANK
-    if layout.until is not None and layout.until.search(line):
-        return UNTIL
-    if layout.finished is not None and layout.finished.search(line):
-        return FINISHED
-    if any(pattern.search(line) for pattern in layout.skip):
-        return SKIPPED
-    return HEADER_AGAIN if header_again(frame, at, line, layout) else None
-
-
-def behind_table(lines: Sequence[str], at: int) -> list[SetAside]:
-    """Return the fate of the lines behind the end of the table, the first of which has the index `at`."""
-    return [SetAside(number, AFTER if text.strip() else BLANK, text) for number, text in enumerate(lines, at + 1)]

@@ -7,14 +7,14 @@ them. Nothing here knows what a line means.
 from __future__ import annotations
 
 import codecs
+import re
 from functools import cached_property
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, NamedTuple
 
 from parsers.errors import ExportRefused
 from parsers.patterns import literal_start
 
 if TYPE_CHECKING:
-    import re
     from collections.abc import Iterator, Sequence
 
 #: Largest export in bytes: fifty times the longest seen.
@@ -33,6 +33,24 @@ _MARKS = (
 _REFUSED = "Nothing of this export is read."
 
 
+class Line(NamedTuple):
+    """One line of an export.
+
+    Attributes
+    ----------
+    at
+        Its index from 0.
+    offset
+        Where it begins in the text.
+    text
+        What it says.
+    """
+
+    at: int
+    offset: int
+    text: str
+
+
 class Lines:
     """A decoded export; it is split into lines as far as somebody looks.
 
@@ -44,12 +62,15 @@ class Lines:
         The declared encoding that matched.
     text
         All of it, every line end a line feed.
+    data
+        The same in UTF-8 where the export came so, else None: it need not be encoded again.
     """
 
-    def __init__(self, name: str, encoding: str, text: str) -> None:
+    def __init__(self, name: str, encoding: str, text: str, data: bytes | None = None) -> None:
         self.name = name
         self.encoding = encoding
         self.text = text
+        self.data = data
         self._length = text.count("\n") + (not text.endswith("\n"))
 
     def __len__(self) -> int:
@@ -82,8 +103,18 @@ class Lines:
             end = self.text.find("\n", end + 1)
         return self._split(self.text[:end].split("\n"))
 
-    def matching(self, pattern: re.Pattern[str], first: int, offset: int) -> list[int]:
-        """Return the indices of the lines in which a pattern is found.
+    def line(self, at: int) -> str:
+        """Return the line of an index."""
+        return self.lines[at] if "lines" in self.__dict__ else self.head(at + 1)[at]
+
+    def may_be_long(self) -> bool:
+        """Tell, without splitting, whether a line may be too long: then half of what is allowed has no line end."""
+        half = MOST_CHARACTERS // 2
+        last = len(self.text) - half
+        return any(self.text.find("\n", at, at + half) < 0 for at in range(0, last, half))
+
+    def matching(self, pattern: re.Pattern[str], first: int, offset: int) -> list[Line]:
+        """Return the lines in which a pattern is found.
 
         Parameters
         ----------
@@ -93,19 +124,26 @@ class Lines:
             Index of the first line to look at, and where it begins in the text.
         """
         start = literal_start(pattern)
-        if not start:
-            return [at for at, line in enumerate(self.lines[first:], first) if pattern.search(line)]
-        return [at for at, line in self._beginning(start, first, offset) if pattern.search(line)]
+        return [line for line in self._candidates(start, first, offset) if pattern.search(line.text)]
 
-    def _beginning(self, start: str, first: int, offset: int) -> Iterator[tuple[int, str]]:
-        """Yield index and text of the lines that begin with a text, from a line on."""
-        at = first
-        place = offset if self.text.startswith(start, offset) else self.text.find(f"\n{start}", offset) + 1
-        while place or at == offset == 0:
-            at, offset = at + self.text.count("\n", offset, place), place
-            end = self.text.find("\n", place)
-            yield at, self.text[place : len(self.text) if end < 0 else end]
-            place = self.text.find(f"\n{start}", place) + 1
+    def all_from(self, first: int, offset: int) -> Iterator[Line]:
+        """Yield the lines from an index on."""
+        for at, text in enumerate(self.lines[first:], first):
+            yield Line(at, offset, text)
+            offset += len(text) + 1
+
+    def _candidates(self, start: str, first: int, offset: int) -> Iterator[Line]:
+        """Yield the lines that begin with a text, without splitting the export."""
+        if not start:
+            yield from self.all_from(first, offset)
+            return
+        needle, text = f"\n{start}", self.text
+        place = offset if text.startswith(start, offset) else text.find(needle, offset) + 1
+        while place or (place == offset and text.startswith(start)):
+            first, offset = first + text.count("\n", offset, place), place
+            end = text.find("\n", place)
+            yield Line(first, place, text[place : len(text) if end < 0 else end])
+            place = text.find(needle, place) + 1
             if not place:
                 return
 
@@ -145,8 +183,9 @@ def decode(data: bytes, encodings: Sequence[str], name: str) -> Lines:
         raise _refusal(name, None, f"expected at most {MOST_BYTES} bytes, got {len(data)}", "Export fewer runs at once")
     encoding, text = _decoded(data, encodings, name)
     if "\r" in text:
-        text = text.replace("\r\n", "\n").replace("\r", "\n")
-    return Lines(name, encoding, text)
+        return Lines(name, encoding, text.replace("\r\n", "\n").replace("\r", "\n"))
+    same = _plain(encoding) == "utf-8" and not data.startswith(codecs.BOM_UTF8)
+    return Lines(name, encoding, text, data if same else None)
 
 
 def _decoded(data: bytes, encodings: Sequence[str], name: str) -> tuple[str, str]:
@@ -190,7 +229,7 @@ def _plain(encoding: str) -> str:
 
 
 def _undecodable(data: bytes, error: UnicodeDecodeError, encoding: str, name: str) -> ExportRefused:
-    line = data.count(b"\n", 0, error.start) + 1
+    line = len(re.findall(rb"\r\n|\r|\n", data[: error.start])) + 1
     sentence = f"expected text in {encoding}, got the byte 0x{data[error.start]:02X}, which does not belong there"
     return _refusal(name, line, sentence, "Declare the right encodings in the layout")
 
@@ -199,7 +238,7 @@ def _refuse_nul(text: str, name: str) -> None:
     at = text.find("\0")
     if at < 0:
         return
-    line = text.count("\n", 0, at) + 1
+    line = len(re.findall(r"\r\n|\r|\n", text[:at])) + 1
     todo = "Look whether this is a text export"
     if text.count("\0") * 3 > len(text):
         todo = "It looks like UTF-16 without a mark: declare utf-16-le or utf-16-be in the layout"

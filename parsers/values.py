@@ -1,7 +1,7 @@
 """The values of one field over the rows of a table, from whichever source the layout names.
 
-Cells that give no value are collected with their place; `parsers.assembly` judges them when the roles are known. Nothing
-here decides what a row is.
+Cells that give no value are collected with their place; `parsers.judgement` judges them when the roles are known.
+Nothing here decides what a row is.
 """
 
 from __future__ import annotations
@@ -81,6 +81,15 @@ class Values:
         """Return the header of the column that names the vials."""
         mapped = self.plan.mapped.get("label") or self.plan.mapped.get("sample")
         return self.table.headers[mapped.columns[0]] if mapped else "label"
+
+    def header_of(self, name: str) -> str:
+        """Return the header of a field's column, or of the label's where it has none."""
+        mapped = self.plan.mapped.get(name)
+        return self.table.headers[mapped.columns[0]] if mapped else self.label_header()
+
+    def doubt(self, name: str, header: str, cells: dict[int, Cell]) -> None:
+        """Note rows in which a field cannot be made out."""
+        self.odd.append(Odd(name, header, None, cells, optional=False, in_table=True))
 
     def texts(self, name: str) -> Texts:
         """Return a text field: blanks folded, words mapped, absent where the row says nothing."""

@@ -10,7 +10,7 @@ from typing import TYPE_CHECKING, Annotated, Any, Union, get_args, get_origin
 
 from pydantic import BaseModel
 
-from parsers.spelling import listed, suggestion
+from parsers.spelling import suggestion
 
 if TYPE_CHECKING:
     from collections.abc import Iterator
@@ -69,7 +69,8 @@ def expectation(error: ErrorDetails) -> str | None:
     if error["type"] in ("literal_error", "enum"):
         return f"one of {str(context['expected']).replace(' or ', ', ')}"
     wanted = EXPECTED.get(error["type"])
-    return None if wanted is None else wanted.format_map(context)
+    written = {name: f"{value:g}" if isinstance(value, float) else value for name, value in context.items()}
+    return None if wanted is None else wanted.format_map(written)
 
 
 def explained(error: ErrorDetails, model: type[BaseModel]) -> tuple[str, str]:
@@ -139,6 +140,3 @@ def _schemas(annotation: Any) -> Iterator[type[BaseModel]]:
     elif get_origin(annotation) in (Union, types.UnionType, Annotated):
         for argument in get_args(annotation):
             yield from _schemas(argument)
-
-
-__all__ = ["either", "expectation", "explained", "got", "listed"]

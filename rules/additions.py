@@ -67,6 +67,12 @@ class Fits:
     blank_uncertainty: Floats
     blank_dof: Floats
 
+    @property
+    def native(self) -> Floats:
+        """C = α/β in the aliquot of each fit; NaN where the signal does not rise."""
+        with np.errstate(invalid="ignore", divide="ignore"):
+            return np.where(self.lines.slope > 0, self.lines.intercept / self.lines.slope, np.nan)
+
     def spread(self, values: Floats) -> Floats:
         """Give every series the value of its fit, NaN where it has none."""
         if not len(values):
@@ -192,7 +198,7 @@ def evaluate(
     kappa = sum(((t_common * np.nan_to_num(part)) ** 2 for part in relative), np.zeros(len(fits.series)))
     interval = extrapolation(lines.intercept, lines.slope, fits.covariance, t_line, kappa, fits.blank)
     with np.errstate(invalid="ignore", divide="ignore"):
-        c = lines.intercept / lines.slope
+        c = fits.native
         v = fits.covariance
         u_line = np.sqrt(v.intercept - 2 * c * v.both + c * c * v.slope) / lines.slope
         u_blank = np.abs(fits.blank.intercept - c * fits.blank.slope) / lines.slope * fits.blank_uncertainty

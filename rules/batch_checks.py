@@ -291,7 +291,9 @@ def _series_faults(case: Case) -> list[tuple[int, str]]:
         for at in np.flatnonzero(silent).tolist()
         if int(members[at]) not in case.solutions.faults
     ]
-    missing = case.judged & np.isnan(case.fits.spread(case.fits.lines.slope)) & ~(seg.sum(silent.astype(float)) > 0)
+    lacks_blank = (blanks == 0) & (use not in (None, "none"))
+    missing = case.judged & np.isnan(case.fits.spread(case.fits.lines.slope)) & ~lacks_blank
+    missing &= ~(seg.sum(silent.astype(float)) > 0)
     found += [
         (i, "no line can be drawn: the additions do not differ, or a blank has no signal")
         for i in np.flatnonzero(missing).tolist()

@@ -49,12 +49,14 @@ def evaluate(readings: Readings, method: Method, accepted_at: float) -> Outcomes
         Seconds since 1970-01-01 in the laboratory's local time; judges the dates of stocks where the export has no
         times.
     """
-    case = compute(readings, method, accepted_at)
-    checks = check(case)
-    if unexplained := _without_explanation(case, checks):
-        case = replace(case, faults=case.faults | unexplained)
+    # absurd numbers overflow to infinity, and what is not finite never passes: no warning is needed on top
+    with np.errstate(over="ignore"):
+        case = compute(readings, method, accepted_at)
         checks = check(case)
-    return decide(case, checks)
+        if unexplained := _without_explanation(case, checks):
+            case = replace(case, faults=case.faults | unexplained)
+            checks = check(case)
+        return decide(case, checks)
 
 
 def compute(readings: Readings, method: Method, accepted_at: float) -> Case:

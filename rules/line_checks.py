@@ -155,7 +155,7 @@ def addition_size(case: Case) -> Check:
     """Top addition over native. S. L. R. Ellison, M. Thompson, Analyst 133 (2008) 992: u ∝ (C + T)/T."""
     results = case.additions
     with np.errstate(invalid="ignore", divide="ignore"):
-        c = case.fits.spread(case.fits.lines.intercept / case.fits.lines.slope)
+        c = case.fits.spread(case.fits.native)
         value = np.where((c > 0) & results.detected & np.isfinite(results.value), case.top_addition / c, np.nan)
 
     def sentence(i: int, outcome: Outcome) -> str:
@@ -179,7 +179,7 @@ def linear_evidence(case: Case) -> Check:
     by_calibration = case.reported == Reported.CALIBRATION
     members = case.series.members
     with np.errstate(invalid="ignore"):
-        c = case.fits.spread(case.fits.lines.intercept / case.fits.lines.slope)
+        c = case.fits.spread(case.fits.native)
         in_vessel = case.vessels.dilution[members] * (case.series.segments.spread(c) + case.vessels.addition[members])
         highest_addition = case.series.segments.max(in_vessel)
         top_standard, top_signal = (

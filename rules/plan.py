@@ -89,8 +89,7 @@ def _larger_additions(case: Case, i: int) -> str:
 
 def _addition_size(case: Case, i: int) -> str:
     # the check compares with the additions' own native level, so the advice does too
-    place = case.fits.of_series[i]
-    native = float(case.fits.lines.intercept[place] / case.fits.lines.slope[place])
+    native = float(case.fits.spread(case.fits.native)[i])
     top = float(case.top_addition[i])
     if top < native:
         return _larger_additions(case, i)

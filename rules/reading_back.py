@@ -81,7 +81,8 @@ def evaluate(
             return np.where(has, values[of_series], np.nan) if len(values) else np.full(count, np.nan)
 
         slope, intercept, s = of(lines.slope), of(lines.intercept), of(lines.residual_sd)
-        covariance = Covariance(of(lines.var_intercept), of(lines.covariance), of(lines.var_slope))
+        v = calibrations.covariance
+        covariance = Covariance(of(v.intercept), of(v.both), of(v.slope))
         x = (mean - intercept) / slope
         highest = (seg.max(np.where(series.unspiked, y, -np.inf)) - intercept) / slope
         top, lowest = of(calibrations.top), of(calibrations.lowest)

@@ -124,6 +124,7 @@ class _Filling:
         by_added = self._from_concentration(added, has_added, dilution, aliquot, made_up_to)
         self._agree(by_volume, by_added, has_volume & has_added & ~not_added)
         addition = np.where(has_volume, by_volume, by_added)
+        addition = np.where(np.isfinite(addition), addition, np.nan)
         addition = np.where(self.spiked & ~not_added, addition, 0.0)
         self._note(
             self.spiked & ~not_added & ~has_volume & ~has_added & (self.readings.level.codes[self.rows] < 0),
@@ -206,6 +207,13 @@ class _Filling:
                 self.spiked & ((spike == 0) | (np.isnan(spike) & (added == 0))),
                 lambda _: "a spiked solution to which 0 was added: correct the label or the addition",
             )
+            for column, unit in ((spike, "mL of standard"), (added, self.method.result_unit)):
+                self._note(
+                    self.sample & ~self.spiked & (column > 0),
+                    lambda i, c=column, u=unit: (
+                        f"an unspiked solution to which {c[i]:g} {u} was added: correct the label or the addition"
+                    ),
+                )
             content = aliquot + np.where(np.isfinite(spike), spike, 0)
             self._note(
                 self.sample & (content > made_up_to * (1 + 1e-9)),
@@ -227,7 +235,8 @@ class _Filling:
             self.spiked & (spike > 0) & np.isnan(aliquot),
             lambda _: "a volume of standard is stated and the aliquot is not: state bench.aliquot or map aliquot",
         )
-        return np.where(self.sample, dilution, 1.0)
+        # volumes that cannot be are named by the guards; no number follows from them
+        return np.where(self.sample, np.where((dilution > 0) & (dilution <= 1 + 1e-9), dilution, np.nan), 1.0)
 
     def _from_concentration(
         self, added: Floats, has_added: Bools, dilution: Floats, aliquot: Floats, made_up_to: Floats

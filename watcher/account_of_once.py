@@ -63,6 +63,8 @@ def _undone(report: OnceReport) -> Iterable[str]:
             problem = each.export.problem or "its last line is not there yet"
             prefix = "" if problem.startswith(each.export.name) else f"{each.export.name}: "
             yield f"{each.export.state}: {prefix}{problem}"
+        elif each.export.problem:
+            yield from (f"problem: {each.export.name}: {problem}" for problem in each.export.problem.split("\n"))
     yield from (f"not settled: {name} was still being written. Run once again later." for name in report.unsettled)
     yield from report.troubles
     for mail in report.undelivered_mails:

@@ -16,7 +16,7 @@ import structlog
 from watcher import notices
 from watcher.clock import moment
 from watcher.ledger_rows import Fate
-from watcher.outgoing import TargetTaken
+from watcher.queueing import TargetTaken
 from watcher.replies import Reply, ReplyBroken, read_reply
 from watcher.worker import WorkerFailed
 
@@ -61,7 +61,7 @@ class Assessment:
         The parts it works with.
     """
 
-    def __init__(
+    def __init__(  # noqa: PLR0913 - it is where the parts of the service meet
         self,
         settings: ServiceSettings,
         adopted: AdoptedSettings,
@@ -108,20 +108,21 @@ class Assessment:
         """
         copy = self._copies.path_of(export.sha256)
         if not copy.is_file():
-            return self._refuse(
-                export, f"its copy {copy} is missing. Put it back, or export it again changed"
-            )
+            return self._refuse(export, f"its copy {copy} is missing. Put it back, or export it again changed")
         try:
-            request = self._request(export, copy, final=final)
-            reply = read_reply(self._worker.ask(request), self._staging)
-            if reply.fate == "waiting" and request["final"]:
-                raise ReplyBroken("fate", "another one, since nothing more is waited for", "waiting")
+            reply = self._ask(self._request(export, copy, final=final))
         except (WorkerFailed, ReplyBroken) as error:
             return self._attempt_failed(export, str(error))
         if reply.fate == "bug":
             self._troubles.defect(reply.error or "unnamed", reply.traceback or "")
             return self._finish(export, _refused(f"defect of the program: {reply.error}"), at_once=final)
         return self._finish(export, reply, at_once=final)
+
+    def _ask(self, request: dict[str, Any]) -> Reply:
+        reply = read_reply(self._worker.ask(request), self._staging)
+        if reply.fate == "waiting" and request["final"]:
+            raise ReplyBroken("fate", "another one, since nothing more is waited for", "waiting")
+        return reply
 
     def _request(self, export: ExportRow, copy: Path, *, final: bool) -> dict[str, Any]:
         complete = self._clock.now() - moment(export.accepted_at) >= self._complete_after
@@ -156,9 +157,7 @@ class Assessment:
             self._ledger.finish(export, fate)
         except TargetTaken as error:
             return self._refuse(export, str(error))
-        _log.info(
-            "export evaluated", export=export.name, fate=fate.state, counts=fate.counts, problem=fate.problem
-        )
+        _log.info("export evaluated", export=export.name, fate=fate.state, counts=fate.counts, problem=fate.problem)
         return Assessed(self._ledger.export(export.id), reply.counts)
 
     def _refuse(self, export: ExportRow, reason: str) -> Assessed:

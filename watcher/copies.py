@@ -32,7 +32,7 @@ PIECE_BYTES = 1024 * 1024
 
 @dataclass(eq=False)
 class CopyRefused(WatcherError):
-    """This file is not taken in as it is."""
+    """A file is not taken in as it is."""
 
     name: str
     fault: str
@@ -44,7 +44,7 @@ class CopyRefused(WatcherError):
 
 @dataclass(eq=False)
 class CopyPostponed(WatcherError):
-    """This file cannot be taken in now; it is tried again at the next look.
+    """A file cannot be taken in now; it is tried again at the next look.
 
     Attributes
     ----------
@@ -178,9 +178,7 @@ class Copies:
 
 def _open(candidate: Candidate) -> int:
     """Open for reading, without following links and without waiting for the other end of a pipe."""
-    flags = (
-        os.O_RDONLY | getattr(os, "O_NOFOLLOW", 0) | getattr(os, "O_NONBLOCK", 0) | getattr(os, "O_BINARY", 0)
-    )
+    flags = os.O_RDONLY | getattr(os, "O_NOFOLLOW", 0) | getattr(os, "O_NONBLOCK", 0) | getattr(os, "O_BINARY", 0)
     try:
         descriptor = os.open(candidate.path, flags)
     except OSError as error:

@@ -20,6 +20,8 @@ if TYPE_CHECKING:
     from collections.abc import Iterator
     from pathlib import Path
 
+#: How long to wait for a ledger that somebody else holds, at the start.
+OPEN_SECONDS = 0.5
 #: Pragma, value to set, value that must be read back. The lock comes first: it decides how WAL works.
 PRAGMAS = (
     ("locking_mode", "EXCLUSIVE", "exclusive"),
@@ -71,7 +73,7 @@ class Database:
         self._lock = threading.Lock()
         #: Transactions committed by this object; tells whether anything changed.
         self.changes = 0
-        self._connection = sqlite3.connect(path, isolation_level=None, check_same_thread=False)
+        self._connection = sqlite3.connect(path, timeout=OPEN_SECONDS, isolation_level=None, check_same_thread=False)
         self._connection.row_factory = sqlite3.Row
         try:
             self._open()
@@ -116,7 +118,7 @@ class Database:
     def _damaged(self, detail: str) -> LedgerUnusable:
         return LedgerUnusable(
             self._path,
-            f"it is damaged ({detail})",
+            f"it is damaged ({' '.join(detail.split())})",
             "Put the last backup of the records folder in its place; keep the damaged file for examination.",
         )
 

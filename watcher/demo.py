@@ -9,6 +9,7 @@ from __future__ import annotations
 import email
 import email.policy
 import json
+import shlex
 import shutil
 import socket
 import subprocess
@@ -19,6 +20,7 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from aiosmtpd.controller import Controller
+from rich.text import Text
 
 from watcher.exit_codes import ALL_PASS, NOT_DONE
 from watcher.health import read_status
@@ -30,7 +32,6 @@ if TYPE_CHECKING:
 
     from aiosmtpd.smtp import SMTP, Envelope, Session
     from rich.console import Console
-    from rich.text import Text
 
 #: The first words of the demonstration's settings, by which an earlier one is recognised and may be replaced.
 MARK = "# The Skerry Point laboratory is invented"
@@ -169,15 +170,25 @@ def _show(out: Console, folder: Path, mails: list[EmailMessage]) -> None:
         body = message.get_content().replace("\r\n", "\n").rstrip()
         lines(out, [f"Subject: {message['Subject']}", "", body])
     heading(out, "Files")
+    config = folder / "config.yaml"
     lines(out, [str(file) for file in sorted(folder.glob("results/*/*"))])
     lines(
         out,
         [
             "",
-            f"Settings and layouts to learn from: {folder / 'config.yaml'}, {folder / 'layouts'}",
-            f"Try next: spikewarden explain {folder / 'exports' / 'FL-0413.csv'} --config {folder / 'config.yaml'}",
+            f"Settings and layouts to learn from: {config}, {folder / 'layouts'}",
+            "Try next:",
         ],
     )
+    # unwrapped, so that it can be copied as it stands
+    command = _command("explain", str(folder / "exports" / "FL-0413.csv"), "--config", str(config))
+    out.print(Text(command), soft_wrap=True)
+
+
+def _command(*arguments: str) -> str:
+    """Return a command line that works in the shell from which the demonstration was started."""
+    program = [sys.executable, "-m", "watcher"] if sys.argv[0].endswith("__main__.py") else [sys.argv[0]]
+    return shlex.join([*program, *arguments])
 
 
 def _rows(records: list[dict[str, Any]]) -> Iterator[tuple[str | Text, ...]]:

@@ -11,7 +11,7 @@ import os
 import tempfile
 import time
 from pathlib import Path
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Self
 
 from watcher.kill_points import at
 
@@ -113,13 +113,11 @@ class TemporaryFile:
 
     def __init__(self, disk: Disk, folder: Path) -> None:
         self._disk = disk
-        self._descriptor, name = tempfile.mkstemp(
-            dir=folder, prefix=TEMPORARY_PREFIX, suffix=TEMPORARY_SUFFIX
-        )
+        self._descriptor, name = tempfile.mkstemp(dir=folder, prefix=TEMPORARY_PREFIX, suffix=TEMPORARY_SUFFIX)
         self._open = True
         self._path: Path | None = Path(name)
 
-    def __enter__(self) -> TemporaryFile:
+    def __enter__(self) -> Self:
         return self
 
     def __exit__(self, *_: object) -> None:

@@ -5,7 +5,7 @@ The tree, for whoever must know what to catch::
     WatcherError
     ├── ServiceSettingsBroken   service_settings   a plain setting has the wrong form
     ├── LedgerUnusable          database           the ledger cannot be trusted, the service does not start
-    ├── TargetTaken             outgoing           two exports claim one result file
+    ├── TargetTaken             queueing           two exports claim one result file
     ├── TargetOutside           delivery           a result file would leave the results folder
     ├── StagedFileAltered       delivery           a result file changed between evaluation and delivery
     ├── CopyRefused             copies             this content is never taken in (too large, no regular file)

@@ -119,7 +119,7 @@ def evaluate_job(settings: Settings, job: Job, *, final: bool) -> Evaluated:
     readings = read(job.data, layout, job.name)
     problems = [str(problem) for problem in readings.problems]
     if not finished:
-        problems.append(_no_end(layout, complete_after_seconds=settings.file.complete_after))
+        problems.append(_no_end(layout))
     outcomes = evaluate(readings, method, _local_seconds(job.accepted_at))
     export = Export(
         name=job.name,
@@ -134,13 +134,12 @@ def evaluate_job(settings: Settings, job: Job, *, final: bool) -> Evaluated:
     return Evaluated(export, layout, outcomes, tuple(problems))
 
 
-def _no_end(layout: Layout, complete_after_seconds: float) -> str:
+def _no_end(layout: Layout) -> str:
     """Say that an export was evaluated although its last line never came."""
     pattern = layout.finished.pattern if layout.finished else ""
-    hours = complete_after_seconds / 3600
     return (
         f"expected a line that matches '{pattern}' (finished), which says that the export is complete, and none came. "
-        f"What is there was evaluated, because it did not change for {hours:g} h. Look whether the run was cut short."
+        f"What is there was evaluated all the same. Look whether the run was cut short, and export it whole."
     )
 
 

@@ -100,9 +100,7 @@ class Events:
         self._observer = Observer()
         for root, identity in zip(self._roots, identities, strict=True):
             if identity is not None:
-                self._observer.schedule(
-                    self._ring, str(root), recursive=self._subfolders, event_filter=list(_HEARD)
-                )
+                self._observer.schedule(self._ring, str(root), recursive=self._subfolders, event_filter=list(_HEARD))
         self._observer.start()
 
 

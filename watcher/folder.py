@@ -115,9 +115,7 @@ class Folder:
         Whether to look into subfolders.
     """
 
-    def __init__(
-        self, root: Path, *, prefix: str = "", settle_seconds: float = 5.0, subfolders: bool = False
-    ) -> None:
+    def __init__(self, root: Path, *, prefix: str = "", settle_seconds: float = 5.0, subfolders: bool = False) -> None:
         self.root = root
         self._prefix = prefix
         self._settle_seconds = settle_seconds

@@ -116,7 +116,7 @@ def explain(config: Path, export: Path) -> int:
         lines(err, [f"refused: {refused}"])
         return NOT_DONE
     print_explanation(console(), evaluated, settings.file.complete_after)
-    return _code(evaluated.outcomes)
+    return NOT_DONE if evaluated.problems else _code(evaluated.outcomes)
 
 
 def _name(settings: Settings, export: Path) -> str:

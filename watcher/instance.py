@@ -10,7 +10,7 @@ import json
 import os
 import socket
 from dataclasses import dataclass
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Self
 
 from filelock import FileLock, Timeout
 
@@ -65,7 +65,7 @@ class Instance:
         # One second: somebody may be looking at this very moment whether the lock is held.
         self._lock = FileLock(records / "lock", timeout=1, fallback_to_soft=False)
 
-    def __enter__(self) -> Instance:
+    def __enter__(self) -> Self:
         self.take()
         return self
 

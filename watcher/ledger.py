@@ -4,18 +4,21 @@ Each method is one transaction; either all it says is recorded, durably, or noth
 kept by `watcher.outgoing`, reached as `Ledger.outgoing`. Nothing here reads exports or computes.
 """
 
+# ruff: noqa: S608 - every part of a composed query is a constant of this package; values are always bound.
+
 from __future__ import annotations
 
 import hashlib
 import json
 from datetime import timedelta
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Self
 
 from watcher.clock import SystemClock, stamp
 from watcher.database import Database, LedgerUnusable
 from watcher.ledger_entries import append_entry
 from watcher.ledger_rows import AdoptedSettings, ExportRow, RefusedExport, SeriesRow
-from watcher.outgoing import WITHDRAWABLE, Outgoing, queue_files, queue_mail, withdraw_incomplete
+from watcher.outgoing import Outgoing
+from watcher.queueing import WITHDRAWABLE, queue_files, queue_mail, withdraw_incomplete
 
 if TYPE_CHECKING:
     import sqlite3
@@ -61,7 +64,7 @@ class Ledger:
         self._database = Database(path)
         self.outgoing = Outgoing(self._database, self._clock)
 
-    def __enter__(self) -> Ledger:
+    def __enter__(self) -> Self:
         return self
 
     def __exit__(self, *_: object) -> None:
@@ -103,9 +106,7 @@ class Ledger:
         sha256 = hashlib.sha256(body.encode()).hexdigest()
         now = self._clock.now()
         with self._database.transaction("adopt") as txn:
-            current = txn.execute(
-                "SELECT number, sha256 FROM settings ORDER BY number DESC LIMIT 1"
-            ).fetchone()
+            current = txn.execute("SELECT number, sha256 FROM settings ORDER BY number DESC LIMIT 1").fetchone()
             if current is not None and current["sha256"] == sha256:
                 return int(current["number"])
             number = 1 if current is None else int(current["number"]) + 1
@@ -160,9 +161,7 @@ class Ledger:
         query = "SELECT sample, analyte, channel, attempt, verdict, result, unit FROM series WHERE export_id = ?"
         return [SeriesRow(*row) for row in self._database.rows(query, (export_id,))]
 
-    def pending(
-        self, settings_number: int, *, complete_after_seconds: float, limit: int = 100
-    ) -> list[ExportRow]:
+    def pending(self, settings_number: int, *, complete_after_seconds: float, limit: int = 100) -> list[ExportRow]:
         """Exports to evaluate now, fewest attempts first, then oldest first.
 
         Those are: accepted; waiting for longer than `complete_after_seconds`; and refused, unclaimed or waiting
@@ -333,10 +332,7 @@ def _index_series(txn: sqlite3.Connection, export_id: int, fate: Fate) -> None:
     txn.execute("DELETE FROM series WHERE export_id = ?", (export_id,))
     txn.executemany(
         "INSERT INTO series VALUES (?, ?, ?, ?, ?, ?, ?, ?)",
-        [
-            (export_id, s.sample, s.analyte, s.channel, s.attempt, s.verdict, s.result, s.unit)
-            for s in fate.series
-        ],
+        [(export_id, s.sample, s.analyte, s.channel, s.attempt, s.verdict, s.result, s.unit) for s in fate.series],
     )
 
 

@@ -30,9 +30,9 @@ _POLICY = email.policy.SMTP.clone(cte_type="7bit")
 
 
 def clean(text: str, limit: int | None = None) -> str:
-    """Make a text fit for a header: no control or invisible directing characters, one line, capped.
+    r"""Make a text fit for a header: no control or invisible directing characters, one line, capped.
 
-    >>> clean("FAIL SED-12\\r\\nBcc: nobody@example")
+    >>> clean("FAIL SED-12\r\nBcc: nobody@example")
     'FAIL SED-12 Bcc: nobody@example'
     """
     visible = "".join(" " if unicodedata.category(char) in _UNFIT else char for char in text)
@@ -40,14 +40,14 @@ def clean(text: str, limit: int | None = None) -> str:
     return line if limit is None or len(line) <= limit else line[: limit - 1] + "…"
 
 
-#: Control, formatting (directions of writing), half characters, unassigned, line and paragraph ends.
-_UNFIT = frozenset({"Cc", "Cf", "Cs", "Cn", "Zl", "Zp"})
+#: Control, formatting (directions of writing), half characters, private and unassigned, line and paragraph ends.
+_UNFIT = frozenset({"Cc", "Cf", "Cs", "Co", "Cn", "Zl", "Zp"})
 
 
 def new_message_id(sender: str) -> str:
     """Make an identity for a mail, in the sender's domain; asks no name server."""
-    domain = sender.rpartition("@")[2].strip(">. ")
-    return email.utils.make_msgid(domain=domain or "localhost")
+    _, _, domain = sender.rpartition("@") if "@" in sender else ("", "", "localhost")
+    return email.utils.make_msgid(domain=domain.strip(">. ") or "localhost")
 
 
 def compose(due: DueMail, sender: str, recipients: Sequence[str], now: datetime) -> bytes:
@@ -76,9 +76,7 @@ def compose(due: DueMail, sender: str, recipients: Sequence[str], now: datetime)
 def _remarks(due: DueMail, now: datetime) -> list[str]:
     remarks = []
     if due.possible_repeat:
-        remarks.append(
-            "possible repeat: it is not known whether an earlier attempt to send this mail reached you.\n"
-        )
+        remarks.append("possible repeat: it is not known whether an earlier attempt to send this mail reached you.\n")
     if now - moment(due.first_due_at) > LATE_AFTER:
         remarks.append(f"late: this mail was due at {due.first_due_at} and could not be sent until now.\n")
     return [*remarks, "\n"] if remarks else []
@@ -88,10 +86,7 @@ def _body(text: str) -> str:
     """Keep the text's lines and drop what could steer a terminal or half a character."""
     lines = text.replace("\r\n", "\n").replace("\r", "\n").split("\n")
     kept = (
-        "".join(
-            c if c == "\t" or unicodedata.category(c) not in _UNFIT else "\N{REPLACEMENT CHARACTER}"
-            for c in line
-        )
+        "".join(c if c == "\t" or unicodedata.category(c) not in _UNFIT else "\N{REPLACEMENT CHARACTER}" for c in line)
         for line in lines
     )
     return "\n".join(kept)

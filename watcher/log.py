@@ -36,7 +36,7 @@ def hide(secret: Secret) -> None:
 class _PatientFile(RotatingFileHandler):
     """A log file that goes on in the old one where it cannot be rotated, and stays silent where it cannot write."""
 
-    def doRollover(self) -> None:
+    def doRollover(self) -> None:  # noqa: N802 - the library's name
         try:
             super().doRollover()
         except OSError:
@@ -44,7 +44,7 @@ class _PatientFile(RotatingFileHandler):
             if self.stream is None:
                 self.stream = self._open()
 
-    def handleError(self, record: logging.LogRecord) -> None:
+    def handleError(self, record: logging.LogRecord) -> None:  # noqa: N802 - the library's name
         """Drop the line: an alert that goes out unlogged is better than none."""
 
 
@@ -64,9 +64,7 @@ def set_up_log(records: Path, *, level: int = logging.INFO) -> logging.Handler:
         structlog.stdlib.add_logger_name,
         structlog.stdlib.add_log_level,
         structlog.processors.TimeStamper(fmt="iso", utc=True),
-        structlog.processors.ExceptionRenderer(
-            structlog.tracebacks.ExceptionDictTransformer(show_locals=False)
-        ),
+        structlog.processors.ExceptionRenderer(structlog.tracebacks.ExceptionDictTransformer(show_locals=False)),
     ]
     handler.setFormatter(
         structlog.stdlib.ProcessorFormatter(

@@ -136,7 +136,8 @@ def refusal(name: str, sentence: str, sha256: str) -> Mail:
             ("RECORD", [f"export {name}, sha256 {sha256[:12]}"]),
         ],
     )
-    return Mail("problem", f"PROBLEM {name}: {_cut(sentence)}", body, (f"refused|{name}|{sha256}|{sentence}",))
+    told = sentence if sentence.startswith(name) else f"{name}: {sentence}"
+    return Mail("problem", f"PROBLEM {_cut(told)}", body, (f"refused|{name}|{sha256}|{sentence}",))
 
 
 def _of_problems(export: Export, sentences: list[str], keys: tuple[str, ...]) -> Mail:

@@ -19,7 +19,6 @@ from watcher.delivery import deliver
 from watcher.disk import sweep
 from watcher.errors import WatcherError
 from watcher.kill_points import at
-from watcher.ledger_rows import RecipientOutcome
 from watcher.letter import compose
 from watcher.wake import Wake
 
@@ -29,7 +28,7 @@ if TYPE_CHECKING:
 
     from watcher.clock import Clock
     from watcher.disk import Disk
-    from watcher.ledger_rows import DueFile, DueMail
+    from watcher.ledger_rows import DueFile, DueMail, RecipientOutcome
     from watcher.outgoing import Outgoing
     from watcher.post import Post
 
@@ -140,9 +139,7 @@ class Mails:
         When to try again.
     """
 
-    def __init__(
-        self, outgoing: Outgoing, post: Post | None, clock: Clock, backoff: Backoff = MAIL_BACKOFF
-    ) -> None:
+    def __init__(self, outgoing: Outgoing, post: Post | None, clock: Clock, backoff: Backoff = MAIL_BACKOFF) -> None:
         self._outgoing = outgoing
         self._post = post
         self._clock = clock

@@ -5,16 +5,16 @@ incomplete sample, withdrawn because newer content of the export came before any
 the work of `watcher.delivery` and `watcher.post`.
 """
 
+# ruff: noqa: S608 - every part of a composed query is a constant of this package; values are always bound.
+
 from __future__ import annotations
 
 from collections import defaultdict
-from dataclasses import dataclass
 from datetime import timedelta
 from pathlib import Path
 from typing import TYPE_CHECKING
 
 from watcher.clock import moment, stamp
-from watcher.errors import WatcherError
 from watcher.ledger_entries import append_entry
 from watcher.ledger_rows import DueFile, DueMail, UndeliveredFile, UndeliveredMail
 
@@ -25,32 +25,10 @@ if TYPE_CHECKING:
 
     from watcher.clock import Clock
     from watcher.database import Database
-    from watcher.ledger_rows import QueuedMail, RecipientOutcome, StagedFile
+    from watcher.ledger_rows import RecipientOutcome
 
 #: No retry is ever planned further ahead; a later one means that the computer's date was set back.
 FARTHEST_RETRY = timedelta(hours=2)
-
-
-@dataclass(eq=False)
-class TargetTaken(WatcherError):
-    """Two exports claim the same result file.
-
-    Attributes
-    ----------
-    target
-        The path under the results folder.
-    owner
-        The export whose result file it is.
-    """
-
-    target: str
-    owner: str
-
-    def __str__(self) -> str:
-        return (
-            f"Result file {self.target} belongs to export {self.owner}. "
-            "This export gave no results, so that the others are not overwritten. Rename one of the two exports."
-        )
 
 
 class Outgoing:
@@ -213,68 +191,3 @@ _DUE = "({0}.due_at <= :now OR ({0}.attempts > 0 AND {0}.due_at > :horizon))"
 
 def _due_values(now: datetime) -> dict[str, str]:
     return {"now": stamp(now), "horizon": stamp(now + FARTHEST_RETRY)}
-
-
-# -- what `Ledger` puts into the queue, inside its own transactions ---------------------------------------------
-
-
-def queue_files(txn: sqlite3.Connection, export_id: int, staged: Iterable[StagedFile], now: datetime) -> None:
-    """Queue result files.
-
-    Raises
-    ------
-    TargetTaken
-        A target is a result file of another export.
-    """
-    for each in staged:
-        owner = txn.execute(
-            "SELECT exports.name FROM files JOIN exports ON exports.id = export_id "
-            "WHERE target = ? AND export_id <> ?",
-            (each.target, export_id),
-        ).fetchone()
-        if owner is not None:
-            raise TargetTaken(each.target, owner[0])
-        txn.execute(
-            "INSERT INTO files (export_id, target, staged, sha256, state, due_at) "
-            "VALUES (?, ?, ?, ?, 'waiting', ?) "
-            "ON CONFLICT (target) DO UPDATE SET staged = excluded.staged, sha256 = excluded.sha256, "
-            "state = 'waiting', attempts = 0, due_at = excluded.due_at, last_error = NULL",
-            (export_id, each.target, str(each.staged), each.sha256, stamp(now)),
-        )
-
-
-def queue_mail(txn: sqlite3.Connection, export_id: int | None, mail: QueuedMail, now: datetime) -> bool:
-    """Queue a mail unless everything it is about was mailed before; returns whether it was queued."""
-    known = {key for key in mail.keys if txn.execute("SELECT 1 FROM alerts WHERE key = ?", (key,)).fetchone()}
-    if mail.keys and known.issuperset(mail.keys):
-        return False
-    mail_id = txn.execute(
-        "INSERT INTO mails (export_id, kind, message_id, subject, body, created_at, due_at) "
-        "VALUES (?, ?, ?, ?, ?, ?, ?)",
-        (export_id, mail.kind, mail.message_id, mail.subject, mail.body, stamp(now), mail.due_at),
-    ).lastrowid
-    txn.executemany(
-        "INSERT INTO recipients (mail_id, address, state, due_at) VALUES (?, ?, 'waiting', ?)",
-        [(mail_id, address, mail.due_at) for address in dict.fromkeys(mail.recipients)],
-    )
-    txn.executemany(
-        "INSERT INTO alerts (key, export_id, mail_id, created_at) VALUES (?, ?, ?, ?)",
-        [(key, export_id, mail_id, stamp(now)) for key in dict.fromkeys(mail.keys) if key not in known],
-    )
-    return True
-
-
-#: Mails about incomplete samples of an export name of which nobody has had an attempt under way or behind it.
-WITHDRAWABLE = (
-    "SELECT mails.id FROM mails JOIN exports ON exports.id = mails.export_id "
-    "WHERE exports.name = :name AND mails.kind = 'incomplete' AND NOT EXISTS ("
-    "SELECT 1 FROM recipients WHERE mail_id = mails.id AND state <> 'waiting')"
-)
-
-
-def withdraw_incomplete(txn: sqlite3.Connection, name: str) -> int:
-    """Withdraw mails about incomplete samples that newer content has overtaken, and free their keys."""
-    mail_ids = txn.execute(WITHDRAWABLE, {"name": name}).fetchall()
-    txn.executemany("UPDATE recipients SET state = 'withdrawn' WHERE mail_id = ?", mail_ids)
-    txn.executemany("DELETE FROM alerts WHERE mail_id = ?", mail_ids)
-    return len(mail_ids)

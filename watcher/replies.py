@@ -29,9 +29,7 @@ class ReplyBroken(WatcherError):
     got: object
 
     def __str__(self) -> str:
-        return (
-            f"the worker's answer is malformed: {self.where}: expected {self.expected}, got {self.got!r:.200}"
-        )
+        return f"the worker's answer is malformed: {self.where}: expected {self.expected}, got {self.got!r:.200}"
 
 
 @dataclass(frozen=True, slots=True)
@@ -88,9 +86,7 @@ def read_reply(message: Mapping[str, Any], staging: Path) -> Reply:
         raise ReplyBroken("fate", "one of " + ", ".join(FATES), fate)
     if fate == "bug":
         return Reply(fate, error=_get(message, "error", str), traceback=_get(message, "traceback", str))
-    problems = [
-        _get({"problem": each}, "problem", str) for each in _get(message, "problems", list, default=[])
-    ]
+    problems = [_get({"problem": each}, "problem", str) for each in _get(message, "problems", list, default=[])]
     return Reply(
         fate=fate,
         layout=_get(message, "layout", str, optional=True),
@@ -150,9 +146,7 @@ def _number(item: Mapping[str, Any], key: str) -> float | None:
     return float(value)
 
 
-def _get(
-    item: Mapping[str, Any], key: str, kind: type[Any], *, default: Any = None, optional: bool = False
-) -> Any:
+def _get(item: Mapping[str, Any], key: str, kind: type[Any], *, default: Any = None, optional: bool = False) -> Any:
     value = item.get(key)
     if value is None and (optional or default is not None):
         return default

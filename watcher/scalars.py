@@ -8,13 +8,13 @@ from __future__ import annotations
 import calendar
 import re
 from datetime import datetime
-from math import sqrt
+from math import isinf, sqrt
 
 from parsers.cells import Grammar
 from rules import units
 from rules.method import Measure
 
-_NUMBER = r"[-+]?\d+(?:\.\d+)?(?:[eE][-+]?\d+)?"
+_NUMBER = r"[-+]?[0-9]+(?:\.[0-9]+)?(?:[eE][-+]?[0-9]+)?"
 _MEASURE = re.compile(rf"^(?P<number>{_NUMBER})\s*(?P<unit>.*)$")
 _SECONDS = {"ms": 0.001, "s": 1.0, "min": 60.0, "h": 3600.0, "d": 86400.0}
 _UNCERTAINTY = re.compile(rf"^(?P<value>{_NUMBER})\s*%(?:\s*,\s*k\s*=\s*(?P<k>{_NUMBER}))?$")
@@ -30,7 +30,7 @@ def number(text: str) -> float:
     """
     if not re.fullmatch(_NUMBER, text.strip()):
         raise ValueError(f"expected a number with a decimal point, got '{text}'")
-    return float(text)
+    return _finite(text, text)
 
 
 def yes_or_no(text: str) -> bool:
@@ -55,7 +55,7 @@ def seconds(text: str) -> float:
     unit = found["unit"].strip() if found else ""
     if found is None or unit not in _SECONDS or float(found["number"]) < 0:
         raise ValueError(f"expected a duration such as '5 s', '10 min' or '2 h', got '{text}'")
-    return float(found["number"]) * _SECONDS[unit]
+    return _finite(found["number"], text) * _SECONDS[unit]
 
 
 def measure(text: str) -> Measure:
@@ -67,7 +67,7 @@ def measure(text: str) -> Measure:
     found = _MEASURE.match(text.strip())
     if found is None:
         raise ValueError(f"expected a number with a unit, such as '5 mL' or '5 mg/L', got '{text}'")
-    return Measure(float(found["number"]), found["unit"].strip())
+    return Measure(_finite(found["number"], text), found["unit"].strip())
 
 
 def volume(text: str) -> Measure:
@@ -163,6 +163,13 @@ def day_begins(text: str) -> float:
 def day_ends(text: str) -> float:
     """Read a date as the last moment of that day."""
     return day_begins(text) + SECONDS_PER_DAY - 1e-3
+
+
+def _finite(digits: str, text: str) -> float:
+    value = float(digits)
+    if isinf(value):
+        raise ValueError(f"expected a number that a computer can hold, got '{text}'")
+    return value
 
 
 def _of_kind(text: str, kind: str) -> Measure:

@@ -9,7 +9,16 @@ from __future__ import annotations
 import re
 from typing import TYPE_CHECKING, Annotated, Any, Literal
 
-from pydantic import BaseModel, BeforeValidator, ConfigDict, Field, field_validator, model_validator
+from pydantic import (
+    BaseModel,
+    BeforeValidator,
+    ConfigDict,
+    Discriminator,
+    Field,
+    Tag,
+    field_validator,
+    model_validator,
+)
 
 from parsers.wording import got
 from rules.limits import CheckLimits, parse_check_limits
@@ -225,6 +234,24 @@ class MailPart(Part):
         return self
 
 
+def _keys_or_none(value: object) -> object:
+    if not isinstance(value, (dict, MailPart)) and value != "none":
+        raise ValueError(f"expected keys such as server, from and to, or none, got {got(value)}")
+    return value
+
+
+def _form_of_mail(value: object) -> str:
+    """Tell which form was written, so that a fault in the keys is not reported as a missing word as well."""
+    return "none" if value == "none" else "keys"
+
+
+Mailing = Annotated[
+    Annotated[MailPart, Tag("keys")] | Annotated[Literal["none"], Tag("none")],
+    Discriminator(_form_of_mail),
+    BeforeValidator(_keys_or_none),
+]
+
+
 class CsvPart(Part):
     """For spreadsheets that expect a decimal comma."""
 
@@ -258,7 +285,7 @@ class SettingsFile(Decisions):
     layouts: tuple[str, ...] = Field(min_length=1)
     report: Literal["additions", "calibration"]
     units: UnitsPart
-    mail: MailPart | Literal["none"]
+    mail: Mailing
     analytes: dict[str, AnalytePart] = {}
     confidence: Annotated[float, _read(scalars.percentage)] = Field(default=0.95, gt=0.5, lt=1)
     spiked_at: Literal["before preparation", "after preparation"] = "before preparation"

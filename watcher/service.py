@@ -20,7 +20,7 @@ import structlog
 from watcher import notices
 from watcher.addressing import Addressing
 from watcher.assessment import Assessed, Assessment
-from watcher.clock import SystemClock, stamp
+from watcher.clock import SystemClock
 from watcher.copies import Copies
 from watcher.cut_short import CutShort
 from watcher.disk import Disk
@@ -151,9 +151,7 @@ class Service:
         )
         self._files = Files(ledger.outgoing, settings.results, disk, clock)
         self._mails = Mails(ledger.outgoing, Post(settings.mail) if settings.mail else None, clock)
-        self._pulse = Pulse(
-            settings, ledger, self._troubles, clock, version=version, settings_number=adopted.number
-        )
+        self._pulse = Pulse(settings, ledger, self._troubles, clock, version=version, settings_number=adopted.number)
         self._cut_short = CutShort(settings.records)
         self._threads: list[OutboxThread] = []
         self._rung_for = ledger.changes

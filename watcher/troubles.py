@@ -60,9 +60,7 @@ class Troubles:
     def defect(self, error: str, trace: str) -> None:
         """Take note of a defect: logged with its traceback, mailed once for each distinct one."""
         _log.error("defect of the program", error=error, traceback=trace)
-        sentence = (
-            f"Defect of the program: {error}. What it was doing has no result; the log has the traceback."
-        )
+        sentence = f"Defect of the program: {error}. What it was doing has no result; the log has the traceback."
         with self._lock:
             self._now[f"defect {error}"] = (Trouble(f"defect:{error}", sentence),)
             self._told.add(f"defect:{error}")

@@ -8,18 +8,14 @@ from __future__ import annotations
 
 import os
 import queue
-import subprocess
 import sys
-import threading
 from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
 
-import structlog
-
 from watcher import kill_points
+from watcher.child import Answer, Child, Ended, Stop
 from watcher.clock import SystemClock
 from watcher.errors import WatcherError
-from watcher.frames import FrameBroken, read_frame, write_frame
 from watcher.worker_loop import DEADLINE_VARIABLE, MEMORY_VARIABLE
 
 if TYPE_CHECKING:
@@ -30,14 +26,7 @@ if TYPE_CHECKING:
 #: The command of the worker that evaluates exports.
 EVALUATION = (sys.executable, "-m", "watcher.evaluation")
 #: Numerical libraries start a thread for each core unless told otherwise; the instrument's program needs those.
-ONE_THREAD = {
-    name: "1"
-    for name in ("OMP_NUM_THREADS", "OPENBLAS_NUM_THREADS", "MKL_NUM_THREADS", "NUMEXPR_NUM_THREADS")
-}
-#: Seconds a worker that was told to end may take before it is killed.
-GOODBYE_SECONDS = 2.0
-
-_log = structlog.get_logger("spikewarden.worker")
+ONE_THREAD = dict.fromkeys(("OMP_NUM_THREADS", "OPENBLAS_NUM_THREADS", "MKL_NUM_THREADS", "NUMEXPR_NUM_THREADS"), "1")
 
 
 class WorkerFailed(WatcherError):
@@ -84,24 +73,6 @@ class WorkerStopped(WatcherError):
         return "the service is stopping, the evaluation was dropped and is repeated at the next start"
 
 
-class _Stop:
-    """What `interrupt` puts among the answers."""
-
-
-@dataclass(frozen=True, slots=True)
-class _Ended:
-    """What a child's reader puts among the answers when no more will come."""
-
-    child: _Child
-    reason: str
-
-
-@dataclass(frozen=True, slots=True)
-class _Answer:
-    child: _Child
-    message: dict[str, Any]
-
-
 class Worker:
     """At most one worker process; asked by one thread, interrupted from anywhere.
 
@@ -134,8 +105,8 @@ class Worker:
         self._memory_bytes = memory_bytes
         self._idle_seconds = idle_seconds
         self._clock = clock or SystemClock()
-        self._answers: queue.SimpleQueue[_Answer | _Ended | _Stop] = queue.SimpleQueue()
-        self._child: _Child | None = None
+        self._answers: queue.SimpleQueue[Answer | Ended | Stop] = queue.SimpleQueue()
+        self._child: Child | None = None
         self._last_asked = 0.0
         self._stopping = False
 
@@ -165,7 +136,7 @@ class Worker:
     def interrupt(self) -> None:
         """End the request under way and refuse later ones; safe to call from a signal handler."""
         self._stopping = True
-        self._answers.put(_Stop())
+        self._answers.put(Stop())
 
     def retire_if_idle(self) -> bool:
         """End a worker that was not asked for a while; returns whether one was ended."""
@@ -184,7 +155,7 @@ class Worker:
         if child is not None:
             child.end()
 
-    def _start(self) -> _Child:
+    def _start(self) -> Child:
         environment = os.environ | ONE_THREAD
         environment |= {
             DEADLINE_VARIABLE: str(self._deadline_seconds),
@@ -194,7 +165,7 @@ class Worker:
         if not environment.get(kill_points.VARIABLE, "").startswith("stage-"):
             environment.pop(kill_points.VARIABLE, None)
         try:
-            child = _Child(self._command, environment, self._answers)
+            child = Child(self._command, environment, self._answers)
         except OSError as error:
             raise WorkerUnfit(f"{self._command[0]} does not start ({error})") from error
         self._child = child
@@ -202,7 +173,7 @@ class Worker:
             self._prepare(child, request)
         return child
 
-    def _prepare(self, child: _Child, request: dict[str, Any]) -> None:
+    def _prepare(self, child: Child, request: dict[str, Any]) -> None:
         try:
             answer = self._exchange(child, request)
         except WorkerFailed as error:
@@ -212,7 +183,7 @@ class Worker:
             detail = answer.get("traceback") or answer.get("problem") or answer
             raise WorkerUnfit(f"it did not take in its settings: {detail}")
 
-    def _exchange(self, child: _Child, request: dict[str, Any]) -> dict[str, Any]:
+    def _exchange(self, child: Child, request: dict[str, Any]) -> dict[str, Any]:
         if self._stopping:
             self._kill()
             raise WorkerStopped
@@ -225,12 +196,13 @@ class Worker:
                 self._kill()
                 raise WorkerLate(self._deadline_seconds) from None
             match got:
-                case _Stop():
+                case Stop():
                     self._kill()
                     raise WorkerStopped
-                case _Answer(child=sender, message=message) if sender is child:
+                case Answer(child=sender, message=message) if sender is child:
                     return message
-                case _Ended(child=sender, reason=reason) if sender is child:
+                case Ended(child=sender, reason=reason) if sender is child:
+                    child.let_end()
                     code = self._kill()
                     raise WorkerDied(f"{reason}, {_how_it_ended(code)}")
                 case _:  # from a child that was given up before
@@ -239,105 +211,6 @@ class Worker:
     def _kill(self) -> int | None:
         child, self._child = self._child, None
         return None if child is None else child.kill()
-
-
-class _Child:
-    """One worker process with the threads that speak and listen to it.
-
-    Writing has its own thread too: a child that does not read would block the service, which must stop when told.
-    """
-
-    def __init__(
-        self,
-        command: Sequence[str],
-        environment: dict[str, str],
-        answers: queue.SimpleQueue[_Answer | _Ended | _Stop],
-    ) -> None:
-        # A session of its own: Ctrl-C at the terminal is for the service, which then ends the worker in order.
-        self._process = subprocess.Popen(  # noqa: S603 - the command is ours, none of it comes from an export
-            command,
-            env=environment,
-            stdin=subprocess.PIPE,
-            stdout=subprocess.PIPE,
-            stderr=subprocess.PIPE,
-            start_new_session=os.name != "nt",
-        )
-        self._answers = answers
-        self._requests: queue.SimpleQueue[dict[str, Any] | None] = queue.SimpleQueue()
-        self._threads = [
-            threading.Thread(target=work, name=f"worker {name}", daemon=True)
-            for name, work in (("requests", self._write), ("answers", self._read), ("log", self._listen))
-        ]
-        for thread in self._threads:
-            thread.start()
-
-    @property
-    def pid(self) -> int:
-        return self._process.pid
-
-    def send(self, request: dict[str, Any]) -> None:
-        self._requests.put(request)
-
-    def end(self) -> None:
-        self._requests.put(None)
-        try:
-            self._process.wait(GOODBYE_SECONDS)
-        except subprocess.TimeoutExpired:
-            self._process.kill()
-        self._tidy()
-
-    def kill(self) -> int:
-        # A worker that is ending by itself keeps the code that tells why.
-        if self._process.poll() is None:
-            self._process.kill()
-        self._requests.put(None)
-        code = self._process.wait()
-        self._tidy()
-        return code
-
-    def _tidy(self) -> None:
-        self._process.wait()
-        for thread in self._threads:
-            thread.join(GOODBYE_SECONDS)
-
-    def _write(self) -> None:
-        stream = self._process.stdin
-        if stream is None:
-            return
-        while (request := self._requests.get()) is not None:
-            try:
-                write_frame(stream, request)  # type: ignore[arg-type]
-            except OSError:
-                break  # the child has ended; the reader says so
-        try:
-            stream.close()
-        except OSError:
-            return  # nothing is lost: what could not be flushed had no reader
-
-    def _read(self) -> None:
-        stream = self._process.stdout
-        if stream is None:
-            return
-        reason = "it closed its output"
-        with stream:
-            try:
-                while (message := read_frame(stream)) is not None:  # type: ignore[arg-type]
-                    self._answers.put(_Answer(self, message))
-            except (FrameBroken, OSError) as error:
-                reason = str(error)
-        self._answers.put(_Ended(self, reason))
-
-    def _listen(self) -> None:
-        stream = self._process.stderr
-        if stream is None:
-            return
-        with stream:
-            for line in stream:
-                _log.warning(
-                    "worker says",
-                    worker=self.pid,
-                    text=line.decode(errors="backslashreplace").rstrip()[:2000],
-                )
 
 
 def _how_it_ended(code: int | None) -> str:

@@ -42,9 +42,7 @@ def readings_of(rows: list[dict[str, Any]], unit: str = "mg/L", volume: str = "m
     signals = [list(np.atleast_1d(row["signal"])) for row in rows]
     width = max((len(values) for values in signals), default=1)
     columns: dict[str, Any] = {
-        name: Texts.of([row.get(name) for row in rows])
-        for name in TEXTS
-        if name not in ("label", "sample", "analyte")
+        name: Texts.of([row.get(name) for row in rows]) for name in TEXTS if name not in ("label", "sample", "analyte")
     }
     columns["analyte"] = Texts.of([row.get("analyte", "Zn") for row in rows])
     labels = [row.get("label") or f"{row.get('sample', row['role'])} {i}" for i, row in enumerate(rows)]
@@ -61,9 +59,7 @@ def readings_of(rows: list[dict[str, Any]], unit: str = "mg/L", volume: str = "m
         columns[name] = Quantities(values, Texts.of(units))
     lines = np.arange(2, len(rows) + 2, dtype=np.int64)
     faults = tuple(
-        Fault(i, int(lines[i]), "Reading", "", "signal", row["fault"])
-        for i, row in enumerate(rows)
-        if "fault" in row
+        Fault(i, int(lines[i]), "Reading", "", "signal", row["fault"]) for i, row in enumerate(rows) if "fault" in row
     )
     return Readings(
         line=lines,
@@ -113,9 +109,7 @@ def method_of(**more: Any) -> Method:
     return Method(**({"report": "additions", "export_unit": "mg/L", "result_unit": "mg/L"} | more))
 
 
-def outcomes_of(
-    rows: list[dict[str, Any]], unit: str = "mg/L", accepted_at: float = 0.0, **method: Any
-) -> Outcomes:
+def outcomes_of(rows: list[dict[str, Any]], unit: str = "mg/L", accepted_at: float = 0.0, **method: Any) -> Outcomes:
     """Evaluate rows by a method of the decisions given."""
     return evaluate(readings_of(rows, unit=unit), method_of(**method), accepted_at)
 

@@ -109,9 +109,7 @@ def test_quadratic_term_of_the_load_cell_has_the_certified_f(reference):
         ("NoInt2", 0.727272727272727, 0.0420827318078432, 0.369274472937998),
     ],
 )
-def test_line_through_zero_follows_from_each_point_and_its_negative(
-    reference, name, slope, sd_slope, residual_sd
-):
+def test_line_through_zero_follows_from_each_point_and_its_negative(reference, name, slope, sd_slope, residual_sd):
     """Each point entered with its negative gives intercept 0, the certified slope and SD, the slope's SD over √2."""
     data = reference("nist_through_zero")
     x, y = data["x"][data["set"] == name], data["y"][data["set"] == name]

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import ipaddress
 import json
 import os
 import queue
@@ -18,6 +19,10 @@ from typing import TYPE_CHECKING, Any
 import pytest
 from aiosmtpd.controller import Controller
 from aiosmtpd.smtp import AuthResult
+from cryptography import x509
+from cryptography.hazmat.primitives import hashes, serialization
+from cryptography.hazmat.primitives.asymmetric import ec
+from cryptography.x509.oid import NameOID
 
 from watcher.ledger import Ledger
 from watcher.ledger_rows import Fate, QueuedMail
@@ -51,7 +56,7 @@ def eventually() -> Callable[[Callable[[], Any], str], Any]:
     return wait
 
 
-class SetClock:
+class _SetClock:
     """A clock that stands still until it is moved."""
 
     def __init__(self) -> None:
@@ -70,13 +75,13 @@ class SetClock:
 
 
 @pytest.fixture
-def clock() -> SetClock:
+def clock() -> _SetClock:
     """A clock that stands at a Tuesday morning."""
-    return SetClock()
+    return _SetClock()
 
 
 @pytest.fixture
-def ledger(tmp_path: Path, clock: SetClock) -> Iterator[Ledger]:
+def ledger(tmp_path: Path, clock: _SetClock) -> Iterator[Ledger]:
     """An open ledger with settings number 1 adopted."""
     with Ledger(tmp_path / "records", clock) as opened:
         opened.adopt_settings('{"laboratory": "Skerry Point Water Laboratory"}', "lead", "first")
@@ -84,7 +89,7 @@ def ledger(tmp_path: Path, clock: SetClock) -> Iterator[Ledger]:
 
 
 @pytest.fixture
-def make_mail(clock: SetClock) -> Callable[..., QueuedMail]:
+def make_mail(clock: _SetClock) -> Callable[..., QueuedMail]:
     """Make a queued mail with a message identity of its own."""
     count = iter(range(1, 1000))
 
@@ -116,7 +121,7 @@ def done() -> Callable[..., Fate]:
 
 
 @dataclass
-class Mailbox:
+class _Mailbox:
     """What the server received, and what it answers; an empty script answers yes to everything."""
 
     received: list[tuple[tuple[str, ...], str]] = field(default_factory=list)
@@ -128,21 +133,21 @@ class Mailbox:
     #: Called after storing and before answering.
     before_answer: Callable[[], None] | None = None
 
-    async def handle_MAIL(self, _server: Any, _session: Any, envelope: Any, address: str, options: Any) -> str:
+    async def handle_MAIL(self, _server: Any, _session: Any, envelope: Any, address: str, options: Any) -> str:  # noqa: N802 - the library calls it so
         if self.mail:
             return self.mail.popleft()
         envelope.mail_from = address
         envelope.mail_options.extend(options)
         return "250 OK"
 
-    async def handle_RCPT(self, _server: Any, _session: Any, envelope: Any, address: str, options: Any) -> str:
+    async def handle_RCPT(self, _server: Any, _session: Any, envelope: Any, address: str, options: Any) -> str:  # noqa: N802 - the library calls it so
         if address in self.rcpt:
             return self.rcpt[address]
         envelope.rcpt_tos.append(address)
         envelope.rcpt_options.extend(options)
         return "250 OK"
 
-    async def handle_DATA(self, server: Any, _session: Any, envelope: Any) -> str:
+    async def handle_DATA(self, server: Any, _session: Any, envelope: Any) -> str:  # noqa: N802 - the library calls it so
         if self.data:
             return self.data.popleft()
         self.received.append((tuple(envelope.rcpt_tos), envelope.content.decode()))
@@ -158,7 +163,7 @@ class Mailbox:
 class MailServer:
     """A running server."""
 
-    mailbox: Mailbox
+    mailbox: _Mailbox
     host: str
     port: int
 
@@ -178,7 +183,7 @@ def start_mail_server() -> Iterator[Callable[..., MailServer]]:
     running: list[Controller] = []
 
     def start(**options: Any) -> MailServer:
-        mailbox = Mailbox()
+        mailbox = _Mailbox()
         controller = OnAnyPort(mailbox, hostname="127.0.0.1", port=0, **options)
         controller.start()
         running.append(controller)
@@ -206,13 +211,6 @@ class Authority:
 @pytest.fixture(scope="session")
 def authority(tmp_path_factory: pytest.TempPathFactory) -> Authority:
     """Make a certificate authority and a server certificate for 127.0.0.1."""
-    import ipaddress
-
-    from cryptography import x509
-    from cryptography.hazmat.primitives import hashes, serialization
-    from cryptography.hazmat.primitives.asymmetric import ec
-    from cryptography.x509.oid import NameOID
-
     folder = tmp_path_factory.mktemp("authority")
     now = datetime.now(UTC)
 
@@ -236,36 +234,37 @@ def authority(tmp_path_factory: pytest.TempPathFactory) -> Authority:
     ca = certificate("Skerry Point test authority", ca_key.public_key(), ca=True).sign(ca_key, hashes.SHA256())
     leaf = (
         certificate("127.0.0.1", key.public_key(), ca=False)
-        .add_extension(
-            x509.SubjectAlternativeName([x509.IPAddress(ipaddress.ip_address("127.0.0.1"))]), critical=False
-        )
+        .add_extension(x509.SubjectAlternativeName([x509.IPAddress(ipaddress.ip_address("127.0.0.1"))]), critical=False)
         .sign(ca_key, hashes.SHA256())
     )
     pem = serialization.Encoding.PEM
     (folder / "ca.pem").write_bytes(ca.public_bytes(pem))
     (folder / "server.pem").write_bytes(
-        key.private_bytes(pem, serialization.PrivateFormat.PKCS8, serialization.NoEncryption())
-        + leaf.public_bytes(pem)
+        key.private_bytes(pem, serialization.PrivateFormat.PKCS8, serialization.NoEncryption()) + leaf.public_bytes(pem)
     )
     context = ssl.SSLContext(ssl.PROTOCOL_TLS_SERVER)
     context.load_cert_chain(folder / "server.pem")
     return Authority(folder / "ca.pem", context)
 
 
-def sign_in_as(user: str, password: str) -> Callable[..., AuthResult]:
-    """An authenticator that knows one user."""
+@pytest.fixture
+def sign_in_as() -> Callable[[str, str], Callable[..., AuthResult]]:
+    """Make authenticators that know one user."""
 
-    def check(_server: Any, _session: Any, _envelope: Any, _mechanism: str, data: Any) -> AuthResult:
-        known = (data.login, data.password) == (user.encode(), password.encode())
-        return AuthResult(success=known, handled=False)
+    def make(user: str, password: str) -> Callable[..., AuthResult]:
+        def check(_server: Any, _session: Any, _envelope: Any, _mechanism: str, data: Any) -> AuthResult:
+            known = (data.login, data.password) == (user.encode(), password.encode())
+            return AuthResult(success=known, handled=False)
 
-    return check
+        return check
+
+    return make
 
 
 # -- a service in its own process -----------------------------------------------------------------------------------
 
 
-class Bench:
+class _Bench:
     """A place with exports, results and records, and the real service over it with the stub worker."""
 
     def __init__(self, folder: Path) -> None:
@@ -330,6 +329,10 @@ class Bench:
     def counts(self) -> dict[str, int]:
         return self.status().get("counts", {})
 
+    def delivered(self) -> list[str]:
+        """Names of result files that have their name; those still being written are left out."""
+        return [path.name for path in self.results.rglob("*.r*.*") if not path.name.startswith(".")]
+
     def result_files(self) -> dict[str, bytes]:
         """Every file under the results folder, temporary ones included."""
         found = (path for path in self.results.rglob("*") if path.is_file())
@@ -342,9 +345,9 @@ class Bench:
 
 
 @pytest.fixture
-def bench(tmp_path: Path) -> Iterator[Bench]:
+def bench(tmp_path: Path) -> Iterator[_Bench]:
     """A bench whose processes end with the test."""
-    made = Bench(tmp_path)
+    made = _Bench(tmp_path)
     yield made
     for process in made.processes:
         if process.poll() is None:

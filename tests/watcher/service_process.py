@@ -16,7 +16,7 @@ from watcher.service_settings import ServiceSettings
 from watcher.worker import Worker
 
 
-def main(mode: str, settings_text: str, body: str) -> None:
+def _main(mode: str, settings_text: str, body: str) -> None:
     settings = ServiceSettings.from_plain(json.loads(settings_text))
     with Instance(settings.records):
         set_up_log(settings.records)
@@ -37,6 +37,6 @@ def main(mode: str, settings_text: str, body: str) -> None:
 
 if __name__ == "__main__":
     try:
-        main(*sys.argv[1:])
+        _main(*sys.argv[1:])
     except WatcherError as error:
         sys.exit(str(error))

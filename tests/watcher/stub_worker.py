@@ -15,16 +15,16 @@ from watcher.disk import Disk
 from watcher.worker_loop import serve
 
 
-def handle(request: dict[str, Any]) -> dict[str, Any]:
+def _handle(request: dict[str, Any]) -> dict[str, Any]:
     if request["do"] == "adopt":
         if request["snapshot"].get("broken"):
             raise ValueError("the snapshot is broken")
         return {"ok": True}
     text = Path(request["copy"]).read_text()
-    return misbehave(text) or wait(text, request) or evaluate(text, request)
+    return _misbehave(text) or _wait(text, request) or _evaluate(text, request)
 
 
-def misbehave(text: str) -> dict[str, Any] | None:
+def _misbehave(text: str) -> dict[str, Any] | None:
     if "hang" in text:
         re.match(r"^(\w+\s?)*$", "SED" * 30 + "!")  # never returns, and holds on to everything
     if "die" in text:
@@ -41,16 +41,22 @@ def misbehave(text: str) -> dict[str, Any] | None:
     return None
 
 
-def wait(text: str, request: dict[str, Any]) -> dict[str, Any] | None:
+def _wait(text: str, request: dict[str, Any]) -> dict[str, Any] | None:
     unfinished = "measuring" in text and "End of log" not in text
     return {"fate": "waiting"} if unfinished and not request["final"] else None
 
 
-def evaluate(text: str, request: dict[str, Any]) -> dict[str, Any]:
+def _evaluate(text: str, request: dict[str, Any]) -> dict[str, Any]:
     rows = [line.split(",") for line in text.splitlines() if "," in line]
     name, revision = request["name"], request["revision"]
     stem = f"{name.replace('/', '_')}.r{revision}"
-    record = {"name": name, "revision": revision, "rows": rows, "alerted": request["alerted"], "final": request["final"]}
+    record = {
+        "name": name,
+        "revision": revision,
+        "rows": rows,
+        "alerted": request["alerted"],
+        "final": request["final"],
+    }
     contents = {f"{stem}.csv": text.encode(), f"{stem}.json": json.dumps(record, sort_keys=True).encode()}
     staging = Path(request["staging"])
     Disk().write_all(staging, contents, "stage")
@@ -61,9 +67,17 @@ def evaluate(text: str, request: dict[str, Any]) -> dict[str, Any]:
             {"target": f"2026-12/{each}", "staged": str(staging / each), "sha256": hashlib.sha256(content).hexdigest()}
             for each, content in contents.items()
         ],
-        "mails": [mail(name, row[0], row[1]) for row in rows if row[1] in ("fail", "incomplete")],
+        "mails": [_mail(name, row[0], row[1]) for row in rows if row[1] in ("fail", "incomplete")],
         "series": [
-            {"sample": row[0], "analyte": "Zn", "channel": "", "attempt": 1, "verdict": row[1], "value": 1.5, "unit": "mg/L"}
+            {
+                "sample": row[0],
+                "analyte": "Zn",
+                "channel": "",
+                "attempt": 1,
+                "verdict": row[1],
+                "value": 1.5,
+                "unit": "mg/L",
+            }
             for row in rows
         ],
         "verdicts": dict(Counter(row[1] for row in rows)),
@@ -72,7 +86,7 @@ def evaluate(text: str, request: dict[str, Any]) -> dict[str, Any]:
     }
 
 
-def mail(name: str, sample: str, verdict: str) -> dict[str, Any]:
+def _mail(name: str, sample: str, verdict: str) -> dict[str, Any]:
     return {
         "kind": verdict,
         "subject": f"{verdict.upper()} {sample} Zn",
@@ -83,4 +97,4 @@ def mail(name: str, sample: str, verdict: str) -> dict[str, Any]:
 
 
 if __name__ == "__main__":
-    serve(handle)
+    serve(_handle)

@@ -4,8 +4,7 @@ from __future__ import annotations
 
 import hashlib
 import os
-from pathlib import Path
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 import pytest
 
@@ -14,8 +13,11 @@ from watcher.copies import Copies, CopyPostponed, CopyRefused
 from watcher.disk import Disk
 from watcher.folder import Candidate
 
+if TYPE_CHECKING:
+    from pathlib import Path
 
-class CountingDisk(Disk):
+
+class _CountingDisk(Disk):
     """Counts what is forced to disk."""
 
     def __init__(self) -> None:
@@ -28,13 +30,13 @@ class CountingDisk(Disk):
 
 
 @pytest.fixture
-def disk() -> CountingDisk:
+def disk() -> _CountingDisk:
     """A disk that counts."""
-    return CountingDisk()
+    return _CountingDisk()
 
 
 @pytest.fixture
-def copies(tmp_path: Path, disk: CountingDisk) -> Copies:
+def copies(tmp_path: Path, disk: _CountingDisk) -> Copies:
     """Copies in an empty records folder, up to 1000 bytes each."""
     made = Copies(tmp_path / "records", disk, size_limit_bytes=1000, reserve_bytes=0)
     (tmp_path / "records").mkdir()
@@ -43,7 +45,7 @@ def copies(tmp_path: Path, disk: CountingDisk) -> Copies:
     return made
 
 
-def candidate(path: Path) -> Candidate:
+def _candidate(path: Path) -> Candidate:
     found = path.stat()
     return Candidate(path, path.name, (found.st_size, found.st_mtime_ns, found.st_ino))
 
@@ -56,38 +58,38 @@ def export(tmp_path: Path) -> Path:
     return path
 
 
-def files(copies: Copies) -> list[Path]:
+def _files(copies: Copies) -> list[Path]:
     return list(copies.path_of("x").parent.iterdir())
 
 
-def test_a_copy_lies_under_its_hash(copies: Copies, export: Path, disk: CountingDisk) -> None:
+def test_a_copy_lies_under_its_hash(copies: Copies, export: Path, disk: _CountingDisk) -> None:
     """The copy has the export's bytes and hash, and cost one sync for the file and one for the folder."""
-    sha256 = copies.hash_of(candidate(export))
-    copy = copies.take(candidate(export), sha256)
+    sha256 = copies.hash_of(_candidate(export))
+    copy = copies.take(_candidate(export), sha256)
 
     assert sha256 == hashlib.sha256(export.read_bytes()).hexdigest()
     assert copy.path.read_bytes() == export.read_bytes()
     assert copy.size == 15
-    assert files(copies) == [copy.path]
+    assert _files(copies) == [copy.path]
     assert disk.syncs == 2
 
 
-def test_the_same_content_is_stored_once(copies: Copies, export: Path, disk: CountingDisk) -> None:
+def test_the_same_content_is_stored_once(copies: Copies, export: Path, disk: _CountingDisk) -> None:
     """A content that is there already is checked and not written again; a damaged one is replaced."""
-    sha256 = copies.hash_of(candidate(export))
-    copy = copies.take(candidate(export), sha256)
-    copies.take(candidate(export), sha256)
+    sha256 = copies.hash_of(_candidate(export))
+    copy = copies.take(_candidate(export), sha256)
+    copies.take(_candidate(export), sha256)
     assert disk.syncs == 2
 
     copy.path.write_bytes(b"SED-12;Zn;9.99\n")
-    copies.take(candidate(export), sha256)
+    copies.take(_candidate(export), sha256)
 
     assert copy.path.read_bytes() == export.read_bytes()
 
 
 def test_a_file_that_changed_since_it_was_seen_is_put_off(copies: Copies, export: Path) -> None:
     """A file that is not the one that settled is not hashed into anything."""
-    seen = candidate(export)
+    seen = _candidate(export)
     with export.open("ab") as file:
         file.write(b"more")
 
@@ -97,7 +99,7 @@ def test_a_file_that_changed_since_it_was_seen_is_put_off(copies: Copies, export
 
 def test_readings_that_differ_are_no_copy(copies: Copies, export: Path) -> None:
     """Content exchanged between the two readings, with the same size and time, is noticed and nothing is left."""
-    seen = candidate(export)
+    seen = _candidate(export)
     sha256 = copies.hash_of(seen)
     with export.open("r+b") as file:
         file.write(b"SED-13")
@@ -106,7 +108,7 @@ def test_readings_that_differ_are_no_copy(copies: Copies, export: Path) -> None:
     with pytest.raises(CopyPostponed, match="it changed while it was being read"):
         copies.take(seen, sha256)
 
-    assert files(copies) == []
+    assert _files(copies) == []
 
 
 def test_a_file_over_the_limit_is_refused_unread(copies: Copies, export: Path, monkeypatch: Any) -> None:
@@ -115,13 +117,13 @@ def test_a_file_over_the_limit_is_refused_unread(copies: Copies, export: Path, m
     monkeypatch.setattr(module.os, "open", None)
 
     with pytest.raises(CopyRefused, match=r"it has 1001 bytes, at most 1000 are read\. .* Export fewer samples"):
-        copies.hash_of(candidate(export))
+        copies.hash_of(_candidate(export))
 
 
 @pytest.mark.parametrize("kind", ["link", "pipe"])
 def test_a_file_that_became_something_else_is_refused(copies: Copies, export: Path, kind: str) -> None:
     """A link or pipe put in the file's place after the look is neither followed nor waited for."""
-    seen = candidate(export)
+    seen = _candidate(export)
     export.unlink()
     export.symlink_to("/etc/hostname") if kind == "link" else os.mkfifo(export)
 
@@ -138,13 +140,13 @@ def test_a_file_that_is_held_is_put_off_with_the_reason(copies: Copies, export: 
     monkeypatch.setattr(module.os, "open", held)
 
     with pytest.raises(CopyPostponed, match=r"cannot be opened \(Permission denied\)") as caught:
-        copies.hash_of(candidate(export))
+        copies.hash_of(_candidate(export))
     assert not caught.value.expected
 
 
 def test_a_file_that_is_gone_is_put_off_quietly(copies: Copies, export: Path) -> None:
     """A file removed after the look is ordinary."""
-    seen = candidate(export)
+    seen = _candidate(export)
     export.unlink()
 
     with pytest.raises(CopyPostponed, match="cannot be opened") as caught:
@@ -158,9 +160,9 @@ def test_the_instruments_disk_is_not_filled(tmp_path: Path, export: Path) -> Non
     copies.prepare()
 
     with pytest.raises(CopyPostponed, match="must stay free") as caught:
-        copies.take(candidate(export), copies.hash_of(candidate(export)))
+        copies.take(_candidate(export), copies.hash_of(_candidate(export)))
     assert caught.value.lasting
-    assert files(copies) == []
+    assert _files(copies) == []
 
 
 def test_a_killed_copy_is_swept_at_the_start(copies: Copies) -> None:
@@ -171,4 +173,4 @@ def test_a_killed_copy_is_swept_at_the_start(copies: Copies) -> None:
 
     copies.prepare()
 
-    assert [path.name for path in files(copies)] == ["0" * 64]
+    assert [path.name for path in _files(copies)] == ["0" * 64]

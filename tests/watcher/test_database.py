@@ -82,9 +82,8 @@ def test_a_transaction_that_fails_leaves_nothing(tmp_path: Path) -> None:
     database = Database(tmp_path / "ledger.sqlite")
     insert = "INSERT INTO entries (kind, at, body) VALUES (?, '', '')"
 
-    with pytest.raises(ZeroDivisionError), database.transaction("accept") as txn:
-        txn.execute(insert, ("lost",))
-        raise ZeroDivisionError
+    with pytest.raises(sqlite3.IntegrityError, match="NOT NULL"), database.transaction("accept") as txn:
+        txn.executemany(insert, [("lost",), (None,)])
     with database.transaction("accept") as txn:
         txn.execute(insert, ("kept",))
 

@@ -14,7 +14,7 @@ if TYPE_CHECKING:
     from pathlib import Path
 
 
-class TellingDisk(Disk):
+class _TellingDisk(Disk):
     """Writes down its steps, and fails at one of them if told to."""
 
     def __init__(self, fail_at: int = 0, error: OSError | None = None) -> None:
@@ -39,7 +39,7 @@ class TellingDisk(Disk):
 
 def test_content_is_on_disk_before_its_name(tmp_path: Path) -> None:
     """Two files of one folder: each is synced before it gets its name, and the folder is synced once, last."""
-    disk = TellingDisk()
+    disk = _TellingDisk()
 
     disk.write_all(tmp_path, {"a.csv": b"1", "a.json": b"2"})
 
@@ -54,7 +54,7 @@ def test_a_step_that_fails_leaves_the_old_file_or_the_new(tmp_path: Path, step: 
     (tmp_path / "a.csv").write_bytes(b"old")
 
     with pytest.raises(OSError, match="Input/output error"):
-        TellingDisk(step).atomic_write(tmp_path / "a.csv", b"new")
+        _TellingDisk(step).atomic_write(tmp_path / "a.csv", b"new")
 
     assert (tmp_path / "a.csv").read_bytes() == (b"new" if step == 3 else b"old")
     assert [path.name for path in tmp_path.iterdir()] == ["a.csv"]
@@ -68,7 +68,7 @@ def test_files_are_as_readable_as_any_other(tmp_path: Path) -> None:
     assert (tmp_path / "a.csv").stat().st_mode == (tmp_path / "b.csv").stat().st_mode
 
 
-class HeldFile:
+class _HeldFile:
     """Stands for a path on Windows that is held for some tries."""
 
     def __init__(self, code: int, tries: int) -> None:
@@ -88,7 +88,7 @@ def test_a_file_held_for_a_moment_is_tried_again(code: int) -> None:
     """The three passing errors of Windows are waited out, with growing pauses."""
     pauses: list[float] = []
 
-    Disk(pauses.append).replace(HeldFile(code, 3), None)  # type: ignore[arg-type]
+    Disk(pauses.append).replace(_HeldFile(code, 3), None)  # type: ignore[arg-type]
 
     assert pauses == list(WINDOWS_PAUSES[:3])
 
@@ -99,7 +99,7 @@ def test_other_errors_and_lasting_ones_are_not_hidden(code: int, tries: int, wai
     pauses: list[float] = []
 
     with pytest.raises(PermissionError, match="held"):
-        Disk(pauses.append).replace(HeldFile(code, tries), None)  # type: ignore[arg-type]
+        Disk(pauses.append).replace(_HeldFile(code, tries), None)  # type: ignore[arg-type]
 
     assert len(pauses) == waited
 

@@ -115,19 +115,19 @@ def test_unfinished_and_accompanying_files_are_left_alone(root: Path, name: str)
     assert (look.settled, look.unsettled, look.troubles) == ((), (), ())
 
 
-def odd_pipe(path: Path) -> None:
+def _odd_pipe(path: Path) -> None:
     os.mkfifo(path)
 
 
-def odd_link(path: Path) -> None:
+def _odd_link(path: Path) -> None:
     path.symlink_to("/etc/hostname")
 
 
-def odd_directory(path: Path) -> None:
+def _odd_directory(path: Path) -> None:
     path.mkdir()
 
 
-def odd_socket(path: Path) -> None:
+def _odd_socket(path: Path) -> None:
     with socket.socket(socket.AF_UNIX) as made:
         made.bind(str(path))
 
@@ -135,10 +135,10 @@ def odd_socket(path: Path) -> None:
 @pytest.mark.parametrize(
     ("make", "said"),
     [
-        (odd_pipe, "is no regular file"),
-        (odd_link, "is a symbolic link"),
-        (odd_directory, "is a directory with the name of an export"),
-        (odd_socket, "is no regular file"),
+        (_odd_pipe, "is no regular file"),
+        (_odd_link, "is a symbolic link"),
+        (_odd_directory, "is a directory with the name of an export"),
+        (_odd_socket, "is no regular file"),
     ],
 )
 def test_what_is_no_file_is_refused_with_a_reason(root: Path, make: Any, said: str) -> None:

@@ -15,13 +15,13 @@ if TYPE_CHECKING:
     from pathlib import Path
 
 
-def accepted(ledger: Ledger, content: int = 1, name: str = "FL-1.csv") -> Any:
+def _accepted(ledger: Ledger, content: int = 1, name: str = "FL-1.csv") -> Any:
     export = ledger.accept(name, f"{content:064x}", 60)
     assert export is not None
     return export
 
 
-def due(ledger: Ledger, clock: Any) -> list[tuple[str, tuple[str, ...], bool]]:
+def _due(ledger: Ledger, clock: Any) -> list[tuple[str, tuple[str, ...], bool]]:
     return [(each.subject, each.recipients, each.possible_repeat) for each in ledger.outgoing.due_mails(clock.now())]
 
 
@@ -33,7 +33,7 @@ def test_a_mail_of_known_keys_is_not_queued(ledger: Ledger, clock: Any, make_mai
     assert ledger.report(make_mail("fail", "a", "b"))
     assert ledger.report(make_mail("fail"))
 
-    assert len(due(ledger, clock)) == 3
+    assert len(_due(ledger, clock)) == 3
 
 
 @settings(max_examples=30, suppress_health_check=[HealthCheck.function_scoped_fixture])
@@ -54,7 +54,7 @@ def test_recipients_fare_differently(ledger: Ledger, clock: Any, make_mail: Any)
     ledger.report(make_mail("fail", to=("a@x", "b@x", "c@x", "d@x")))
     (mail,) = ledger.outgoing.due_mails(clock.now())
     assert ledger.outgoing.sending(mail)
-    assert due(ledger, clock) == []
+    assert _due(ledger, clock) == []
     again = "2026-12-01T07:30:10.000000Z"
     ledger.outgoing.outcome(
         mail,
@@ -65,11 +65,11 @@ def test_recipients_fare_differently(ledger: Ledger, clock: Any, make_mail: Any)
             RecipientOutcome("d@x", "unknown", "line broke", again),
         ],
     )
-    assert due(ledger, clock) == []
+    assert _due(ledger, clock) == []
 
     clock.advance(10)
 
-    assert due(ledger, clock) == [("FAIL RIV-17 Zn", ("c@x",), False), ("FAIL RIV-17 Zn", ("d@x",), True)]
+    assert _due(ledger, clock) == [("FAIL RIV-17 Zn", ("c@x",), False), ("FAIL RIV-17 Zn", ("d@x",), True)]
     assert [(each.address, each.state) for each in ledger.outgoing.undelivered_mails()] == [
         ("b@x", "refused"),
         ("c@x", "waiting"),
@@ -99,7 +99,7 @@ def test_a_start_makes_attempts_under_way_unknown_and_due(ledger: Ledger, clock:
 
     assert ledger.outgoing.recover() == 1
 
-    assert due(ledger, clock) == [("FAIL RIV-17 Zn", ("lead@example",), True)]
+    assert _due(ledger, clock) == [("FAIL RIV-17 Zn", ("lead@example",), True)]
 
 
 def test_a_clock_set_back_stops_no_retry(ledger: Ledger, clock: Any, make_mail: Any) -> None:
@@ -113,40 +113,42 @@ def test_a_clock_set_back_stops_no_retry(ledger: Ledger, clock: Any, make_mail: 
 
     clock.wall -= timedelta(days=1)
 
-    assert [subject for subject, _, _ in due(ledger, clock)] == ["FAIL RIV-17 Zn"]
+    assert [subject for subject, _, _ in _due(ledger, clock)] == ["FAIL RIV-17 Zn"]
 
 
 def test_newer_content_withdraws_what_nobody_has(ledger: Ledger, clock: Any, done: Any, make_mail: Any) -> None:
     """A held-back mail is withdrawn with its key; one that had an outcome is not, and failures never are."""
     first = done(mails=(make_mail("incomplete", "i", after=3600), make_mail("fail", "f")))
-    ledger.finish(accepted(ledger, 1), first)
+    ledger.finish(_accepted(ledger, 1), first)
 
-    ledger.finish(accepted(ledger, 2), done(mails=(make_mail("incomplete", "i", after=7200),)))
+    ledger.finish(_accepted(ledger, 2), done(mails=(make_mail("incomplete", "i", after=7200),)))
 
     clock.advance(3600)
-    assert [subject for subject, _, _ in due(ledger, clock)] == ["FAIL RIV-17 Zn"]
+    assert [subject for subject, _, _ in _due(ledger, clock)] == ["FAIL RIV-17 Zn"]
     clock.advance(3600)
-    assert [subject for subject, _, _ in due(ledger, clock)] == ["FAIL RIV-17 Zn", "INCOMPLETE RIV-17 Zn"]
+    assert [subject for subject, _, _ in _due(ledger, clock)] == ["FAIL RIV-17 Zn", "INCOMPLETE RIV-17 Zn"]
 
 
 def test_a_mail_that_is_being_sent_is_not_withdrawn(ledger: Ledger, clock: Any, done: Any, make_mail: Any) -> None:
     """Once an attempt began, a mail about an incomplete sample stays, and newer content does not repeat it."""
-    ledger.finish(accepted(ledger, 1), done(mails=(make_mail("incomplete", "i"),)))
+    ledger.finish(_accepted(ledger, 1), done(mails=(make_mail("incomplete", "i"),)))
     (mail,) = ledger.outgoing.due_mails(clock.now())
     ledger.outgoing.sending(mail)
 
-    ledger.finish(accepted(ledger, 2), done(mails=(make_mail("incomplete", "i"),)))
+    ledger.finish(_accepted(ledger, 2), done(mails=(make_mail("incomplete", "i"),)))
     ledger.outgoing.outcome(mail, [RecipientOutcome("lead@example", "delivered")])
 
-    assert due(ledger, clock) == []
+    assert _due(ledger, clock) == []
     assert ledger.outgoing.undelivered_mails() == []
 
 
-def test_a_withdrawn_mail_is_not_sent_by_who_read_it_before(ledger: Ledger, clock: Any, done: Any, make_mail: Any) -> None:
+def test_a_withdrawn_mail_is_not_sent_by_who_read_it_before(
+    ledger: Ledger, clock: Any, done: Any, make_mail: Any
+) -> None:
     """A mail read as due and withdrawn in the meantime is not begun."""
-    ledger.finish(accepted(ledger, 1), done(mails=(make_mail("incomplete", "i"),)))
+    ledger.finish(_accepted(ledger, 1), done(mails=(make_mail("incomplete", "i"),)))
     (mail,) = ledger.outgoing.due_mails(clock.now())
-    ledger.finish(accepted(ledger, 2), done())
+    ledger.finish(_accepted(ledger, 2), done())
 
     assert not ledger.outgoing.sending(mail)
 
@@ -154,7 +156,7 @@ def test_a_withdrawn_mail_is_not_sent_by_who_read_it_before(ledger: Ledger, cloc
 def test_files_wait_until_they_are_delivered(ledger: Ledger, clock: Any, done: Any, tmp_path: Path) -> None:
     """A file that failed comes back when it is due, one that was delivered never."""
     staged = tuple(StagedFile(f"2026-12/{name}", tmp_path / name, "0" * 64) for name in ("a.csv", "a.json"))
-    ledger.finish(accepted(ledger), done(files=staged))
+    ledger.finish(_accepted(ledger), done(files=staged))
     first, second = ledger.outgoing.due_files(clock.now())
     ledger.outgoing.file_delivered(first)
     ledger.outgoing.file_failed(second, "held open", clock.now() + timedelta(seconds=5))

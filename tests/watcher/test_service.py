@@ -4,16 +4,15 @@ from __future__ import annotations
 
 import json
 import os
+import random
 import re
 import signal
+import subprocess
+import threading
 import time
-from typing import TYPE_CHECKING, Any
+from typing import Any
 
 import pytest
-
-if TYPE_CHECKING:
-    from collections.abc import Callable
-
 
 
 @pytest.fixture(params=["events", "looking only"])
@@ -29,9 +28,7 @@ def records_of(bench: Any) -> list[dict[str, Any]]:
     return [json.loads(content) for name, content in sorted(bench.result_files().items()) if name.endswith(".json")]
 
 
-def test_an_export_that_lands_becomes_results_and_a_mail(
-    any_bench: Any, mail_server: Any, eventually: Any
-) -> None:
+def test_an_export_that_lands_becomes_results_and_a_mail(any_bench: Any, mail_server: Any, eventually: Any) -> None:
     """An export that lands while the service runs gives its result files and one mail about its failing sample."""
     any_bench.mail_to(mail_server)
     any_bench.start()
@@ -39,7 +36,7 @@ def test_an_export_that_lands_becomes_results_and_a_mail(
 
     any_bench.export("FL-1.csv", "SED-12,pass", "RIV-17,fail")
 
-    eventually(lambda: len(any_bench.result_files()) == 2, "both result files arrive")
+    eventually(lambda: len(any_bench.delivered()) == 2, "both result files arrive")
     eventually(lambda: mail_server.mailbox.received, "the mail arrives")
     (_, text) = mail_server.mailbox.received[0]
     assert "Subject: FAIL RIV-17 Zn" in text
@@ -73,7 +70,7 @@ def test_a_writer_that_pauses_gives_revisions(any_bench: Any, mail_server: Any, 
             file.write(piece)
         eventually(lambda number=number: any_bench.counts().get("done") == number, f"revision {number} is done")
 
-    eventually(lambda: len(any_bench.result_files()) == 6, "all result files arrive")
+    eventually(lambda: len(any_bench.delivered()) == 6, "all result files arrive")
     eventually(lambda: len(mail_server.mailbox.received) == 2, "both mails arrive")
     assert [each["revision"] for each in records_of(any_bench)] == [1, 2, 3]
     assert [re.search("Subject: (.*)\r", text)[1] for _, text in mail_server.mailbox.received] == [
@@ -92,7 +89,7 @@ def test_an_unfinished_export_waits_for_its_last_line(any_bench: Any, eventually
     any_bench.export("FL-3.csv", "measuring", "SED-12,pass", "BRN-3,pass", "End of log")
 
     eventually(lambda: any_bench.counts() == {"done": 1, "superseded": 1}, "it is done")
-    eventually(lambda: len(any_bench.result_files()) == 2, "its result files arrive")
+    eventually(lambda: len(any_bench.delivered()) == 2, "its result files arrive")
     assert [each["revision"] for each in records_of(any_bench)] == [1]
 
 
@@ -102,13 +99,11 @@ def test_an_unfinished_export_is_evaluated_when_it_stays_as_it_is(bench: Any, ev
     bench.start()
     bench.export("FL-3.csv", "measuring", "SED-12,pass")
 
-    eventually(lambda: len(bench.result_files()) == 2, "its result files arrive")
+    eventually(lambda: len(bench.delivered()) == 2, "its result files arrive")
     assert records_of(bench)[0]["final"] is True
 
 
-def test_poison_is_refused_after_three_deaths_and_harms_no_other(
-    bench: Any, mail_server: Any, eventually: Any
-) -> None:
+def test_poison_is_refused_after_three_deaths_and_harms_no_other(bench: Any, mail_server: Any, eventually: Any) -> None:
     """An export that ends the worker three times is refused and mailed, and the others are evaluated."""
     bench.mail_to(mail_server)
     bench.export("A-bad.csv", "die,now")
@@ -139,7 +134,7 @@ def test_a_stop_during_an_evaluation_is_quick_and_costs_nothing(bench: Any, even
     """SIGTERM while the worker hangs ends the service within two seconds; the export stays accepted, unattempted."""
     bench.export("FL-1.csv", "hang,now")
     process = bench.start(mode)
-    eventually(lambda: (bench.records / "evaluating").exists(), "the evaluation begins")
+    eventually((bench.records / "evaluating").exists, "the evaluation begins")
 
     begun = time.monotonic()
     bench.stop(process)
@@ -152,8 +147,6 @@ def test_a_stop_during_an_evaluation_is_quick_and_costs_nothing(bench: Any, even
 
 def test_a_stop_during_a_hung_mail_is_quick(bench: Any, mail_server: Any, eventually: Any) -> None:
     """SIGTERM while the mail server does not answer ends the service within two seconds; the outcome is unknown."""
-    import threading
-
     bench.mail_to(mail_server)
     asked, answer = threading.Event(), threading.Event()
 
@@ -180,9 +173,7 @@ def test_a_stop_during_a_hung_mail_is_quick(bench: Any, mail_server: Any, eventu
     assert "possible repeat: " in second
 
 
-def test_a_defect_is_mailed_once_and_everything_else_goes_on(
-    bench: Any, mail_server: Any, eventually: Any
-) -> None:
+def test_a_defect_is_mailed_once_and_everything_else_goes_on(bench: Any, mail_server: Any, eventually: Any) -> None:
     """A defect met by two exports refuses both, is mailed once with its traceback, and stops nothing."""
     bench.mail_to(mail_server)
     for name in ("A-1.csv", "A-2.csv"):
@@ -193,7 +184,7 @@ def test_a_defect_is_mailed_once_and_everything_else_goes_on(
     eventually(lambda: bench.counts() == {"done": 1, "refused": 2}, "two refused, one done")
     eventually(lambda: mail_server.mailbox.received, "the mail arrives")
     ((_, text),) = mail_server.mailbox.received
-    assert "Subject: PROBLEM defect of the program: ZeroDivisionError in misbehave" in text.replace("\r\n ", " ")
+    assert "Subject: PROBLEM defect of the program: ZeroDivisionError in _misbehave" in text.replace("\r\n ", " ")
     assert "Traceback" in text
 
 
@@ -352,7 +343,14 @@ ON_THE_WAY = [
 ]
 #: The server may have the mail and the ledger does not know it.
 OUTCOME_UNKNOWN = {"sending-committed", "mail-answered", "outcome-begins", "outcome-commits"}
-TELLING = {"copy-replaced", "accept-committed", "finish-commits", "finish-committed", "deliver-replaced", "mail-answered"}
+TELLING = {
+    "copy-replaced",
+    "accept-committed",
+    "finish-commits",
+    "finish-committed",
+    "deliver-replaced",
+    "mail-answered",
+}
 
 
 @pytest.mark.parametrize(
@@ -360,7 +358,7 @@ TELLING = {"copy-replaced", "accept-committed", "finish-commits", "finish-commit
     [pytest.param(each, marks=[] if each in TELLING else [pytest.mark.proof]) for each in ON_THE_WAY],
 )
 def test_a_kill_anywhere_loses_nothing(bench: Any, mail_server: Any, point: str) -> None:
-    """Killed at any step and started again: every export done, every file there, every mail once where it can be known."""
+    """Killed at any step and started again, every export is done, its files are there, its mail was sent."""
     bench.mail_to(mail_server)
     bench.export("FL-1.csv", "SED-12,pass", "RIV-17,fail")
     bench.export("FL-2.csv", "BRN-3,fail")
@@ -394,12 +392,28 @@ def check_mails(received: list[tuple[tuple[str, ...], str]], *, unknown: bool) -
     assert unknown or len(received) == 2
 
 
+def test_a_kill_from_inside_the_servers_answer_repeats_with_the_same_identity(bench: Any, mail_server: Any) -> None:
+    """The server has stored the mail when the service dies: the repeat bears the same identity and says so."""
+    bench.mail_to(mail_server)
+    bench.export("FL-1.csv", "RIV-17,fail")
+    service = bench.start("once")
+    mail_server.mailbox.before_answer = service.kill
+    service.communicate(timeout=20)
+    mail_server.mailbox.before_answer = None
+
+    bench.once()
+
+    texts = [text for _, text in mail_server.mailbox.received]
+    assert len({re.search("Message-ID: (.*)\r", text)[1] for text in texts}) == 1
+    assert ["possible repeat: " in text for text in texts] == [False, True]
+
+
 @pytest.mark.proof
 @pytest.mark.parametrize("events", ["0", "1"])
-def test_kills_at_random_moments_end_in_the_same_state(bench: Any, mail_server: Any, events: str, eventually: Any) -> None:
+def test_kills_at_random_moments_end_in_the_same_state(
+    bench: Any, mail_server: Any, events: str, eventually: Any
+) -> None:
     """Killed forty times at random moments while exports land, the service ends with all of them done and mailed."""
-    import random
-
     draw = random.Random(17)
     bench.mail_to(mail_server)
     bench.environment["SPIKEWARDEN_NO_EVENTS"] = events
@@ -411,7 +425,7 @@ def test_kills_at_random_moments_end_in_the_same_state(bench: Any, mail_server: 
         bench.export(name, f"SED-{number},fail", "BRN-3,pass")
         try:
             process.communicate(timeout=draw.uniform(0.2, 0.9))
-        except Exception:  # the timeout is the moment of the kill
+        except subprocess.TimeoutExpired:  # the timeout is the moment of the kill
             process.kill()
             process.communicate(timeout=20)
     bench.once()

@@ -6,15 +6,21 @@ import csv
 import io
 import json
 import os
+import socket
 import subprocess
 import sys
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 import pytest
+from click.testing import CliRunner
+
+from watcher.commands import main
 
 if TYPE_CHECKING:
     from collections.abc import Callable, Iterator
+
+    from click.testing import Result
 
 #: Far above what a command takes here; only a failing test waits so long.
 DEADLINE_SECONDS = 60.0
@@ -33,6 +39,7 @@ bench:
 report: additions
 blank: none
 units: {export: mg/L, result: mg/L}
+limits: {recovery: 75 to 125 %}
 mail: none
 watching: {settle: 100 ms, scan: 100 ms}
 """
@@ -76,9 +83,10 @@ def additions(sample: str, native: float = 3.0, recovery: float = 1.0, only: str
 
 
 def standards() -> list[str]:
-    """Rows of a calibration."""
+    """Rows of a calibration, and a blank, above which readings count as large enough for a relative scatter."""
     nominal = ("0", "0.5", "1", "2", "3")
-    return [row(f"STD {c}", SENSITIVITY * float(c) + s) for c, s in zip(nominal, (*SCATTER, 0.0001), strict=True)]
+    measured = [row(f"STD {c}", SENSITIVITY * float(c) + s) for c, s in zip(nominal, (*SCATTER, 0.0001), strict=True)]
+    return [*measured, row("BLK 1", 0.0005)]
 
 
 def export_text(*rows: str) -> str:
@@ -102,6 +110,7 @@ class Laboratory:
         self.write("flame.yaml", FLAME)
 
     def write(self, name: str, text: str) -> Path:
+        """Write a file of the laboratory."""
         path = self.folder / name
         path.write_text(text, "utf-8")
         return path
@@ -113,9 +122,11 @@ class Laboratory:
         self.write(name, text.replace(old, new))
 
     def export(self, name: str, *rows: str) -> Path:
+        """Let an export of the flame bench land."""
         return self.write(f"exports/{name}", export_text(*rows))
 
     def mail_to(self, port: int) -> None:
+        """Send mails to a local server."""
         self.change(
             "config.yaml",
             "mail: none",
@@ -123,10 +134,11 @@ class Laboratory:
         )
 
     def start(self, command: str, *arguments: str) -> subprocess.Popen[str]:
+        """Start a command in a process of its own."""
         process = subprocess.Popen(
             [sys.executable, "-m", "watcher", command, *arguments, "--config", str(self.folder / "config.yaml")],
             cwd=ROOT,
-            env=os.environ | {"COLUMNS": "80", "PYTHONWARNINGS": "error"},
+            env=os.environ | {"COLUMNS": "80"},
             stdout=subprocess.PIPE,
             stderr=subprocess.PIPE,
             text=True,
@@ -161,6 +173,7 @@ class Laboratory:
         return list(csv.DictReader(io.StringIO(path.read_bytes().decode("utf-8-sig"), newline="")))
 
     def status(self) -> dict[str, Any]:
+        """Return the last heartbeat."""
         try:
             return json.loads((self.folder / "records" / "status.json").read_text("utf-8"))
         except FileNotFoundError:
@@ -171,6 +184,7 @@ class Laboratory:
         return {str(path): path.read_bytes() for path in self.folder.rglob("*") if path.is_file()}
 
     def close(self) -> None:
+        """End what still runs."""
         for process in self.processes:
             if process.poll() is None:
                 process.kill()
@@ -201,3 +215,24 @@ def laboratory(make_laboratory: Callable[[], Laboratory]) -> Laboratory:
 def squeezed() -> Callable[[str], str]:
     """Return a text without its line breaks, to look for sentences that were wrapped."""
     return lambda text: " ".join(text.split())
+
+
+@pytest.fixture
+def run_here(monkeypatch: pytest.MonkeyPatch) -> Callable[[str, str | None, Laboratory], Result]:
+    """Run a command of the real command line in this process, which is quicker."""
+    monkeypatch.setenv("COLUMNS", "80")
+
+    def run(command: str, argument: str | None, laboratory: Laboratory) -> Result:
+        arguments = [] if argument is None else [argument]
+        config = str(laboratory.folder / "config.yaml")
+        return CliRunner().invoke(main, [command, *arguments, "--config", config], catch_exceptions=False)
+
+    return run
+
+
+@pytest.fixture
+def unused_port() -> int:
+    """A port that nobody listens on."""
+    with socket.socket() as probe:
+        probe.bind(("127.0.0.1", 0))
+        return int(probe.getsockname()[1])

@@ -1,0 +1,174 @@
+"""Which lines behind the header are rows of the table, and the reason of every line that is none.
+
+The order counts: a blank line, the end of the table, the end mark of the export, a line to skip, the header again.
+Nothing here splits a line.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+from parsers.readings import SetAside
+from parsers.spelling import shown
+
+if TYPE_CHECKING:
+    from collections.abc import Iterable, Sequence
+
+    from parsers.layout import Layout
+    from parsers.readings import Lines as LineNumbers
+    from parsers.table import Frame
+    from parsers.text import Line
+
+BLANK = "blank line"
+BEFORE = "before the table"
+HEADER = "header"
+HEADER_AGAIN = "header again"
+SKIPPED = "left out by skip"
+FINISHED = "end mark of the export"
+UNTIL = "end of the table"
+AFTER = "after the table"
+CONTINUED = "continues the line above"
+
+
+def fate(frame: Frame, at: int, layout: Layout) -> str | None:
+    """Return why the line of an index is no row, None where it is one."""
+    line = frame.lines.lines[at]
+    if not line.strip():
+        return BLANK
+    if layout.until is not None and layout.until.search(line):
+        return UNTIL
+    if layout.finished is not None and layout.finished.search(line):
+        return FINISHED
+    if any(pattern.search(line) for pattern in layout.skip):
+        return SKIPPED
+    return HEADER_AGAIN if header_again(frame, at, line, layout) else None
+
+
+def header_again(frame: Frame, at: int, line: str, layout: Layout) -> bool:
+    """Tell whether a line repeats the header.
+
+    Raises
+    ------
+    ExportRefused
+        If it is a header by its pattern, but another one.
+    """
+    if line == frame.header:
+        return True
+    if layout.header is None or not layout.header.search(line):
+        return False
+    sentence = f"expected rows under the header of line {frame.header_at + 1}, got another header: {shown(line)}"
+    raise frame.lines.refusal(at, sentence, "Export each batch on its own, or set until in the layout")
+
+
+def outside(lines: Sequence[str], at: int, reason: str) -> list[SetAside]:
+    """Return the fate of lines before or behind the table, the first of which has the index `at`."""
+    return [SetAside(number, reason if text.strip() else BLANK, text) for number, text in enumerate(lines, at + 1)]
+
+
+@dataclass(slots=True)
+class Fates:
+    """Which lines behind the header are rows, and why the others are not.
+
+    Attributes
+    ----------
+    frame
+        Where the table begins.
+    last, end
+        Index of the line behind the table, and where it begins in the text.
+    reasons
+        The lines before `last` that are no rows, with their reasons.
+    until
+        The line that ends the table, where there is one.
+    """
+
+    frame: Frame
+    last: int
+    end: int
+    reasons: dict[int, tuple[str, Line]]
+    until: Line | None = None
+
+    @classmethod
+    def of(cls, frame: Frame, layout: Layout) -> Fates:
+        """Apply the patterns of a layout in the order of `fate`."""
+        lines, first, offset = frame.lines, frame.first, frame.offset
+        fates = cls(frame, len(lines), len(lines.text), {})
+        if layout.until is not None:
+            ends = (line for line in lines.matching(layout.until, first, offset) if line.text.strip())
+            fates.until = next(ends, None)
+            if fates.until is not None:
+                fates.last, fates.end = fates.until.at, fates.until.offset
+        searches = [(layout.finished, FINISHED), *((pattern, SKIPPED) for pattern in layout.skip)]
+        for pattern, reason in searches:
+            for line in lines.matching(pattern, first, offset) if pattern is not None else ():
+                fates._note(line, reason)
+        for line in fates._perhaps_headers(layout):
+            if fates._is_open(line) and header_again(frame, line.at, line.text, layout):
+                fates._note(line, HEADER_AGAIN)
+        return fates
+
+    def _is_open(self, line: Line) -> bool:
+        return line.at < self.last and line.at not in self.reasons and bool(line.text.strip())
+
+    def _note(self, line: Line, reason: str) -> None:
+        if self._is_open(line):
+            self.reasons[line.at] = (reason, line)
+
+    def _perhaps_headers(self, layout: Layout) -> Iterable[Line]:
+        frame, lines = self.frame, self.frame.lines
+        if layout.header is not None:  # the header itself matches its pattern, so a repetition does
+            return lines.matching(layout.header, frame.first, frame.offset)
+        again = lines.text.find(frame.header, frame.offset, self.end) >= 0
+        return lines.all_from(frame.first, frame.offset) if again else ()
+
+    def leave_out_blanks(self) -> bool:
+        """Set blank lines aside; tell whether there were any."""
+        blank = [
+            line
+            for line in self.frame.lines.all_from(self.frame.first, self.frame.offset)
+            if line.at < self.last and not line.text.strip()
+        ]
+        self.reasons.update((line.at, (BLANK, line)) for line in blank)
+        return bool(blank)
+
+    def rows(self) -> int:
+        """Return the number of rows."""
+        return self.last - self.frame.first - len(self.reasons)
+
+    def data(self) -> tuple[bytes, int | None, int]:
+        """Return the rows as UTF-8, each with a line feed.
+
+        Returns
+        -------
+        tuple
+            The bytes; the index of a header line directly before the first row, or None; how many bytes stand before
+            that row. An export that is in UTF-8 already and has rows to its end is not copied.
+        """
+        lines, begin = self.frame.lines, self.frame.offset
+        plain = self.frame.first == self.frame.header_at + 1 and '"' not in self.frame.header
+        whole = self.until is None and not self.reasons and lines.text.endswith("\n")
+        if lines.data is not None and plain and whole:
+            return lines.data, self.frame.header_at, len(lines.text[:begin].encode())
+        pieces = []
+        for _, line in sorted(self.reasons.values(), key=lambda reason: reason[1].at):
+            pieces.append(lines.text[begin : line.offset])
+            begin = line.offset + len(line.text) + 1
+        chunk = "".join([*pieces, lines.text[begin : self.end]])
+        return (chunk if chunk.endswith("\n") else f"{chunk}\n").encode(), None, 0
+
+    def line_numbers(self) -> LineNumbers:
+        """Return the line of each row."""
+        numbers = np.arange(self.frame.first + 1, self.last + 1, dtype=np.int64)
+        return np.delete(numbers, np.array(sorted(self.reasons), dtype=np.int64) - self.frame.first)
+
+    def set_aside(self) -> list[SetAside]:
+        """Return every line that is no row."""
+        aside = [*self.frame.set_aside]
+        aside += [SetAside(at + 1, reason, line.text) for at, (reason, line) in sorted(self.reasons.items())]
+        if self.until is not None:
+            aside.append(SetAside(self.last + 1, UNTIL, self.until.text))
+            behind = self.frame.lines.text[self.end + len(self.until.text) + 1 :]
+            aside += outside(behind.removesuffix("\n").split("\n") if behind else [], self.last + 1, AFTER)
+        return aside
