@@ -128,8 +128,8 @@ class _Assembly:
             empty = not text.replace(self.values.layout.separator, "").replace('"', "").strip()
             self.set_aside.append(SetAside(line, EMPTY_ROW if empty else reason, text))
             if not empty and reason in (NO_SAMPLE, NO_ANALYTE):
-                what = "sample ID" if reason == NO_SAMPLE else "analyte"
-                sentence = f"expected a {what}, got an empty cell in {shown(text)}. The row belongs to no result. "
+                what = "a sample ID" if reason == NO_SAMPLE else "an analyte"
+                sentence = f"expected {what}, got an empty cell in {shown(text)}. The row belongs to no result. "
                 header = self.values.header_of("analyte") if reason == NO_ANALYTE else self.values.label_header()
                 self.problems.append(Problem(line, header, f"{sentence}Complete the export."))
         self.keep &= ~rows

@@ -91,15 +91,15 @@ class Assessment:
             if path not in wanted:
                 path.unlink(missing_ok=True)
 
-    def evaluate(self, export: ExportRow, *, final: bool) -> Assessed:
+    def evaluate(self, export: ExportRow, *, at_once: bool) -> Assessed:
         """Evaluate an export and record what became of it.
 
         Parameters
         ----------
         export
             A pending one.
-        final
-            Nothing more is waited for: neither for its last line nor before mails about incomplete samples.
+        at_once
+            Mails about incomplete samples do not wait for what may still come.
 
         Raises
         ------
@@ -110,13 +110,13 @@ class Assessment:
         if not copy.is_file():
             return self._refuse(export, f"its copy {copy} is missing. Put it back, or export it again changed")
         try:
-            reply = self._ask(self._request(export, copy, final=final))
+            reply = self._ask(self._request(export, copy))
         except (WorkerFailed, ReplyBroken) as error:
             return self._attempt_failed(export, str(error))
         if reply.fate == "bug":
             self._troubles.defect(reply.error or "unnamed", reply.traceback or "")
-            return self._finish(export, _refused(f"defect of the program: {reply.error}"), at_once=final)
-        return self._finish(export, reply, at_once=final)
+            return self._finish(export, _refused(f"defect of the program: {reply.error}"), at_once=at_once)
+        return self._finish(export, reply, at_once=at_once)
 
     def _ask(self, request: dict[str, Any]) -> Reply:
         reply = read_reply(self._worker.ask(request), self._staging)
@@ -124,7 +124,8 @@ class Assessment:
             raise ReplyBroken("fate", "another one, since nothing more is waited for", "waiting")
         return reply
 
-    def _request(self, export: ExportRow, copy: Path, *, final: bool) -> dict[str, Any]:
+    def _request(self, export: ExportRow, copy: Path) -> dict[str, Any]:
+        # an export whose last line does not come is evaluated once it has not changed for long enough
         complete = self._clock.now() - moment(export.accepted_at) >= self._complete_after
         return {
             "do": "evaluate",
@@ -137,7 +138,7 @@ class Assessment:
             "settings_number": self._adopted.number,
             "settings_sha256": self._adopted.sha256,
             "staging": str(self._staging),
-            "final": final or complete,
+            "final": complete,
             "alerted": sorted(self._ledger.alerted_keys(export.name)),
         }
 

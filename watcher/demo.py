@@ -16,7 +16,6 @@ import subprocess
 import sys
 import time
 from importlib import resources
-from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from aiosmtpd.controller import Controller
@@ -29,6 +28,7 @@ from watcher.terminal import console, heading, lines, short, table, word
 if TYPE_CHECKING:
     from collections.abc import Callable, Iterator
     from email.message import EmailMessage
+    from pathlib import Path
 
     from aiosmtpd.smtp import SMTP, Envelope, Session
     from rich.console import Console

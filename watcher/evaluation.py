@@ -74,8 +74,8 @@ class Unclaimed(Exception):
 class Unfinished(Exception):
     """The line that ends the export is not there yet."""
 
-    def __init__(self, layout: str) -> None:
-        super().__init__(layout)
+    def __init__(self, layout: Layout) -> None:
+        super().__init__(layout.layout)
         self.layout = layout
 
 
@@ -115,11 +115,14 @@ def evaluate_job(settings: Settings, job: Job, *, final: bool) -> Evaluated:
     layout, method = choose_layout(settings, job)
     finished = is_finished(layout, job.data)
     if not final and not finished:
-        raise Unfinished(layout.layout)
+        raise Unfinished(layout)
     readings = read(job.data, layout, job.name)
     problems = [str(problem) for problem in readings.problems]
     if not finished:
-        problems.append(_no_end(layout))
+        problems.append(
+            f"{_no_end(layout)} What is there was evaluated all the same. Look whether the run was cut short, and "
+            f"export it whole."
+        )
     outcomes = evaluate(readings, method, _local_seconds(job.accepted_at))
     export = Export(
         name=job.name,
@@ -135,11 +138,10 @@ def evaluate_job(settings: Settings, job: Job, *, final: bool) -> Evaluated:
 
 
 def _no_end(layout: Layout) -> str:
-    """Say that an export was evaluated although its last line never came."""
+    """Say which line is missing."""
     pattern = layout.finished.pattern if layout.finished else ""
     return (
-        f"expected a line that matches '{pattern}' (finished), which says that the export is complete, and none came. "
-        f"What is there was evaluated all the same. Look whether the run was cut short, and export it whole."
+        f"expected a line that matches '{pattern}' (finished), which says that the export is complete, and none came."
     )
 
 
@@ -207,7 +209,9 @@ class Worker:
         except Unclaimed:
             return answer("unclaimed", problem=unclaimed_sentence(self._settings))
         except Unfinished as unfinished:
-            return answer("waiting", layout=unfinished.layout)
+            hours = f"{self._settings.file.complete_after / 3600:g} h"
+            wait = f"It is evaluated when that line is there, or when nothing changes for {hours} (complete_after)."
+            return answer("waiting", layout=unfinished.layout.layout, problem=f"{_no_end(unfinished.layout)} {wait}")
         except ExportRefused as refused:
             letter = mail.refusal(job.name, str(refused), job.sha256)
             return answer("refused", problem=str(refused), mails=[letter.plain()])

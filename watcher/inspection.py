@@ -4,7 +4,6 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 from datetime import UTC, datetime
-from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from parsers.errors import ExportRefused
@@ -21,6 +20,7 @@ from watcher.terminal import console, heading, lines, table
 
 if TYPE_CHECKING:
     from collections.abc import Iterator
+    from pathlib import Path
 
     from rules.outcomes import Outcomes
 

@@ -6,6 +6,7 @@ The same for `watch` and `once`. Stays light: what reads YAML and numbers lives 
 from __future__ import annotations
 
 import getpass
+import logging
 from contextlib import contextmanager
 from dataclasses import dataclass
 from importlib import metadata
@@ -65,6 +66,7 @@ def open_laboratory(config: Path, reason: str) -> Iterator[Laboratory]:
                 ledger.adopt_settings(answer["body"], account(), reason)
                 yield Laboratory(settings, ledger, Service(settings, ledger, worker, version=version()))
             finally:
+                logging.getLogger().removeHandler(handler)
                 handler.close()
     finally:
         worker.close()

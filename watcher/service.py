@@ -212,35 +212,34 @@ class Service:
         """Evaluate pending exports until the next look is due; returns whether some are left."""
         until = self._clock.monotonic() + self._settings.scan_seconds
         for export in self._pending():
-            if self._stopping or not self._evaluate(export, final=False):
+            if self._stopping or not self._evaluate(export, at_once=False):
                 return False
             if self._clock.monotonic() >= until:
                 return True
         return bool(self._pending()) and not self._stopping
 
     def _evaluate_everything(self) -> dict[int, Assessed]:
-        """Evaluate until nothing is pending; for `once`, where nothing more is waited for."""
+        """Evaluate until nothing is pending; for `once`, after which nobody waits for what a sample still lacks."""
         assessed: dict[int, Assessed] = {}
-        while exports := self._pending(complete_after_seconds=0.0):
+        while exports := self._pending():
             for export in exports:
-                if self._stopping or not (found := self._evaluate(export, final=True)):
+                if self._stopping or not (found := self._evaluate(export, at_once=True)):
                     return assessed
                 assessed[export.id] = found
         return assessed
 
-    def _pending(self, complete_after_seconds: float | None = None) -> list[ExportRow]:
-        if complete_after_seconds is None:
-            complete_after_seconds = self._settings.complete_after_seconds
+    def _pending(self) -> list[ExportRow]:
+        complete_after_seconds = self._settings.complete_after_seconds
         exports = self._ledger.pending(self._adopted.number, complete_after_seconds=complete_after_seconds)
         # The one that the last run did not survive comes last, so that it cannot keep the others waiting.
         return sorted(exports, key=lambda each: each.id == self._cut_short.export_id)
 
-    def _evaluate(self, export: ExportRow, *, final: bool) -> Assessed | None:
+    def _evaluate(self, export: ExportRow, *, at_once: bool) -> Assessed | None:
         """Evaluate one export; None where the worker cannot work now, and nothing was recorded."""
         self._cut_short.begins(export.id)
         self._pulse.evaluates(export.name)
         try:
-            assessed = self._assessment.evaluate(export, final=final)
+            assessed = self._assessment.evaluate(export, at_once=at_once)
         except WorkerStopped:
             return None
         except WorkerUnfit as error:

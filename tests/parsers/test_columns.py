@@ -81,7 +81,8 @@ def test_names_are_compared_with_folded_blanks(read_text: Callable[..., Readings
 
 def test_every_column_says_what_became_of_it(read_text: Callable[..., Readings]) -> None:
     """Columns that feed fields name them; the others feed none."""
-    readings = read_text(f"Label;Element;R1;R2;Note\n{ROW};x\n", columns="{label: Label, sample: Label, analyte: Element, signal: R1}",
+    columns = "{label: Label, sample: Label, analyte: Element, signal: R1}"
+    readings = read_text(f"Label;Element;R1;R2;Note\n{ROW};x\n", columns=columns,
                          labels="[{like: '*', role: unspiked}]")  # fmt: skip
 
     assert [(use.header, use.fields) for use in readings.columns] == [
@@ -103,7 +104,7 @@ def test_optional_columns_may_be_absent(read_text: Callable[..., Readings]) -> N
 
 def test_a_wide_table_becomes_rows(read_text: Callable[..., Readings]) -> None:
     """Headers that match become analyte, channel and field; each row gives one reading for each of them."""
-    text = "Label;Zn 213.8 Mean;Zn 213.8 SD;Cu 324.7 Mean;In 451.9 Mean;x\nSED-12;1;0.1;2;9;x\nSED-12 +A1;3;0.3;4;9;x\n"
+    text = "Label;Zn 213.8 Mean;Zn 213.8 SD;Cu 324.7 Mean;In 451.9 Mean\nSED-12;1;0.1;2;9\nSED-12 +A1;3;0.3;4;9\n"
 
     readings = read_text(text, columns="{label: Label}", unfold=WIDE)
 
@@ -169,7 +170,7 @@ def test_analyte_of_a_wide_table_may_come_from_elsewhere(read_text: Callable[...
 
 
 def test_headings_feed_fields_or_are_kept(read_text: Callable[..., Readings]) -> None:
-    """A value above the table is carried to every row; one that is no field is kept by its name; quantities are read."""
+    """A value above the table is carried to every row; one that is no field is kept by its name."""
     above = "Batch:  B-7 \nTray: 4\nDilution: 1+9\nAliquot: 10 mL\nBatch: B-8\n"
     text = f"{above}Label;Element;R1;R2\nSED-12;Zn;1;2\nSED-13;Zn;1;2\n"
     heading = (

@@ -88,7 +88,7 @@ def test_variable_volume_is_weighted_by_dilution(outcomes, make_additions, refer
 
 
 def test_lead_by_single_addition_into_one_volume(outcomes, make_additions):
-    """1.00 mL and 1.00 µL of 1560 µg/L, both made up to 5.00 mL: 1.33 µg/L (Harvey, Analytical Chemistry 2.0, read)."""
+    """1.00 mL and 1.00 µL of 1560 µg/L, made up to 5.00 mL: 1.33 µg/L (Harvey, Analytical Chemistry 2.0, read)."""
     rows = make_additions([0.193, 0.419], [0, 1e-3], key="spike_volume", analyte="Pb")
 
     out = outcomes(

@@ -51,20 +51,21 @@ def test_six_standards_read_back_is_the_published_one(outcomes, make_standards, 
 
 
 @pytest.mark.parametrize(
-    ("signal", "count", "x", "s", "half"),
+    ("signal", "count", "expected"),
     # Miller & Miller, ch. 5, fluorescein (input read, answers recalled)
     [
-        (2.9, 1, 0.72, 0.26, 0.68),
-        (13.5, 1, 6.21, 0.24, 0.62),
-        (23.0, 1, 11.13, 0.26, 0.68),
-        (2.9, 4, 0.72, 0.18, 0.46),
-        (13.5, 4, 6.21, 0.14, 0.36),
-        (23.0, 4, 11.13, 0.18, 0.46),
+        (2.9, 1, (0.72, 0.26, 0.68)),
+        (13.5, 1, (6.21, 0.24, 0.62)),
+        (23.0, 1, (11.13, 0.26, 0.68)),
+        (2.9, 4, (0.72, 0.18, 0.46)),
+        (13.5, 4, (6.21, 0.14, 0.36)),
+        (23.0, 4, (11.13, 0.18, 0.46)),
     ],
 )
-def test_fluorescein_read_backs_are_the_published_ones(outcomes, make_standards, reference, signal, count, x, s, half):
+def test_fluorescein_read_backs_are_the_published_ones(outcomes, make_standards, reference, signal, count, expected):
     """One or four solutions read back with the printed concentration, s and half-width."""
     data = reference("fluorescein_calibration")
+    x, s, half = expected
 
     results = read_back(outcomes, make_standards, (data["pg_per_mL"], data["signal"]), [signal] * count)
 
@@ -74,7 +75,7 @@ def test_fluorescein_read_backs_are_the_published_ones(outcomes, make_standards,
 
 
 def test_inverse_prediction_of_wing_lengths_has_fiellers_limits(outcomes, make_standards, reference):
-    """Zar, Biostatistical Analysis: 4.5 cm read back gives 12.157 to 15.981 days (recalled; in full 12.1526, 15.9730)."""
+    """Zar, Biostatistical Analysis: 4.5 cm read back gives 12.157 to 15.981 d (recalled; in full 12.1526, 15.9730)."""
     data = reference("wing_length")
 
     results = read_back(outcomes, make_standards, (data["age_d"], data["wing_cm"]), [4.5])
@@ -224,7 +225,7 @@ def test_calibration_with_too_uncertain_a_slope_gives_no_number(outcomes, make_s
 
 
 def test_preparation_blank_of_a_read_back_by_hand(outcomes, make_standards, make_blanks):
-    """x = (y - f y_P - a)/b, u_blank = f u(y_P)/b, and the interval holds both."""
+    """X = (y - f y_P - a)/b, u_blank = f u(y_P)/b, and the interval holds both."""
     blanks, f = [0.04, 0.05, 0.06], 0.2
     rows = make_standards(*STANDARDS) + unspiked([0.5]) + make_blanks(blanks)
     bench = Bench(aliquot=Measure(10, "mL"), made_up_to=Measure(50, "mL"))

@@ -54,8 +54,11 @@ CASES = [
         "inputs",
         {"blanks": [0.01]},
         FAIL,
-        "blanks were measured and the settings do not say what to do with them: state blank: subtract, preparation or "
-        "none",
+        (
+            "blanks were measured and the settings do not say what to do with them: state blank: subtract, "
+            "preparation or "
+            "none"
+        ),
     ),
     (
         "inputs",
@@ -574,7 +577,7 @@ def test_repeatability_of_standards_counts_for_what_is_read_from_them(outcomes, 
 
 
 def test_residual_of_a_native_near_zero_is_taken_of_a_tenth_of_the_top(of_one):
-    """A native of almost no signal has no percentage worth the name, so its residual is compared with a tenth of the top."""
+    """A native of almost no signal has its residual compared with a tenth of the top signal."""
     _, check = of_one("residual", ([0.0, 0.101, 0.199, 0.3], [0, 1, 2, 3.0]))
 
     fitted = np.polyval(np.polyfit([0, 1, 2, 3], [0.0, 0.101, 0.199, 0.3], 1), [0, 1, 2, 3])

@@ -144,7 +144,7 @@ def test_without_covariance_there_are_no_bounds():
 
 
 def test_g_of_an_almost_exact_line_is_never_negative():
-    """g keeps its digits far below the rounding of 1."""
+    """G keeps its digits far below the rounding of 1."""
     interval = extrapolation(
         np.array([1.0]),
         np.array([3.0]),

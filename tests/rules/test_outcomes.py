@@ -8,7 +8,8 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from rules.checks import Outcome
-from rules.method import Bench, Measure, Stock
+from rules.limits import parse_check_limits
+from rules.method import AnalyteRules, Bench, Measure, Stock
 from rules.outcomes import _URGENCY, Verdict
 from rules.plan import _STEPS, next_step
 
@@ -146,14 +147,20 @@ def test_a_single_addition_warns_and_carries_its_value(outcomes, make_additions)
         (
             {"signals": [0.22, 0.341, 0.459, 0.58]},
             "recovery",
-            "Keep the vials: check the spike volume, the stock and losses in preparation; then prepare SED-12 again with "
-            "three additions and report the additions' result.",
+            (
+                "Keep the vials: check the spike volume, the stock and losses in preparation; then prepare SED-12 "
+                "again with "
+                "three additions and report the additions' result."
+            ),
         ),
         (
             {"signals": [0.22, 0.521, 0.819, 1.12]},
             "recovery",
-            "Keep the vials: check the spike volume, the stock and contamination; then prepare SED-12 again with three "
-            "additions and report the additions' result.",
+            (
+                "Keep the vials: check the spike volume, the stock and contamination; then prepare SED-12 again with "
+                "three "
+                "additions and report the additions' result."
+            ),
         ),
         (
             {"signals": [1.22, 1.421, 1.619, 1.82]},
@@ -195,8 +202,11 @@ def test_next_step_follows_from_the_most_telling_failure(outcomes, batch, change
         (
             [1.0, 1.101, 1.199, 1.3],
             [0, 1, 2, 3.0],
-            "Repeat the additions of RIV-17 with a top addition near 30 mg/L in the aliquot (it was 3.0), inside the "
-            "linear range.",
+            (
+                "Repeat the additions of RIV-17 with a top addition near 30 mg/L in the aliquot (it was 3.0), inside "
+                "the "
+                "linear range."
+            ),
         ),
         (
             [0.020, 0.121, 0.219, 0.32],
@@ -211,8 +221,11 @@ def test_next_step_follows_from_the_most_telling_failure(outcomes, batch, change
         (
             [0.5, 0.4, 0.3],
             [0, 1, 2.0],
-            "Repeat the additions of RIV-17 with a top addition near 4.0 mg/L in the aliquot (it was 2.0), inside the "
-            "linear range.",
+            (
+                "Repeat the additions of RIV-17 with a top addition near 4.0 mg/L in the aliquot (it was 2.0), "
+                "inside the "
+                "linear range."
+            ),
         ),
     ],
     ids=["too small", "too large", "bent", "falling"],
@@ -374,3 +387,108 @@ def test_random_exports_are_judged_whole(outcomes, rows, report, blank, refers):
         for name in ("low", "high", "expanded_uncertainty", "standard_uncertainty"):
             column = getattr(out.reported(i), name)[i]
             assert not np.isinf(column), name
+
+
+STATED = {
+    name: parse_check_limits(text) for name, text in (("matrix_effect", "-20 to 20 %"), ("recovery", "75 to 125 %"))
+}
+
+
+@pytest.fixture(scope="session")
+def export(make_additions, make_standards, make_blanks):
+    """Signals of one sample, of standards and of blanks to rows."""
+
+    def made(given):
+        rows = make_additions(*given["signals"]) + make_blanks(given.get("blanks", []))
+        return rows + (make_standards(NOMINAL, given["standards"]) if "standards" in given else [])
+
+    return made
+
+
+@pytest.mark.parametrize(
+    ("rows", "method", "check", "step"),
+    [
+        (
+            {"signals": ([0.2, 0.4, 0.42, 0.8], [0, 1, 2, 3.0])},
+            {"limits": {"slope_certainty": parse_check_limits("off"), "correlation": parse_check_limits("off")}},
+            "residual",
+            "Measure the solutions of RIV-17 again; if they still lie off the line, prepare them again.",
+        ),
+        (
+            {"signals": ([[0.2, 0.2, 0.2], [0.4, 0.5, 0.6], [0.8, 0.8, 0.8]], [0, 3.0, 6.0])},
+            {"limits": {"slope_certainty": parse_check_limits("off"), "correlation": parse_check_limits("off")}},
+            "repeatability",
+            "Check sample introduction and rinse, then measure the named solution and RIV-17 again.",
+        ),
+        (
+            {"signals": ([-0.50, -0.401, -0.299, -0.2], [0, 1, 2, 3.0])},
+            {},
+            "detection",
+            "Check blank and baseline; measure RIV-17 with more replicates or a larger aliquot.",
+        ),
+        (
+            {"signals": ([0.22, 0.40, 0.58, 0.759], [0, 2, 4, 6.0]), "standards": READ, "blanks": [0.06]},
+            {"blank": "none", "analytes": {"Zn": AnalyteRules(loq=Measure(0.2, "mg/L"))}},
+            "blank",
+            "Find the contamination or carry-over, measure a clean blank, then RIV-17 again.",
+        ),
+        (
+            {"signals": ([0.22, 0.361, 0.499, 0.64], [0, 2, 4, 6.0]), "standards": READ},
+            {"limits": STATED},
+            "recovery",
+            (
+                "Keep the vials: check the spike volume, the stock and losses in preparation; then prepare RIV-17 again, "
+                "unspiked and with its additions."
+            ),
+        ),
+        (
+            {"signals": ([0.22, 0.361, 0.499, 0.64], [0, 2, 4, 6.0]), "standards": READ},
+            {"limits": {"matrix_effect": STATED["matrix_effect"]}},
+            "matrix_effect",
+            "Report the additions' result of RIV-17; the calibration does not hold in this matrix.",
+        ),
+        (
+            {"signals": ([0.22, 0.361, 0.499, 0.64], [0, 2, 4, 6.0]), "standards": READ},
+            {"report": "calibration", "limits": {"recovery": parse_check_limits("50 to 150 %")}},
+            "matrix_effect",
+            "Report RIV-17 by standard additions, or dilute it until the matrix no longer matters.",
+        ),
+        (
+            {"signals": ([0.82, 0.90], [0, 0.8]), "standards": [0.02, 0.52, 1.02]},
+            {"report": "calibration"},
+            "spike_size",
+            "Spike RIV-17 with at least 2.0 mg/L in the aliquot to judge its recovery.",
+        ),
+        (
+            {"signals": ([-0.1, 0.2], [0, 3.0])},
+            {},
+            "levels",
+            "Next time make three additions to RIV-17, evenly spaced.",
+        ),
+        (
+            {"signals": ([0.2, np.nan, 0.4], [0, 1, 2.0])},
+            {},
+            "inputs",
+            "Correct the cells or volumes that are named and export again; if a reading is lost, measure RIV-17 again.",
+        ),
+    ],
+    ids=[
+        "residual",
+        "readings",
+        "detection",
+        "blank",
+        "recovery",
+        "matrix",
+        "matrix read back",
+        "spike",
+        "levels",
+        "cells",
+    ],
+)
+def test_each_check_leads_to_its_own_advice(outcomes, export, rows, method, check, step):
+    """The advice is that of the check that keeps the series from passing, and fits the result that is reported."""
+    out = outcomes(export(rows), **method)
+
+    decisive = out.deciding(0, Outcome.FAIL) or out.deciding(0, Outcome.WARN)
+    assert check in [one.name for one in decisive]
+    assert next_step(out, 0) == step

@@ -14,7 +14,7 @@ STANDARDS = ([0, 5, 10], [0.02, 0.52, 1.02])
 
 
 def test_recovery_of_one_addition_by_hand(outcomes, make_standards, make_additions):
-    """y from 0.22 to 0.57 with 5 mg/L added and b = 0.1: 100 · 0.35 / 0.5 = 70 %."""
+    """Y from 0.22 to 0.57 with 5 mg/L added and b = 0.1: 100 · 0.35 / 0.5 = 70 %."""
     out = outcomes(make_standards(*STANDARDS) + make_additions([0.22, 0.57], [0, 5.0]), report="calibration")
 
     recoveries = out.case.recoveries

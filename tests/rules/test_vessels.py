@@ -95,8 +95,11 @@ def test_undeclared_reference_is_refused(vessels):
 
     assert np.isnan(filled.addition[0])
     assert sentences(filled) == [
-        "line 2: aliquot and vessel differ in volume, and nothing says what the added concentration refers to: state "
-        "added_refers_to: vessel, aliquot or nominal"
+        (
+            "line 2: aliquot and vessel differ in volume, and nothing says what the added concentration refers "
+            "to: state "
+            "added_refers_to: vessel, aliquot or nominal"
+        )
     ]
 
 
@@ -154,8 +157,11 @@ def test_levels_stand_for_volumes_or_concentrations(vessels):
         (
             {"added": 2.0, "spike_volume": 5.0},
             {"bench": FLASKS, "added_refers_to": "aliquot"},
-            "the volumes give an addition of 2.5 mg/L and the stated concentration gives 2 mg/L: they must agree within "
-            "1 %; correct the one that is wrong",
+            (
+                "the volumes give an addition of 2.5 mg/L and the stated concentration gives 2 mg/L: they must agree "
+                "within "
+                "1 %; correct the one that is wrong"
+            ),
         ),
         (
             {"spike_volume": 5.0, "stock": "ZN-7"},

@@ -282,7 +282,10 @@ def test_a_layout_decides_again_for_its_exports() -> None:
         (
             "contains: {Zn: 5 mg/L}",
             "contains: {Zn: 5 mg/L}\n    from: 2026-03-02\n    until: 2026-03-01",
-            "stocks[1]: stock 'ZN-5' ends before it begins. Nothing is evaluated with these settings. Correct from or until.",
+            (
+                "stocks[1]: stock 'ZN-5' ends before it begins. Nothing is evaluated with these settings. "
+                "Correct from or until."
+            ),
         ),
         (
             "contains: {Zn: 5 mg/L}",

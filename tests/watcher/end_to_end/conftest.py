@@ -138,7 +138,7 @@ class Laboratory:
         process = subprocess.Popen(
             [sys.executable, "-m", "watcher", command, *arguments, "--config", str(self.folder / "config.yaml")],
             cwd=ROOT,
-            env=os.environ | {"COLUMNS": "80"},
+            env=os.environ | {"COLUMNS": "80", "PYTHONWARNINGS": "error"},
             stdout=subprocess.PIPE,
             stderr=subprocess.PIPE,
             text=True,

@@ -59,7 +59,10 @@ BROKEN: dict[str, tuple[Callable[[Any], bytes], list[str]]] = {
         ["FL-0604.csv, line 1", "expected the columns 'R2' (for signal)", "'R 2'", "Correct the names"],
     ),
     "FL-0605.csv": (lambda _: b"", ["FL-0605.csv", "expected", "got"]),
-    "FL-0606.csv": (lambda lab: lab.text().encode(), ["FL-0606.csv, line 1", "expected rows under the header, got none"]),
+    "FL-0606.csv": (
+        lambda lab: lab.text().encode(),
+        ["FL-0606.csv, line 1", "expected rows under the header, got none"],
+    ),
     "FL-0607.csv": (
         lambda lab: lab.text(*lab.additions("RIV-16")).encode("utf-16-le"),
         ["FL-0607.csv, line 1: expected text, got a NUL character", "declare utf-16-le"],
@@ -70,14 +73,22 @@ BROKEN: dict[str, tuple[Callable[[Any], bytes], list[str]]] = {
     ),
     "VB-0609.csv": (
         lambda _: "\n".join([VOLUMES_HEADER, *volumes("RIV-16"), "RIV 17;0.1;10;0;50"]).encode(),
-        ["VB-0609.csv, line 6, column 'Vial'", "expected every label to match a rule, got 'RIV 17' (line 6)", "add rules"],
+        [
+            "VB-0609.csv, line 6, column 'Vial'",
+            "expected every label to match a rule, got 'RIV 17' (line 6)",
+            "add rules",
+        ],
     ),
     "FL-0610.txt": (lambda lab: lab.text().encode(), ["FL-0610.txt", "no layout claims it", "'flame bench'"]),
     "VB-0611-twice.csv": (
         lambda _: "\n".join([VOLUMES_HEADER, *volumes("RIV-16")]).encode(),
-        ["VB-0611-twice.csv", "expected one layout to claim it, got 'volumes bench' (volumes.yaml) and 'second'", "Narrow"],
+        [
+            "VB-0611-twice.csv",
+            "expected one layout to claim it, got 'volumes bench' (volumes.yaml) and 'second'",
+            "Narrow",
+        ],
     ),
-}  # fmt: skip
+}
 
 #: A cell that must fail its own series: what stands in it, where, and what the sentence says of it.
 READINGS = {
@@ -219,7 +230,7 @@ def test_check_names_an_export_that_two_layouts_claim(laboratory: Any, run_here:
 
 
 def test_all_faults_of_all_files_are_named_at_once(laboratory: Any, run_here: Any, squeezed: Any) -> None:
-    """Unknown keys, repeated keys and wrong types, in configuration and layout, are named in one go with file and line."""
+    """Unknown keys and wrong types, in configuration and layout, are named in one go with file and line."""
     laboratory.change("config.yaml", "blank: none", "blank: nothing\nblnk: none")
     laboratory.change("config.yaml", "mail: none", "mail: [none]")
     laboratory.change("config.yaml", "folders: {exports: ./exports, results: ./results}", "folders: ./exports")
@@ -230,11 +241,17 @@ def test_all_faults_of_all_files_are_named_at_once(laboratory: Any, run_here: An
         "config.yaml, line 2, folders: expected keys and values, got './exports'.",
         "config.yaml, line 7, bench.aliquot: ",
         "config.yaml, line 11, blank: expected one of 'subtract', 'preparation', 'none', got 'nothing'.",
-        "config.yaml, line 12, blnk: unknown key 'blnk'. Nothing is evaluated with these settings. Did you mean 'blank'?",
+        (
+            "config.yaml, line 12, blnk: unknown key 'blnk'. Nothing is evaluated with these settings. "
+            "Did you mean 'blank'?"
+        ),
         "config.yaml, line 15, mail: ",
-        "flame.yaml, line 3, separatr: unknown key 'separatr'. No export can be read with this layout. Did you mean 'separator'?",
+        (
+            "flame.yaml, line 3, separatr: unknown key 'separatr'. No export can be read with this layout. "
+            "Did you mean 'separator'?"
+        ),
         "flame.yaml, line 7, columns.signal: ",
-    ]  # fmt: skip
+    ]
 
     done = run_here("check", None, laboratory)
 

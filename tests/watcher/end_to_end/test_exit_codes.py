@@ -67,16 +67,18 @@ def test_once_judges_only_what_it_took_in(laboratory: Any) -> None:
     assert second.stdout == "Nothing new.\n"
 
 
-def test_an_export_without_its_last_line_is_not_done(laboratory: Any) -> None:
-    """Where a layout says how an export ends, one that does not end so gives 2 and says which line is wanted."""
+def test_an_export_without_its_last_line_is_not_done(laboratory: Any, squeezed: Any) -> None:
+    """Where a layout says how an export ends, one that does not end so waits, and gives 2 with the reason."""
     laboratory.change("flame.yaml", "columns:", "finished: '^End of log'\nuntil: '^End of log'\ncolumns:")
     put(laboratory, "pass")
 
     done = laboratory.run("once")
 
     assert done.returncode == 2
-    assert "^End of log" in done.stderr
-    assert "FL-0501.csv" in done.stderr
+    told = squeezed(done.stderr)
+    assert "waiting: FL-0501.csv: expected a line that matches '^End of log' (finished)" in told
+    assert "It is evaluated when that line is there" in told
+    assert laboratory.records() == {}
 
 
 def test_an_undelivered_mail_is_not_done(laboratory: Any, squeezed: Any, unused_port: int) -> None:
@@ -101,8 +103,8 @@ def test_bad_settings_are_not_done(laboratory: Any, squeezed: Any, command: str)
 
     assert done.returncode == 2
     assert (
-        "config.yaml, line 10, report: expected one of 'additions', 'calibration', got 'additons'. Nothing is evaluated "
-        "with these settings. Did you mean 'additions'?" in squeezed(done.stderr)
+        "config.yaml, line 10, report: expected one of 'additions', 'calibration', got 'additons'. Nothing is "
+        "evaluated with these settings. Did you mean 'additions'?" in squeezed(done.stderr)
     )
     assert not (laboratory.folder / "records").exists()
 
