@@ -1,8 +1,8 @@
 """A backlog of 500 exports through the real service, a process of its own, with a mail server in this one.
 
-One export in ten has a failing sample. Exports a second against the fsynced writes that they cost alone, measured before and
-after, since beside them they would disturb what is measured; the last
-hundred against the first hundred, in time and in memory. Times are those that the ledger recorded.
+One export in ten has a failing sample. Exports a second against the fsynced writes that they cost alone, measured
+before and after, since beside them they would disturb what is measured; the last hundred against the first hundred, in
+time and in memory. Times are those that the ledger recorded.
 """
 
 from __future__ import annotations

@@ -13,6 +13,7 @@ from scipy.optimize import brentq
 from scipy.stats import t as student
 
 from rules.method import Bench, Measure, Preparation, Stock
+from rules.result import Results
 
 
 def ml(value):
@@ -143,7 +144,7 @@ def test_manganese_follows_from_its_published_line(outcomes, make_additions, ref
 
 
 def test_ascorbic_acid_in_place_is_the_published_one(outcomes, make_additions, reference):
-    """Into one vessel of 50 mL, 279 mM: 2.89 with s near 0.098 (Harris, ch. 5, recalled; printed with equal weights)."""
+    """Into one vessel of 50 mL, 279 mM: 2.89 with s near 0.098 (Harris, ch. 5, recalled; printed unweighted)."""
     data = reference("ascorbic_acid_in_place")
     rows = make_additions(list(data["I"]), list(data["V_s_mL"]), key="spike_volume")
 
@@ -484,6 +485,15 @@ def test_more_confidence_widens_the_interval(outcomes, make_additions):
     for narrow, wide in pairwise(results):
         assert wide.low[0] < narrow.low[0] < narrow.value[0] < narrow.high[0] < wide.high[0]
         assert wide.value[0] == narrow.value[0]
+
+
+@pytest.mark.parametrize(("high", "symmetric"), [(3.30, True), (3.33, True), (3.34, False), (np.nan, False)])
+def test_halves_may_differ_by_a_quarter(high, symmetric):
+    """Around 2 from 1 on: halves of 1.00 and 1.33 still allow ±, 1.00 and 1.34 do not, a missing end never does."""
+    one = np.ones(1)
+    results = Results(2 * one, one, high * one, one, one, one, one, one.astype(bool))
+
+    assert results.symmetric(0) is symmetric
 
 
 def test_lopsided_interval_is_shown_instead_of_plus_minus(outcomes, make_additions):

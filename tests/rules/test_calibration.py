@@ -48,6 +48,8 @@ def test_six_standards_read_back_is_the_published_one(outcomes, make_standards, 
     assert results.standard_uncertainty[0] == pytest.approx(0.0023635881120727714, rel=1e-8)
     assert results.expanded_uncertainty[0] == pytest.approx(0.007, abs=5e-4)
     assert results.expanded_uncertainty[0] == pytest.approx(0.00656237264446814, rel=1e-8)
+    # g is 5e-4 here, so the interval is as wide as ± U to that part
+    assert results.high[0] - results.low[0] == pytest.approx(2 * results.expanded_uncertainty[0], rel=1e-3)
 
 
 @pytest.mark.parametrize(

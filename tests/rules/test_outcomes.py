@@ -437,8 +437,8 @@ def export(make_additions, make_standards, make_blanks):
             {"limits": STATED},
             "recovery",
             (
-                "Keep the vials: check the spike volume, the stock and losses in preparation; then prepare RIV-17 again, "
-                "unspiked and with its additions."
+                "Keep the vials: check the spike volume, the stock and losses in preparation; then prepare RIV-17 "
+                "again, unspiked and with its additions."
             ),
         ),
         (
