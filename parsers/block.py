@@ -49,7 +49,8 @@ def read_block(frame: Frame, layout: Layout, plan: Plan, fewest_rows: int = FEWE
         return None
     try:
         fates = Fates.of(frame, layout)
-        cells = Spans.of(fates, layout.separator, len(frame.headers))
+        quoted = frame.lines.text.find('"', frame.offset, fates.end) >= 0
+        cells = None if quoted else Spans.of(fates, layout.separator, len(frame.headers))
         if cells is None:
             return None
         block = BlockTable(frame.headers, fates.line_numbers(), fates.set_aside(), cells)
@@ -145,7 +146,6 @@ class BlockTable:
             "quoting": csv.QUOTE_NONE,
             "on_bad_lines": "error",
             "skip_blank_lines": False,
-            "lineterminator": "\n",
         }
         frame: pd.DataFrame = pd.read_csv(BytesIO(self.cells.data), sep=separator, decimal=decimal, **options)
         return frame
@@ -161,6 +161,8 @@ class BlockTable:
         if written:
             doubtful |= np.isin(values, written)
         rows = np.flatnonzero(doubtful)
+        if not len(rows):
+            return Numbers(values, {})  # the places of cells are looked for only where they are needed
         known: dict[str, Cell] = {}
         odd: dict[int, Cell] = {}
         for row, text in zip(rows.tolist(), self.cells.texts(column, rows), strict=True):

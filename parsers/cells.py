@@ -92,8 +92,8 @@ class Grammar:
         A pattern searched in the cell, or words that fill it.
     flags
         A pattern whose matches are taken out before the number is read.
-    number
-        The form of a number, made of the marks.
+    number, plain
+        The form of a number, made of the marks; and the usual one, in which nothing is left to explain.
     """
 
     decimal: str = "."
@@ -103,13 +103,16 @@ class Grammar:
     above: PatternOrWords = ()
     flags: re.Pattern[str] | None = None
     number: re.Pattern[str] = field(init=False)
+    plain: re.Pattern[str] = field(init=False)
 
     def __post_init__(self) -> None:
-        """Make the form of a number."""
+        """Make the forms of a number."""
         mark, thousands = re.escape(self.decimal), re.escape(self.thousands)
         whole = rf"(?:[0-9]{{1,3}}(?:{thousands}[0-9]{{3}})+|[0-9]+)" if thousands else "[0-9]+"
         form = rf"[+\-−]?(?:{whole}(?:{mark}[0-9]*)?|{mark}[0-9]+)(?:[eEdD][+\-−]?[0-9]+)?"
         object.__setattr__(self, "number", re.compile(form))
+        usual = rf"[+-]?(?:[0-9]+(?:{mark}[0-9]*)?|{mark}[0-9]+)(?:[eE][+-]?[0-9]+)?"
+        object.__setattr__(self, "plain", re.compile(usual))
 
     @classmethod
     def of(
@@ -152,7 +155,22 @@ class Grammar:
 
     def column(self, texts: Texts) -> Numbers:
         """Understand a column, each distinct text once."""
-        return converted(texts, self.cell)
+        return converted(texts, self.cell, self._usual())
+
+    def _usual(self) -> Callable[[str], float | None] | None:
+        """Return a quick way to the number of a cell that needs no explanation; it returns None for any other cell."""
+        if self.flags is not None or not isinstance(self.below, tuple) or not isinstance(self.above, tuple):
+            return None  # a pattern may explain any cell
+        words = {*self.missing, *self.below, *self.above}
+        usual, mark = self.plain.fullmatch, self.decimal
+
+        def number(text: str) -> float | None:
+            if text in words or usual(text) is None:
+                return None
+            value = float(text if mark == "." else text.replace(mark, "."))
+            return value if math.isfinite(value) else None
+
+        return number
 
     def quantity(self, text: str) -> tuple[float, str] | None:
         """Return number and glued unit of a text such as ``2.5 mg/L``; None where it does not begin with a number.
@@ -214,15 +232,34 @@ class Grammar:
         return name, "Correct the export, or explain such cells in the layout: cells.missing or cells.flags"
 
 
-def converted(texts: Texts, convert: Callable[[str], Cell]) -> Numbers:
-    """Convert a column of texts, each distinct text once; a row without text is an empty cell."""
-    cells = [convert(name) for name in texts.names]
-    cells.append(convert(""))  # the code -1 of a row without text picks the last one
-    values = np.array([cell.value for cell in cells])[texts.codes]
-    is_odd = np.array([cell.kind is not Kind.NUMBER for cell in cells])[texts.codes]
-    odd = np.flatnonzero(is_odd)
+def converted(
+    texts: Texts, convert: Callable[[str], Cell], quick: Callable[[str], float | None] | None = None
+) -> Numbers:
+    """Convert a column of texts, each distinct text once; a row without text is an empty cell.
+
+    Parameters
+    ----------
+    texts
+        The column.
+    convert
+        Understands one text.
+    quick
+        Returns the number of a text that it understands at once, else None.
+    """
+    cells: dict[int, Cell] = {}
+    values = [quick(name) if quick is not None else None for name in (*texts.names, "")]
+    for code, (name, value) in enumerate(zip((*texts.names, ""), values, strict=True)):
+        if value is None:
+            cells[code] = convert(name)
+            values[code] = cells[code].value
+    # The code -1 of a row without text picks the last value, that of an empty cell.
+    found = np.array(values, dtype=np.float64)[texts.codes]
+    odd = np.flatnonzero(np.isnan(found))
     codes = texts.codes[odd].tolist()
-    return Numbers(values, {row: cells[code] for row, code in zip(odd.tolist(), codes, strict=True)})
+    last = len(texts.names)
+    return Numbers(
+        found, {row: cells[code if code >= 0 else last] for row, code in zip(odd.tolist(), codes, strict=True)}
+    )
 
 
 def _folded(words: PatternOrWords) -> PatternOrWords:

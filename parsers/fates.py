@@ -6,7 +6,7 @@ Nothing here splits a line.
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -15,7 +15,7 @@ from parsers.readings import SetAside
 from parsers.spelling import shown
 
 if TYPE_CHECKING:
-    from collections.abc import Iterable, Sequence
+    from collections.abc import Callable, Iterable, Iterator, Sequence
 
     from parsers.layout import Layout
     from parsers.readings import Lines as LineNumbers
@@ -33,18 +33,25 @@ AFTER = "after the table"
 CONTINUED = "continues the line above"
 
 
-def fate(frame: Frame, at: int, layout: Layout) -> str | None:
-    """Return why the line of an index is no row, None where it is one."""
-    line = frame.lines.lines[at]
-    if not line.strip():
-        return BLANK
-    if layout.until is not None and layout.until.search(line):
-        return UNTIL
-    if layout.finished is not None and layout.finished.search(line):
-        return FINISHED
-    if any(pattern.search(line) for pattern in layout.skip):
-        return SKIPPED
-    return HEADER_AGAIN if header_again(frame, at, line, layout) else None
+def judge(frame: Frame, layout: Layout) -> Callable[[int, str], str | None]:
+    """Return a function that tells why a line, given by index and text, is no row; it returns None for a row."""
+    searches = [
+        (pattern.search, reason)
+        for pattern, reason in [
+            (layout.until, UNTIL), (layout.finished, FINISHED), *((pattern, SKIPPED) for pattern in layout.skip)
+        ]
+        if pattern is not None
+    ]  # fmt: skip
+
+    def fate(at: int, line: str) -> str | None:
+        if not line.strip():
+            return BLANK
+        for search, reason in searches:
+            if search(line):
+                return reason
+        return HEADER_AGAIN if header_again(frame, at, line, layout) else None
+
+    return fate
 
 
 def header_again(frame: Frame, at: int, line: str, layout: Layout) -> bool:
@@ -77,29 +84,27 @@ class Fates:
     frame
         Where the table begins.
     last, end
-        Index of the line behind the table, and where it begins in the text.
+        Index of the line behind the last row, and where it begins in the text.
     reasons
         The lines before `last` that are no rows, with their reasons.
-    until
-        The line that ends the table, where there is one.
+    tail
+        The lines from `last` on.
     """
 
     frame: Frame
     last: int
     end: int
-    reasons: dict[int, tuple[str, Line]]
-    until: Line | None = None
+    reasons: dict[int, tuple[str, Line]] = field(default_factory=dict)
+    tail: list[SetAside] = field(default_factory=list)
 
     @classmethod
     def of(cls, frame: Frame, layout: Layout) -> Fates:
-        """Apply the patterns of a layout in the order of `fate`."""
+        """Apply the patterns of a layout in the order of `judge`."""
         lines, first, offset = frame.lines, frame.first, frame.offset
-        fates = cls(frame, len(lines), len(lines.text), {})
+        fates = cls(frame, len(lines), len(lines.text))
         if layout.until is not None:
-            ends = (line for line in lines.matching(layout.until, first, offset) if line.text.strip())
-            fates.until = next(ends, None)
-            if fates.until is not None:
-                fates.last, fates.end = fates.until.at, fates.until.offset
+            fates._stop_at(line for line in lines.matching(layout.until, first, offset) if line.text.strip())
+        fates._trim()
         searches = [(layout.finished, FINISHED), *((pattern, SKIPPED) for pattern in layout.skip)]
         for pattern, reason in searches:
             for line in lines.matching(pattern, first, offset) if pattern is not None else ():
@@ -108,6 +113,26 @@ class Fates:
             if fates._is_open(line) and header_again(frame, line.at, line.text, layout):
                 fates._note(line, HEADER_AGAIN)
         return fates
+
+    def _stop_at(self, ends: Iterator[Line]) -> None:
+        """End the table at the first of some lines."""
+        until = next(ends, None)
+        if until is not None:
+            self.last, self.end = until.at, until.offset
+            behind = self.frame.lines.text[until.offset + len(until.text) + 1 :]
+            self.tail = [SetAside(until.at + 1, UNTIL, until.text)]
+            self.tail += outside(behind.removesuffix("\n").split("\n") if behind else [], until.at + 1, AFTER)
+
+    def _trim(self) -> None:
+        """Leave blank lines at the end out, so that the rows before them need not be put together anew."""
+        text = self.frame.lines.text
+        while self.last > self.frame.first:
+            end = self.end - text.endswith("\n", 0, self.end)
+            begin = text.rfind("\n", 0, end) + 1
+            if text[begin:end].strip():
+                return
+            self.last, self.end = self.last - 1, begin
+            self.tail.append(SetAside(self.last + 1, BLANK, text[begin:end]))
 
     def _is_open(self, line: Line) -> bool:
         return line.at < self.last and line.at not in self.reasons and bool(line.text.strip())
@@ -124,7 +149,7 @@ class Fates:
         return lines.all_from(frame.first, frame.offset) if again else ()
 
     def leave_out_blanks(self) -> bool:
-        """Set blank lines aside; tell whether there were any."""
+        """Set blank lines between the rows aside; tell whether there were any."""
         blank = [
             line
             for line in self.frame.lines.all_from(self.frame.first, self.frame.offset)
@@ -138,7 +163,7 @@ class Fates:
         return self.last - self.frame.first - len(self.reasons)
 
     def data(self) -> tuple[bytes, int | None, int]:
-        """Return the rows as UTF-8, each with a line feed.
+        """Return the rows as UTF-8, each with a line feed, perhaps after a carriage return.
 
         Returns
         -------
@@ -146,12 +171,14 @@ class Fates:
             The bytes; the index of a header line directly before the first row, or None; how many bytes stand before
             that row. An export that is in UTF-8 already and has rows to its end is not copied.
         """
-        lines, begin = self.frame.lines, self.frame.offset
-        plain = self.frame.first == self.frame.header_at + 1 and '"' not in self.frame.header
-        whole = self.until is None and not self.reasons and lines.text.endswith("\n")
-        if lines.data is not None and plain and whole:
-            return lines.data, self.frame.header_at, len(lines.text[:begin].encode())
-        pieces = []
+        lines, frame = self.frame.lines, self.frame
+        if lines.data is not None and not self.reasons:
+            begin, end = lines.byte_range(frame.first, self.last)
+            ended = lines.data.endswith(b"\n", begin, end)
+            if ended and end == len(lines.data) and frame.first == frame.header_at + 1 and '"' not in frame.header:
+                return lines.data, frame.header_at, begin
+            return lines.data[begin:end] + (b"" if ended else b"\n"), None, 0
+        pieces, begin = [], frame.offset
         for _, line in sorted(self.reasons.values(), key=lambda reason: reason[1].at):
             pieces.append(lines.text[begin : line.offset])
             begin = line.offset + len(line.text) + 1
@@ -165,10 +192,5 @@ class Fates:
 
     def set_aside(self) -> list[SetAside]:
         """Return every line that is no row."""
-        aside = [*self.frame.set_aside]
-        aside += [SetAside(at + 1, reason, line.text) for at, (reason, line) in sorted(self.reasons.items())]
-        if self.until is not None:
-            aside.append(SetAside(self.last + 1, UNTIL, self.until.text))
-            behind = self.frame.lines.text[self.end + len(self.until.text) + 1 :]
-            aside += outside(behind.removesuffix("\n").split("\n") if behind else [], self.last + 1, AFTER)
-        return aside
+        between = [SetAside(at + 1, reason, line.text) for at, (reason, line) in self.reasons.items()]
+        return [*self.frame.set_aside, *between, *self.tail]

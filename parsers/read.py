@@ -27,6 +27,9 @@ if TYPE_CHECKING:
     from parsers.layout import Layout
     from parsers.readings import Readings
 
+#: Lines in which the text of a claim is looked for before the whole export is split.
+_LIKELY_HEAD = 200
+
 __all__ = ["ExportRefused", "ParsersError", "claims", "is_finished", "read"]
 
 
@@ -52,7 +55,7 @@ def claims(layout: Layout, name: str, data: bytes) -> bool:
         lines = decode(data, layout.encodings, name)
     except ExportRefused:
         return bool(wanted.file)
-    return any(wanted.text.search(line) for line in lines.lines)
+    return any(wanted.text.search(line) for count in (_LIKELY_HEAD, len(lines)) for line in lines.head(count))
 
 
 def is_finished(layout: Layout, data: bytes) -> bool:

@@ -20,7 +20,7 @@ if TYPE_CHECKING:
 
 #: Longest plain number in bytes.
 LONGEST_NUMBER = 17
-_NEWLINE = 10
+_NEWLINE, _RETURN = 10, 13
 #: For each ASCII separator: all bytes but itself and the line feed.
 _ALL_BUT = [bytes(byte for byte in range(256) if byte not in (separator, _NEWLINE)) for separator in range(128)]
 
@@ -32,7 +32,7 @@ class Spans:
     Attributes
     ----------
     data
-        The rows as UTF-8, each with a line feed.
+        The rows as UTF-8, each with a line feed, perhaps after a carriage return.
     header, begin
         Index of a header line directly before the first row, or None; and how many bytes stand before that row.
     separator
@@ -51,7 +51,7 @@ class Spans:
 
     @classmethod
     def of(cls, fates: Fates, separator: str, width: int) -> Spans | None:
-        """Take the rows of a table; None where one has another number of cells than the header, or holds a quote."""
+        """Take the rows of a table; None where one has another number of cells than the header."""
         spans = cls._regular(fates, separator, width)
         if spans is None and fates.leave_out_blanks():
             spans = cls._regular(fates, separator, width)
@@ -61,7 +61,7 @@ class Spans:
     def _regular(cls, fates: Fates, separator: str, width: int) -> Spans | None:
         (data, header, begin), rows, code = fates.data(), fates.rows(), ord(separator)
         # A mark of UTF-8 at the beginning would vanish in the C parser.
-        if rows == 0 or data.find(b'"', begin) >= 0 or data.startswith(codecs.BOM_UTF8, begin):
+        if rows == 0 or data.startswith(codecs.BOM_UTF8, begin):
             return None
         before = len(data[:begin].translate(None, _ALL_BUT[code]))
         marks = data.translate(None, _ALL_BUT[code])[before:]
@@ -84,15 +84,16 @@ class Spans:
         """Yield the raw cells of some rows."""
         begin, end = self.span(column)
         for start, stop in zip(begin[rows].tolist(), end[rows].tolist(), strict=True):
-            yield self.data[start:stop].decode()
+            yield self.data[start:stop].removesuffix(b"\r").decode()
 
     def doubtful(self, column: int, decimal: str) -> NDArray[np.bool_]:
         """Tell which cells of a column are empty, long, or hold a character that no plain number has."""
         begin, end = self.span(column)
-        length = end - begin
         codes = np.frombuffer(self.data, dtype=np.uint8)
+        # A carriage return stands before a line feed only: it is no part of the last cell.
+        length = end - begin - ((codes[end] == _NEWLINE) & (codes[end - 1] == _RETURN))
         foreign = np.ones(256, dtype=bool)
-        foreign[list(b"0123456789+-eE" + decimal.encode())] = False
+        foreign[list(b"0123456789+-eE\r" + decimal.encode())] = False
         doubtful: NDArray[np.bool_] = (length == 0) | (length > LONGEST_NUMBER)
         for place in range(min(int(length.max()), LONGEST_NUMBER)):
             doubtful |= foreign[codes[np.minimum(begin + place, end - 1)]] & (length > place)

@@ -10,7 +10,6 @@ from __future__ import annotations
 import csv
 import re
 from dataclasses import dataclass
-from itertools import islice
 from typing import TYPE_CHECKING, Protocol
 
 import numpy as np
@@ -127,7 +126,7 @@ def read_record(lines: Lines, at: int, separator: str) -> tuple[list[str], int]:
         return line.split(), at + 1
     if '"' not in line:
         return line.split(separator), at + 1
-    feed = (f"{text}\n" for text in islice(lines.lines, at, at + MOST_LINES_IN_CELL))
+    feed = (f"{text}\n" for text in lines.lines[at : at + MOST_LINES_IN_CELL])
     reader = csv.reader(feed, delimiter=separator, strict=True)
     try:
         record = next(reader)
@@ -179,17 +178,18 @@ def read_rows(frame: Frame, layout: Layout) -> RowTable:
     rows: list[list[str]] = []
     starts: list[int] = []
     aside = list(frame.set_aside)
+    fate, separator = fates.judge(frame, layout), layout.separator
     at, end = frame.first, len(lines)
     while at < end:
         line = lines.lines[at]
-        reason = fates.fate(frame, at, layout)
+        reason = fate(at, line)
         if reason is not None:
             aside.append(SetAside(at + 1, reason, line))
             at += 1
             if reason == fates.UNTIL:
                 break
             continue
-        record, behind = read_record(lines, at, layout.separator)
+        record, behind = read_record(lines, at, separator)
         if len(record) != width:
             raise wrong_count(frame, at, len(record))
         rows.append(record)

@@ -11,6 +11,8 @@ import re
 from functools import cached_property
 from typing import TYPE_CHECKING, NamedTuple
 
+import numpy as np
+
 from parsers.errors import ExportRefused
 from parsers.patterns import literal_start
 
@@ -30,6 +32,7 @@ _MARKS = (
     (codecs.BOM_UTF16_LE, "utf-16"),
     (codecs.BOM_UTF16_BE, "utf-16"),
 )
+_RETURN, _FEED = 13, 10
 _REFUSED = "Nothing of this export is read."
 
 
@@ -63,7 +66,7 @@ class Lines:
     text
         All of it, every line end a line feed.
     data
-        The same in UTF-8 where the export came so, else None: it need not be encoded again.
+        The same in UTF-8, with line feeds alone or after carriage returns, where the export came so; else None.
     """
 
     def __init__(self, name: str, encoding: str, text: str, data: bytes | None = None) -> None:
@@ -147,6 +150,19 @@ class Lines:
             if not place:
                 return
 
+    def byte_range(self, first: int, last: int) -> tuple[int, int]:
+        """Return where the lines from an index to before another one begin and end in `data`."""
+        data = self.data or b""
+        begin, end = 0, len(data)
+        for _ in range(first):
+            begin = data.find(b"\n", begin) + 1
+        if last < len(self):
+            place = end - data.endswith(b"\n")
+            for _ in range(len(self) - last):
+                place = data.rfind(b"\n", 0, place)
+            end = place + 1
+        return begin, end
+
     def refusal(self, at: int | None, sentence: str, todo: str, column: str | None = None) -> ExportRefused:
         """Make the error for the line of an index: what is wrong, and what to do."""
         line = None if at is None else at + 1
@@ -182,10 +198,19 @@ def decode(data: bytes, encodings: Sequence[str], name: str) -> Lines:
     if len(data) > MOST_BYTES:
         raise _refusal(name, None, f"expected at most {MOST_BYTES} bytes, got {len(data)}", "Export fewer runs at once")
     encoding, text = _decoded(data, encodings, name)
-    if "\r" in text:
-        return Lines(name, encoding, text.replace("\r\n", "\n").replace("\r", "\n"))
-    same = _plain(encoding) == "utf-8" and not data.startswith(codecs.BOM_UTF8)
-    return Lines(name, encoding, text, data if same else None)
+    same = data if _plain(encoding) == "utf-8" and not data.startswith(codecs.BOM_UTF8) else None
+    if "\r" not in text:
+        return Lines(name, encoding, text, same)
+    if same is not None and _only_pairs(same):
+        return Lines(name, encoding, text.replace("\r", ""), same)
+    return Lines(name, encoding, text.replace("\r\n", "\n").replace("\r", "\n"))
+
+
+def _only_pairs(data: bytes) -> bool:
+    """Tell whether every carriage return is followed by a line feed."""
+    codes = np.frombuffer(data, dtype=np.uint8)
+    returns = np.flatnonzero(codes == _RETURN)
+    return int(returns[-1]) + 1 < len(codes) and bool((codes[returns + 1] == _FEED).all())
 
 
 def _decoded(data: bytes, encodings: Sequence[str], name: str) -> tuple[str, str]:

@@ -11,8 +11,8 @@ from parsers.readings import Role
 from rules import units
 from rules.calibration import nominal_of
 from rules.case import Reported
-from rules.checks import Check, Outcome, judged, limits_of, severest
-from rules.figures import figure, percent, several
+from rules.checks import Check, Outcome, judged, limits_of, percents, severest
+from rules.figures import figure, several
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
@@ -59,13 +59,16 @@ def _at(values: Floats, place: NDArray[np.int64]) -> Floats:
 def repeatability(case: Case) -> Check:
     """Largest relative standard deviation of the readings of one solution (common practice); never of blanks.
 
+    A standard of nominal 0 is a blank by another name.
+
     Of the series' own solutions, of its check standards, and of the standards where the result is read back from
     them. Only above the limit of quantification; without one above ten times the blanks' signal.
     """
     solutions = case.solutions
     with np.errstate(invalid="ignore", divide="ignore"):
         rsd = 100 * solutions.signal_sd / np.abs(solutions.signal)
-    rsd = np.where(_large_enough(case), rsd, np.nan)
+    nominal_zero = case.readings.nominal.values[solutions.rows] == 0
+    rsd = np.where(_large_enough(case) & ~nominal_zero, rsd, np.nan)
     members = case.series.members
     own, own_place = _worst(rsd[members], case.series.segments.owner, len(case))
     own_solution = np.where(own_place >= 0, members[own_place], -1)
@@ -85,11 +88,12 @@ def repeatability(case: Case) -> Check:
     best = np.argmax(np.where(np.isfinite(candidates), candidates, -np.inf), axis=0)
     value = candidates[best, np.arange(len(case))]
     solution = np.vstack([own_solution, *shared_solution])[best, np.arange(len(case))]
+    shown = percents(case, "repeatability", value)
 
     def sentence(i: int, outcome: Outcome) -> str:
         if outcome is Outcome.NOT_EVALUATED:
             return "no solution with repeated readings high enough to judge"
-        scatter = f"the readings of {case.label(int(solution[i]))} scatter by {percent(value[i])}"
+        scatter = f"the readings of {case.label(int(solution[i]))} scatter by {shown(i)}"
         return scatter if outcome is Outcome.PASS else f"{scatter}: measure that solution again"
 
     def lines(i: int) -> list[int]:
@@ -131,6 +135,7 @@ def check_standard(case: Case) -> Check:
     analyte, away = checks.key // case.keys.channels, np.abs(checks.percent - 100)
     place = severest(limits, analyte, checks.percent, away, checks.key, case.keys.count)[case.key]
     value = _at(checks.percent, place)
+    shown = percents(case, "check_standard", value)
     counts = np.bincount(checks.key, minlength=case.keys.count)[case.key]
 
     def sentence(i: int, outcome: Outcome) -> str:
@@ -141,7 +146,7 @@ def check_standard(case: Case) -> Check:
                 else "no check standard in this export"
             )
         label = case.label(int(checks.solutions[place[i]]))
-        found = f"check standard {label} reads {percent(value[i])} of nominal"
+        found = f"check standard {label} reads {shown(i)} of nominal"
         return found if outcome is Outcome.PASS else f"{found}: the calibration does not hold"
 
     def lines(i: int) -> list[int]:
@@ -279,7 +284,7 @@ def _series_faults(case: Case) -> list[tuple[int, str]]:
                     f"or state blank: none"
                 ),
             )
-            for i in np.flatnonzero(case.judged & (blanks == 0)).tolist()
+            for i in np.flatnonzero((case.judged | (use == "preparation")) & (blanks == 0)).tolist()
         ]
     found += [
         (i, "the sample was measured again, and the settings say repeats: refuse")

@@ -72,6 +72,24 @@ def common(series: Series, vessels: Vessels, method: Method) -> tuple[Common, ..
     )
 
 
+def common_of_read_back(series: Series, vessels: Vessels, method: Method) -> tuple[Common, ...]:
+    """Return the common uncertainties of a result read back from a calibration: those of the way to the sample."""
+    members = series.members
+    diluted = _any(series, series.unspiked & (np.abs(vessels.dilution[members] - 1) > 1e-9))
+    predilution = series.segments.max(vessels.predilution[members])
+    tolerances = method.bench.tolerances
+    aliquot, vessel = (_smallest(series, column[members]) for column in (vessels.aliquot, vessels.made_up_to))
+    nothing = np.zeros(len(series))
+    return (
+        Common("aliquot", np.where(diluted, _relative(tolerances.get("aliquot"), aliquot), nothing)),
+        Common("made_up_to", np.where(diluted, _relative(tolerances.get("made_up_to"), vessel), nothing)),
+        Common(
+            "predilution",
+            np.where(predilution != 1, _relative(tolerances.get("predilution"), predilution), nothing),
+        ),
+    )
+
+
 def _any(series: Series, members: NDArray[np.bool_]) -> NDArray[np.bool_]:
     return series.segments.sum(members.astype(float)) > 0
 

@@ -12,6 +12,7 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
+from rules.figures import percent
 from rules.limits import DEFAULTS, RECOVERY_AFTER_PREPARATION, CheckLimits
 
 if TYPE_CHECKING:
@@ -24,6 +25,9 @@ if TYPE_CHECKING:
     from rules.method import Method
 
     Outcomes = NDArray[np.int8]
+
+
+FAULTY_INPUTS = "the inputs are faulty"
 
 
 class Outcome(IntEnum):
@@ -144,6 +148,12 @@ def severest(
     return place
 
 
+def percents(case: Case, name: str, value: Floats) -> Callable[[int], str]:
+    """Return what writes a check's value in % so that nobody reads it on the wrong side of its limits."""
+    bounds = [limit.bounds for limit in limits_of(case.method, case.readings.analyte.names, name)]
+    return lambda series: percent(float(value[series]), *bounds[int(case.series.analyte[series])])
+
+
 def judged(
     case: Case,
     name: str,
@@ -153,13 +163,21 @@ def judged(
     sentence: Callable[[int, Outcome], str],
     lines: Callable[[int], list[int]] | None = None,
 ) -> Check:
-    """Make a check that is judged by its configured limits."""
+    """Make a check that is judged by its configured limits.
+
+    What judges a result is not evaluated where the inputs are faulty: the fault would come back in other words.
+    """
     limits = limits_of(case.method, case.readings.analyte.names, name)
+    if judges is not None and case.faults:
+        value = value.copy()
+        value[list(case.faults)] = np.nan
     outcome = judge(case, limits, value)
 
     def say(series: int) -> str:
         if limits[int(case.series.analyte[series])].off:
             return f"{name}: switched off in the settings"
+        if judges is not None and series in case.faults:
+            return FAULTY_INPUTS
         if outcome[series] == Outcome.NOT_EVALUATED and judges is not None and not case.judged[series]:
             return "no unspiked solution" if case.series.has_additions[series] else "no additions were made"
         return sentence(series, Outcome(int(outcome[series])))

@@ -21,13 +21,17 @@ def figure(value: float, digits: int = 3) -> str:
     return f"{value:.{max(places, 0)}f}"
 
 
-def percent(value: float) -> str:
-    """Write a percentage: whole from 10 up, one decimal below.
+def percent(value: float, *bounds: float) -> str:
+    """Write a percentage: whole from 10 up, one decimal below, and more where rounding would carry it over a bound.
 
-    >>> percent(61.4), percent(3.25)
-    ('61 %', '3.2 %')
+    >>> percent(61.4), percent(3.25), percent(74.6, 75, 125)
+    ('61 %', '3.2 %', '74.6 %')
     """
-    return f"{value:.0f} %" if abs(value) >= 9.95 else f"{value:.1f} %"
+    for places in range(0 if abs(value) >= 9.95 else 1, 6):
+        shown = round(value, places)
+        if all((shown < bound) == (value < bound) and (shown > bound) == (value > bound) for bound in bounds):
+            return f"{shown:.{places}f} %"
+    return f"{value:g} %"
 
 
 def places_of(uncertainty: float) -> int:

@@ -111,6 +111,7 @@ def read_back(
     slope: Floats,
     covariance: Covariance,
     t: Floats,
+    common: Floats,
 ) -> Interval:
     """Return the interval of x = (y - a)/b where y was measured with a variance of its own.
 
@@ -120,11 +121,13 @@ def read_back(
         y and the variance of its mean, float64[m].
     intercept, slope, covariance, t
         The calibration's, one for each y.
+    common
+        κ = Σ t_i² u_i² of the relative uncertainties of the way from vessel to sample.
     """
     tt = t * t
     net = signal - intercept
     with np.errstate(invalid="ignore", divide="ignore"):
-        excess = tt * covariance.slope
+        excess = tt * covariance.slope + common * slope**2
         middle = net * slope + tt * covariance.both
         last = net**2 - tt * (signal_variance + covariance.intercept)
         return _between(slope**2 - excess, middle, last, excess / slope**2)

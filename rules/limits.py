@@ -7,7 +7,7 @@ from __future__ import annotations
 
 import re
 from dataclasses import dataclass
-from math import inf
+from math import inf, isfinite
 from typing import Self
 
 _NUMBER = r"[-+\u2212]?\d+(?:\.\d+)?(?:[eE][-+]?\d+)?"
@@ -93,6 +93,12 @@ class CheckLimits:
     def off(self) -> bool:
         """Whether the check is switched off."""
         return self.warn is None and self.fail is None
+
+    @property
+    def bounds(self) -> tuple[float, ...]:
+        """Every finite bound, of warning and failing."""
+        limits = [limit for limit in (self.warn, self.fail) if limit is not None]
+        return tuple(bound for limit in limits for bound in (limit.low, limit.high) if isfinite(bound))
 
     @property
     def text(self) -> str:

@@ -8,8 +8,8 @@ import numpy as np
 
 from rules import units
 from rules.case import Reported
-from rules.checks import Check, Outcome, judged
-from rules.figures import figure, percent
+from rules.checks import Check, Outcome, judged, percents
+from rules.figures import figure
 
 if TYPE_CHECKING:
     from rules.case import Case
@@ -127,14 +127,15 @@ def residual(case: Case) -> Check:
         each = 100 * np.abs(fits.net - fits.fitted_gross) / np.maximum(fitted, least)
         largest = fits.segments.max(each)
     value = np.where(fits.spread(fits.lines.dof.astype(float)) > 0, fits.spread(largest), np.nan)
+    shown = percents(case, "residual", value)
 
     def sentence(i: int, outcome: Outcome) -> str:
         if outcome is Outcome.NOT_EVALUATED:
             return NO_LINE if np.isnan(case.fits.spread(fits.lines.slope)[i]) else "an exact line has no residuals"
         worst = case.label(worst_solution(case, each, i))
         if outcome is Outcome.PASS:
-            return f"largest residual {percent(value[i])}, at {worst}"
-        return f"{worst} lies {percent(value[i])} off the line of the others"
+            return f"largest residual {shown(i)}, at {worst}"
+        return f"{worst} lies {shown(i)} off the line of the others"
 
     def lines(i: int) -> list[int]:
         return case.series_lines(i) if np.isnan(value[i]) else case.lines_of([worst_solution(case, each, i)])
@@ -203,12 +204,12 @@ def linear_evidence(case: Case) -> Check:
         if outcome[i] == Outcome.NOT_EVALUATED:
             return "nothing shows up to where the response is linear: state analytes.linear_to or measure standards"
         source = "the top standard" if by_calibration[i] or np.isnan(stated[i]) else _proof(case, i)
-        reads = f"the highest solution reads {figure(highest[i])} {unit}"
-        if outcome[i] == Outcome.FAIL:
-            return f"{reads}, beyond {source} ({figure(limit[i])} {unit})"
         if outcome[i] == Outcome.WARN:
             return f"the result lies below the lowest standard ({figure(_lowest(case, i))} {unit})"
-        return f"{reads}, inside {source} ({figure(limit[i])} {unit})"
+        place = "beyond" if outcome[i] == Outcome.FAIL else "inside"
+        if not by_calibration[i] and np.isnan(stated[i]):
+            return f"the highest signal ({figure(signal[i])}) lies {place} that of {source} ({figure(top_signal[i])})"
+        return f"the highest solution reads {figure(highest[i])} {unit}, {place} {source} ({figure(limit[i])} {unit})"
 
     return Check("linear_evidence", None, unit, highest, outcome, None, sentence, case.series_lines)
 

@@ -8,6 +8,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 from enum import IntEnum
+from functools import cached_property
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -63,14 +64,23 @@ class Outcomes:
         """Return the verdict of a series."""
         return Verdict(int(self.verdict[series]))
 
+    def check(self, name: str) -> Check:
+        """Return a check by its name."""
+        return next(check for check in self.checks if check.name == name)
+
     def deciding(self, series: int, outcome: Outcome) -> list[Check]:
         """Return the checks that decide on a series with an outcome."""
-        return [
-            check
-            for check in self.checks
-            if check.outcome[series] == outcome
-            and (check.decides(self.case)[series] or (outcome is Outcome.FAIL and check.stated_fail(self.case)[series]))
-        ]
+        return self._deciding[outcome].get(series, [])
+
+    @cached_property
+    def _deciding(self) -> dict[Outcome, dict[int, list[Check]]]:
+        found: dict[Outcome, dict[int, list[Check]]] = {Outcome.FAIL: {}, Outcome.WARN: {}}
+        for check in self.checks:
+            decides = check.decides(self.case)
+            for outcome, counts in ((Outcome.FAIL, decides | check.stated_fail(self.case)), (Outcome.WARN, decides)):
+                for series in np.flatnonzero((check.outcome == outcome) & counts).tolist():
+                    found[outcome].setdefault(series, []).append(check)
+        return found
 
     def reasons(self, series: int) -> list[str]:
         """Return one sentence for each thing that keeps a series from passing."""
@@ -131,10 +141,10 @@ def measured(check: Check, case: Case, series: int) -> str:
     value = float(check.value[series])
     if check.name == "inputs" or not np.isfinite(value):
         return f"{name}: {check.sentence(series)}"
-    number = percent(value) if check.unit == "%" else f"{figure(value)} {check.unit}".rstrip()
     if check.limits is None:
-        return f"{name} {number}: {check.sentence(series)}"
+        return f"{name} {figure(value)} {check.unit}".rstrip() + f": {check.sentence(series)}"
     limits = check.limits[int(case.series.analyte[series])]
+    number = percent(value, *limits.bounds) if check.unit == "%" else f"{figure(value)} {check.unit}".rstrip()
     limit = limits.fail if check.outcome[series] == Outcome.FAIL else limits.warn
     words = "" if limit is None else limit.text.removesuffix("%").removesuffix("LOQ").strip()
     prefix = "limits" if " to " in words else "limit"

@@ -21,6 +21,13 @@ if TYPE_CHECKING:
     from rules.outcomes import Outcomes
 
 
+def batch_step(check: str, names: str) -> str:
+    """Return what to do about a check that fails for a whole batch, with the names of all that must wait for it."""
+    if check == "check_standard":
+        return f"Calibrate again, then measure {names} and every sample since the last good check standard again."
+    return f"Find the contamination or carry-over, measure a clean blank, then {names} again."
+
+
 def next_step(outcomes: Outcomes, series: int) -> str:
     """Return the next step for a series; empty where it passes or is an ordinary sample in order."""
     verdict = outcomes.verdict_of(series)
@@ -55,15 +62,15 @@ def _inputs(case: Case, i: int) -> str:
 
 
 def _check_standard(case: Case, i: int) -> str:
-    return f"Calibrate again, then measure {case.sample(i)} and every sample since the last good check standard again."
+    return batch_step("check_standard", case.sample(i))
 
 
 def _blank(case: Case, i: int) -> str:
-    return f"Find the contamination or carry-over, measure a clean blank, then {case.sample(i)} again."
+    return batch_step("blank", case.sample(i))
 
 
 def _recovery(case: Case, i: int) -> str:
-    low = case.recoveries.headline[i] < 100
+    low = case.recoveries.slope[i] < 100
     cause = (
         "the spike volume, the stock and losses in preparation"
         if low

@@ -7,7 +7,8 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from rules.interval import Covariance, Interval, read_back
+from rules.budget import common_of_read_back
+from rules.interval import Covariance, Interval, normal_quantile, read_back
 from rules.result import Results, Share, combine
 
 if TYPE_CHECKING:
@@ -91,7 +92,10 @@ def evaluate(
         u_line = np.sqrt(s**2 / p + covariance.intercept + 2 * x * covariance.both + x**2 * covariance.slope) / slope
         t = of(calibrations.t)
         t_u_blank = _blank_signal(dilution, np.nan_to_num(np.sqrt(blanks.variance[key])), method)
-        interval = read_back(mean, s**2 / p + (t_u_blank / t) ** 2, intercept, slope, covariance, t)
+        common = common_of_read_back(series, vessels, method)
+        t_common = normal_quantile(method.confidence)
+        kappa = sum(((t_common * np.nan_to_num(part.relative)) ** 2 for part in common), np.zeros(count))
+        interval = read_back(mean, s**2 / p + (t_u_blank / t) ** 2, intercept, slope, covariance, t, kappa)
         scale = predilution / dilution
         value = np.where(above, np.nan, x * scale)
         shown = np.where(np.isfinite(value) & ~(interval.g >= 1), 1.0, np.nan)
@@ -99,9 +103,12 @@ def evaluate(
         shares = (
             Share("line", u_line * scale * shown, of(lines.dof.astype(float))),
             Share("blank", u_blank * scale, blanks.count[key] - 1),
+            *(Share(part.component, np.abs(x) * scale * part.relative, np.full(count, np.inf)) for part in common),
+            # what the certificates of the standards say is not asked for yet, and so stands as absent
+            Share("standards", np.full(count, np.nan), np.full(count, np.inf)),
         )
         t_blank = np.nan_to_num(np.sqrt(blanks.variance[key]) / blanks.standard_uncertainty[key])
-        u, expanded, k = combine(shares, (t, t_blank))
+        u, expanded, k = combine(shares, (t, t_blank, *(np.full(count, t_common) for _ in shares[2:])))
     results = Results(
         value=value * shown,
         low=interval.low * scale * shown,

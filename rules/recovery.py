@@ -33,21 +33,13 @@ class Recoveries:
         float64[k], R_j in % at the places of ``Series.members``; NaN for what is no addition or cannot be evaluated.
     slope
         float64[m], slope recovery in %.
-    worst
-        float64[m], the R_j farthest from 100 %.
     levels
         int64[m], distinct additions above zero.
     """
 
     each: Floats
     slope: Floats
-    worst: Floats
     levels: Integers
-
-    @property
-    def headline(self) -> Floats:
-        """The recovery that is judged: of the slope with two or more levels, else the worst addition."""
-        return np.where(self.levels >= 2, self.slope, self.worst)
 
     @property
     def matrix_effect(self) -> Floats:
@@ -82,9 +74,5 @@ def evaluate(
         each = 100 * (y - phi * seg.spread(y_0) - seg.spread(a) * (1 - phi)) / (seg.spread(b) * c)
         each = np.where(series.spiked, each, np.nan)
         slope = 100 * fits.spread(fits.lines.slope) / b
-        away = np.where(np.isfinite(each), np.abs(each - 100), -1.0)
-        farthest = seg.max(away)
-        is_worst = (away == seg.spread(farthest)) & (away >= 0)
-        worst = seg.max(np.where(is_worst, each, -np.inf))
     levels = np.where(fits.of_series >= 0, fits.distinct[fits.of_series] if len(fits.distinct) else 0, 0)
-    return Recoveries(each, slope, np.where(np.isfinite(worst), worst, np.nan), levels.astype(np.int64))
+    return Recoveries(each, slope, levels.astype(np.int64))

@@ -7,8 +7,8 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from rules.case import Reported
-from rules.checks import Check, Outcome, judged, limits_of, severest
-from rules.figures import figure, percent
+from rules.checks import Check, Outcome, judged, limits_of, percents, severest
+from rules.figures import figure
 
 if TYPE_CHECKING:
     from rules.case import Case
@@ -32,12 +32,14 @@ def spike_size(case: Case) -> Check:
     has_calibration = case.back.calibration >= 0
     ratio = np.where(has_calibration & case.judged, spike_ratio(case), np.nan)
 
+    shown = percents(case, "spike_size", ratio)
+
     def sentence(i: int, outcome: Outcome) -> str:
         if outcome is Outcome.NOT_EVALUATED:
             return NOTHING_INDEPENDENT if not has_calibration[i] else "no addition or no native level to compare"
         if np.isinf(ratio[i]):
             return "no native level to speak of: any spike is large enough"
-        size = f"the spike is {percent(ratio[i])} of the native level"
+        size = f"the spike is {shown(i)} of the native level"
         if outcome is Outcome.PASS:
             return size
         return f"{size}: too small for a recovery, so recovery is not evaluated"
@@ -56,6 +58,7 @@ def recovery(case: Case, size: Check) -> Check:
     headline = np.where(case.judged, np.where(levels >= 2, case.recoveries.slope, _hardest(case)), np.nan)
     value = np.where(large_enough, headline, np.nan)
     # a recovery that cannot be computed although everything is there must not pass for "not evaluated"
+    shown = percents(case, "recovery", value)
     broken = case.judged & (case.back.calibration >= 0) & ~np.isfinite(headline)
 
     def sentence(i: int, outcome: Outcome) -> str:
@@ -64,7 +67,7 @@ def recovery(case: Case, size: Check) -> Check:
                 return "no recovery can be computed: the inputs are faulty"
             return NOTHING_INDEPENDENT if case.back.calibration[i] < 0 else "the spike is too small for a recovery"
         what = "slope recovery" if levels[i] >= 2 else "recovery"
-        found = f"{what} {percent(value[i])}"
+        found = f"{what} {shown(i)}"
         if outcome is Outcome.PASS:
             return found
         amount = "less" if value[i] < 100 else "more"
@@ -84,12 +87,13 @@ def _hardest(case: Case) -> Floats:
 def matrix_effect(case: Case) -> Check:
     """Slope in the matrix against the calibration's, 100 (β/b - 1) %."""
     value = np.where(case.judged & (case.recoveries.levels > 0), case.recoveries.matrix_effect, np.nan)
+    shown = percents(case, "matrix_effect", value)
 
     def sentence(i: int, outcome: Outcome) -> str:
         if outcome is Outcome.NOT_EVALUATED:
             return NOTHING_INDEPENDENT if case.back.calibration[i] < 0 else "no slope to compare"
         if outcome is Outcome.PASS:
-            return f"the matrix changes the slope by {percent(value[i])}"
+            return f"the matrix changes the slope by {shown(i)}"
         direction = "lowers" if value[i] < 0 else "raises"
         advice = (
             "the calibration does not hold in this matrix"

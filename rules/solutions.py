@@ -15,6 +15,8 @@ import numpy as np
 from rules.line import Segments
 
 if TYPE_CHECKING:
+    from collections.abc import Iterator
+
     from numpy.typing import NDArray
 
     from parsers.readings import Readings
@@ -70,8 +72,8 @@ def run_order(readings: Readings) -> Integers:
 def gather(readings: Readings) -> Solutions:
     """Gather the rows of an export into solutions.
 
-    Rows with a replicate number belong together as long as label, analyte and channel stay the same and the number
-    goes up; every other row is a solution of its own.
+    Rows with a replicate number belong together as long as label, analyte and channel stay the same; a number that
+    comes again opens a further solution. Every other row is a solution of its own.
 
     Returns
     -------
@@ -105,8 +107,7 @@ def _replicates(readings: Readings, order: Integers) -> tuple[Integers, NDArray[
     same = np.ones(len(order) - 1, dtype=bool)
     for key in keys:
         same &= key[by_key][1:] == key[by_key][:-1]
-    rising = replicate[by_key][1:] > replicate[by_key][:-1]
-    begins = np.concatenate(([True], ~(same & rising)))
+    begins = _begins(np.concatenate(([False], same)), replicate[by_key])
     solution = np.cumsum(begins) - 1
     first = np.full(int(solution[-1]) + 1, len(order), dtype=np.int64)
     np.minimum.at(first, solution, by_key)
@@ -114,6 +115,41 @@ def _replicates(readings: Readings, order: Integers) -> tuple[Integers, NDArray[
     place = np.argsort(np.argsort(first, kind="stable"), kind="stable")[solution]
     final = np.lexsort((by_key, place))
     return order[by_key[final]], np.bincount(place)
+
+
+def _begins(same: NDArray[np.bool_], replicate: Floats) -> NDArray[np.bool_]:
+    """Where a solution begins: another label, no number, or a number that the solution holds already."""
+    begins = np.ones(len(same), dtype=bool)
+    held: set[float] = set()
+    for place, (continues, number) in enumerate(zip(same.tolist(), replicate.tolist(), strict=True)):
+        if continues and number == number and number not in held:  # noqa: PLR0124 - NaN: a row without number
+            begins[place] = False
+        else:
+            held = set()
+        held.add(number)
+    return begins
+
+
+#: What all replicate rows of a solution must agree on.
+_SHARED = ("role", "level", "stock", "added", "nominal", "spike_volume", "aliquot", "made_up_to", "predilution")
+
+
+def _disagreements(readings: Readings, members: Integers, segments: Segments) -> Iterator[tuple[int, str]]:
+    """Yield solutions whose replicate rows contradict each other, with the sentence that says so."""
+    if len(segments.sizes) == len(members):
+        return
+    first = segments.spread(members[segments.starts])
+    for name in _SHARED:
+        column = getattr(readings, name)
+        values = getattr(column, "values", getattr(column, "codes", column))
+        differs = (values[members] != values[first]) & ~(_absent(values[members]) & _absent(values[first]))
+        for place in np.flatnonzero(np.bincount(segments.owner[differs], minlength=len(segments.sizes))).tolist():
+            line = readings.line[members[segments.starts[place]]]
+            yield place, f"line {line}: its replicate rows disagree on {name}: correct the export"
+
+
+def _absent(values: NDArray[Any]) -> NDArray[np.bool_]:
+    return np.isnan(values) if values.dtype.kind == "f" else np.zeros(len(values), dtype=bool)
 
 
 def _stated_scatter(
@@ -130,11 +166,13 @@ def _stated_scatter(
 
 
 def _faults(readings: Readings, members: Integers, segments: Segments) -> dict[int, list[str]]:
+    faults: dict[int, list[str]] = defaultdict(list)
+    for place, sentence in _disagreements(readings, members, segments):
+        faults[place].append(sentence)
     if not readings.faults:
-        return {}
+        return dict(faults)
     solution_of = np.empty(len(readings), dtype=np.int64)
     solution_of[members] = segments.owner
-    faults: dict[int, list[str]] = defaultdict(list)
     for fault in readings.faults:
         faults[int(solution_of[fault.row])].append(str(fault))
     return dict(faults)

@@ -262,14 +262,15 @@ class _Filling:
             return np.where(np.isfinite(nominal), added * nominal / aliquot, added)
 
     def _agree(self, by_volume: Floats, by_added: Floats, both: Bools) -> None:
+        allowed = max([AGREEMENT, *(t.value / 100 for t in self.method.bench.tolerances.values() if t.unit == "%")])
         with np.errstate(invalid="ignore", divide="ignore"):
-            apart = both & (np.abs(by_volume - by_added) > AGREEMENT * np.abs(by_added))
+            apart = both & (np.abs(by_volume - by_added) > allowed * np.abs(by_added))
         unit = self.method.result_unit
         self._note(
             apart,
             lambda i: (
                 f"the volumes give an addition of {by_volume[i]:.6g} {unit} and the stated concentration gives "
-                f"{by_added[i]:.6g} {unit}: they must agree within 1 %; correct the one that is wrong"
+                f"{by_added[i]:.6g} {unit}: they must agree within {100 * allowed:g} %; correct the one that is wrong"
             ),
         )
 

@@ -2,3 +2,6 @@
 
 Start at `watcher.service`.
 """
+
+#: Stands in every record and heartbeat; the package's version is read from here.
+VERSION = "0.1.0"

@@ -12,9 +12,10 @@ from typing import TYPE_CHECKING, NoReturn
 
 import click
 
+from watcher import VERSION
 from watcher.errors import WatcherError
 from watcher.exit_codes import NOT_DONE
-from watcher.opening import open_laboratory, version
+from watcher.opening import open_laboratory
 
 if TYPE_CHECKING:
     from collections.abc import Callable
@@ -33,7 +34,7 @@ def _with_config(command: Callable[..., None]) -> Callable[..., None]:
 
 
 @click.group(context_settings={"help_option_names": ["-h", "--help"], "max_content_width": 80})
-@click.version_option(version(), prog_name="spikewarden")
+@click.version_option(VERSION, prog_name="spikewarden")
 def main() -> None:
     """Judge standard additions and recoveries while the vials are on the rack.
 

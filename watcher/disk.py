@@ -16,7 +16,7 @@ from typing import TYPE_CHECKING, Self
 from watcher.kill_points import at
 
 if TYPE_CHECKING:
-    from collections.abc import Callable, Mapping
+    from collections.abc import Callable, Iterable, Mapping
 
 #: Our temporary files, so that a sweep in a shared folder can touch no one else's.
 TEMPORARY_PREFIX = ".spikewarden-"
@@ -79,9 +79,9 @@ class Disk:
         step
             The name of this step among the kill points.
         """
-        self.write_all(path.parent, {path.name: content}, step)
+        self.write_all(path.parent, {path.name: (content,)}, step)
 
-    def write_all(self, folder: Path, contents: Mapping[str, bytes], step: str | None = None) -> None:
+    def write_all(self, folder: Path, contents: Mapping[str, Iterable[bytes]], step: str | None = None) -> None:
         """Write several files of one folder durably, forcing the folder to disk once.
 
         Parameters
@@ -89,7 +89,7 @@ class Disk:
         folder
             An existing folder.
         contents
-            Name in the folder to content.
+            Name in the folder to content, in pieces, which are never held together.
         step
             The name of this step among the kill points.
         """
@@ -99,9 +99,10 @@ class Disk:
         self.sync_folder(folder)
         _pass(step, "durable")
 
-    def _write(self, path: Path, content: bytes, step: str | None) -> None:
+    def _write(self, path: Path, content: Iterable[bytes], step: str | None) -> None:
         with TemporaryFile(self, path.parent) as temporary:
-            temporary.write(content)
+            for piece in content:
+                temporary.write(piece)
             temporary.become(path, step)
 
 

@@ -10,14 +10,13 @@ import calendar
 import hashlib
 from dataclasses import dataclass
 from functools import partial
-from importlib import metadata
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from parsers.errors import ExportRefused
 from parsers.read import claims, is_finished, read
 from rules.evaluate import evaluate
-from watcher import mail, results
+from watcher import VERSION, mail, results
 from watcher.clock import moment
 from watcher.disk import Disk
 from watcher.names import target
@@ -26,14 +25,11 @@ from watcher.settings import Settings, SettingsInvalid, Snapshot, compile_snapsh
 from watcher.worker_loop import serve
 
 if TYPE_CHECKING:
+    from collections.abc import Iterable, Iterator
+
     from parsers.layout import Layout
     from rules.method import Method
     from rules.outcomes import Outcomes
-
-
-def program_version() -> str:
-    """Return the version that stands in every record."""
-    return metadata.version("spikewarden")
 
 
 @dataclass(frozen=True, slots=True)
@@ -132,7 +128,7 @@ def evaluate_job(settings: Settings, job: Job, *, final: bool) -> Evaluated:
         accepted_at=job.accepted_at,
         layout=layout.layout,
         settings=settings.sha256,
-        program=program_version(),
+        program=VERSION,
     )
     return Evaluated(export, layout, outcomes, tuple(problems))
 
@@ -150,12 +146,37 @@ def _local_seconds(accepted_at: str) -> float:
     return float(calendar.timegm(moment(accepted_at).astimezone().timetuple()))
 
 
+class Hashed:
+    """Pieces of a file, gathered to blocks and hashed as they pass."""
+
+    #: Bytes to a block: few system calls, and no whole file in memory.
+    BLOCK = 1 << 18
+
+    def __init__(self, pieces: Iterable[bytes]) -> None:
+        self._pieces = pieces
+        self.digest = hashlib.sha256()
+
+    def __iter__(self) -> Iterator[bytes]:
+        """Yield the blocks."""
+        block = bytearray()
+        for piece in self._pieces:
+            block += piece
+            if len(block) >= self.BLOCK:
+                yield self._passed(block)
+                block = bytearray()
+        yield self._passed(block)
+
+    def _passed(self, block: bytearray) -> bytes:
+        self.digest.update(block)
+        return bytes(block)
+
+
 def stage(evaluated: Evaluated, settings: Settings, folder: Path, disk: Disk) -> list[dict[str, str]]:
     """Write the result files durably into the records; return where each belongs."""
     export = evaluated.export
     contents = {
-        "csv": results.csv_bytes(evaluated.outcomes, export, settings.file.csv),
-        "json": results.json_bytes(evaluated.outcomes, export, evaluated.problems),
+        "csv": Hashed(results.csv_pieces(evaluated.outcomes, export, settings.file.csv)),
+        "json": Hashed(results.json_pieces(evaluated.outcomes, export, evaluated.problems)),
     }
     names = {extension: target(export.name, export.revision, export.accepted_at, extension) for extension in contents}
     staged = {extension: f"{export.sha256[:16]}-{Path(name).name}" for extension, name in names.items()}
@@ -165,7 +186,7 @@ def stage(evaluated: Evaluated, settings: Settings, folder: Path, disk: Disk) ->
         {
             "target": names[extension],
             "staged": str(folder / staged[extension]),
-            "sha256": hashlib.sha256(content).hexdigest(),
+            "sha256": content.digest.hexdigest(),
         }
         for extension, content in contents.items()
     ]

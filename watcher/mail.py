@@ -70,9 +70,10 @@ class Mail:
 
 @dataclass(frozen=True, slots=True)
 class _Cause:
-    """Series that fail for one reason."""
+    """Series that fail for one reason; `batch` is the check that failed for all of them, if it judges the batch."""
 
     series: tuple[int, ...]
+    batch: str | None
 
     @property
     def first(self) -> int:
@@ -177,14 +178,19 @@ def _of_series(
 
 
 def _causes(outcomes: Outcomes, series: list[int]) -> list[_Cause]:
-    """Group series by cause: a failed batch check is one cause for all of them, any other belongs to its series."""
+    """Group series by cause.
+
+    A failed batch check is one cause for all series of its analyte, and so is one faulty cell that they share; any
+    other cause belongs to its series.
+    """
     groups: dict[tuple[Any, ...], list[int]] = defaultdict(list)
     for i in series:
         failed = outcomes.failed_checks(i)
         batch = next((name for name in BATCH_CHECKS if name in failed and "inputs" not in failed), None)
-        key = (batch, int(outcomes.case.key[i])) if batch else ("series", i)
+        faults = tuple(outcomes.case.faults.get(i, ()))
+        key = (batch, int(outcomes.case.key[i])) if batch else (None, faults) if faults else (None, i)
         groups[key].append(i)
-    return [_Cause(tuple(group)) for group in groups.values()]
+    return [_Cause(tuple(group), key[0]) for key, group in groups.items()]
 
 
 def _names(outcomes: Outcomes, series: list[int]) -> str:
@@ -199,6 +205,9 @@ def _all_names(outcomes: Outcomes, series: Iterable[int]) -> str:
 
 
 def _do(outcomes: Outcomes, cause: _Cause) -> str:
+    if cause.batch:
+        samples = dict.fromkeys(outcomes.case.sample(i) for i in cause.series)
+        return plan.batch_step(cause.batch, several(list(samples), most=8))
     sentence = plan.next_step(outcomes, cause.first) or "Look at the result files."
     return (
         sentence

@@ -9,9 +9,9 @@ import getpass
 import logging
 from contextlib import contextmanager
 from dataclasses import dataclass
-from importlib import metadata
 from typing import TYPE_CHECKING, Any
 
+from watcher import VERSION
 from watcher.errors import WatcherError
 from watcher.instance import Instance
 from watcher.ledger import Ledger
@@ -64,7 +64,7 @@ def open_laboratory(config: Path, reason: str) -> Iterator[Laboratory]:
             handler = set_up_log(settings.records)
             try:
                 ledger.adopt_settings(answer["body"], account(), reason)
-                yield Laboratory(settings, ledger, Service(settings, ledger, worker, version=version()))
+                yield Laboratory(settings, ledger, Service(settings, ledger, worker, version=VERSION))
             finally:
                 logging.getLogger().removeHandler(handler)
                 handler.close()
@@ -89,8 +89,3 @@ def account() -> str:
         return getpass.getuser()
     except (KeyError, OSError):  # an account without name, as in some containers
         return "unknown"
-
-
-def version() -> str:
-    """Return the program's version."""
-    return metadata.version("spikewarden")

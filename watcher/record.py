@@ -20,7 +20,7 @@ from rules.checks import Check, Outcome
 from rules.outcomes import result_text
 
 if TYPE_CHECKING:
-    from collections.abc import Iterable
+    from collections.abc import Iterable, Iterator
 
     from rules.case import Case
     from rules.outcomes import Outcomes
@@ -75,20 +75,18 @@ def local_time(seconds: float) -> str | None:
     return (datetime(1970, 1, 1, tzinfo=UTC) + timedelta(seconds=seconds)).strftime("%Y-%m-%dT%H:%M:%S")
 
 
-def record(outcomes: Outcomes, export: Export, problems: tuple[str, ...]) -> dict[str, Any]:
-    """Return the whole record of an export."""
+def record_parts(outcomes: Outcomes, export: Export, problems: tuple[str, ...]) -> Iterator[tuple[str, Any]]:
+    """Yield the keys of the record with their values; lists come as iterables, made entry by entry."""
     case = outcomes.case
-    return {
-        "format": FORMAT,
-        "export": export.plain(),
-        "series": [_series(outcomes, i) for i in range(len(case))],
-        "blanks": _blanks(case),
-        "check_standards": _check_standards(outcomes),
-        "calibrations": _calibrations(case),
-        "set_aside": [{"line": one.line, "reason": one.reason, "text": one.text} for one in case.readings.set_aside],
-        "problems": list(problems),
-        "seal": None,
-    }
+    yield "format", FORMAT
+    yield "export", export.plain()
+    yield "series", (_series(outcomes, i) for i in range(len(case)))
+    yield "blanks", _blanks(case)
+    yield "check_standards", _check_standards(outcomes)
+    yield "calibrations", _calibrations(case)
+    yield "set_aside", ({"line": a.line, "reason": a.reason, "text": a.text} for a in case.readings.set_aside)
+    yield "problems", problems
+    yield "seal", None
 
 
 def _series(outcomes: Outcomes, i: int) -> dict[str, Any]:

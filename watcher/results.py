@@ -16,9 +16,11 @@ from parsers.readings import line_ranges
 from rules import plan
 from rules.case import Reported
 from rules.figures import figure
-from watcher.record import Export, record
+from watcher.record import Export, record_parts
 
 if TYPE_CHECKING:
+    from collections.abc import Iterator
+
     from rules.outcomes import Outcomes
     from watcher.schema import CsvPart
 
@@ -53,21 +55,43 @@ COLUMNS = (
 _FORMULA = re.compile(r"\s*[=+\-@\uff1d\uff0b\uff0d\uff20]|[\t\r]")
 
 
-def json_bytes(outcomes: Outcomes, export: Export, problems: tuple[str, ...]) -> bytes:
-    """Return the JSON record."""
-    text = json.dumps(record(outcomes, export, problems), ensure_ascii=False, allow_nan=False, indent=1)
-    return (text + "\n").encode()
+def json_pieces(outcomes: Outcomes, export: Export, problems: tuple[str, ...]) -> Iterator[bytes]:
+    """Yield the JSON record piece by piece: one line for each key, and one for each series and other list entry.
+
+    A long export has ten thousand series, so the whole is never held in memory.
+    """
+    opening = "{"
+    for key, value in record_parts(outcomes, export, problems):
+        yield f"{opening}{_json(key)}: ".encode()
+        opening = ",\n"
+        if isinstance(value, (dict, str, int)) or value is None:
+            yield _json(value).encode()
+            continue
+        yield b"["
+        separator = "\n"
+        for entry in value:
+            yield f"{separator}{_json(entry)}".encode()
+            separator = ",\n"
+        yield b"]"
+    yield b"}\n"
 
 
-def csv_bytes(outcomes: Outcomes, export: Export, form: CsvPart) -> bytes:
-    """Return the CSV: one row for each series, UTF-8 with a mark, CRLF."""
+def _json(value: Any) -> str:
+    return json.dumps(value, ensure_ascii=False, allow_nan=False)
+
+
+def csv_pieces(outcomes: Outcomes, export: Export, form: CsvPart) -> Iterator[bytes]:
+    """Yield the CSV row by row: one for each series, UTF-8 with a mark, CRLF."""
     out = io.StringIO()
     writer = csv.writer(out, delimiter=form.separator, lineterminator="\r\n")
     writer.writerow(COLUMNS)
+    yield out.getvalue().encode("utf-8-sig")
     for i in range(len(outcomes.case)):
+        out.seek(0)
+        out.truncate()
         row = _row(outcomes, i, export)
         writer.writerow([_cell(row[column], form.decimal) for column in COLUMNS])
-    return out.getvalue().encode("utf-8-sig")
+        yield out.getvalue().encode()
 
 
 def inert(text: str) -> str:
@@ -123,7 +147,7 @@ def _row(outcomes: Outcomes, i: int, export: Export) -> dict[str, Any]:
         "correlation": None if at < 0 else float(lines.correlation[at]),
         "n_levels": 0 if at < 0 else int(case.fits.distinct[at]),
         "matrix_effect": float(case.recoveries.matrix_effect[i]),
-        "recovery": float(case.recoveries.headline[i]),
+        "recovery": float(outcomes.check("recovery").value[i]),
         "verdict": outcomes.verdict_of(i).word,
         "reasons": "; ".join(outcomes.reasons(i)),
         "next_step": plan.next_step(outcomes, i),

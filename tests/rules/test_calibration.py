@@ -276,3 +276,20 @@ def test_channels_are_calibrated_apart(outcomes, make_standards):
         2 * out.case.calibrations.lines.slope[out.case.back.calibration[0]]
     )
     assert out.case.back.results.value[0] > 1.9 * out.case.back.results.value[1]
+
+
+def test_the_way_from_vessel_to_sample_is_in_the_budget(outcomes, make_standards):
+    """An aliquot of 10 ± 0.2 mL in 50 ± 0.5 mL adds 0.2/√3/10 and 0.5/√3/50 to the read-back's relative u."""
+    bench = {"aliquot": Measure(10, "mL"), "made_up_to": Measure(50, "mL")}
+    rows = make_standards([0, 1, 2, 3], [0.01, 0.205, 0.395, 0.61])
+    rows.append({"sample": "ROOF-7", "role": "unspiked", "signal": 0.3})
+    tolerances = {"aliquot": Measure(0.2, "mL"), "made_up_to": Measure(0.5, "mL")}
+
+    bare = outcomes(rows, bench=Bench(**bench)).case.back.results
+    full = outcomes(rows, bench=Bench(**bench, tolerances=tolerances)).case.back.results
+
+    added = ((0.2 / 3**0.5 / 10) ** 2 + (0.5 / 3**0.5 / 50) ** 2) * bare.value[0] ** 2
+    assert full.value[0] == bare.value[0]
+    assert full.standard_uncertainty[0] ** 2 - bare.standard_uncertainty[0] ** 2 == pytest.approx(added)
+    assert full.low[0] < bare.low[0]
+    assert full.high[0] > bare.high[0]

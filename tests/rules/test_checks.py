@@ -134,7 +134,7 @@ CASES = [
         NOT,
         "the signal does not change with the additions",
     ),
-    ("correlation", {"additions": ([0.2, np.nan, 0.5], [0, 1, 2.0])}, NOT, "no line can be drawn"),
+    ("correlation", {"additions": ([0.2, np.nan, 0.5], [0, 1, 2.0])}, NOT, "the inputs are faulty"),
     # --- curvature
     ("curvature", {}, PASS, "no bend seen (p = 1.0); so few solutions cannot see a droop of 10 %"),
     (

@@ -84,14 +84,15 @@ def test_closed_form_is_the_inverted_test(case):
     st.floats(0.001, 0.1),
     st.floats(0.005, 0.05),
     st.floats(-0.95, 0.2),
+    st.floats(0, 0.01),
 )
-def test_read_back_is_the_inverted_test(signal, a, b, s, sa, rel_b, corr):
-    """Both ends of a read-back solve (y - a - b x)² = t²(s² + V_aa + 2 x V_ab + x² V_bb)."""
+def test_read_back_is_the_inverted_test(signal, a, b, s, sa, rel_b, corr, kappa):
+    """Both ends of a read-back solve (y - a - b x)² = t²(s² + V_aa + 2 x V_ab + x² V_bb) + κ b² x²."""
     sb, t = rel_b * b, 2.776
     ab = corr * sa * sb
 
     def excess(x):
-        return (signal - a - b * x) ** 2 - t**2 * (s**2 + sa**2 + 2 * x * ab + x**2 * sb**2)
+        return (signal - a - b * x) ** 2 - t**2 * (s**2 + sa**2 + 2 * x * ab + x**2 * sb**2) - kappa * b**2 * x**2
 
     interval = read_back(
         np.array([signal]),
@@ -100,6 +101,7 @@ def test_read_back_is_the_inverted_test(signal, a, b, s, sa, rel_b, corr):
         np.array([b]),
         Covariance(np.array([sa**2]), np.array([ab]), np.array([sb**2])),
         np.array([t]),
+        np.array([kappa]),
     )
 
     low, high = ends(excess, (signal - a) / b, s / b)

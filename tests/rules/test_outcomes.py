@@ -126,10 +126,10 @@ def test_an_analyte_that_no_stock_contains_is_not_judged_for_recovery(outcomes, 
 
     zinc, lead = by_name(out)["SED-12 Zn"], by_name(out)["SED-12 Pb"]
     assert out.verdict_of(lead) is Verdict.NOT_SPIKED
-    assert np.isnan(out.case.recoveries.headline[lead])
+    assert np.isnan(out.check("recovery").value[lead])
     assert np.isfinite(out.reported(lead).value[lead])
     assert out.verdict_of(zinc) is not Verdict.NOT_SPIKED
-    assert out.case.recoveries.headline[zinc] == pytest.approx(100, abs=1)
+    assert out.check("recovery").value[zinc] == pytest.approx(100, abs=1)
 
 
 def test_a_single_addition_warns_and_carries_its_value(outcomes, make_additions):

@@ -19,7 +19,7 @@ def test_recovery_of_one_addition_by_hand(outcomes, make_standards, make_additio
 
     recoveries = out.case.recoveries
     assert recoveries.each[1] == pytest.approx(70)
-    assert recoveries.headline[0] == pytest.approx(70)
+    assert out.check("recovery").value[0] == pytest.approx(70)
     assert recoveries.matrix_effect[0] == pytest.approx(-30)
 
 
@@ -43,7 +43,7 @@ def test_slope_recovery_is_the_headline_from_two_levels_on(outcomes, make_standa
 
     beta = np.polyfit(added, signals, 1)[0]
     recoveries = out.case.recoveries
-    assert recoveries.headline[0] == pytest.approx(100 * beta / 0.1)
+    assert out.check("recovery").value[0] == pytest.approx(100 * beta / 0.1)
     assert recoveries.each[1:].tolist() == pytest.approx([90, 97.5, 280 / 3])
     assert np.isnan(recoveries.each[0])
 
@@ -52,7 +52,7 @@ def test_of_two_preparations_the_worse_is_the_headline(outcomes, make_standards,
     """Two vessels at one level recover 80 and 110 %: the headline is 80 %."""
     out = outcomes(make_standards(*STANDARDS) + make_additions([0.22, 0.62, 0.77], [0, 5.0, 5.0]))
 
-    assert out.case.recoveries.headline[0] == pytest.approx(80)
+    assert out.check("recovery").value[0] == pytest.approx(80)
 
 
 def test_of_two_preparations_the_one_outside_the_limits_decides(outcomes, make_standards, make_additions, check):
@@ -73,7 +73,7 @@ def test_without_a_calibration_no_recovery_is_shown(outcomes, make_additions, ch
 
     recoveries = out.case.recoveries
     assert np.isnan(recoveries.each).all()
-    assert np.isnan(recoveries.headline[0])
+    assert np.isnan(out.check("recovery").value[0])
     for name in ("recovery", "matrix_effect", "spike_size"):
         assert np.isnan(check(out, name).value[0])
         assert check(out, name).outcome[0] == 0

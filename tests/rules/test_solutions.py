@@ -105,3 +105,27 @@ def test_solutions_stand_in_run_order(make_readings):
     rows = [SAMPLE | {"signal": float(t), "measured_at": float(t)} for t in (30, 10, 20)]
 
     assert gather(make_readings(rows)).signal.tolist() == [10.0, 20.0, 30.0]
+
+
+def test_replicates_numbered_downwards_are_one_solution(make_readings):
+    """A number that comes again opens a further solution; falling numbers alone do not."""
+    rows = [
+        {"sample": "SED-12", "label": "SED-12", "role": "unspiked", "signal": 0.1 * n, "replicate": n}
+        for n in (3, 2, 1, 3, 2, 1)
+    ]
+
+    found = gather(make_readings(rows))
+
+    assert found.segments.sizes.tolist() == [3, 3]
+
+
+def test_replicate_rows_that_disagree_are_a_fault(make_readings):
+    """Two rows of one solution with different spike volumes cannot both be right."""
+    rows = [
+        {"sample": "SED-12", "label": "SED-12", "role": "spiked", "signal": 0.2, "replicate": n, "spike_volume": v}
+        for n, v in ((1, 5.0), (2, 10.0))
+    ]
+
+    found = gather(make_readings(rows))
+
+    assert found.faults == {0: ["line 2: its replicate rows disagree on spike_volume: correct the export"]}

@@ -57,14 +57,18 @@ def _evaluate(text: str, request: dict[str, Any]) -> dict[str, Any]:
         "alerted": request["alerted"],
         "final": request["final"],
     }
-    contents = {f"{stem}.csv": text.encode(), f"{stem}.json": json.dumps(record, sort_keys=True).encode()}
+    contents = {f"{stem}.csv": [text.encode()], f"{stem}.json": [json.dumps(record, sort_keys=True).encode()]}
     staging = Path(request["staging"])
     Disk().write_all(staging, contents, "stage")
     return {
         "fate": "done",
         "layout": "flame bench",
         "files": [
-            {"target": f"2026-12/{each}", "staged": str(staging / each), "sha256": hashlib.sha256(content).hexdigest()}
+            {
+                "target": f"2026-12/{each}",
+                "staged": str(staging / each),
+                "sha256": hashlib.sha256(b"".join(content)).hexdigest(),
+            }
             for each, content in contents.items()
         ],
         "mails": [_mail(name, row[0], row[1]) for row in rows if row[1] in ("fail", "incomplete")],

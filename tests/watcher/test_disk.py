@@ -41,11 +41,11 @@ def test_content_is_on_disk_before_its_name(tmp_path: Path) -> None:
     """Two files of one folder: each is synced before it gets its name, and the folder is synced once, last."""
     disk = _TellingDisk()
 
-    disk.write_all(tmp_path, {"a.csv": b"1", "a.json": b"2"})
+    disk.write_all(tmp_path, {"a.csv": [b"1"], "a.json": [b"2", b"3"]})
 
     assert disk.steps == ["sync", "replace a.csv", "sync", "replace a.json", "folder"]
     assert (tmp_path / "a.csv").read_bytes() == b"1"
-    assert (tmp_path / "a.json").read_bytes() == b"2"
+    assert (tmp_path / "a.json").read_bytes() == b"23"
 
 
 @pytest.mark.parametrize("step", [1, 2, 3])

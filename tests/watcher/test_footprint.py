@@ -74,7 +74,7 @@ def test_an_export_costs_seven_syncs_before_its_mail_is_queued(
     staging = tmp_path / "staging"
     staging.mkdir()
     by_worker = _CountingDisk()
-    by_worker.write_all(staging, {"a.csv": b"", "a.json": b""})
+    by_worker.write_all(staging, {"a.csv": [b""], "a.json": [b""]})
 
     assert ledger.counts() == {"done": 1}
     assert (by_service, by_worker.syncs) == (4, 3)

@@ -131,12 +131,12 @@ KINDS = {
 
 def csv_of(settings: Settings, found: Evaluated) -> bytes:
     """Return the CSV."""
-    return results.csv_bytes(found.outcomes, found.export, settings.file.csv)
+    return b"".join(results.csv_pieces(found.outcomes, found.export, settings.file.csv))
 
 
 def json_of(found: Evaluated) -> Any:
     """Return the JSON record, read back."""
-    return json.loads(results.json_bytes(found.outcomes, found.export, found.problems))
+    return json.loads(b"".join(results.json_pieces(found.outcomes, found.export, found.problems)))
 
 
 # -- CSV -----------------------------------------------------------------------------------------------------------
@@ -264,7 +264,7 @@ def test_there_is_no_number_that_is_none(kind: str) -> None:
     def refuse(constant: str) -> None:
         raise AssertionError(constant)
 
-    json.loads(results.json_bytes(found.outcomes, found.export, found.problems), parse_constant=refuse)
+    json.loads(b"".join(results.json_pieces(found.outcomes, found.export, found.problems)), parse_constant=refuse)
 
 
 def test_a_line_that_falls_gives_no_number() -> None:
@@ -284,8 +284,8 @@ def test_bytes_do_not_depend_on_when(kind: str) -> None:
     again, second = evaluated(KINDS[kind])
 
     assert csv_of(settings, first) == csv_of(again, second)
-    assert results.json_bytes(first.outcomes, first.export, first.problems) == results.json_bytes(
-        second.outcomes, second.export, second.problems
+    assert list(results.json_pieces(first.outcomes, first.export, first.problems)) == list(
+        results.json_pieces(second.outcomes, second.export, second.problems)
     )
 
 
