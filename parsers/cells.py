@@ -233,7 +233,11 @@ class Grammar:
 
 
 def converted(
-    texts: Texts, convert: Callable[[str], Cell], quick: Callable[[str], float | None] | None = None
+    texts: Texts,
+    convert: Callable[[str], Cell],
+    quick: Callable[[str], float | None] | None = None,
+    *,
+    missing: bool = True,
 ) -> Numbers:
     """Convert a column of texts, each distinct text once; a row without text is an empty cell.
 
@@ -245,6 +249,8 @@ def converted(
         Understands one text.
     quick
         Returns the number of a text that it understands at once, else None.
+    missing
+        Whether empty cells are listed among the odd ones; where nobody asks for them, listing 10⁵ takes its time.
     """
     cells: dict[int, Cell] = {}
     values = [quick(name) if quick is not None else None for name in (*texts.names, "")]
@@ -254,7 +260,9 @@ def converted(
             values[code] = cells[code].value
     # The code -1 of a row without text picks the last value, that of an empty cell.
     found = np.array(values, dtype=np.float64)[texts.codes]
-    odd = np.flatnonzero(np.isnan(found))
+    unasked = () if missing else (Kind.MISSING,)
+    is_odd = [code in cells and cells[code].kind not in (Kind.NUMBER, *unasked) for code in range(len(values))]
+    odd = np.flatnonzero(np.array(is_odd, dtype=bool)[texts.codes])
     codes = texts.codes[odd].tolist()
     last = len(texts.names)
     return Numbers(

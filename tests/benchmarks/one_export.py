@@ -60,7 +60,7 @@ def accept(laboratory: Laboratory, candidate: Candidate) -> ExportRow:
 
 def evaluate(laboratory: Laboratory, export: ExportRow) -> Mapping[str, int]:
     """Evaluate in the worker and record the outcome; return the number of series for each verdict."""
-    assessed = laboratory.service._evaluate(export, final=False)
+    assessed = laboratory.service._evaluate(export, at_once=False)
     if assessed is None or assessed.export.state != "done":
         raise RuntimeError(f"{export.name} gave no results, nothing worth measuring happened: {assessed}")
     return assessed.counts
