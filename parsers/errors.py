@@ -69,14 +69,17 @@ class ExportRefused(ParsersError):
         The header concerned, or None.
     sentence
         What was expected, what was found, what follows and what to do.
+    remedy
+        What to do, once more by itself.
     """
 
-    def __init__(self, name: str, line: int | None, column: str | None, sentence: str) -> None:
-        super().__init__(name, line, column, sentence)
+    def __init__(self, name: str, line: int | None, column: str | None, sentence: str, remedy: str) -> None:
+        super().__init__(name, line, column, sentence, remedy)
         self.name = name
         self.line = line
         self.column = column
         self.sentence = sentence
+        self.remedy = remedy
 
     def __str__(self) -> str:
         """Say where and what."""

@@ -271,4 +271,4 @@ def _refuse_nul(text: str, name: str) -> None:
 
 
 def _refusal(name: str, line: int | None, sentence: str, todo: str, column: str | None = None) -> ExportRefused:
-    return ExportRefused(name, line, column, f"{sentence}. {_REFUSED} {todo}.")
+    return ExportRefused(name, line, column, f"{sentence}. {_REFUSED} {todo}.", f"{todo}.")

@@ -63,6 +63,9 @@ class Evaluated:
     problems: tuple[str, ...]
 
 
+NARROW = "Narrow claims.file or claims.text of one of them."
+
+
 class Unclaimed(Exception):
     """No layout claims the export."""
 
@@ -94,8 +97,8 @@ def choose_layout(settings: Settings, job: Job) -> tuple[Layout, Method]:
             job.name,
             None,
             None,
-            f"expected one layout to claim it, got {names}. Nothing of it was evaluated. Narrow claims.file or "
-            f"claims.text of one of them.",
+            f"expected one layout to claim it, got {names}. Nothing of it was evaluated. {NARROW}",
+            NARROW,
         )
     return claiming[0]
 
@@ -234,7 +237,7 @@ class Worker:
             wait = f"It is evaluated when that line is there, or when nothing changes for {hours} (complete_after)."
             return answer("waiting", layout=unfinished.layout.layout, problem=f"{_no_end(unfinished.layout)} {wait}")
         except ExportRefused as refused:
-            letter = mail.refusal(job.name, str(refused), job.sha256)
+            letter = mail.refusal(job.name, str(refused), refused.remedy, job.sha256)
             return answer("refused", problem=str(refused), mails=[letter.plain()])
         outcomes = evaluated.outcomes
         letters = mail.mails(

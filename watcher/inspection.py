@@ -30,6 +30,10 @@ STALE_SCANS = 6
 STALE_SECONDS = 180.0
 
 
+#: Checks that judge the calibration's result, and so decide nothing on an additions' result unless stated.
+INFORMING = ("recovery", "spike_size", "matrix_effect")
+
+
 def _settings(config: Path) -> Settings | None:
     """Return the settings, or None after naming their faults on standard error."""
     try:
@@ -71,6 +75,12 @@ def _limits(settings: Settings) -> Iterator[str]:
     defaults = [name for name in DEFAULTS if name not in stated]
     if defaults:
         yield f"Not the laboratory's decision yet, defaults hold: {', '.join(defaults)}"
+    silent = [name for name in INFORMING if name in defaults and settings.file.report == "additions"]
+    if silent:
+        yield (
+            f"With report: additions these only inform until the laboratory states a limit: {', '.join(silent)}. A "
+            f"poor recovery then fails no sample and is not mailed."
+        )
 
 
 def _claimed_twice(settings: Settings) -> Iterator[str]:

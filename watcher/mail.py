@@ -123,15 +123,12 @@ def _key(kind: str, outcomes: Outcomes, i: int, export: Export) -> str:
     return "|".join((kind, export.name, *parts, "+".join(outcomes.failed_checks(i))))
 
 
-def refusal(name: str, sentence: str, sha256: str) -> Mail:
+def refusal(name: str, sentence: str, remedy: str, sha256: str) -> Mail:
     """Return the mail about an export that gave no results."""
     body = _body(
         f"PROBLEM {name} was not evaluated",
         [
-            (
-                "DO",
-                ["Do what the reason says; the export is taken in again by itself when it or the layout changes."],
-            ),
+            ("DO", [remedy, "A changed export is taken in by itself, a changed layout after a restart."]),
             ("HOLD", [f"Everything measured in {name}: it has no results. Other exports are not affected."]),
             ("WHY", [sentence]),
             ("RECORD", [f"export {name}, sha256 {sha256[:12]}"]),

@@ -212,7 +212,7 @@ def test_samples_that_pass_or_warn_are_not_mailed() -> None:
 def test_a_refused_export() -> None:
     """A refused export: named once in the subject, with its reason, and what to do."""
     sentence = "PL-0901.csv, line 7: expected 7 fields as in the header, got 3. Nothing of this export is read."
-    one = mail.refusal("PL-0901.csv", sentence, "ab" * 32)
+    one = mail.refusal("PL-0901.csv", sentence, "Correct the row.", "ab" * 32)
 
     assert one.kind == "problem"
     assert one.subject.startswith("PROBLEM PL-0901.csv, line 7: expected 7 fields")
@@ -309,7 +309,7 @@ def test_a_hostile_sample_cannot_break_its_own_mail(sample: str) -> None:
 @given(st.text(min_size=1, max_size=40), st.text(max_size=200))
 def test_any_refusal_can_be_sent(name: str, sentence: str) -> None:
     """A refusal about any name with any sentence becomes a message with one subject line."""
-    message = sent(mail.refusal(name, sentence, "ab" * 32))
+    message = sent(mail.refusal(name, sentence, "Correct it.", "ab" * 32))
 
     assert message["Subject"].startswith("PROBLEM")
     assert "\n" not in message["Subject"]
