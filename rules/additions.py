@@ -11,7 +11,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from rules import line
+from rules import line, variance
 from rules.interval import BlankTerm, Covariance, Interval, extrapolation, normal_quantile, student_t
 from rules.result import Results, Share, combine
 
@@ -43,6 +43,10 @@ class Fits:
         The fits, in signal per unit of result.
     net, fitted_gross
         float64[p]: measured and fitted signal in the vessel, the blank included in both.
+    variance
+        float64[p], h of the variance model: a signal's variance in units of the squared residual SD.
+    least
+        float64[k], least signal at which h was computed.
     distinct
         int64[k], distinct additions above zero.
     covariance
@@ -60,6 +64,8 @@ class Fits:
     lines: Lines
     net: Floats
     fitted_gross: Floats
+    variance: Floats
+    least: Floats
     distinct: Integers
     covariance: Covariance
     dof: Floats
@@ -80,7 +86,15 @@ class Fits:
         return np.where(self.of_series >= 0, values[self.of_series], np.nan)
 
 
-def fit(series: Series, solutions: Solutions, vessels: Vessels, blanks: Blanks, key: Integers, method: Method) -> Fits:
+def fit(
+    series: Series,
+    solutions: Solutions,
+    vessels: Vessels,
+    blanks: Blanks,
+    key: Integers,
+    floor: variance.Floor,
+    method: Method,
+) -> Fits:
     """Fit the line of every series that has additions and an unspiked solution.
 
     Parameters
@@ -89,6 +103,8 @@ def fit(series: Series, solutions: Solutions, vessels: Vessels, blanks: Blanks, 
         What the export says.
     key
         int64[m], analyte and channel of each series.
+    floor
+        Least signal of a weight, for each series.
     method
         How blanks are used, and the scatter of preparations if it is known.
     """
@@ -103,12 +119,11 @@ def fit(series: Series, solutions: Solutions, vessels: Vessels, blanks: Blanks, 
     y_blank = blanks.mean[key][series.segments.owner[places]]
     additions = vessels.addition[members]
     scaled = _scaled(y, f, y_blank, method)
-    lines = line.fit(additions, scaled, f * f, segments)
-    blank = _blank_term(f, additions, segments, blanks.variance[key[fitted]], method)
-    with np.errstate(invalid="ignore"):
-        fitted_net = f * (segments.spread(lines.intercept) + segments.spread(lines.slope) * additions)
+    offset = y_blank if method.blank == "subtract" else f * y_blank if method.blank == "preparation" else 0 * f
+    weighted = variance.fit(additions, scaled, f, offset, floor.of(fitted), method.variance, segments)
+    lines = weighted.lines
+    blank = _blank_term(f, additions, weighted.weights, segments, blanks.variance[key[fitted]], method)
     covariance, dof = _covariance(lines, additions, scaled, segments, method)
-    offset = y_blank if method.blank == "subtract" else f * y_blank if method.blank == "preparation" else 0.0
     return Fits(
         of_series=of_series,
         series=fitted,
@@ -116,7 +131,9 @@ def fit(series: Series, solutions: Solutions, vessels: Vessels, blanks: Blanks, 
         segments=segments,
         lines=lines,
         net=y,
-        fitted_gross=fitted_net + offset,
+        fitted_gross=weighted.gross,
+        variance=weighted.variance,
+        least=weighted.least,
         distinct=_distinct_additions(additions, segments),
         covariance=covariance,
         dof=dof,
@@ -136,15 +153,17 @@ def _scaled(y: Floats, f: Floats, y_blank: Floats, method: Method) -> Floats:
         return y / f
 
 
-def _blank_term(f: Floats, additions: Floats, segments: line.Segments, variance: Floats, method: Method) -> BlankTerm:
+def _blank_term(
+    f: Floats, additions: Floats, weights: Floats, segments: line.Segments, blank_variance: Floats, method: Method
+) -> BlankTerm:
     """How intercept and slope move with the blank: the line of -1/f on A, or a plain shift."""
     if method.blank == "subtract":
         with np.errstate(invalid="ignore", divide="ignore"):
-            moved = line.fit(additions, -1 / f, f * f, segments)
-        return BlankTerm(np.nan_to_num(variance), moved.intercept, moved.slope)
+            moved = line.fit(additions, -1 / f, weights, segments)
+        return BlankTerm(np.nan_to_num(blank_variance), moved.intercept, moved.slope)
     if method.blank == "preparation":
         count = len(segments.sizes)
-        return BlankTerm(np.nan_to_num(variance), np.full(count, -1.0), np.zeros(count))
+        return BlankTerm(np.nan_to_num(blank_variance), np.full(count, -1.0), np.zeros(count))
     return BlankTerm.absent(len(segments.sizes))
 
 
@@ -163,9 +182,9 @@ def _covariance(
     single = lines.n == 2  # the line is exact, so its residuals say nothing
     top = segments.max(additions)
     with np.errstate(invalid="ignore", divide="ignore"):
-        variance = (known.rsd * scaled) ** 2
-        unspiked = segments.sum(np.where(additions == 0, variance, 0.0))
-        both = segments.sum(variance)
+        scatter = (known.rsd * scaled) ** 2
+        unspiked = segments.sum(np.where(additions == 0, scatter, 0.0))
+        both = segments.sum(scatter)
         exact = (unspiked, -unspiked / top, both / top**2)
     values = (covariance.intercept, covariance.both, covariance.slope)
     covariance = Covariance(*(np.where(single, e, v) for e, v in zip(exact, values, strict=True)))

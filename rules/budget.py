@@ -72,6 +72,24 @@ def common(series: Series, vessels: Vessels, method: Method) -> tuple[Common, ..
     )
 
 
+def common_of_recovery(series: Series, vessels: Vessels, method: Method) -> Floats:
+    """Return Σ u² of the relative uncertainties of the added concentration c = c_S v / V that the settings state.
+
+    The aliquot cancels here: it dilutes spiked and unspiked alike. What nobody stated counts as nothing, as in U.
+    """
+    members = series.members
+    by_volume = _any(series, series.spiked & vessels.by_volume[members])
+    tolerances = method.bench.tolerances
+    smallest = _smallest(series, np.where(series.spiked, vessels.spike_volume[members], np.nan))
+    vessel = _smallest(series, vessels.made_up_to[members])
+    parts = (
+        _stock(series, vessels, method),
+        _relative(tolerances.get("spike_volume"), smallest),
+        _relative(tolerances.get("made_up_to"), vessel),
+    )
+    return np.where(by_volume, sum((np.nan_to_num(part) ** 2 for part in parts), np.zeros(len(series))), 0.0)
+
+
 def common_of_read_back(series: Series, vessels: Vessels, method: Method) -> tuple[Common, ...]:
     """Return the common uncertainties of a result read back from a calibration: those of the way to the sample."""
     members = series.members

@@ -12,7 +12,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from parsers.readings import Role
-from rules import line, units
+from rules import line, units, variance
 from rules.interval import Covariance, student_t
 
 if TYPE_CHECKING:
@@ -21,7 +21,7 @@ if TYPE_CHECKING:
     from parsers.readings import Readings
     from rules.blanks import Keys
     from rules.line import Floats, Integers, Lines
-    from rules.method import Method
+    from rules.method import Method, VarianceModel
     from rules.solutions import Solutions
 
 #: Distinct nominal concentrations that make a calibration; 0 is one (method, section 4).
@@ -49,6 +49,8 @@ class Calibrations:
         float64[c], highest signal of a standard.
     t
         float64[c], Student's t.
+    least, model
+        Least signal that a weight was computed at, and the variance model.
     refused
         Key to the sentences of why its standards make no calibration.
     """
@@ -63,7 +65,14 @@ class Calibrations:
     top: Floats
     top_signal: Floats
     t: Floats
+    least: Floats
+    model: VarianceModel
     refused: dict[int, list[str]]
+
+    def variance_at(self, signal: Floats, calibration: Integers) -> Floats:
+        """Return the variance of one signal, s² h, by the calibration that each belongs to."""
+        s = self.lines.residual_sd[calibration]
+        return s**2 * variance.at(signal, self.least[calibration], self.model)
 
     @property
     def covariance(self) -> Covariance:
@@ -80,8 +89,12 @@ def nominal_of(readings: Readings, rows: Integers, method: Method) -> tuple[Floa
         return np.full(len(rows), np.nan), f"nominal: {error}"
 
 
-def calibrate(readings: Readings, solutions: Solutions, keys: Keys, method: Method) -> Calibrations:
+def calibrate(
+    readings: Readings, solutions: Solutions, keys: Keys, floor: variance.Floor, method: Method
+) -> Calibrations:
     """Fit a line through the standards of every analyte and channel that has enough of them.
+
+    `floor` holds the least signal of a weight for each key.
 
     A standard with a faulty cell spoils its calibration: the lost point may be the one that shows a fault, so nothing
     is calibrated around it.
@@ -103,7 +116,10 @@ def calibrate(readings: Readings, solutions: Solutions, keys: Keys, method: Meth
     standard, nominal, key = standard[keep], nominal[keep], key[keep]
     present, sizes = np.unique(key, return_counts=True)
     segments = line.Segments.of_sizes(sizes)
-    lines = line.fit(nominal, solutions.signal[standard], np.ones(len(standard)), segments)
+    ones, zeros = np.ones(len(standard)), np.zeros(len(standard))
+    signal = solutions.signal[standard]
+    weighted = variance.fit(nominal, signal, ones, zeros, floor.of(present), method.variance, segments)
+    lines = weighted.lines
     of_key = np.full(keys.count, -1, dtype=np.int64)
     of_key[present] = np.arange(len(present))
     _refuse_flat(lines, present, of_key, refused)
@@ -118,6 +134,8 @@ def calibrate(readings: Readings, solutions: Solutions, keys: Keys, method: Meth
         top=segments.max(nominal),
         top_signal=segments.max(solutions.signal[standard]),
         t=student_t(method.confidence, lines.dof),
+        least=weighted.least,
+        model=method.variance,
         refused=refused,
     )
 

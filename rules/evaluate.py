@@ -25,6 +25,8 @@ from rules import (
     recovery_checks,
     series,
     solutions,
+    units,
+    variance,
     vessels,
 )
 from rules.case import Case, Reported
@@ -68,8 +70,9 @@ def compute(readings: Readings, method: Method, accepted_at: float) -> Case:
     keys = blanks.Keys.of(readings)
     key = keys.code(grouped.analyte, grouped.channel)
     measured_blanks = blanks.collect(readings, gathered, keys, method.confidence)
-    calibrations = calibration.calibrate(readings, gathered, keys, method)
-    fits = additions.fit(grouped, gathered, filled, measured_blanks, key, method)
+    floor = _floor(readings, measured_blanks, keys, method)
+    calibrations = calibration.calibrate(readings, gathered, keys, floor, method)
+    fits = additions.fit(grouped, gathered, filled, measured_blanks, key, floor.of(key), method)
     common = budget.common(grouped, filled, method)
     results, interval, u_line = additions.evaluate(fits, grouped, filled, common, method)
     back = reading_back.evaluate(grouped, gathered, filled, measured_blanks, calibrations, key, method)
@@ -90,11 +93,18 @@ def compute(readings: Readings, method: Method, accepted_at: float) -> Case:
         interval=interval,
         u_line=u_line,
         back=back,
-        recoveries=recovery.evaluate(grouped, gathered, filled, fits, calibrations, back),
+        recoveries=recovery.evaluate(grouped, gathered, filled, fits, calibrations, back, method),
         reported=np.where(by_additions, Reported.ADDITIONS, Reported.CALIBRATION).astype(np.int8),
         faults={},
     )
     return replace(case, faults=batch_checks.collect_faults(case))
+
+
+def _floor(readings: Readings, measured: blanks.Blanks, keys: blanks.Keys, method: Method) -> variance.Floor:
+    """Return what floors the weights of each analyte and channel: the LOQ, else three SD of the blanks."""
+    stated = [method.analyte(name).loq for name in readings.analyte.names]
+    loq = [np.nan if limit is None else units.of_measure(limit, method.result_unit) for limit in stated]
+    return variance.Floor(np.repeat(np.array(loq), keys.channels), 3 * measured.sd)
 
 
 def check(case: Case) -> tuple[Check, ...]:

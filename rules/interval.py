@@ -101,7 +101,7 @@ def extrapolation(
         excess = tt * covariance.slope + common * slope**2 + blank.variance * blank.slope**2
         middle = intercept * slope - tt * covariance.both - blank.variance * blank.intercept * blank.slope
         last = intercept**2 - tt * covariance.intercept - blank.variance * blank.intercept**2
-        return _between(slope**2 - excess, middle, last, excess / slope**2)
+        return between(slope**2 - excess, middle, last, excess / slope**2)
 
 
 def read_back(
@@ -130,10 +130,10 @@ def read_back(
         excess = tt * covariance.slope + common * slope**2
         middle = net * slope + tt * covariance.both
         last = net**2 - tt * (signal_variance + covariance.intercept)
-        return _between(slope**2 - excess, middle, last, excess / slope**2)
+        return between(slope**2 - excess, middle, last, excess / slope**2)
 
 
-def _between(lead: Floats, middle: Floats, last: Floats, g: Floats) -> Interval:
+def between(lead: Floats, middle: Floats, last: Floats, g: Floats) -> Interval:
     """Solve lead C² - 2 middle C + last ≤ 0 where it is a finite interval."""
     root = np.sqrt(np.maximum(middle**2 - lead * last, 0))
     finite = lead > 0

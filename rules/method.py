@@ -15,6 +15,7 @@ if TYPE_CHECKING:
 
 Report = Literal["additions", "calibration", "automatic"]
 BlankUse = Literal["subtract", "preparation", "none"]
+VarianceModel = Literal["constant", "proportional", "counting"]
 AddedRefersTo = Literal["vessel", "aliquot", "nominal"]
 
 
@@ -128,6 +129,8 @@ class Method:
         What is done with blanks; None where the settings do not say it.
     export_unit, result_unit
         Unit of concentrations that state none, and of results.
+    variance
+        How the scatter of a signal goes with it.
     confidence
         Of intervals, as a fraction.
     added_refers_to
@@ -148,6 +151,7 @@ class Method:
     bench: Bench = field(default_factory=Bench)
     analytes: Mapping[str, AnalyteRules] = field(default_factory=dict)
     limits: Mapping[str, CheckLimits] = field(default_factory=dict)
+    variance: VarianceModel = "constant"
     confidence: float = 0.95
     added_refers_to: AddedRefersTo | None = None
     spiked_at: Literal["before preparation", "after preparation"] = "before preparation"

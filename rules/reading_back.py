@@ -81,7 +81,8 @@ def evaluate(
         def of(values: Floats) -> Floats:
             return np.where(has, values[of_series], np.nan) if len(values) else np.full(count, np.nan)
 
-        slope, intercept, s = of(lines.slope), of(lines.intercept), of(lines.residual_sd)
+        slope, intercept = of(lines.slope), of(lines.intercept)
+        scatter = calibrations.variance_at(mean, of_series) / p if len(lines.slope) else np.full(count, np.nan)
         v = calibrations.covariance
         covariance = Covariance(of(v.intercept), of(v.both), of(v.slope))
         x = (mean - intercept) / slope
@@ -89,13 +90,13 @@ def evaluate(
         top, lowest = of(calibrations.top), of(calibrations.lowest)
         # the standards' nominals are written with a few digits: a sample equal to the top standard is not above it
         above, below = highest > top * (1 + 1e-9), x < lowest * (1 - 1e-9)
-        u_line = np.sqrt(s**2 / p + covariance.intercept + 2 * x * covariance.both + x**2 * covariance.slope) / slope
+        u_line = np.sqrt(scatter + covariance.intercept + 2 * x * covariance.both + x**2 * covariance.slope) / slope
         t = of(calibrations.t)
         t_u_blank = _blank_signal(dilution, np.nan_to_num(np.sqrt(blanks.variance[key])), method)
         common = common_of_read_back(series, vessels, method)
         t_common = normal_quantile(method.confidence)
         kappa = sum(((t_common * np.nan_to_num(part.relative)) ** 2 for part in common), np.zeros(count))
-        interval = read_back(mean, s**2 / p + (t_u_blank / t) ** 2, intercept, slope, covariance, t, kappa)
+        interval = read_back(mean, scatter + (t_u_blank / t) ** 2, intercept, slope, covariance, t, kappa)
         scale = predilution / dilution
         value = np.where(above, np.nan, x * scale)
         shown = np.where(np.isfinite(value) & ~(interval.g >= 1), 1.0, np.nan)

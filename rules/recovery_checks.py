@@ -11,7 +11,10 @@ from rules.checks import Check, Outcome, judged, limits_of, percents, severest
 from rules.figures import figure
 
 if TYPE_CHECKING:
+    from numpy.typing import NDArray
+
     from rules.case import Case
+    from rules.limits import CheckLimits
     from rules.line import Floats
 
 NOTHING_INDEPENDENT = "nothing independent of the additions: their own line always recovers 100 %"
@@ -55,7 +58,15 @@ def recovery(case: Case, size: Check) -> Check:
         (size.outcome == Outcome.NOT_EVALUATED) & (case.back.calibration >= 0)
     )
     levels = case.recoveries.levels
-    headline = np.where(case.judged, np.where(levels >= 2, case.recoveries.slope, _hardest(case)), np.nan)
+    limits = limits_of(case.method, case.readings.analyte.names, "recovery")
+    hardest = _hardest(case, limits)
+    single, half = (
+        np.append(column, np.nan)[hardest] for column in (case.recoveries.each, case.recoveries.each_expanded)
+    )
+    several, span = levels >= 2, case.recoveries.slope_interval
+    headline = np.where(case.judged, np.where(several, case.recoveries.slope, single), np.nan)
+    low = np.where(several, 100 * span.low, single - half)
+    high = np.where(several, 100 * span.high, single + half)
     value = np.where(large_enough, headline, np.nan)
     # a recovery that cannot be computed although everything is there must not pass for "not evaluated"
     shown = percents(case, "recovery", value)
@@ -68,32 +79,52 @@ def recovery(case: Case, size: Check) -> Check:
             return NOTHING_INDEPENDENT if case.back.calibration[i] < 0 else "the spike is too small for a recovery"
         what = "slope recovery" if levels[i] >= 2 else "recovery"
         found = f"{what} {shown(i)}"
+        doubt = _doubt(limits[int(case.series.analyte[i])].bounds, low[i], high[i])
         if outcome is Outcome.PASS:
-            return found
+            return f"{found}{doubt}"
         amount = "less" if value[i] < 100 else "more"
-        return f"{found}: {amount} of the added {case.analyte(i)} is found than was added"
+        return f"{found}: {amount} of the added {case.analyte(i)} is found than was added{doubt}"
 
     return judged(case, "recovery", Reported.CALIBRATION, "%", value, sentence)
 
 
-def _hardest(case: Case) -> Floats:
-    """Of the recoveries of single additions the one that the limits judge hardest; NaN where there is none."""
-    limits = limits_of(case.method, case.readings.analyte.names, "recovery")
+def _hardest(case: Case, limits: tuple[CheckLimits, ...]) -> NDArray[np.int64]:
+    """Return the place of the single recovery that the limits judge hardest; -1 where there is none."""
     each, owner = case.recoveries.each, case.series.segments.owner
-    place = severest(limits, case.series.analyte[owner], each, np.abs(each - 100), owner, len(case))
-    return np.append(each, np.nan)[place]
+    return severest(limits, case.series.analyte[owner], each, np.abs(each - 100), owner, len(case))
+
+
+def _doubt(bounds: tuple[float, ...], low: float, high: float) -> str:
+    """Say that a limit lies inside the uncertainty: the verdict could have been the other one."""
+    inside = [bound for bound in bounds if low < bound < high]
+    if not inside:
+        return ""
+    return f" (the limit {inside[0]:g} % lies inside its uncertainty, {figure(low)} to {figure(high)} %)"
 
 
 def matrix_effect(case: Case) -> Check:
     """Slope in the matrix against the calibration's, 100 (β/b - 1) %."""
     value = np.where(case.judged & (case.recoveries.levels > 0), case.recoveries.matrix_effect, np.nan)
     shown = percents(case, "matrix_effect", value)
+    limits = limits_of(case.method, case.readings.analyte.names, "matrix_effect")
+    span = case.recoveries.equivalence_interval
+
+    def absence(i: int) -> str:
+        """Say "no effect beyond" only where the whole 90 % interval lies inside; not seen is not absent."""
+        judged_by = limits[int(case.series.analyte[i])]
+        limit = judged_by.fail or judged_by.warn
+        low, high = 100 * span.low[i] - 100, 100 * span.high[i] - 100
+        if limit is None or not (np.isfinite(low) and np.isfinite(high)):
+            return ""
+        if limit.low < low and high < limit.high:
+            return f": no effect beyond {limit.text}"
+        return f", and its 90 % interval ({figure(low)} to {figure(high)} %) reaches beyond {limit.text}"
 
     def sentence(i: int, outcome: Outcome) -> str:
         if outcome is Outcome.NOT_EVALUATED:
             return NOTHING_INDEPENDENT if case.back.calibration[i] < 0 else "no slope to compare"
         if outcome is Outcome.PASS:
-            return f"the matrix changes the slope by {shown(i)}"
+            return f"the matrix changes the slope by {shown(i)}{absence(i)}"
         direction = "lowers" if value[i] < 0 else "raises"
         advice = (
             "the calibration does not hold in this matrix"

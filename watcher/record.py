@@ -151,7 +151,7 @@ def _fit(case: Case, i: int) -> dict[str, Any] | None:
         "residual_sd": number(lines.residual_sd[at]),
         "n": int(lines.n[at]),
         "dof": int(lines.dof[at]),
-        "variance": "constant",
+        "variance": case.method.variance,
         "g": number(case.interval.g[at]),
         "u_line": number(case.u_line[i] / predilution),
     }
@@ -187,6 +187,8 @@ def _recoveries(case: Case, i: int) -> list[dict[str, Any]]:
             "label": case.label(solution),
             "added": number(case.vessels.added[solution]),
             "recovery": number(case.recoveries.each[start + offset]),
+            "standard_uncertainty": number(case.recoveries.each_u[start + offset]),
+            "expanded_uncertainty": number(case.recoveries.each_expanded[start + offset]),
             "export_lines": line_ranges(case.lines_of([solution])),
         }
         for offset, solution in enumerate(members)
@@ -195,7 +197,15 @@ def _recoveries(case: Case, i: int) -> list[dict[str, Any]]:
 
 
 def _matrix_effect(case: Case, i: int) -> dict[str, Any]:
-    return {"value": number(case.recoveries.matrix_effect[i]), "unit": "%", "low": None, "high": None}
+    recoveries = case.recoveries
+    span = recoveries.slope_interval
+    return {
+        "value": number(recoveries.matrix_effect[i]),
+        "unit": "%",
+        "standard_uncertainty": number(recoveries.slope_u[i]),
+        "low": number(100 * span.low[i] - 100),
+        "high": number(100 * span.high[i] - 100),
+    }
 
 
 def _budget(case: Case, results: Results, i: int, by: Reported) -> list[dict[str, Any]]:

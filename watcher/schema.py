@@ -265,6 +265,25 @@ class CsvPart(Part):
         return self
 
 
+class VariancePart(Part):
+    """A variance model other than the safe one, with the evidence that it holds."""
+
+    model: Literal["constant", "proportional", "counting"]
+    evidence: str = Field(min_length=1)
+
+
+def _variance(value: object) -> object:
+    if value in ("proportional", "counting"):
+        raise ValueError(
+            f"expected the evidence that the scatter is {value}: a wrong model covers as little as 45 %\n"
+            f"Write variance: {{model: {value}, evidence: 'where it was shown'}}"
+        )
+    return {"model": value, "evidence": "the safe default"} if value == "constant" else value
+
+
+Variance = Annotated[VariancePart, BeforeValidator(_variance)]
+
+
 class Decisions(Part):
     """What the laboratory decides, and a layout may decide again for its own exports."""
 
@@ -273,7 +292,7 @@ class Decisions(Part):
     limits: LimitsPart = LimitsPart()
     report: Literal["additions", "calibration"] | None = None
     blank: Literal["subtract", "preparation", "none"] | None = None
-    variance: Literal["constant"] | None = None
+    variance: Variance | None = None
     added_refers_to: Literal["vessel", "aliquot", "nominal"] | None = None
 
 

@@ -252,6 +252,7 @@ def method_for(file: SettingsFile, own: Decisions) -> Method:
             for name, part in file.analytes.items()
         },
         limits=_limits(file.limits, own.limits),
+        variance=stated.model if (stated := own.variance or file.variance) else "constant",
         confidence=file.confidence,
         added_refers_to=own.added_refers_to or file.added_refers_to,
         spiked_at=file.spiked_at,
