@@ -43,6 +43,8 @@ class Fits:
         The fits, in signal per unit of result.
     net, fitted_gross
         float64[p]: measured and fitted signal in the vessel, the blank included in both.
+    weights
+        float64[p], w = f²/h.
     variance
         float64[p], h of the variance model: a signal's variance in units of the squared residual SD.
     least
@@ -64,6 +66,7 @@ class Fits:
     lines: Lines
     net: Floats
     fitted_gross: Floats
+    weights: Floats
     variance: Floats
     least: Floats
     distinct: Integers
@@ -132,6 +135,7 @@ def fit(
         lines=lines,
         net=y,
         fitted_gross=weighted.gross,
+        weights=weighted.weights,
         variance=weighted.variance,
         least=weighted.least,
         distinct=_distinct_additions(additions, segments),

@@ -116,6 +116,7 @@ def check(case: Case) -> tuple[Check, ...]:
         line_checks.slope_certainty(case),
         line_checks.correlation(case),
         line_checks.curvature(case),
+        line_checks.lack_of_fit(case),
         line_checks.residual(case),
         line_checks.addition_size(case),
         recovery_checks.recovery(case, size),

@@ -34,6 +34,15 @@ def percent(value: float, *bounds: float) -> str:
     return f"{value:g} %"
 
 
+def probability(p: float) -> str:
+    """Write a probability, tiny ones as a bound.
+
+    >>> probability(0.68237), probability(0.000000521)
+    ('p = 0.68', 'p < 0.0001')
+    """
+    return f"p = {figure(p, 2)}" if p >= 0.0001 else "p < 0.0001"
+
+
 def places_of(uncertainty: float) -> int:
     """Return the decimals that show an uncertainty to its second significant digit.
 

@@ -148,6 +148,8 @@ DEFAULTS: dict[str, CheckLimits] = {
     "correlation": _default(warn="at least 0.995"),
     # J. Mandel, The Statistical Analysis of Experimental Data (1964): F test of the quadratic term
     "curvature": _default(fail="at least 0.01"),
+    # N. R. Draper, H. Smith, Applied Regression Analysis, 3rd ed. 1998
+    "lack_of_fit": _default(fail="at least 0.01"),
     # common practice
     "residual": _default(fail="at most 10 %"),
     # precision: u is proportional to (C + T)/T; S. L. R. Ellison, M. Thompson, Analyst 133 (2008) 992

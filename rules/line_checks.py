@@ -6,10 +6,11 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
+from rules import lack_of_fit as lack_of_fit_test
 from rules import units
 from rules.case import Reported
 from rules.checks import Check, Outcome, judged, percents
-from rules.figures import figure
+from rules.figures import figure, probability
 
 if TYPE_CHECKING:
     from rules.case import Case
@@ -112,10 +113,29 @@ def curvature(case: Case) -> Check:
             return "a bend needs three distinct levels and four solutions"
         if outcome is Outcome.PASS:
             blind = "; so few solutions cannot see a droop of 10 %" if dof[i] < FEW_DOF else ""
-            return f"no bend seen (p = {figure(value[i], 2)}){blind}"
-        return f"the line is bent (p = {figure(value[i], 2)}): the extrapolation is not valid"
+            return f"no bend seen ({probability(value[i])}){blind}"
+        return f"the line is bent ({probability(value[i])}): the extrapolation is not valid"
 
     return judged(case, "curvature", Reported.ADDITIONS, "", value, sentence)
+
+
+def lack_of_fit(case: Case) -> Check:
+    """Judge p of the lack of fit against repeated preparations. N. R. Draper, H. Smith (1998)."""
+    fits = case.fits
+    members = case.series.members[fits.places]
+    additions, dilution = case.vessels.addition[members], case.vessels.dilution[members]
+    split = lack_of_fit_test.split(additions, dilution, fits.lines.residuals, fits.weights, fits.segments)
+    value = fits.spread(np.where(fits.lines.scatter, split.p, np.nan))
+    levels = fits.spread(split.levels.astype(float))
+
+    def sentence(i: int, outcome: Outcome) -> str:
+        if outcome is Outcome.NOT_EVALUATED:
+            return "lack of fit needs three levels and a preparation that was repeated"
+        if outcome is Outcome.PASS:
+            return f"the line meets its {levels[i]:.0f} levels within the scatter of repeats ({probability(value[i])})"
+        return f"the line misses its levels by more than repeats scatter ({probability(value[i])})"
+
+    return judged(case, "lack_of_fit", Reported.ADDITIONS, "", value, sentence)
 
 
 def residual(case: Case) -> Check:

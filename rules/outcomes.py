@@ -123,6 +123,7 @@ _URGENCY = (
     "recovery",
     "slope_certainty",
     "curvature",
+    "lack_of_fit",
     "linear_evidence",
     "correlation",
     "residual",

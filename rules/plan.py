@@ -153,6 +153,7 @@ _STEPS: tuple[tuple[str, Callable[[Case, int], str]], ...] = (
     ("blank", _blank),
     ("linear_evidence", _dilute),
     ("curvature", _straighten),
+    ("lack_of_fit", _straighten),
     ("recovery", _recovery),
     ("slope_certainty", _larger_additions),
     ("correlation", _scatter),

@@ -90,6 +90,7 @@ class LimitsPart(Part):
     slope_certainty: PlainLimit = None
     correlation: PlainLimit = None
     curvature: PlainLimit = None
+    lack_of_fit: PlainLimit = None
     residual: PercentLimit = None
     addition_size: PlainLimit = None
     recovery: PercentLimit = None

@@ -161,6 +161,20 @@ CASES = [
         NOT,
         "no scatter at the export's resolution, so a bend cannot be told from rounding",
     ),
+    # --- lack of fit
+    (
+        "lack_of_fit",
+        {"additions": ([0.200, 0.206, 0.302, 0.296, 0.401, 0.398], [0, 0, 1, 1, 2, 2.0])},
+        PASS,
+        "the line meets its 3 levels within the scatter of repeats (p = 0.53)",
+    ),
+    (
+        "lack_of_fit",
+        {"additions": ([0.2000, 0.2005, 0.3500, 0.3495, 0.4000, 0.4005], [0, 0, 1, 1, 2, 2.0])},
+        FAIL,
+        "the line misses its levels by more than repeats scatter (p < 0.0001)",
+    ),
+    ("lack_of_fit", {}, NOT, "lack of fit needs three levels and a preparation that was repeated"),
     # --- residual: line 0.203 + 0.098 A, so 0.31 lies 0.009 off 0.301
     ("residual", {}, PASS, "largest residual 3.0 %, at RIV-17 1"),
     (
