@@ -95,6 +95,7 @@ class _Assembly:
             "line": table.line, "label": values.label, "sample": sample, "role": role, "level": level,
             "added": added, "nominal": nominal, "spike_volume": spike_volume,
             "aliquot": values.quantities("aliquot"), "made_up_to": values.quantities("made_up_to"),
+            "mass": values.quantities("mass"), "digest_volume": values.quantities("digest_volume"),
             "replicate": values.numbers("replicate"), "position": values.numbers("position"),
             "measured_at": values.times(), "predilution": values.predilution(),
             **{name: values.texts(name) for name in ("stock", "batch", "analyst", "instrument", "comment")},

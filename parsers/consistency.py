@@ -98,7 +98,7 @@ def _sources(layout: Layout) -> Iterator[Finding]:
         place = ("columns", field)
         if source.constant is not None and (source.names or source.optional or source.map):
             yield place, "a constant needs no 'from', 'optional' or 'map'", "Keep the constant or the column"
-        if field in fields.VOLUMES and not source.unit:
+        if field in (*fields.VOLUMES, *fields.MASSES) and not source.unit:
             name = source.names[0] if source.names else ""
             todo = f"Write {field}: {{from: {name!r}, unit: mL}}" if name else "Add for instance unit: mL"
             yield place, "a volume without unit", todo

@@ -11,9 +11,10 @@ TEXTS = ("label", "sample", "role", "analyte", "channel", "level", "stock", "bat
 NUMBERS = ("signal", "signal_sd", "signal_rsd", "readings", "replicate", "position")
 #: Concentrations: without a unit they take the one of the settings.
 CONCENTRATIONS = ("added", "nominal")
-#: Volumes: a number without unit says nothing.
-VOLUMES = ("spike_volume", "aliquot", "made_up_to")
-QUANTITIES = (*CONCENTRATIONS, *VOLUMES)
+#: Volumes and masses: a number without unit says nothing.
+VOLUMES = ("spike_volume", "aliquot", "made_up_to", "digest_volume")
+MASSES = ("mass",)
+QUANTITIES = (*CONCENTRATIONS, *VOLUMES, *MASSES)
 ALL = (*TEXTS, *NUMBERS, *QUANTITIES, "predilution", "measured_at")
 
 #: What a named group of a label rule may say.
@@ -30,6 +31,6 @@ FROM_HEADING = (
 UNFOLD_GROUPS = ("analyte", "channel", "field")
 UNFOLD_FIELDS = ("signal", "signal_sd", "signal_rsd", "readings")
 #: Fields whose missing cell on a sample is a fault: a silent default would change its result.
-NEEDED_ON_SAMPLES = ("aliquot", "made_up_to", "predilution")
+NEEDED_ON_SAMPLES = ("aliquot", "made_up_to", "mass", "digest_volume", "predilution")
 #: Statistics beside a signal: a cell that says nothing does not spoil the signal.
 STATISTICS = ("signal_sd", "signal_rsd", "readings")

@@ -100,6 +100,8 @@ class Columns(_Part):
     spike_volume: Source | None = None
     aliquot: Source | None = None
     made_up_to: Source | None = None
+    mass: Source | None = None
+    digest_volume: Source | None = None
     predilution: Source | None = None
     measured_at: Source | None = None
 

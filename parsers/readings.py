@@ -220,8 +220,10 @@ class Readings:
         float64[n]: seconds since 1970-01-01 of the local time that the export wrote; NaN where absent.
     added, nominal
         Concentrations added to a spiked solution, and of a standard or check standard.
-    spike_volume, aliquot, made_up_to
-        Volumes.
+    spike_volume, aliquot, made_up_to, digest_volume
+        Volumes; `digest_volume` is what a solid's digest was made up to.
+    mass
+        Mass of the portion of a solid that was digested.
     predilution
         float64[n]: factor from aliquot to sample, ≥ 1 as a rule; NaN where the row has none.
     faults, set_aside, problems
@@ -259,6 +261,8 @@ class Readings:
     spike_volume: Quantities
     aliquot: Quantities
     made_up_to: Quantities
+    mass: Quantities
+    digest_volume: Quantities
     faults: tuple[Fault, ...]
     set_aside: tuple[SetAside, ...]
     problems: tuple[Problem, ...]

@@ -206,7 +206,7 @@ def _quantity(text: str, grammar: Grammar, name: str) -> tuple[Cell, str]:
         plain = grammar.cell(text)
         return Cell(Kind.UNREADABLE, math.nan, text, plain.expected, plain.remedy), ""
     value, unit = found
-    if name in fields.VOLUMES and not unit:
+    if name in (*fields.VOLUMES, *fields.MASSES) and not unit:
         expected = f"expected a volume with its unit, got {shown(text)}"
         return Cell(Kind.UNREADABLE, math.nan, text, expected, "Write for instance 5 mL"), ""
     return Cell(Kind.NUMBER, value, text), unit

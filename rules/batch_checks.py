@@ -125,7 +125,7 @@ def _large_enough(case: Case) -> NDArray[np.bool_]:
 
 def _loq(case: Case, analyte: str) -> float:
     stated = case.method.analyte(analyte).loq
-    return np.nan if stated is None else units.of_measure(stated, case.method.result_unit)
+    return np.nan if stated is None else units.of_measure(stated, case.method.vessel_unit)
 
 
 def check_standard(case: Case) -> Check:
@@ -181,7 +181,7 @@ def blank(case: Case) -> Check:
             )
             return f"no {missing} to judge blanks by"
         label = case.label(int(blanks.solutions[place[i]]))
-        reads = f"blank {label} reads {figure(concentration[place[i]])} {case.method.result_unit}"
+        reads = f"blank {label} reads {figure(concentration[place[i]])} {case.method.vessel_unit}"
         return reads if outcome is Outcome.PASS else f"{reads}: the batch is contaminated or carries over"
 
     def rests_on(i: int) -> list[int]:

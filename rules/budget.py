@@ -58,6 +58,7 @@ def common(series: Series, vessels: Vessels, method: Method) -> tuple[Common, ..
     predilution = series.segments.max(vessels.predilution[members])
     tolerances = method.bench.tolerances
     smallest = _smallest(series, np.where(spiked, vessels.spike_volume[members], np.nan))
+    solid = np.full(len(series), method.solid)
     aliquot, vessel = (_smallest(series, column[members]) for column in (vessels.aliquot, vessels.made_up_to))
     nothing = np.zeros(len(series))
     return (
@@ -65,10 +66,20 @@ def common(series: Series, vessels: Vessels, method: Method) -> tuple[Common, ..
         Common("spike_volume", np.where(by_volume, _relative(tolerances.get("spike_volume"), smallest), nothing)),
         Common("aliquot", np.where(by_volume | scaled, _relative(tolerances.get("aliquot"), aliquot), nothing)),
         Common("made_up_to", np.where(scaled, _relative(tolerances.get("made_up_to"), vessel), nothing)),
+        *_of_solid(solid, method),
         Common(
             "predilution",
             np.where(predilution != 1, _relative(tolerances.get("predilution"), predilution), nothing),
         ),
+    )
+
+
+def _of_solid(solid: NDArray[np.bool_], method: Method) -> tuple[Common, ...]:
+    """Return what weighing and making up a digest adds; tolerances of these are stated in percent."""
+    nothing = np.zeros(len(solid))
+    return tuple(
+        Common(name, np.where(solid, _relative(method.bench.tolerances.get(name), nothing + 1), nothing))
+        for name in ("mass", "digest_volume")
     )
 
 
@@ -93,12 +104,14 @@ def common_of_recovery(series: Series, vessels: Vessels, method: Method) -> Floa
 def common_of_read_back(series: Series, vessels: Vessels, method: Method) -> tuple[Common, ...]:
     """Return the common uncertainties of a result read back from a calibration: those of the way to the sample."""
     members = series.members
-    diluted = _any(series, series.unspiked & (np.abs(vessels.dilution[members] - 1) > 1e-9))
+    filled = np.isfinite(vessels.made_up_to[members]) & (vessels.aliquot[members] != vessels.made_up_to[members])
+    diluted = _any(series, series.unspiked & filled)
     predilution = series.segments.max(vessels.predilution[members])
     tolerances = method.bench.tolerances
     aliquot, vessel = (_smallest(series, column[members]) for column in (vessels.aliquot, vessels.made_up_to))
     nothing = np.zeros(len(series))
     return (
+        *_of_solid(np.full(len(series), method.solid), method),
         Common("aliquot", np.where(diluted, _relative(tolerances.get("aliquot"), aliquot), nothing)),
         Common("made_up_to", np.where(diluted, _relative(tolerances.get("made_up_to"), vessel), nothing)),
         Common(

@@ -84,7 +84,7 @@ class Calibrations:
 def nominal_of(readings: Readings, rows: Integers, method: Method) -> tuple[Floats, str | None]:
     """Return nominal concentrations in the result unit, or NaN and the reason why they cannot be converted."""
     try:
-        return units.of_column(readings.nominal.take(rows), method.result_unit, method.export_unit), None
+        return units.of_column(readings.nominal.take(rows), method.vessel_unit, method.export_unit), None
     except units.UnitUnusable as error:
         return np.full(len(rows), np.nan), f"nominal: {error}"
 

@@ -103,7 +103,7 @@ def compute(readings: Readings, method: Method, accepted_at: float) -> Case:
 def _floor(readings: Readings, measured: blanks.Blanks, keys: blanks.Keys, method: Method) -> variance.Floor:
     """Return what floors the weights of each analyte and channel: the LOQ, else three SD of the blanks."""
     stated = [method.analyte(name).loq for name in readings.analyte.names]
-    loq = [np.nan if limit is None else units.of_measure(limit, method.result_unit) for limit in stated]
+    loq = [np.nan if limit is None else units.of_measure(limit, method.vessel_unit) for limit in stated]
     return variance.Floor(np.repeat(np.array(loq), keys.channels), 3 * measured.sd)
 
 

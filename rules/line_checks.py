@@ -218,7 +218,7 @@ def linear_evidence(case: Case) -> Check:
     known = np.isfinite(highest) & np.isfinite(limit)
     outcome = np.where(known, np.where(beyond, Outcome.FAIL, Outcome.PASS), Outcome.NOT_EVALUATED)
     outcome = np.where(known & by_calibration & ~beyond & case.back.below, Outcome.WARN, outcome).astype(np.int8)
-    unit = case.method.result_unit
+    unit = case.method.vessel_unit
 
     def sentence(i: int) -> str:
         if outcome[i] == Outcome.NOT_EVALUATED:
@@ -245,7 +245,7 @@ def _lowest(case: Case, series: int) -> float:
 
 def _linear_to(case: Case, analyte: str) -> float:
     stated = case.method.analyte(analyte).linear_to
-    return np.nan if stated is None else units.of_measure(stated, case.method.result_unit)
+    return np.nan if stated is None else units.of_measure(stated, case.method.vessel_unit)
 
 
 def _proof(case: Case, series: int) -> str:

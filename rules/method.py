@@ -8,6 +8,8 @@ from __future__ import annotations
 from dataclasses import dataclass, field
 from typing import TYPE_CHECKING, Literal
 
+from rules import units
+
 if TYPE_CHECKING:
     from collections.abc import Mapping
 
@@ -156,6 +158,16 @@ class Method:
     added_refers_to: AddedRefersTo | None = None
     spiked_at: Literal["before preparation", "after preparation"] = "before preparation"
     repeats: Literal["new attempt", "same series", "refuse"] = "new attempt"
+
+    @property
+    def solid(self) -> bool:
+        """Whether results are contents of a solid, mass per mass."""
+        return units.same_kind(self.result_unit, units.MASS_FRACTION)
+
+    @property
+    def vessel_unit(self) -> str:
+        """Unit of concentrations in the vessel: that of results, or mg/L where results are contents of a solid."""
+        return units.CONCENTRATION if self.solid else self.result_unit
 
     def analyte(self, name: str) -> AnalyteRules:
         """Return what holds for an analyte; nothing particular where nothing is stated."""

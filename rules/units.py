@@ -15,8 +15,21 @@ if TYPE_CHECKING:
     from rules.method import Measure
 
 #: One unit of each kind, to compare dimensions with and to name in errors.
-VOLUME, CONCENTRATION = "mL", "mg/L"
-_KINDS = {VOLUME: "a volume such as mL or µL", CONCENTRATION: "a concentration such as mg/L or µg/L"}
+VOLUME, CONCENTRATION, MASS, MASS_FRACTION = "mL", "mg/L", "g", "mg/kg"
+_KINDS = {
+    VOLUME: "a volume such as mL or µL",
+    CONCENTRATION: "a concentration such as mg/L or µg/L",
+    MASS: "a mass such as g or mg",
+    MASS_FRACTION: "a content such as mg/kg or µg/g",
+}
+
+
+#: Units of every day, whose kind needs no library: building pint's registry takes longer than a small export.
+_COMMON = {
+    "mL": VOLUME, "µL": VOLUME, "L": VOLUME, "g": MASS, "mg": MASS, "kg": MASS,
+    "g/L": CONCENTRATION, "mg/L": CONCENTRATION, "µg/L": CONCENTRATION, "ng/L": CONCENTRATION,
+    "mg/kg": MASS_FRACTION, "µg/kg": MASS_FRACTION, "µg/g": MASS_FRACTION, "g/kg": MASS_FRACTION,
+}  # fmt: skip
 
 
 class UnitUnusable(ValueError):
@@ -48,21 +61,37 @@ def factor(unit: str, target: str) -> float:
     if unit == target:
         return 1.0
     known = [_known(text) for text in (unit, target)]
-    if known[0].dimensionality != known[1].dimensionality:
+    if not same_kind(unit, target):
         raise UnitUnusable(f"'{unit}' cannot be converted to '{target}': they measure different things")
     return float(f"{_registry().convert(1.0, known[0], known[1]):.15g}")
 
 
 def require(unit: str, kind: str) -> None:
-    """Check that a unit is known and of a kind, `VOLUME` or `CONCENTRATION`.
+    """Check that a unit is known and of a kind: that of `VOLUME`, `CONCENTRATION`, `MASS` or `MASS_FRACTION`.
 
     Raises
     ------
     UnitUnusable
         If not.
     """
-    if _known(unit).dimensionality != _known(kind).dimensionality:
+    if not same_kind(unit, kind):
         raise UnitUnusable(f"expected {_KINDS[kind]}, got '{unit}'")
+
+
+def same_kind(unit: str, other: str) -> bool:
+    """Tell whether two units measure the same thing.
+
+    Raises
+    ------
+    UnitUnusable
+        If one is not known.
+
+    >>> same_kind("mg/kg", "µg/g"), same_kind("mg/kg", "mg/L")
+    (True, False)
+    """
+    if unit in _COMMON and other in _COMMON:
+        return _COMMON[unit] == _COMMON[other]
+    return unit == other or _known(unit).dimensionality == _known(other).dimensionality
 
 
 @cache
@@ -73,9 +102,15 @@ def _known(text: str) -> Any:
         unit = _registry().parse_units(text)
     except Exception as error:  # pint raises its own errors, tokenizer errors and TypeError alike
         raise UnitUnusable(f"'{text}' is no known unit: write for example mg/L, µg/L, mL or µL") from error
-    if not text or unit.dimensionless:
-        raise UnitUnusable(f"'{text}' is no unit of a volume or a concentration")
+    if not text or (unit.dimensionless and not _mass_per_mass(text)):
+        raise UnitUnusable(f"'{text}' is no unit of a volume, a mass, a concentration or a content")
     return unit
+
+
+def _mass_per_mass(text: str) -> bool:
+    """Tell a content such as mg/kg from other ratios, which have no unit left either."""
+    parts = text.split("/")
+    return len(parts) == 2 and all(_known(part.strip()).dimensionality == _known(MASS).dimensionality for part in parts)
 
 
 def of_measure(measure: Measure, target: str) -> float:

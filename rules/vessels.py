@@ -39,12 +39,13 @@ class Vessels:
     Attributes
     ----------
     dilution
-        f, fraction of the vessel that is sample; NaN where unknown.
+        f, fraction of the vessel that is sample (for solids the mass of sample per volume of vessel); NaN where
+        unknown.
     addition
         A, added concentration scaled to the aliquot, in the unit of results; 0 for unspiked solutions, NaN where
         unknown.
     added
-        c, added concentration in the vessel, same unit.
+        c, added concentration in the vessel, in the unit of the vessel.
     predilution
         Factor from aliquot to sample.
     stock
@@ -109,7 +110,7 @@ class _Filling:
         aliquot = self._volume("aliquot", self.readings.aliquot, self.method.bench.aliquot)
         made_up_to = self._volume("made_up_to", self.readings.made_up_to, self.method.bench.made_up_to)
         stated_volume = self._column("spike_volume", self.readings.spike_volume, units.VOLUME, None)
-        stated_added = self._column("added", self.readings.added, self.method.result_unit, self.method.export_unit)
+        stated_added = self._column("added", self.readings.added, self.method.vessel_unit, self.method.export_unit)
         # a level is a default, not a second source: only what the export says row by row must agree
         silent = np.isnan(stated_volume) & np.isnan(stated_added)
         spike = np.where(silent, level_volume, stated_volume)
@@ -117,11 +118,14 @@ class _Filling:
         spike, added = np.where(self.sample, spike, np.nan), np.where(self.sample, added, np.nan)
         has_volume, has_added = self.spiked & np.isfinite(spike), self.spiked & np.isfinite(added)
         self._guard_volumes(aliquot, made_up_to, spike, added)
-        dilution = self._dilution(aliquot, made_up_to, np.where(has_volume, spike, 0.0))
+        liquid = self._dilution(aliquot, made_up_to, np.where(has_volume, spike, 0.0))
+        portion = self._portion()
         stock, concentration, not_added = self._stocks(has_volume)
         with np.errstate(invalid="ignore", divide="ignore"):
-            by_volume = concentration * spike / aliquot
-        by_added = self._from_concentration(added, has_added, dilution, aliquot, made_up_to)
+            # without an aliquot the digest itself is measured, and standard can only be added as a concentration
+            by_volume = concentration * spike / aliquot / portion
+        by_added = self._from_concentration(added, has_added, liquid, aliquot, made_up_to) / portion
+        dilution = liquid * portion
         self._agree(by_volume, by_added, has_volume & has_added & ~not_added)
         addition = np.where(has_volume, by_volume, by_added)
         addition = np.where(np.isfinite(addition), addition, np.nan)
@@ -176,7 +180,7 @@ class _Filling:
             elif _is_volume(measure):
                 volumes[code] = units.of_measure(measure, units.VOLUME)
             else:
-                added[code] = units.of_measure(measure, self.method.result_unit)
+                added[code] = units.of_measure(measure, self.method.vessel_unit)
         codes = column.codes[self.rows]
         stated = np.isfinite(self.readings.added.values[self.rows]) | np.isfinite(
             self.readings.spike_volume.values[self.rows]
@@ -207,7 +211,7 @@ class _Filling:
                 self.spiked & ((spike == 0) | (np.isnan(spike) & (added == 0))),
                 lambda _: "a spiked solution to which 0 was added: correct the label or the addition",
             )
-            for column, unit in ((spike, "mL of standard"), (added, self.method.result_unit)):
+            for column, unit in ((spike, "mL of standard"), (added, self.method.vessel_unit)):
                 self._note(
                     self.sample & ~self.spiked & (column > 0),
                     lambda i, c=column, u=unit: (
@@ -238,6 +242,26 @@ class _Filling:
         # volumes that cannot be are named by the guards; no number follows from them
         return np.where(self.sample, np.where((dilution > 0) & (dilution <= 1 + 1e-9), dilution, np.nan), 1.0)
 
+    def _portion(self) -> Floats:
+        """Return what a litre of digest holds of the solid, in the unit that turns mg/L into results; 1 for liquids."""
+        if not self.method.solid:
+            return np.ones(self.n)
+        mass = self._column("mass", self.readings.mass, units.MASS, None)
+        volume = self._column("digest_volume", self.readings.digest_volume, units.VOLUME, None)
+        with np.errstate(invalid="ignore"):
+            for name, column in (("mass", mass), ("digest_volume", volume)):
+                self._note(
+                    self.sample & ~(column > 0),
+                    lambda i, n=name, c=column: (
+                        f"results in {self.method.result_unit} need {n} above 0, got "
+                        f"{'nothing' if np.isnan(c[i]) else f'{c[i]:g}'}: map {n} in the layout, or correct the export"
+                    ),
+                )
+        with np.errstate(invalid="ignore", divide="ignore"):
+            # 1 g/mL is 1 kg/L, and mg/L over kg/L is mg/kg
+            held = mass / volume / units.factor(units.MASS_FRACTION, self.method.result_unit)
+        return np.where(self.sample, np.where(held > 0, held, np.nan), 1.0)
+
     def _from_concentration(
         self, added: Floats, has_added: Bools, dilution: Floats, aliquot: Floats, made_up_to: Floats
     ) -> Floats:
@@ -265,7 +289,7 @@ class _Filling:
         allowed = max([AGREEMENT, *(t.value / 100 for t in self.method.bench.tolerances.values() if t.unit == "%")])
         with np.errstate(invalid="ignore", divide="ignore"):
             apart = both & (np.abs(by_volume - by_added) > allowed * np.abs(by_added))
-        unit = self.method.result_unit
+        unit = self.method.vessel_unit
         self._note(
             apart,
             lambda i: (
@@ -294,7 +318,7 @@ class _Filling:
         for s, stock in enumerate(stocks):
             for a, name in enumerate(names):
                 if name in stock.contains:
-                    content[s, a] = units.of_measure(stock.contains[name], self.method.result_unit)
+                    content[s, a] = units.of_measure(stock.contains[name], self.method.vessel_unit)
         mapped_codes = self.readings.stock.codes[self.rows]
         mapped = mapped_codes >= 0
         chosen = np.full(self.n, -1, dtype=np.int32)

@@ -273,7 +273,7 @@ def _check_standards(outcomes: Outcomes) -> list[dict[str, Any]]:
         | {
             "nominal": number(checks.nominal[place]),
             "measured": number(checks.measured[place]),
-            "unit": case.method.result_unit,
+            "unit": case.method.vessel_unit,
             "percent_of_nominal": number(checks.percent[place]),
         }
         for place, (solution, key) in enumerate(_pairs(checks.solutions.tolist(), checks.key.tolist()))
@@ -300,7 +300,7 @@ def _calibrations(case: Case) -> list[dict[str, Any]]:
                 "residual_sd": number(lines.residual_sd[at]),
                 "n": int(lines.n[at]),
                 "dof": int(lines.dof[at]),
-                "unit": case.method.result_unit,
+                "unit": case.method.vessel_unit,
                 "standards": [
                     {"label": case.label(s), "nominal": number(calibrations.nominal[start + offset])}
                     | {

@@ -98,12 +98,24 @@ def concentration_unit(text: str) -> str:
     return text.strip()
 
 
+def result_unit(text: str) -> str:
+    """Read a unit of results: a concentration, or the content of a solid."""
+    if not units.same_kind(text.strip(), units.MASS_FRACTION):
+        units.require(text.strip(), units.CONCENTRATION)
+    return text.strip()
+
+
 def tolerance(text: str) -> Measure:
     """Read a half-width: ``0.02 mL``, ``0.5 %``, or a bare number for a factor."""
     stated = measure(text)
     if stated.unit not in ("", "%"):
         units.require(stated.unit, units.VOLUME)
     return _positive(stated, text)
+
+
+def percent_tolerance(text: str) -> Measure:
+    """Read a half-width in percent."""
+    return _positive(Measure(100 * percentage(text), "%"), text)
 
 
 def relative_tolerance(text: str) -> float:

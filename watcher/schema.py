@@ -49,6 +49,7 @@ Volume = Annotated[Measure, _read(scalars.volume)]
 Concentration = Annotated[Measure, _read(scalars.concentration)]
 LevelAmount = Annotated[Measure, _read(scalars.volume_or_concentration)]
 Tolerance = Annotated[Measure, _read(scalars.tolerance)]
+PercentTolerance = Annotated[Measure, _read(scalars.percent_tolerance)]
 Fraction = Annotated[float, _read(scalars.percentage)]
 ConcentrationUnit = Annotated[str, _read(scalars.concentration_unit)]
 Dilution = Annotated[float, _read(scalars.dilution)]
@@ -152,6 +153,8 @@ class TolerancesPart(Part):
     spike_volume: Tolerance | None = None
     made_up_to: Tolerance | None = None
     predilution: Tolerance | None = None
+    mass: PercentTolerance | None = None
+    digest_volume: PercentTolerance | None = None
 
 
 class BenchPart(Part):
@@ -184,7 +187,7 @@ class UnitsPart(Part):
     """Units of concentrations that state none, and of results."""
 
     export: ConcentrationUnit
-    result: ConcentrationUnit
+    result: Annotated[str, _read(scalars.result_unit)]
 
 
 class WatchingPart(Part):

@@ -30,7 +30,7 @@ TEXTS = (
     "comment",
 )
 NUMBERS = ("signal_sd", "signal_rsd", "readings", "replicate", "position", "measured_at", "predilution")
-QUANTITIES = ("added", "nominal", "spike_volume", "aliquot", "made_up_to")
+QUANTITIES = ("added", "nominal", "spike_volume", "aliquot", "made_up_to", "mass", "digest_volume")
 REFERENCE = Path(__file__).parents[1] / "reference"
 
 

@@ -95,6 +95,7 @@ def test_every_key_of_the_schema_stands_in_the_example() -> None:
     layouts = ROOT / "watcher" / "laboratory" / "layouts"
     shown = {tuple(part for part in loc if isinstance(part, str)) for loc in load(text, "config.example.yaml").lines}
     hidden = {("mail", "password"), ("mail", "ca_file"), ("stocks", "uncertainty")}  # refused; in a comment, twice
+    hidden |= {("variance", "model"), ("variance", "evidence")}  # in a comment
 
     found = compile_snapshot(
         Snapshot(
@@ -449,3 +450,26 @@ def test_a_snapshot_survives_the_ledger() -> None:
     assert (again.body, again.sha256) == (snapshot.body, snapshot.sha256)
     assert compile_snapshot(again).file == settings().file
     assert other.sha256 != snapshot.sha256
+
+
+def test_a_variance_model_needs_its_evidence() -> None:
+    """The safe model is just named; another one is refused without the evidence that it holds, and taken with it."""
+    bare = faults(_changed("mail: none", "mail: none\nvariance: proportional"))
+    ((_, stated),) = settings(
+        _changed("mail: none", "mail: none\nvariance: {model: proportional, evidence: 'VAL-26-04'}")
+    ).layouts
+    ((_, safe),) = settings(_changed("mail: none", "mail: none\nvariance: constant")).layouts
+
+    assert len(bare) == 1
+    assert "variance: expected the evidence that the scatter is proportional" in bare[0]
+    assert (stated.variance, safe.variance) == ("proportional", "constant")
+
+
+@pytest.mark.parametrize("unit", ["mg/kg", "µg/g"])
+def test_results_may_be_contents_of_a_solid(unit: str) -> None:
+    """A content is a unit of results and never of an export's concentrations."""
+    ((_, method),) = settings(_changed("result: mg/L", f"result: {unit}")).layouts
+    (fault,) = faults(_changed("export: mg/L", f"export: {unit}"))
+
+    assert (method.solid, method.vessel_unit) == (True, "mg/L")
+    assert f"expected a concentration such as mg/L or µg/L, got '{unit}'" in fault
