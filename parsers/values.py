@@ -32,6 +32,8 @@ if TYPE_CHECKING:
 
 #: From so many distinct times on they are read all at once.
 MANY_TIMES = 500
+#: … if they lie in here.
+PLAUSIBLE = (pd.Timestamp(1900, 1, 1), pd.Timestamp(2200, 1, 1))
 #: How constants of a layout are written, whatever marks its exports use.
 _LAYOUT_GRAMMAR = Grammar()
 
@@ -225,11 +227,14 @@ def _predilution(text: str, grammar: Grammar) -> Cell:
 
 def _times_at_once(names: Sequence[str], forms: Sequence[str]) -> dict[str, float]:
     """Read many times of the one declared form quickly; what is not among the answer is read one by one."""
-    if len(forms) != 1 or len(names) < MANY_TIMES or "%z" in forms[0].lower():
+    # zones, and fractions of a second (of which pandas reads more digits), are read one by one
+    if len(forms) != 1 or len(names) < MANY_TIMES or any(code in forms[0].lower() for code in ("%z", "%f")):
         return {}
     found = pd.to_datetime(pd.Series(folded(names), dtype="object"), format=forms[0], errors="coerce", exact=True)
     seconds = (found.to_numpy(dtype="datetime64[us]").astype(np.int64) / 1e6).tolist()
-    return {name: at for name, at, fine in zip(names, seconds, found.notna().tolist(), strict=True) if fine}
+    # pandas knows a year 0, which nobody measured in: what lies far off is read one by one as well
+    fine = (found.notna() & found.between(*PLAUSIBLE)).tolist()
+    return {name: at for name, at, good in zip(names, seconds, fine, strict=True) if good}
 
 
 def _time(text: str, forms: Sequence[str], grammar: Grammar) -> Cell:
