@@ -78,7 +78,7 @@ def test_a_text_becomes_its_value(read: Callable[[str], Any], text: str, expecte
         (scalars.seconds, "-5 s", "got '-5 s'"),
         (scalars.seconds, "5 weeks", "got '5 weeks'"),
         (scalars.measure, "five mL", "expected a number with a unit, such as '5 mL' or '5 mg/L', got 'five mL'"),
-        (scalars.volume, "5", "unit of a volume or a concentration"),
+        (scalars.volume, "5", "unit of a volume, a mass, a concentration or a content"),
         (scalars.volume, "5 mg/L", "expected a volume such as mL or µL, got 'mg/L'"),
         (scalars.volume, "0 mL", "expected more than 0, got '0 mL'"),
         (scalars.volume, "-1 mL", "expected more than 0, got '-1 mL'"),
