@@ -77,10 +77,9 @@ def _limits(settings: Settings) -> Iterator[str]:
         yield f"Not the laboratory's decision yet, defaults hold: {', '.join(defaults)}"
     silent = [name for name in INFORMING if name in defaults and settings.file.report == "additions"]
     if silent:
-        yield (
-            f"With report: additions these only inform until the laboratory states a limit: {', '.join(silent)}. A "
-            f"poor recovery then fails no sample and is not mailed."
-        )
+        yield f"With report: additions these only inform until the laboratory states a limit: {', '.join(silent)}"
+    if "recovery" in silent:
+        yield "So a poor recovery fails no sample and is not mailed: state limits.recovery if it should."
 
 
 def _claimed_twice(settings: Settings) -> Iterator[str]:
