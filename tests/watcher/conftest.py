@@ -217,6 +217,19 @@ def authority(tmp_path_factory: pytest.TempPathFactory) -> Authority:
     def name(text: str) -> x509.Name:
         return x509.Name([x509.NameAttribute(NameOID.COMMON_NAME, text)])
 
+    def usage(*, signs_certificates: bool) -> x509.KeyUsage:
+        return x509.KeyUsage(
+            digital_signature=not signs_certificates,
+            key_cert_sign=signs_certificates,
+            crl_sign=signs_certificates,
+            content_commitment=False,
+            key_encipherment=False,
+            data_encipherment=False,
+            key_agreement=False,
+            encipher_only=False,
+            decipher_only=False,
+        )
+
     ca_key, key = ec.generate_private_key(ec.SECP256R1()), ec.generate_private_key(ec.SECP256R1())
 
     def certificate(subject: str, public_key: Any, *, ca: bool) -> x509.CertificateBuilder:
@@ -229,6 +242,10 @@ def authority(tmp_path_factory: pytest.TempPathFactory) -> Authority:
             .not_valid_before(now - timedelta(days=1))
             .not_valid_after(now + timedelta(days=1))
             .add_extension(x509.BasicConstraints(ca=ca, path_length=None), critical=True)
+            # Python 3.13 and newer refuse certificates without these (RFC 5280)
+            .add_extension(x509.SubjectKeyIdentifier.from_public_key(public_key), critical=False)
+            .add_extension(x509.AuthorityKeyIdentifier.from_issuer_public_key(ca_key.public_key()), critical=False)
+            .add_extension(usage(signs_certificates=ca), critical=True)
         )
 
     ca = certificate("Skerry Point test authority", ca_key.public_key(), ca=True).sign(ca_key, hashes.SHA256())
