@@ -13,7 +13,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 from scipy.special import fdtrc
 
-from rules.line import Segments
+from rules.line import NO_SCATTER, Segments
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
@@ -33,7 +33,7 @@ class LackOfFit:
     Attributes
     ----------
     f, p
-        float64[m]; NaN with fewer than three levels or without repeats.
+        float64[m]; NaN with fewer than three levels, without repeats, or where all repeats read the same.
     levels
         int64[m], distinct levels.
     pure_error_ss, lack_of_fit_ss
@@ -74,7 +74,9 @@ def split(additions: Floats, dilution: Floats, residuals: Floats, weights: Float
         pure = np.bincount(owner, weights=w * (r - levels.spread(mean)) ** 2, minlength=count)
         number = np.bincount(of_level, minlength=count)
         free_lack, free_pure = number - 2, segments.sizes - number
-        testable = (number >= LEAST_LEVELS) & (free_pure > 0)
+        # repeats that read the same to the last digit show the export's resolution, not how preparations scatter
+        scattered = pure > NO_SCATTER**2 * (pure + lack)
+        testable = (number >= LEAST_LEVELS) & (free_pure > 0) & scattered
         statistic = np.where(testable, (lack / free_lack) / (pure / free_pure), np.nan)
         p = np.where(np.isnan(statistic), np.nan, fdtrc(np.maximum(free_lack, 1), np.maximum(free_pure, 1), statistic))
     return LackOfFit(statistic, p, number.astype(np.int64), pure.astype(np.float64), lack.astype(np.float64))

@@ -53,11 +53,9 @@ def _complete(case: Case, i: int) -> str:
 
 
 def _inputs(case: Case, i: int) -> str:
-    if np.isfinite(case.fits.spread(case.fits.lines.slope)[i]) or not case.judged[i]:
-        return "Correct what is named, in the instrument's program or in the settings, and export again."
     return (
-        f"Correct the cells or volumes that are named and export again; if a reading is lost, measure {case.sample(i)} "
-        f"again."
+        f"Correct what is named: cells and labels in the instrument's program, levels, stocks and units in the "
+        f"settings; then export again. If a reading is lost, measure {case.sample(i)} again."
     )
 
 

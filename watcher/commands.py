@@ -116,6 +116,23 @@ def status(config: Path) -> None:
 
 
 @main.command()
+@click.option("--config", type=_FILE, help="Settings whose records folder takes the record.")
+@click.option("--json", "as_json", is_flag=True, help="Print the record as JSON instead of the table.")
+def prove(config: Path | None, *, as_json: bool) -> None:
+    """Recompute published examples on this machine, with a dated record.
+
+    The record, JSON and text, goes into records/prove, or without --config into the
+    current folder.
+
+    Exit 0: all agree. 1: a value disagrees. 2: examples, settings or record cannot
+    be read or written.
+    """
+    from watcher import prove as proof  # noqa: PLC0415
+
+    sys.exit(proof.run(config, Path.cwd(), as_json=as_json))
+
+
+@main.command()
 @click.argument("folder", type=click.Path(path_type=Path, file_okay=False), default=Path("spikewarden-demo"))
 def demo(folder: Path) -> None:
     """Run an invented laboratory in FOLDER and show what arrives.

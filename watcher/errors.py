@@ -18,6 +18,7 @@ The tree, for whoever must know what to catch::
     ├── ReplyBroken             replies            the worker's answer has the wrong form
     ├── PasswordUnreadable      password           no password to sign in to the mail server with
     ├── InstanceHeld            instance           another service holds the records folder
+    ├── PublishedUnusable       verification       the published examples that ship with the program are damaged
     └── ServiceUnready          service            nothing was adopted yet
 
 Nothing here formats or logs.

@@ -21,6 +21,7 @@ from watcher.clock import moment
 from watcher.disk import Disk
 from watcher.names import target
 from watcher.record import Export, number
+from watcher.scalars import duration
 from watcher.settings import Settings, SettingsInvalid, Snapshot, compile_snapshot, read_files
 from watcher.worker_loop import serve
 
@@ -233,8 +234,8 @@ class Worker:
         except Unclaimed:
             return answer("unclaimed", problem=unclaimed_sentence(self._settings))
         except Unfinished as unfinished:
-            hours = f"{self._settings.file.complete_after / 3600:g} h"
-            wait = f"It is evaluated when that line is there, or when nothing changes for {hours} (complete_after)."
+            long = duration(self._settings.file.complete_after)
+            wait = f"It is evaluated when that line is there, or when nothing changes for {long} (complete_after)."
             return answer("waiting", layout=unfinished.layout.layout, problem=f"{_no_end(unfinished.layout)} {wait}")
         except ExportRefused as refused:
             letter = mail.refusal(job.name, str(refused), refused.remedy, job.sha256)

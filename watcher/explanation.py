@@ -10,6 +10,7 @@ from parsers.readings import line_ranges
 from rules import plan
 from rules.figures import several
 from watcher import mail
+from watcher.scalars import duration
 from watcher.terminal import heading, lines, short, table, word
 
 if TYPE_CHECKING:
@@ -106,5 +107,5 @@ def results(out: Console, outcomes: Outcomes) -> None:
 def _mails(out: Console, letters: list[Mail]) -> None:
     heading(out, "Mails that would go" if letters else "No mail would go")
     for letter in letters:
-        wait = f" (after {letter.after_seconds:g} s, unless newer content comes)" if letter.after_seconds else ""
+        wait = f" (after {duration(letter.after_seconds)}, unless newer content comes)" if letter.after_seconds else ""
         lines(out, [f"Subject: {letter.subject}{wait}", "", letter.body])

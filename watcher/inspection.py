@@ -22,6 +22,7 @@ if TYPE_CHECKING:
     from collections.abc import Iterator
     from pathlib import Path
 
+    from rules.method import Bench
     from rules.outcomes import Outcomes
 
 #: A heartbeat older than so many scans says that the service hangs.
@@ -63,9 +64,22 @@ def check(config: Path) -> int:
         (layout.layout, layout.document.path, method.report, method.blank or "not stated")
         for layout, method in settings.layouts
     ])  # fmt: skip
+    heading(out, "Bench in force for each layout")
+    lines(out, (f"{layout.layout}: {_bench(method.bench)}" for layout, method in settings.layouts))
     heading(out, "Limits")
     lines(out, _limits(settings))
     return ALL_PASS
+
+
+def _bench(bench: Bench) -> str:
+    """Say how solutions are prepared: a layout's bench replaces the configuration's whole, which is easily missed."""
+    parts = [f"aliquot {bench.aliquot}" if bench.aliquot else "aliquot not stated"]
+    if bench.aliquot:
+        parts.append(f"made up to {bench.made_up_to}" if bench.made_up_to else "standard on top of the aliquot")
+    parts.append(f"predilution {bench.predilution:g}")
+    if bench.levels:
+        parts.append("levels " + ", ".join(f"{name} {amount}" for name, amount in bench.levels.items()))
+    return ", ".join(parts)
 
 
 def _limits(settings: Settings) -> Iterator[str]:

@@ -31,6 +31,8 @@ if TYPE_CHECKING:
     from watcher.record import Export
 
 COLUMNS = 72
+#: Longest subject that a telephone shows to its end.
+MOST_SUBJECT = 120
 #: Causes that one mail spells out; the rest is counted, and stands in the result files.
 MOST_CAUSES = 12
 #: Checks that judge the batch: their failure is one cause for all series of the analyte.
@@ -171,7 +173,7 @@ def _of_series(
             ("RECORD", _record(export, lines)),
         ],
     )
-    return Mail(kind, headline, body, keys, wait)
+    return Mail(kind, _cut(headline, MOST_SUBJECT), body, keys, wait)
 
 
 def _causes(outcomes: Outcomes, series: list[int]) -> list[_Cause]:

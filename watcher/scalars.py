@@ -58,6 +58,18 @@ def seconds(text: str) -> float:
     return _finite(found["number"], text) * _SECONDS[unit]
 
 
+def duration(seconds_long: float) -> str:
+    """Write a duration as people do.
+
+    >>> duration(7200), duration(20), duration(90)
+    ('2 h', '20 s', '1.5 min')
+    """
+    for unit, size in (("h", 3600.0), ("min", 60.0)):
+        if seconds_long >= size:
+            return f"{seconds_long / size:g} {unit}"
+    return f"{seconds_long:g} s"
+
+
 def measure(text: str) -> Measure:
     """Read a number with a unit.
 

@@ -12,7 +12,7 @@ from hypothesis import strategies as st
 from scipy.optimize import brentq
 from scipy.stats import t as student
 
-from rules.method import Bench, Measure, Preparation, Stock
+from rules.method import AnalyteRules, Bench, Measure, Preparation, Stock
 from rules.result import Results
 
 
@@ -505,3 +505,62 @@ def test_lopsided_interval_is_shown_instead_of_plus_minus(outcomes, make_additio
     assert above > 1.25 * below
     assert "±" not in out.text(0)
     assert " to " in out.text(0)
+
+
+GROWING = ([0.112, 0.318, 0.497, 0.742, 0.905], [0.0, 1.0, 2.0, 3.0, 4.0])
+
+
+@pytest.mark.parametrize(("model", "power"), [("proportional", 2), ("counting", 1)])
+def test_weighted_additions_by_hand(outcomes, make_additions, model, power):
+    """Standard on top of 10 mL: C, u_line and Fieller's limits by matrices with w = f²/h of the fitted signals."""
+    signals, volumes = (np.array(column) for column in GROWING)
+    f, a = 10 / (10 + volumes), 20 * volumes / 10
+    scaled, design = signals / f, np.column_stack((np.ones(5), a))
+    w = f**2
+    for _ in range(6):
+        last = w
+        alpha, beta = np.linalg.solve(design.T @ (design * w[:, None]), design.T @ (w * scaled))
+        w = f**2 / (f * (alpha + beta * a)) ** power
+    s2 = np.sum(last * (scaled - alpha - beta * a) ** 2) / 3
+    v = s2 * np.linalg.inv(design.T @ (design * last[:, None]))
+    c, t = alpha / beta, student.ppf(0.975, 3)
+
+    rows = make_additions(list(signals), list(volumes), key="spike_volume")
+    out = outcomes(rows, bench=Bench(aliquot=ml(10)), stocks=stock(20.0), variance=model)
+
+    results = out.case.additions
+    assert results.value[0] == pytest.approx(c, rel=1e-9)
+    assert u_line(out) == pytest.approx(sqrt(v[0, 0] - 2 * c * v[0, 1] + c**2 * v[1, 1]) / beta, rel=1e-9)
+
+    def excess(x):
+        return (alpha - x * beta) ** 2 - t**2 * (v[0, 0] - 2 * x * v[0, 1] + x**2 * v[1, 1])
+
+    assert results.low[0] == pytest.approx(brentq(excess, c - 3, c, xtol=1e-14), rel=1e-8)
+    assert results.high[0] == pytest.approx(brentq(excess, c, c + 3, xtol=1e-14), rel=1e-8)
+
+
+def test_limit_of_quantification_floors_the_weights_before_the_blanks(outcomes, make_additions, make_blanks):
+    """The least signal of a weight is the LOQ's, without one three SD of the blanks, without both 1 % of the top."""
+    rows, blanks = make_additions(*GROWING), make_blanks([0.010, 0.014, 0.012])
+    analytes = {"Zn": AnalyteRules(loq=Measure(0.2, "mg/L"))}
+    slope = np.polyfit(GROWING[1], GROWING[0], 1)[0]
+
+    def least(rows, **method):
+        return outcomes(rows, variance="proportional", blank="none", **method).case.fits.least[0]
+
+    assert least(rows + blanks, analytes=analytes) == pytest.approx(0.2 * slope)
+    assert least(rows + blanks) == pytest.approx(3 * 0.002)
+    assert least(rows) == pytest.approx(0.01 * 0.905)
+
+
+def test_weights_include_the_blank_that_was_measured_with_the_signal(outcomes, make_additions, make_blanks):
+    """Under `counting` h is the fitted gross signal: what is subtracted from Y still scatters in the vessel."""
+    signals = [250.0, 640.0, 1010.0, 1420.0]
+    rows = make_additions(signals, [0, 1, 2, 3.0]) + make_blanks([120.0, 118.0, 122.0])
+
+    fits = outcomes(rows, variance="counting", blank="subtract").case.fits
+
+    a = np.arange(4.0)
+    again = np.polyfit(a, np.array(signals) - 120, 1, w=np.sqrt(fits.weights))
+    assert fits.lines.intercept[0] == pytest.approx(again[1])
+    assert fits.weights == pytest.approx(1 / (np.polyval(again, a) + 120), rel=1e-6)

@@ -9,7 +9,7 @@ import pytest
 from scipy.optimize import brentq
 from scipy.stats import t as student
 
-from rules.method import Bench, Measure
+from rules.method import AnalyteRules, Bench, Measure
 
 STANDARDS = ([0, 1, 2, 4, 5], [0.01, 0.22, 0.40, 0.83, 1.00])
 
@@ -293,3 +293,88 @@ def test_the_way_from_vessel_to_sample_is_in_the_budget(outcomes, make_standards
     assert full.standard_uncertainty[0] ** 2 - bare.standard_uncertainty[0] ** 2 == pytest.approx(added)
     assert full.low[0] < bare.low[0]
     assert full.high[0] > bare.high[0]
+
+
+POWERS = {"proportional": 2, "counting": 1}
+WEIGHTED = ([0, 1, 2, 4, 8], [0.012, 0.21, 0.39, 0.83, 1.55])
+
+
+def weighted_by_numpy(power, least):
+    """Line and unscaled covariance of `WEIGHTED`, weights iterated from equal ones and floored at a signal."""
+    x, y = (np.array(column, dtype=float) for column in WEIGHTED)
+    h = np.ones(len(x))
+    for _ in range(6):
+        line = np.polyfit(x, y, 1, w=1 / np.sqrt(h))
+        last, h = h, np.maximum(np.polyval(line, x), least) ** power
+    design = np.column_stack((np.ones(len(x)), x))
+    residuals = y - np.polyval(line, x)
+    s2 = np.sum(residuals**2 / last) / (len(x) - 2)
+    return line, s2 * np.linalg.inv(design.T @ (design / last[:, None])), s2
+
+
+@pytest.mark.parametrize("model", POWERS)
+@pytest.mark.parametrize("signals", [[0.5], [0.49, 0.50, 0.52]], ids=["one vessel", "three vessels"])
+def test_weighted_read_back_by_hand(outcomes, make_standards, model, signals):
+    """The variance s² h(y)/p of the sample's own signal enters u and Fieller's interval alike."""
+    analytes = {"Zn": AnalyteRules(loq=Measure(0.1, "mg/L"))}
+    # the LOQ's signal, by the slope of the first round
+    least = 0.1 * np.polyfit(*WEIGHTED, 1)[0]
+    (b, a), v, s2 = weighted_by_numpy(POWERS[model], least)
+    mean, p = np.mean(signals), len(signals)
+    own = s2 * mean ** POWERS[model] / p
+    x = (mean - a) / b
+
+    results = read_back(outcomes, make_standards, WEIGHTED, signals, variance=model, analytes=analytes)
+
+    assert results.value[0] == pytest.approx(x, rel=1e-9)
+    u = np.sqrt(own + v[0, 0] + 2 * x * v[0, 1] + x**2 * v[1, 1]) / b
+    assert results.standard_uncertainty[0] == pytest.approx(u, rel=1e-9)
+    t = student.ppf(0.975, 3)
+
+    def excess(c):
+        return (mean - a - b * c) ** 2 - t**2 * (own + v[0, 0] + 2 * c * v[0, 1] + c**2 * v[1, 1])
+
+    assert results.low[0] == pytest.approx(brentq(excess, x - 2, x, xtol=1e-14), rel=1e-8)
+    assert results.high[0] == pytest.approx(brentq(excess, x, x + 2, xtol=1e-14), rel=1e-8)
+
+
+def test_weights_make_low_results_sharper_and_high_ones_wider(outcomes, make_standards):
+    """Under `proportional` a low read-back has a smaller u than under `constant`, a high one a larger."""
+    low, high = (
+        [read_back(outcomes, make_standards, WEIGHTED, [y], variance=model) for model in ("constant", "proportional")]
+        for y in (0.06, 1.5)
+    )
+
+    assert low[1].standard_uncertainty[0] < 0.5 * low[0].standard_uncertainty[0]
+    assert high[1].standard_uncertainty[0] > high[0].standard_uncertainty[0]
+
+
+def test_a_signal_below_the_floor_is_as_uncertain_as_at_the_floor(outcomes, make_standards):
+    """Under `proportional` the share of the sample's own signal stops falling at the signal of the LOQ."""
+    analytes = {"Zn": AnalyteRules(loq=Measure(0.5, "mg/L"))}
+
+    def own_share(signal):
+        one, many = (
+            read_back(outcomes, make_standards, WEIGHTED, [signal] * p, variance="proportional", analytes=analytes)
+            for p in (1, 4)
+        )
+        # s²h/b² of one solution, from the difference of one and four
+        return (one.standard_uncertainty[0] ** 2 - many.standard_uncertainty[0] ** 2) / (1 - 1 / 4)
+
+    least = 0.5 * np.polyfit(*WEIGHTED, 1)[0]
+    assert own_share(0.03) == pytest.approx(own_share(0.06))
+    assert own_share(2 * least) == pytest.approx(4 * own_share(0.06))
+
+
+def test_blanks_floor_the_weights_of_standards(outcomes, make_standards, make_blanks):
+    """Without LOQ the weight of the zero standard stops at three SD of the blanks, whatever those are."""
+    rows = make_standards(*WEIGHTED) + unspiked([0.5])
+
+    least = [
+        outcomes(
+            rows + make_blanks(blanks), report="calibration", blank="none", variance="proportional"
+        ).case.calibrations.least[0]
+        for blanks in ([0.010, 0.012, 0.014], [0.0, 0.012, 0.024])
+    ]
+
+    assert least == pytest.approx([3 * 0.002, 3 * 0.012])

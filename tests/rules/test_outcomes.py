@@ -16,6 +16,11 @@ from rules.plan import _STEPS, next_step
 NOMINAL, READ = [0, 5, 10], [0.021, 0.519, 1.02]
 SAMPLES = ("SED-12", "BRN-3", "ROOF-7")
 
+CORRECT = (
+    "Correct what is named: cells and labels in the instrument's program, levels, stocks and units in the settings; "
+    "then export again. If a reading is lost, measure {} again."
+)
+
 
 @pytest.fixture(scope="session")
 def batch(make_additions, make_standards, make_blanks):
@@ -175,7 +180,7 @@ def test_a_single_addition_warns_and_carries_its_value(outcomes, make_additions)
         (
             {"fault": "expected a number, got 'x'"},
             "inputs",
-            "Correct what is named, in the instrument's program or in the settings, and export again.",
+            CORRECT.format("SED-12"),
         ),
     ],
 )
@@ -469,7 +474,7 @@ def export(make_additions, make_standards, make_blanks):
             {"signals": ([0.2, np.nan, 0.4], [0, 1, 2.0])},
             {},
             "inputs",
-            "Correct the cells or volumes that are named and export again; if a reading is lost, measure RIV-17 again.",
+            CORRECT.format("RIV-17"),
         ),
     ],
     ids=[
