@@ -11,6 +11,7 @@ from rules import units
 from rules.case import Reported
 from rules.checks import Check, Outcome, judged, percents
 from rules.figures import figure, probability
+from rules.lack_of_fit import LEAST_LEVELS
 
 if TYPE_CHECKING:
     from rules.case import Case
@@ -126,10 +127,12 @@ def lack_of_fit(case: Case) -> Check:
     additions, dilution = case.vessels.addition[members], case.vessels.dilution[members]
     split = lack_of_fit_test.split(additions, dilution, fits.lines.residuals, fits.weights, fits.segments)
     value = fits.spread(np.where(fits.lines.scatter, split.p, np.nan))
-    levels = fits.spread(split.levels.astype(float))
+    levels, n = fits.spread(split.levels.astype(float)), fits.spread(fits.lines.n.astype(float))
 
     def sentence(i: int, outcome: Outcome) -> str:
         if outcome is Outcome.NOT_EVALUATED:
+            if levels[i] >= LEAST_LEVELS and levels[i] < n[i]:
+                return "the repeated preparations show no scatter at the export's resolution"
             return "lack of fit needs three levels and a preparation that was repeated"
         if outcome is Outcome.PASS:
             return f"the line meets its {levels[i]:.0f} levels within the scatter of repeats ({probability(value[i])})"

@@ -174,6 +174,12 @@ CASES = [
         FAIL,
         "the line misses its levels by more than repeats scatter (p < 0.0001)",
     ),
+    (
+        "lack_of_fit",
+        {"additions": ([0.200, 0.200, 0.301, 0.400], [0, 0, 1, 2.0])},
+        NOT,
+        "the repeated preparations show no scatter at the export's resolution",
+    ),
     ("lack_of_fit", {}, NOT, "lack of fit needs three levels and a preparation that was repeated"),
     # --- residual: line 0.203 + 0.098 A, so 0.31 lies 0.009 off 0.301
     ("residual", {}, PASS, "largest residual 3.0 %, at RIV-17 1"),
