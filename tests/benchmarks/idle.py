@@ -35,7 +35,7 @@ FILES = 10_000
 LOOKS = 8
 START_SECONDS = 60.0
 BARE = (sys.executable, "-c", "import sys; sys.stdin.read()")
-LOOPING = (sys.executable, "-c", "import time\nwhile True: time.sleep(0.1)")
+LOOPING = (sys.executable, "-c", "import threading\nwake = threading.Event()\nwhile True: wake.wait(0.1)")
 WATCH = (sys.executable, "-m", "watcher", "watch", "--config")
 #: The same command with a worker that is retired after a second.
 WATCH_RETIRING = (

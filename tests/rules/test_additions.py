@@ -114,8 +114,8 @@ def test_lead_by_addition_into_the_measured_vessel(outcomes, make_additions):
 
 
 def test_aluminium_in_gum_has_no_extra_term_of_a_read_back(outcomes, make_additions, reference):
-    """3.12 g of gum in 100 mL: 48.1332 mg/kg, V' = 0.1251 mL, s 0.5174; the course sheet's 0.6477 is not given."""
-    data = reference("aluminium_in_gum")  # public course sheet, read
+    """3.12 g of gum in 100 mL: 48.1332 mg/kg, V' = 0.1251 mL, s 0.5174; the worksheet's 0.6477 is not given."""
+    data = reference("aluminium_in_gum")  # public worksheet, read
     rows = make_additions(list(data["signal"]), list(data["V_std_mL"]), key="spike_volume")
     bench = Bench(aliquot=ml(25), made_up_to=ml(100), predilution=100 / 3.12)
 

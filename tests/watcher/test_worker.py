@@ -19,7 +19,7 @@ if TYPE_CHECKING:
 REPOSITORY = Path(__file__).parent.parent.parent
 
 SCRIPT = """
-import os, signal, sys, time
+import os, signal, sys, threading
 sys.path.insert(0, {repository!r})
 from watcher.worker_loop import serve
 
@@ -34,7 +34,7 @@ def handle(request):
         case "exit":
             os._exit(3)
         case "hang":
-            time.sleep(600)
+            threading.Event().wait(600)
         case "memory":
             return {{"bytes": len(bytearray(10**10))}}
         case "echo":
