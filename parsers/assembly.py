@@ -97,8 +97,11 @@ class _Assembly:
             "aliquot": values.quantities("aliquot"), "made_up_to": values.quantities("made_up_to"),
             "mass": values.quantities("mass"), "digest_volume": values.quantities("digest_volume"),
             "replicate": values.numbers("replicate"), "position": values.numbers("position"),
+            "reference_signal": values.numbers("reference_signal"),
+            "concentration": values.quantities("concentration"),
+            "reported_result": values.quantities("reported_result"),
             "measured_at": values.times(), "predilution": values.predilution(),
-            **{name: values.texts(name) for name in ("stock", "batch", "analyst", "instrument", "comment")},
+            **{name: values.texts(name) for name in ("stock", "batch", "analyst", "instrument", "duplicate_of", "comment")},
         }  # fmt: skip
         present = self.present(role)
         if not present.any():

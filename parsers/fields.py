@@ -6,11 +6,13 @@ Nothing here reads a value.
 from __future__ import annotations
 
 #: Texts of a row.
-TEXTS = ("label", "sample", "role", "analyte", "channel", "level", "stock", "batch", "analyst", "instrument", "comment")
+TEXTS = (
+    "label", "sample", "role", "analyte", "channel", "level", "stock", "batch", "analyst", "instrument", "duplicate_of", "comment",
+)  # fmt: skip
 #: Plain numbers of a row; `signal` may have several columns.
-NUMBERS = ("signal", "signal_sd", "signal_rsd", "readings", "replicate", "position")
+NUMBERS = ("signal", "signal_sd", "signal_rsd", "readings", "replicate", "position", "reference_signal")
 #: Concentrations: without a unit they take the one of the settings.
-CONCENTRATIONS = ("added", "nominal")
+CONCENTRATIONS = ("added", "nominal", "concentration", "reported_result")
 #: Volumes and masses: a number without unit says nothing.
 VOLUMES = ("spike_volume", "aliquot", "made_up_to", "digest_volume")
 MASSES = ("mass",)
@@ -19,7 +21,7 @@ ALL = (*TEXTS, *NUMBERS, *QUANTITIES, "predilution", "measured_at")
 
 #: What a named group of a label rule may say.
 FROM_LABEL = (
-    "sample", "analyte", "channel", "level", "stock", "batch", "comment", "replicate", "position", *QUANTITIES,
+    "sample", "analyte", "channel", "level", "stock", "batch", "duplicate_of", "comment", "replicate", "position", *QUANTITIES,
     "predilution",
 )  # fmt: skip
 #: What a value outside the table may say for every row; other headings are kept as they are.

@@ -88,6 +88,7 @@ class Columns(_Part):
     batch: Source | None = None
     analyst: Source | None = None
     instrument: Source | None = None
+    duplicate_of: Source | None = None
     comment: Source | None = None
     signal: Source | None = None
     signal_sd: Source | None = None
@@ -97,6 +98,9 @@ class Columns(_Part):
     position: Source | None = None
     added: Source | None = None
     nominal: Source | None = None
+    concentration: Source | None = None
+    reported_result: Source | None = None
+    reference_signal: Source | None = None
     spike_volume: Source | None = None
     aliquot: Source | None = None
     made_up_to: Source | None = None

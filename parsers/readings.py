@@ -202,8 +202,9 @@ class Readings:
     ----------
     line
         int64[n], line of the export from 1 on which the row begins.
-    label, sample, analyte, channel, level, stock, batch, analyst, instrument, comment
+    label, sample, analyte, channel, level, stock, batch, analyst, instrument, duplicate_of, comment
         Texts. `label` is as written, trimmed. `sample` groups spiked with unspiked. `analyte` is always there.
+        `duplicate_of` names what the row is a duplicate of.
     role
         int8[n], codes of `Role`.
     signals
@@ -220,6 +221,10 @@ class Readings:
         float64[n]: seconds since 1970-01-01 of the local time that the export wrote; NaN where absent.
     added, nominal
         Concentrations added to a spiked solution, and of a standard or check standard.
+    concentration, reported_result
+        What the instrument itself computed: the concentration that it read back, the result that it reports.
+    reference_signal
+        float64[n]: signal of the internal standard that belongs to the row's signal; NaN where absent.
     spike_volume, aliquot, made_up_to, digest_volume
         Volumes; `digest_volume` is what a solid's digest was made up to.
     mass
@@ -247,6 +252,7 @@ class Readings:
     batch: Texts
     analyst: Texts
     instrument: Texts
+    duplicate_of: Texts
     comment: Texts
     signals: Floats
     signal_sd: Floats
@@ -256,8 +262,11 @@ class Readings:
     position: Floats
     measured_at: Floats
     predilution: Floats
+    reference_signal: Floats
     added: Quantities
     nominal: Quantities
+    concentration: Quantities
+    reported_result: Quantities
     spike_volume: Quantities
     aliquot: Quantities
     made_up_to: Quantities

@@ -30,9 +30,28 @@ if TYPE_CHECKING:
     Floats = NDArray[np.float64]
 
 REFERENCE = Path(__file__).parents[1] / "reference"
-TEXTS = ("level", "stock", "batch", "analyst", "instrument", "comment")
-NUMBERS = ("signal_sd", "signal_rsd", "readings", "replicate", "position", "measured_at", "predilution")
-QUANTITIES = ("added", "nominal", "spike_volume", "aliquot", "made_up_to", "mass", "digest_volume")
+TEXTS = ("level", "stock", "batch", "analyst", "instrument", "duplicate_of", "comment")
+NUMBERS = (
+    "signal_sd",
+    "signal_rsd",
+    "readings",
+    "replicate",
+    "position",
+    "measured_at",
+    "predilution",
+    "reference_signal",
+)
+QUANTITIES = (
+    "added",
+    "nominal",
+    "concentration",
+    "reported_result",
+    "spike_volume",
+    "aliquot",
+    "made_up_to",
+    "mass",
+    "digest_volume",
+)
 VOLUMES = ("spike_volume", "aliquot", "made_up_to", "digest_volume")
 BLANK_METHOD: dict[str, Any] = {"report": "additions", "export_unit": "mg/L", "result_unit": "mg/L"}
 

@@ -27,10 +27,22 @@ TEXTS = (
     "batch",
     "analyst",
     "instrument",
+    "duplicate_of",
     "comment",
 )
-NUMBERS = ("signal_sd", "signal_rsd", "readings", "replicate", "position", "measured_at", "predilution")
-QUANTITIES = ("added", "nominal", "spike_volume", "aliquot", "made_up_to", "mass", "digest_volume")
+NUMBERS = (
+    "signal_sd",
+    "signal_rsd",
+    "readings",
+    "replicate",
+    "position",
+    "measured_at",
+    "predilution",
+    "reference_signal",
+)
+QUANTITIES = (
+    "added", "nominal", "concentration", "reported_result", "spike_volume", "aliquot", "made_up_to", "mass", "digest_volume",
+)  # fmt: skip
 REFERENCE = Path(__file__).parents[1] / "reference"
 
 
@@ -51,7 +63,7 @@ def readings_of(rows: list[dict[str, Any]], unit: str = "mg/L", volume: str = "m
     for name in NUMBERS:
         columns[name] = np.array([row.get(name, np.nan) for row in rows], dtype=float)
     for name in QUANTITIES:
-        default = unit if name in ("added", "nominal") else volume
+        default = unit if name in ("added", "nominal", "concentration", "reported_result") else volume
         stated = [row.get(name, np.nan) for row in rows]
         pairs = [one if isinstance(one, tuple) else (one, default) for one in stated]
         values = np.array([value for value, _ in pairs], dtype=float)
