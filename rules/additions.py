@@ -257,6 +257,7 @@ def evaluate(
         coverage_factor=k * shown,
         dof=fits.spread(fits.dof),
         detected=~(tested <= 0),
+        less_than=fits.spread(interval.high) * factor * shown,
         budget=shares,
         reasons=_reasons(fits, interval.g),
     )

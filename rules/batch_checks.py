@@ -8,11 +8,11 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from parsers.readings import Role
-from rules import units
 from rules.calibration import nominal_of
 from rules.case import Reported
-from rules.checks import Check, Outcome, judged, limits_of, percents, severest
+from rules.checks import Check, Outcome, batch_limits, judge_values, judged, percents, series_limits, severest
 from rules.figures import figure, several
+from rules.substances import molar_masses_used
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
@@ -23,8 +23,6 @@ if TYPE_CHECKING:
 UNDECIDED_BLANK = (
     "blanks were measured and the settings do not say what to do with them: state blank: subtract, preparation or none"
 )
-#: Without a limit of quantification, readings below so many times the blanks' signal scatter by nature (method, 8).
-BLANK_MULTIPLE = 10
 
 
 def inputs(case: Case) -> Check:
@@ -32,9 +30,12 @@ def inputs(case: Case) -> Check:
     outcome = np.full(len(case), Outcome.PASS, dtype=np.int8)
     outcome[list(case.faults)] = Outcome.FAIL
 
+    masses = molar_masses_used(case.readings, case.method)
+
     def sentence(i: int) -> str:
         if i not in case.faults:
-            return "all cells readable, volumes and concentrations possible"
+            said = masses.get(int(case.series.analyte[i]))
+            return "all cells readable, volumes and concentrations possible" + (f"; {said}" if said else "")
         return several(case.faults[i], most=3)
 
     return Check("inputs", None, "", np.full(len(case), np.nan), outcome, None, sentence, case.series_lines)
@@ -68,7 +69,7 @@ def repeatability(case: Case) -> Check:
     with np.errstate(invalid="ignore", divide="ignore"):
         rsd = 100 * solutions.signal_sd / np.abs(solutions.signal)
     nominal_zero = case.readings.nominal.values[solutions.rows] == 0
-    rsd = np.where(_large_enough(case) & ~nominal_zero, rsd, np.nan)
+    rsd = np.where(case.large_enough & ~nominal_zero, rsd, np.nan)
     members = case.series.members
     own, own_place = _worst(rsd[members], case.series.segments.owner, len(case))
     own_solution = np.where(own_place >= 0, members[own_place], -1)
@@ -107,31 +108,10 @@ def _key_of(case: Case, chosen: NDArray[np.int64]) -> NDArray[np.int64]:
     return case.keys.code(case.readings.analyte.codes[rows], case.readings.channel.codes[rows])
 
 
-def _large_enough(case: Case) -> NDArray[np.bool_]:
-    """Solutions whose readings are high enough for a relative scatter to mean something."""
-    loq = np.array([_loq(case, name) for name in case.readings.analyte.names])
-    everything = np.arange(len(case.solutions))
-    key = _key_of(case, everything)
-    at = case.calibrations.of_key[key]
-    signal = case.solutions.signal
-    lines = case.calibrations.lines
-    threshold = BLANK_MULTIPLE * np.abs(case.blanks.mean[key])
-    if len(lines.slope):
-        by_loq = lines.intercept[at] + lines.slope[at] * loq[case.readings.analyte.codes[case.solutions.rows]]
-        threshold = np.where((at >= 0) & np.isfinite(by_loq), by_loq, threshold)
-    with np.errstate(invalid="ignore"):
-        return np.asarray(np.isnan(threshold) | (signal > threshold), dtype=bool)
-
-
-def _loq(case: Case, analyte: str) -> float:
-    stated = case.method.analyte(analyte).loq
-    return np.nan if stated is None else units.of_measure(stated, case.method.vessel_unit)
-
-
 def check_standard(case: Case) -> Check:
     """Every check standard of the analyte, read back, in % of nominal. EPA SW-846 6010D and 7000B."""
     checks = case.check_standards
-    limits = limits_of(case.method, case.readings.analyte.names, "check_standard")
+    limits = batch_limits(case, "check_standard")
     analyte, away = checks.key // case.keys.channels, np.abs(checks.percent - 100)
     place = severest(limits, analyte, checks.percent, away, checks.key, case.keys.count)[case.key]
     value = _at(checks.percent, place)
@@ -158,16 +138,16 @@ def check_standard(case: Case) -> Check:
 def blank(case: Case) -> Check:
     """Every blank as concentration against the limit of quantification. EPA SW-846 6010D, 9.7."""
     blanks, lines = case.blanks, case.calibrations.lines
-    signal = case.solutions.signal[blanks.solutions]
+    signal = case.seen.solutions.signal[blanks.solutions]
     at = case.calibrations.of_key[blanks.key] if len(blanks.key) else np.zeros(0, dtype=np.int64)
-    loq = np.array([_loq(case, name) for name in case.readings.analyte.names])
+    loq = case.limits.loq
     concentration = np.full(len(signal), np.nan)
     if len(lines.slope):
         with np.errstate(invalid="ignore", divide="ignore"):
             concentration = np.where(at >= 0, (signal - lines.intercept[at]) / lines.slope[at], np.nan)
     analyte = blanks.key // case.keys.channels
-    relative = concentration / loq[analyte]
-    limits = limits_of(case.method, case.readings.analyte.names, "blank")
+    relative = concentration / loq[blanks.key]
+    limits = batch_limits(case, "blank")
     place = severest(limits, analyte, relative, relative, blanks.key, case.keys.count)[case.key]
     value = _at(relative, place)
     counts = blanks.count[case.key]
@@ -176,9 +156,7 @@ def blank(case: Case) -> Check:
         if outcome is Outcome.NOT_EVALUATED:
             if not counts[i]:
                 return "no blank in this export"
-            missing = (
-                "calibration" if np.isfinite(loq[case.series.analyte[i]]) else "limit of quantification (analytes.loq)"
-            )
+            missing = "calibration" if np.isfinite(loq[case.key[i]]) else "limit of quantification (analytes.loq)"
             return f"no {missing} to judge blanks by"
         label = case.label(int(blanks.solutions[place[i]]))
         reads = f"blank {label} reads {figure(concentration[place[i]])} {case.method.vessel_unit}"
@@ -188,6 +166,135 @@ def blank(case: Case) -> Check:
         return [] if np.isnan(value[i]) else case.lines_of([int(blanks.solutions[place[i]])])
 
     return judged(case, "blank", None, "LOQ", value, sentence, rests_on)
+
+
+def spiked_blank(case: Case) -> Check:
+    """Every spiked blank, in % of what was added. EPA SW-846 6010D, laboratory control sample.
+
+    One that was made from another stock than a series' additions says nothing of that series.
+    """
+    spiked = case.spiked_blanks
+    limits = batch_limits(case, "spiked_blank")
+    analyte, away = spiked.key // case.keys.channels, np.abs(spiked.percent - 100)
+    stocks = len(case.method.stocks) + 1
+    by_stock = spiked.key * stocks + spiked.stock + 1
+    place = severest(limits, analyte, spiked.percent, away, spiked.key, case.keys.count)[case.key]
+    if len(spiked.key):
+        of_stock = severest(limits, analyte, spiked.percent, away, by_stock, case.keys.count * stocks)
+        own = _stock_of_series(case)
+        same, any_stock = of_stock[case.key * stocks + own + 1], of_stock[case.key * stocks]
+        place = np.where(own < 0, place, np.where(same >= 0, same, any_stock))
+    value = _at(spiked.percent, place)
+    shown = percents(case, "spiked_blank", value)
+    counts = np.bincount(spiked.key, minlength=case.keys.count)[case.key]
+
+    def sentence(i: int, outcome: Outcome) -> str:
+        if outcome is Outcome.NOT_EVALUATED:
+            if not counts[i]:
+                return "no spiked blank in this export"
+            if case.back.calibration[i] < 0:
+                return "spiked blanks were measured, and there is no calibration to read them back from"
+            return "the spiked blanks were made from other stocks"
+        found = f"spiked blank {case.label(int(spiked.solutions[place[i]]))} recovers {shown(i)}"
+        return found if outcome is Outcome.PASS else f"{found}: stock or spiking suspect"
+
+    def lines(i: int) -> list[int]:
+        return [] if np.isnan(value[i]) else case.lines_of([int(spiked.solutions[place[i]])])
+
+    return judged(case, "spiked_blank", None, "%", value, sentence, lines)
+
+
+def _stock_of_series(case: Case) -> NDArray[np.int64]:
+    """Return the stock of each series' additions, -1 where it used none or several."""
+    seg, stock = case.series.segments, case.vessels.stock[case.series.members].astype(float)
+    used = case.series.spiked
+    low, high = seg.min(np.where(used, stock, np.inf)), seg.max(np.where(used, stock, -np.inf))
+    return np.where(np.isfinite(low) & (low == high), low, -1).astype(np.int64)
+
+
+def stock(case: Case) -> Check:
+    """Every stock that a series used within its dates when its additions were measured. A must."""
+    seg, members = case.series.segments, case.series.members
+    used = case.series.spiked & (case.vessels.stock[members] >= 0)
+    dated = np.array([s.valid_from is not None or s.valid_until is not None for s in case.method.stocks] + [False])
+    judged_by = used & dated[case.vessels.stock[members]]
+    late = case.series.spiked & case.vessels.out_of_date[members]
+    lates = seg.sum(late.astype(float)) > 0
+    outcome = np.where(seg.sum(judged_by.astype(float)) > 0, Outcome.PASS, Outcome.NOT_EVALUATED)
+    outcome = np.where(lates, Outcome.FAIL, outcome).astype(np.int8)
+
+    def sentence(i: int) -> str:
+        if outcome[i] == Outcome.NOT_EVALUATED:
+            return "no stock with dates was used"
+        start = int(seg.starts[i])
+        own = slice(start, start + int(seg.sizes[i]))
+        if outcome[i] == Outcome.PASS:
+            return f"{_names(case, members[own][used[own]])} within its dates"
+        solutions = members[own][late[own]]
+        labels = several([case.label(int(s)) for s in solutions])
+        return f"{_names(case, solutions)} was out of its dates when these were measured: {labels}"
+
+    def lines(i: int) -> list[int]:
+        start = int(seg.starts[i])
+        own = slice(start, start + int(seg.sizes[i]))
+        return case.lines_of(members[own][used[own]].tolist())
+
+    return Check("stock", None, "", np.full(len(case), np.nan), outcome, None, sentence, lines)
+
+
+def _names(case: Case, solutions: NDArray[np.int64]) -> str:
+    """Name the stocks of some solutions with their lots."""
+    used = [case.method.stocks[s] for s in sorted({int(s) for s in case.vessels.stock[solutions] if s >= 0})]
+    return several([f"stock {s.name}" + (f" (lot {s.lot})" if s.lot else "") for s in used])
+
+
+def bracket(case: Case) -> Check:
+    """Check standards before, between and after a series hold. EPA SW-846 6010D.
+
+    Judged by the limits of `check_standard`; its value is the one judged hardest. An open bracket is not evaluated here
+    and leaves the series incomplete.
+    """
+    found, checks = case.brackets, case.check_standards
+    limits = batch_limits(case, "check_standard")
+    percent_of = checks.percent[found.order]
+    analyte = checks.key[found.order] // case.keys.channels
+    hardness = judge_values(limits, analyte, percent_of).astype(np.int64)
+    rank = np.where(np.isfinite(percent_of), hardness * 1e6 + np.abs(percent_of - 100), -1.0)
+    worst = np.full(len(case), -1, dtype=np.int64)
+    outcome = np.full(len(case), Outcome.NOT_EVALUATED, dtype=np.int8)
+    for i in np.flatnonzero(found.wanted).tolist():
+        part = slice(int(found.first[i]), int(found.last[i]))
+        if found.last[i] > found.first[i]:
+            best = int(np.argmax(rank[part])) + part.start
+            if rank[best] >= 0:
+                worst[i] = best
+                outcome[i] = hardness[best]
+    off = np.array([limit.off for limit in series_limits(case, "bracket")], dtype=bool)[case.limit_classes.of_series]
+    open_ = ~(found.opened & found.closed)
+    outcome[off | (open_ & (outcome != Outcome.FAIL))] = Outcome.NOT_EVALUATED
+    value = _at(percent_of, worst)
+    shown = percents(case, "check_standard", value)
+
+    def sentence(i: int) -> str:
+        if off[i]:
+            return "bracket: switched off in the settings"
+        if not found.wanted[i]:
+            return "no check standard in this export"
+        if outcome[i] == Outcome.NOT_EVALUATED:
+            if open_[i]:
+                return case.open_brackets[i]
+            return "there is no calibration to read the check standards back from"
+        label = case.label(int(checks.solutions[found.order[worst[i]]]))
+        if outcome[i] == Outcome.PASS:
+            return f"the check standards before and after hold, the farthest is {label} with {shown(i)}"
+        return f"check standard {label} of its bracket reads {shown(i)} of nominal"
+
+    def lines(i: int) -> list[int]:
+        part = found.order[int(found.first[i]) : int(found.last[i])]
+        return case.lines_of(checks.solutions[part].tolist()) if found.wanted[i] else []
+
+    value = np.where(outcome == Outcome.NOT_EVALUATED, np.nan, value)
+    return Check("bracket", None, "%", value, outcome, series_limits(case, "bracket"), sentence, lines)
 
 
 def collect_faults(case: Case) -> dict[int, list[str]]:
@@ -235,10 +342,12 @@ def _unusable(case: Case) -> list[tuple[int, str]]:
     rows, signal = case.solutions.rows, case.solutions.signal
     role = case.readings.role[rows]
     verifies = role == Role.CHECK_STANDARD
+    clean = role == Role.SPIKED_BLANK
     chosen = np.flatnonzero(verifies)
     nominal = np.full(len(rows), np.nan)
-    nominal[chosen], problem = nominal_of(case.readings, rows[chosen], case.method)
-    silent = (verifies | (role == Role.BLANK)) & ~np.isfinite(signal)
+    nominal[chosen], reasons = nominal_of(case.readings, rows[chosen], case.method)
+    problems = {int(chosen[place]): reason for place, reason in reasons.items()}
+    silent = (verifies | clean | (role == Role.BLANK)) & ~np.isfinite(signal)
     with np.errstate(invalid="ignore"):
         unknown = verifies & ~(nominal > 0)
     found = []
@@ -246,7 +355,7 @@ def _unusable(case: Case) -> list[tuple[int, str]]:
         np.flatnonzero(silent | unknown).tolist(), _key_of(case, np.flatnonzero(silent | unknown)).tolist(), strict=True
     ):
         if solution not in case.solutions.faults:
-            what = "no signal" if silent[solution] else problem or "no nominal concentration above zero"
+            what = "no signal" if silent[solution] else problems.get(solution) or "no nominal concentration above zero"
             found.append((key, f"{_place(case, solution)}: {what}: correct the export or measure it again"))
     return found
 

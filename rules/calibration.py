@@ -12,8 +12,9 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from parsers.readings import Role
-from rules import line, units, variance
+from rules import line, variance
 from rules.interval import Covariance, student_t
+from rules.substances import concentrations
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
@@ -51,6 +52,8 @@ class Calibrations:
         float64[c], Student's t.
     least, model
         Least signal that a weight was computed at, and the variance model.
+    instrument
+        bool[c]: no standards, but the concentrations that the instrument computed.
     refused
         Key to the sentences of why its standards make no calibration.
     """
@@ -67,6 +70,7 @@ class Calibrations:
     t: Floats
     least: Floats
     model: VarianceModel
+    instrument: NDArray[np.bool_]
     refused: dict[int, list[str]]
 
     def variance_at(self, signal: Floats, calibration: Integers) -> Floats:
@@ -81,12 +85,10 @@ class Calibrations:
         return Covariance(self.lines.var_intercept * shown, self.lines.covariance * shown, self.lines.var_slope * shown)
 
 
-def nominal_of(readings: Readings, rows: Integers, method: Method) -> tuple[Floats, str | None]:
-    """Return nominal concentrations in the result unit, or NaN and the reason why they cannot be converted."""
-    try:
-        return units.of_column(readings.nominal.take(rows), method.vessel_unit, method.export_unit), None
-    except units.UnitUnusable as error:
-        return np.full(len(rows), np.nan), f"nominal: {error}"
+def nominal_of(readings: Readings, rows: Integers, method: Method) -> tuple[Floats, dict[int, str]]:
+    """Return nominal concentrations in the unit of the vessel, and of which places they cannot be converted and why."""
+    nominal, reasons = concentrations(readings, readings.nominal, rows, method)
+    return nominal, {place: f"nominal: {reason}" for place, reason in reasons.items()}
 
 
 def calibrate(
@@ -101,9 +103,9 @@ def calibrate(
     """
     standard = np.flatnonzero(readings.role[solutions.rows] == Role.STANDARD)
     rows = solutions.rows[standard]
-    nominal, problem = nominal_of(readings, rows, method)
+    nominal, problems = nominal_of(readings, rows, method)
     key = keys.code(readings.analyte.codes[rows], readings.channel.codes[rows])
-    refused = _refusals(readings, solutions, standard, key, nominal, problem)
+    refused = _refusals(readings, solutions, standard, key, nominal, problems)
     order = np.argsort(key, kind="stable")
     standard, nominal, key = standard[order], nominal[order], key[order]
     distinct = _distinct(key, nominal, keys.count)
@@ -136,6 +138,7 @@ def calibrate(
         t=student_t(method.confidence, lines.dof),
         least=weighted.least,
         model=method.variance,
+        instrument=np.zeros(len(present), dtype=bool),
         refused=refused,
     )
 
@@ -146,13 +149,15 @@ def _refusals(
     standard: Integers,
     key: Integers,
     nominal: Floats,
-    problem: str | None,
+    problems: dict[int, str],
 ) -> dict[int, list[str]]:
     refused: dict[int, list[str]] = {}
     for place in np.flatnonzero(~np.isfinite(nominal) | ~np.isfinite(solutions.signal[standard])).tolist():
         solution = int(standard[place])
         at = f"line {readings.line[solutions.rows[solution]]}"
-        sentences = solutions.faults.get(solution) or [f"{at}: {problem or 'a standard without nominal or signal'}"]
+        sentences = solutions.faults.get(solution) or [
+            f"{at}: {problems.get(place, 'a standard without nominal or signal')}"
+        ]
         refused.setdefault(int(key[place]), []).extend(sentences)
     for place, index in enumerate(standard.tolist()):
         if index in solutions.faults and int(key[place]) not in refused:

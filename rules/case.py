@@ -9,23 +9,36 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
+from parsers.readings import Role
+from rules import bracket
+from rules.exceptions import LimitClasses
+
 if TYPE_CHECKING:
     from numpy.typing import NDArray
 
     from parsers.readings import Readings
     from rules.additions import Fits
     from rules.blanks import Blanks, Keys
+    from rules.bracket import Brackets
     from rules.calibration import Calibrations
     from rules.check_standards import CheckStandards
+    from rules.detection_limits import DetectionLimits
+    from rules.dilutions import Dilutions
     from rules.interval import Interval
     from rules.line import Floats, Integers
     from rules.method import Method
     from rules.reading_back import ReadBack
     from rules.recovery import Recoveries
     from rules.result import Results
+    from rules.seen import Seen
     from rules.series import Series
     from rules.solutions import Solutions
+    from rules.spiked_blanks import SpikedBlanks
     from rules.vessels import Vessels
+
+
+#: Without a limit of quantification, readings below so many times the blanks' signal scatter by nature (method, 8).
+BLANK_MULTIPLE = 10
 
 
 class Reported(IntEnum):
@@ -51,6 +64,8 @@ class Case:
         Standard uncertainty of the line's share, in the sample.
     back
         Calibration results.
+    seen
+        What is read back from, and from what.
     reported
         Codes of `Reported`.
     faults
@@ -65,12 +80,14 @@ class Case:
     keys: Keys
     key: Integers
     blanks: Blanks
-    calibrations: Calibrations
-    check_standards: CheckStandards
     fits: Fits
     additions: Results
     interval: Interval
     u_line: Floats
+    seen: Seen
+    check_standards: CheckStandards
+    spiked_blanks: SpikedBlanks
+    dilutions: Dilutions
     back: ReadBack
     recoveries: Recoveries
     reported: NDArray[np.int8]
@@ -79,6 +96,59 @@ class Case:
     def __len__(self) -> int:
         """Return the number of series."""
         return len(self.series)
+
+    @property
+    def calibrations(self) -> Calibrations:
+        """The calibrations, by standards or by the instrument."""
+        return self.seen.calibrations
+
+    @property
+    def limits(self) -> DetectionLimits:
+        """Limits of detection and quantification by analyte and channel."""
+        return self.seen.limits
+
+    @cached_property
+    def limit_classes(self) -> LimitClasses:
+        """Which limits hold for each series."""
+        readings, series = self.readings, self.series
+        return LimitClasses.of(self.method, readings.sample, readings.analyte, series.sample, series.analyte)
+
+    @cached_property
+    def brackets(self) -> Brackets:
+        """The check standards before, between and after each series."""
+        return bracket.find(self.readings, self.solutions, self.series, self.key, self.check_standards, self.keys)
+
+    @cached_property
+    def open_brackets(self) -> dict[int, str]:
+        """Series whose bracket nothing opens or closes, with the sentence that says so."""
+        found = self.brackets
+        sentences = {}
+        for i in np.flatnonzero(found.wanted & ~(found.opened & found.closed)).tolist():
+            if not found.opened[i]:
+                sentences[i] = "no check standard and no calibration was measured before it: the bracket is open"
+                continue
+            since = self.lines_of([int(found.opened_by[i])])
+            sentences[i] = f"no check standard was measured after it, the last one is on line {since[0]}"
+            if self.readings.role[self.solutions.rows[found.opened_by[i]]] == Role.STANDARD:
+                sentences[i] = f"no check standard was measured after it; the calibration ended on line {since[0]}"
+        return sentences
+
+    @cached_property
+    def large_enough(self) -> NDArray[np.bool_]:
+        """Solutions whose readings are high enough for a relative scatter or difference to mean something.
+
+        Above the limit of quantification; without one above ten times the blanks' signal.
+        """
+        rows = self.solutions.rows
+        key = self.keys.code(self.readings.analyte.codes[rows], self.readings.channel.codes[rows])
+        at = self.calibrations.of_key[key]
+        lines = self.calibrations.lines
+        threshold = BLANK_MULTIPLE * np.abs(self.seen.blanks.mean[key])
+        if len(lines.slope):
+            by_loq = lines.intercept[at] + lines.slope[at] * self.limits.loq[key]
+            threshold = np.where((at >= 0) & np.isfinite(by_loq), by_loq, threshold)
+        with np.errstate(invalid="ignore"):
+            return np.asarray(np.isnan(threshold) | (self.seen.solutions.signal > threshold), dtype=bool)
 
     @cached_property
     def native(self) -> Floats:

@@ -13,10 +13,9 @@ from rules.calibration import nominal_of
 if TYPE_CHECKING:
     from parsers.readings import Readings
     from rules.blanks import Keys
-    from rules.calibration import Calibrations
     from rules.line import Floats, Integers
     from rules.method import Method
-    from rules.solutions import Solutions
+    from rules.seen import Seen
 
 
 @dataclass(frozen=True, slots=True)
@@ -38,10 +37,9 @@ class CheckStandards:
     percent: Floats
 
 
-def read(
-    readings: Readings, solutions: Solutions, calibrations: Calibrations, keys: Keys, method: Method
-) -> CheckStandards:
+def read(readings: Readings, seen: Seen, keys: Keys, method: Method) -> CheckStandards:
     """Read every check standard back."""
+    solutions, calibrations = seen.solutions, seen.calibrations
     chosen = np.flatnonzero(readings.role[solutions.rows] == Role.CHECK_STANDARD)
     rows = solutions.rows[chosen]
     key = keys.code(readings.analyte.codes[rows], readings.channel.codes[rows])

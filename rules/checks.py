@@ -12,8 +12,8 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
+from rules.exceptions import limits_of
 from rules.figures import percent
-from rules.limits import DEFAULTS, RECOVERY_AFTER_PREPARATION, CheckLimits
 
 if TYPE_CHECKING:
     from collections.abc import Callable
@@ -21,8 +21,8 @@ if TYPE_CHECKING:
     from numpy.typing import NDArray
 
     from rules.case import Case, Reported
+    from rules.limits import CheckLimits
     from rules.line import Floats
-    from rules.method import Method
 
     Outcomes = NDArray[np.int8]
 
@@ -61,7 +61,7 @@ class Check:
     outcome
         int8[m], codes of `Outcome`.
     limits
-        What each analyte (code) is judged by; None for checks that are a must.
+        What each class of limits is judged by; None for checks that are a must.
     sentence
         Series to one plain sentence.
     lines
@@ -88,48 +88,49 @@ class Check:
         if self.limits is None:
             return np.zeros(len(case), dtype=bool)
         stated = np.array([limit.stated and limit.fail is not None for limit in self.limits], dtype=bool)
-        return stated[case.series.analyte]
+        return stated[case.limit_classes.of_series]
 
     def limit_text(self, case: Case, series: int) -> str:
         """Return the limit in words."""
         if self.limits is None:
             return "must"
-        return self.limits[int(case.series.analyte[series])].text
+        return self.limits[int(case.limit_classes.of_series[series])].text
 
 
-def limits_of(method: Method, analytes: tuple[str, ...], check: str) -> tuple[CheckLimits, ...]:
-    """Return the limits of a check for each analyte: the analyte's own, else the laboratory's, else the default."""
-    default = DEFAULTS[check]
-    if check == "recovery" and method.spiked_at == "after preparation":
-        default = RECOVERY_AFTER_PREPARATION
-    general = method.limits.get(check, default)
-    return tuple(method.analyte(name).limits.get(check, general) for name in analytes)
+def series_limits(case: Case, check: str) -> tuple[CheckLimits, ...]:
+    """Return the limits of a check for each class of limits of an export's series."""
+    return case.limit_classes.limits(case.method, check)
+
+
+def batch_limits(case: Case, check: str) -> tuple[CheckLimits, ...]:
+    """Return the limits of a check for each analyte of an export, for what belongs to no sample."""
+    return limits_of(case.method, case.readings.analyte.names, check)
 
 
 def judge(case: Case, limits: tuple[CheckLimits, ...], value: Floats) -> Outcomes:
-    """Judge one value for each series by the limits of its analyte."""
-    return judge_values(limits, case.series.analyte, value)
+    """Judge one value for each series by the limits of its class."""
+    return judge_values(limits, case.limit_classes.of_series, value)
 
 
-def judge_values(limits: tuple[CheckLimits, ...], analyte: NDArray[Any], value: Floats) -> Outcomes:
-    """Judge values by the limits of their analytes; NaN is not evaluated, and neither is a check that is off."""
+def judge_values(limits: tuple[CheckLimits, ...], code: NDArray[Any], value: Floats) -> Outcomes:
+    """Judge values by the limits that their codes choose; NaN is not evaluated, and neither is a check that is off."""
     outcome = np.full(len(value), Outcome.PASS, dtype=np.int8)
     for level, severity in (("warn", Outcome.WARN), ("fail", Outcome.FAIL)):
         chosen = [getattr(limit, level) for limit in limits]
-        low = np.array([-np.inf if limit is None else limit.low for limit in chosen])[analyte]
-        high = np.array([np.inf if limit is None else limit.high for limit in chosen])[analyte]
-        closed = np.array([limit is None or limit.closed for limit in chosen], dtype=bool)[analyte]
+        low = np.array([-np.inf if limit is None else limit.low for limit in chosen])[code]
+        high = np.array([np.inf if limit is None else limit.high for limit in chosen])[code]
+        closed = np.array([limit is None or limit.closed for limit in chosen], dtype=bool)[code]
         with np.errstate(invalid="ignore"):
             inside = np.where(closed, (value >= low) & (value <= high), (value > low) & (value < high))
         outcome[~inside] = severity
-    off = np.array([limit.off for limit in limits], dtype=bool)[analyte]
+    off = np.array([limit.off for limit in limits], dtype=bool)[code]
     outcome[np.isnan(value) | off] = Outcome.NOT_EVALUATED
     return outcome
 
 
 def severest(
     limits: tuple[CheckLimits, ...],
-    analyte: NDArray[Any],
+    code: NDArray[Any],
     value: Floats,
     away: Floats,
     owner: NDArray[np.int64],
@@ -141,7 +142,7 @@ def severest(
     83 and 112 % only the second lies outside 80 to 110 %.
     """
     finite = np.flatnonzero(np.isfinite(value))
-    hardness = judge_values(limits, analyte, value)[finite]
+    hardness = judge_values(limits, code, value)[finite]
     ascending = finite[np.lexsort((-finite, away[finite], hardness))]
     place = np.full(count, -1, dtype=np.int64)
     place[owner[ascending]] = ascending
@@ -150,8 +151,8 @@ def severest(
 
 def percents(case: Case, name: str, value: Floats) -> Callable[[int], str]:
     """Return what writes a check's value in % so that nobody reads it on the wrong side of its limits."""
-    bounds = [limit.bounds for limit in limits_of(case.method, case.readings.analyte.names, name)]
-    return lambda series: percent(float(value[series]), *bounds[int(case.series.analyte[series])])
+    bounds = [limit.bounds for limit in series_limits(case, name)]
+    return lambda series: percent(float(value[series]), *bounds[int(case.limit_classes.of_series[series])])
 
 
 def judged(
@@ -167,14 +168,14 @@ def judged(
 
     What judges a result is not evaluated where the inputs are faulty: the fault would come back in other words.
     """
-    limits = limits_of(case.method, case.readings.analyte.names, name)
+    limits = series_limits(case, name)
     if judges is not None and case.faults:
         value = value.copy()
         value[list(case.faults)] = np.nan
     outcome = judge(case, limits, value)
 
     def say(series: int) -> str:
-        if limits[int(case.series.analyte[series])].off:
+        if limits[int(case.limit_classes.of_series[series])].off:
             return f"{name}: switched off in the settings"
         if judges is not None and series in case.faults:
             return FAULTY_INPUTS

@@ -28,7 +28,7 @@ def percent(value: float, *bounds: float) -> str:
     ('61 %', '3.2 %', '74.6 %')
     """
     for places in range(0 if abs(value) >= 9.95 else 1, 6):
-        shown = round(value, places)
+        shown = round(value, places) + 0.0  # no minus before a zero
         if all((shown < bound) == (value < bound) and (shown > bound) == (value > bound) for bound in bounds):
             return f"{shown:.{places}f} %"
     return f"{value:g} %"

@@ -138,6 +138,9 @@ def _default(*, warn: str | None = None, fail: str | None = None) -> CheckLimits
     )
 
 
+#: What a bracket must have; it is no number and can only be switched off.
+BOTH_SIDES = Limit(-inf, inf, closed=True, unit="", text="both")
+
 #: Limits that hold until the laboratory states its own, with where they come from.
 DEFAULTS: dict[str, CheckLimits] = {
     # EPA SW-846 7000B, 9.10: three additions near 50, 100 and 150 % of the native level
@@ -164,8 +167,18 @@ DEFAULTS: dict[str, CheckLimits] = {
     "repeatability": _default(warn="at most 5 %", fail="at most 10 %"),
     # EPA SW-846 6010D and 7000B, continuing verification
     "check_standard": _default(fail="90 to 110 %"),
+    # EPA SW-846 6010D: every ten samples and at the end of the run
+    "bracket": CheckLimits(None, BOTH_SIDES, stated=False),
     # EPA SW-846 6010D, 9.7
     "blank": _default(fail="below 0.5 LOQ"),
+    # EPA SW-846 6010D, laboratory control sample
+    "spiked_blank": _default(fail="80 to 120 %"),
+    # EPA SW-846 6010D and 7000B
+    "duplicate": _default(fail="at most 20 %"),
+    # common practice: two standard uncertainties are rare, three should not happen
+    "channels_agree": _default(warn="at most 2", fail="at most 3"),
+    # EPA SW-846 6010D, five-fold dilution (from memory: verify before quoting)
+    "dilution_test": _default(fail="-20 to 20 %"),
 }
 #: EPA SW-846 7000B, 9.8.1: a spike after preparation is judged more narrowly.
 RECOVERY_AFTER_PREPARATION = _default(fail="80 to 120 %")

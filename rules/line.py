@@ -113,6 +113,23 @@ class Lines:
     unscaled_covariance: Floats
     unscaled_var_slope: Floats
 
+    @classmethod
+    def identity(cls, count: int) -> Lines:
+        """Return lines of intercept 0 and slope 1 that nothing was fitted to: exact, with no residuals."""
+        unknown = {name: np.full(count, np.nan) for name in cls.__slots__}
+        exact = {name: np.zeros(count) for name in ("intercept", "var_intercept", "covariance", "var_slope")}
+        none = np.zeros(count, dtype=np.int64)
+        return cls(
+            **unknown
+            | exact
+            | {"n": none, "dof": none.copy(), "slope": np.ones(count), "scatter": np.ones(count, dtype=bool)}
+            | {"residuals": np.zeros(0)}
+        )
+
+    def extended(self, others: Lines) -> Lines:
+        """Return these lines followed by others."""
+        return Lines(*(np.concatenate([getattr(self, name), getattr(others, name)]) for name in self.__slots__))
+
 
 def _mean(segments: Segments, values: Floats, weights: Floats, total: Floats) -> Floats:
     """Weighted mean, corrected once for its own rounding: offsets of 10⁵ must not cost digits."""

@@ -7,11 +7,12 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from rules import lack_of_fit as lack_of_fit_test
-from rules import units
 from rules.case import Reported
 from rules.checks import Check, Outcome, judged, percents
+from rules.detection_limits import LEAST_PREPARATIONS
 from rules.figures import figure, probability
 from rules.lack_of_fit import LEAST_LEVELS
+from rules.substances import of_analytes
 
 if TYPE_CHECKING:
     from rules.case import Case
@@ -198,8 +199,7 @@ def linear_evidence(case: Case) -> Check:
 
     For a result read back from a calibration the range is the calibration's, and below the lowest standard warns.
     """
-    names = case.readings.analyte.names
-    stated = np.array([_linear_to(case, name) for name in names])[case.series.analyte]
+    stated = of_analytes(case.readings, case.method, "linear_to")[case.series.analyte]
     by_calibration = case.reported == Reported.CALIBRATION
     members = case.series.members
     with np.errstate(invalid="ignore"):
@@ -246,27 +246,34 @@ def _lowest(case: Case, series: int) -> float:
     return float(_of_calibration(case, case.calibrations.lowest)[series])
 
 
-def _linear_to(case: Case, analyte: str) -> float:
-    stated = case.method.analyte(analyte).linear_to
-    return np.nan if stated is None else units.of_measure(stated, case.method.vessel_unit)
-
-
 def _proof(case: Case, series: int) -> str:
     proved_on = case.method.analyte(case.analyte(series)).proved_on
     return "the proved range" + (f" of {proved_on}" if proved_on else "")
 
 
 def detection(case: Case) -> Check:
-    """Whether the additions result can be told from zero; a native that is not detected is a result, not a fault."""
+    """Whether the reported result can be told from zero; a native that is not detected is a result, not a fault.
+
+    Additions by their own interval; a read-back by the decision limit, and warned of below the limit of quantification.
+    """
+    by_additions = case.reported == Reported.ADDITIONS
     results = case.additions
-    known = np.isfinite(results.value) & np.isfinite(results.low)
+    limits, key = case.limits, case.key
+    in_vessel = case.back.in_vessel
     with np.errstate(invalid="ignore"):
+        of_line = np.isfinite(results.value) & np.isfinite(results.low)
         inside = (results.low <= 0) & (results.high >= 0)
-        doubtful = results.detected & ((results.value < 0) | inside)
+        of_limits = np.isfinite(case.back.results.value) & np.isfinite(limits.decision[key])
+        known = np.where(by_additions, of_line, of_limits)
+        below_loq = case.back.results.detected & (in_vessel < limits.loq[key])
+        doubtful = np.where(by_additions, results.detected & ((results.value < 0) | inside), below_loq)
     outcome = np.where(known, np.where(doubtful, Outcome.WARN, Outcome.PASS), Outcome.NOT_EVALUATED)
     unit = case.method.result_unit
 
     def sentence(i: int) -> str:
+        return of_additions(i) if by_additions[i] else of_read_back(i)
+
+    def of_additions(i: int) -> str:
         if not known[i]:
             return "without an interval nothing can be said of detection"
         if not results.detected[i]:
@@ -275,11 +282,24 @@ def detection(case: Case) -> Check:
             return "the result lies below zero by more than its uncertainty: the baseline or the blank is off"
         return "not distinguishable from zero" if doubtful[i] else "distinguished from zero"
 
+    def of_read_back(i: int) -> str:
+        if not known[i]:
+            return f"no limit of detection: measure {LEAST_PREPARATIONS} blanks, or state analytes.lod"
+        source = f"of {limits.blanks[key[i]]} blanks" if limits.blanks[key[i]] else "of the laboratory"
+        if not case.back.results.detected[i]:
+            return f"not detected: less than {figure(case.back.results.less_than[i])} {unit}, the limit {source}"
+        if doubtful[i]:
+            return (
+                f"detected, and below the limit of quantification ({figure(limits.loq[key[i]])} "
+                f"{case.method.vessel_unit} in the vessel)"
+            )
+        return f"above the decision limit {source}"
+
     return Check(
         "detection",
-        Reported.ADDITIONS,
+        None,
         unit,
-        np.where(known, results.value, np.nan),
+        np.where(known, case.reported_value(), np.nan),
         outcome.astype(np.int8),
         None,
         sentence,

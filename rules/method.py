@@ -13,12 +13,14 @@ from rules import units
 if TYPE_CHECKING:
     from collections.abc import Mapping
 
+    from rules.exceptions import LimitException
     from rules.limits import CheckLimits
 
 Report = Literal["additions", "calibration", "automatic"]
 BlankUse = Literal["subtract", "preparation", "none"]
 VarianceModel = Literal["constant", "proportional", "counting"]
 AddedRefersTo = Literal["vessel", "aliquot", "nominal"]
+Reference = Literal["per vessel", "diluted with the sample"]
 
 
 @dataclass(frozen=True, slots=True)
@@ -107,8 +109,10 @@ class AnalyteRules:
         Concentration in the vessel up to which the response is proved linear.
     proved_on
         When that was proved, as written.
-    loq
-        The laboratory's limit of quantification.
+    loq, lod
+        The laboratory's limits of quantification and of detection.
+    molar_mass
+        In g/mol, where the name is no formula or another value is wanted.
     limits
         Check to limits, before those that hold for all analytes.
     """
@@ -116,6 +120,8 @@ class AnalyteRules:
     linear_to: Measure | None = None
     proved_on: str = ""
     loq: Measure | None = None
+    lod: Measure | None = None
+    molar_mass: float | None = None
     limits: Mapping[str, CheckLimits] = field(default_factory=dict)
 
 
@@ -131,43 +137,70 @@ class Method:
         What is done with blanks; None where the settings do not say it.
     export_unit, result_unit
         Unit of concentrations that state none, and of results.
+    unit_words
+        What ``ppm``, ``ppb`` and ``ppt`` mean where exports write them.
     variance
         How the scatter of a signal goes with it.
     confidence
         Of intervals, as a fraction.
     added_refers_to
         What an added concentration in the export refers to; None where not declared.
+    concentration_refers_to
+        What the instrument's own concentration refers to; None where not declared.
+    reference
+        How the internal standard came into the vessel; None where not declared.
+    undetected_native
+        What a native below its decision limit counts in recoveries.
+    expected_spiked, expected_levels
+        So many spiked samples for so many samples of a batch; additions of a spiked sample. None where nothing is
+        expected.
     spiked_at
         ``before preparation`` or ``after preparation``.
     repeats
         ``new attempt``, ``same series`` or ``refuse``.
     limits
         Check to limits, as the laboratory stated them.
+    exceptions
+        Limits that hold for some samples only, the first that matches before the others.
     """
 
     report: Report
     export_unit: str
     result_unit: str
+    unit_words: Mapping[str, str] = field(default_factory=dict)
     blank: BlankUse | None = None
     stocks: tuple[Stock, ...] = ()
     bench: Bench = field(default_factory=Bench)
     analytes: Mapping[str, AnalyteRules] = field(default_factory=dict)
     limits: Mapping[str, CheckLimits] = field(default_factory=dict)
+    exceptions: tuple[LimitException, ...] = ()
     variance: VarianceModel = "constant"
     confidence: float = 0.95
     added_refers_to: AddedRefersTo | None = None
+    concentration_refers_to: Literal["vessel", "sample"] | None = None
+    reference: Reference | None = None
+    undetected_native: Literal["as measured", "as zero"] = "as measured"
+    expected_spiked: tuple[int, int] | None = None
+    expected_levels: int | None = None
     spiked_at: Literal["before preparation", "after preparation"] = "before preparation"
     repeats: Literal["new attempt", "same series", "refuse"] = "new attempt"
 
     @property
     def solid(self) -> bool:
-        """Whether results are contents of a solid, mass per mass."""
-        return units.same_kind(self.result_unit, units.MASS_FRACTION)
+        """Whether results are contents of a solid, mass or amount per mass."""
+        return any(units.same_kind(self.result_unit, kind) for kind in (units.MASS_FRACTION, units.AMOUNT_CONTENT))
 
     @property
     def vessel_unit(self) -> str:
-        """Unit of concentrations in the vessel: that of results, or mg/L where results are contents of a solid."""
-        return units.CONCENTRATION if self.solid else self.result_unit
+        """Unit of concentrations in the vessel: that of results, or mg/L (mmol/L) where they are contents of solids."""
+        if not self.solid:
+            return self.result_unit
+        by_mass = units.same_kind(self.result_unit, units.MASS_FRACTION)
+        return units.CONCENTRATION if by_mass else units.AMOUNT_CONCENTRATION
+
+    def spelled_out(self, unit: str) -> str:
+        """Return what the laboratory declares ppm and the like to mean; any other unit as it is."""
+        return self.unit_words.get(unit.lower(), unit)
 
     def analyte(self, name: str) -> AnalyteRules:
         """Return what holds for an analyte; nothing particular where nothing is stated."""

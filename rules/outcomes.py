@@ -13,6 +13,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
+from rules import expectations
 from rules.case import Reported
 from rules.checks import Check, Outcome
 from rules.figures import figure, percent, plus_minus, span
@@ -84,10 +85,16 @@ class Outcomes:
 
     def reasons(self, series: int) -> list[str]:
         """Return one sentence for each thing that keeps a series from passing."""
-        found = [check.sentence(series) for check in self.deciding(series, Outcome.FAIL)]
+        found = self.failing_sentences(series)
         if series in self.missing:
             found.append(self.missing[series])
         return found + [check.sentence(series) for check in self.deciding(series, Outcome.WARN)]
+
+    def failing_sentences(self, series: int) -> list[str]:
+        """Return one sentence for each fact that fails a series: a check standard that fails its bracket is one."""
+        failing = self.deciding(series, Outcome.FAIL)
+        names = {check.name for check in failing}
+        return [check.sentence(series) for check in failing if check.name != "bracket" or "check_standard" not in names]
 
     def failed_checks(self, series: int) -> tuple[str, ...]:
         """Return the names of the checks that fail a series, or ``incomplete``."""
@@ -118,13 +125,19 @@ class Outcomes:
 #: Checks from the one whose failure explains most to the one that explains least.
 _URGENCY = (
     "inputs",
+    "stock",
     "check_standard",
+    "bracket",
     "blank",
+    "spiked_blank",
     "recovery",
     "slope_certainty",
     "curvature",
     "lack_of_fit",
     "linear_evidence",
+    "dilution_test",
+    "duplicate",
+    "channels_agree",
     "correlation",
     "residual",
     "repeatability",
@@ -144,7 +157,7 @@ def measured(check: Check, case: Case, series: int) -> str:
         return f"{name}: {check.sentence(series)}"
     if check.limits is None:
         return f"{name} {figure(value)} {check.unit}".rstrip() + f": {check.sentence(series)}"
-    limits = check.limits[int(case.series.analyte[series])]
+    limits = check.limits[int(case.limit_classes.of_series[series])]
     number = percent(value, *limits.bounds) if check.unit == "%" else f"{figure(value)} {check.unit}".rstrip()
     limit = limits.fail if check.outcome[series] == Outcome.FAIL else limits.warn
     words = "" if limit is None else limit.text.removesuffix("%").removesuffix("LOQ").strip()
@@ -161,8 +174,9 @@ def result_text(results: Results, series: int, case: Case, confidence: float) ->
     if not np.isfinite(value):
         return results.reasons.get(series, "no result")
     level = f"{confidence * 100:g} %"
-    if not results.detected[series] and np.isfinite(high) and case.reported[series] == Reported.ADDITIONS:
-        return f"< {figure(high)} {unit} (not detected, {level})"
+    if not results.detected[series] and np.isfinite(results.less_than[series]):
+        by = level if results is case.additions else "limit of detection"
+        return f"< {figure(float(results.less_than[series]))} {unit} (not detected, {by})"
     if not np.isfinite(results.expanded_uncertainty[series]):
         reason = results.reasons.get(series, "uncertainty absent")
         return f"{figure(value)} {unit} ({reason})"
@@ -182,7 +196,7 @@ def decide(case: Case, checks: tuple[Check, ...]) -> Outcomes:
         decides = check.decides(case)
         failing |= (check.outcome == Outcome.FAIL) & (decides | check.stated_fail(case))
         warning |= (check.outcome == Outcome.WARN) & decides
-    missing = _missing(case)
+    missing = expectations.missing(case)
     lacking = np.zeros(count, dtype=bool)
     lacking[list(missing)] = True
     ordinary = ~case.series.has_additions
@@ -192,15 +206,3 @@ def decide(case: Case, checks: tuple[Check, ...]) -> Outcomes:
     verdict[lacking] = Verdict.INCOMPLETE
     verdict[failing] = Verdict.FAIL
     return Outcomes(case, checks, verdict, missing)
-
-
-def _missing(case: Case) -> dict[int, str]:
-    """What is expected of a series and not in the export."""
-    orphans = np.flatnonzero(case.series.has_additions & ~case.series.has_native).tolist()
-    missing = dict.fromkeys(orphans, "the unspiked solution is missing")
-    wanting = case.judged & (case.reported == Reported.CALIBRATION) & (case.back.calibration < 0)
-    for i in np.flatnonzero(wanting).tolist():
-        if i not in case.faults:
-            reason = case.back.results.reasons.get(i, "no calibration in this export")
-            missing[i] = f"the settings report the calibration's result: {reason}"
-    return missing

@@ -23,8 +23,13 @@ if TYPE_CHECKING:
 
 def batch_step(check: str, names: str) -> str:
     """Return what to do about a check that fails for a whole batch, with the names of all that must wait for it."""
-    if check == "check_standard":
+    if check in ("check_standard", "bracket"):
         return f"Calibrate again, then measure {names} and every sample since the last good check standard again."
+    if check == "spiked_blank":
+        return (
+            f"Stock or spiking suspect: check the stock's concentration and lot and the pipette, then spike {names} "
+            f"and the blank again."
+        )
     return f"Find the contamination or carry-over, measure a clean blank, then {names} again."
 
 
@@ -33,7 +38,7 @@ def next_step(outcomes: Outcomes, series: int) -> str:
     verdict = outcomes.verdict_of(series)
     failing = {check.name for check in outcomes.deciding(series, Outcome.FAIL)}
     if not failing and series in outcomes.missing:
-        return _complete(outcomes.case, series)
+        return _complete(outcomes, series)
     warning = {check.name for check in outcomes.deciding(series, Outcome.WARN)}
     for name, step in _STEPS:
         if name in (failing or warning):
@@ -43,9 +48,18 @@ def next_step(outcomes: Outcomes, series: int) -> str:
     return ""
 
 
-def _complete(case: Case, i: int) -> str:
+def _complete(outcomes: Outcomes, i: int) -> str:
+    case = outcomes.case
     if not case.series.has_native[i]:
         return f"Measure {case.sample(i)} unspiked now, from the same aliquot and dilution as its additions."
+    if outcomes.missing[i].endswith("(expect.levels)"):
+        return f"Measure the additions of {case.sample(i)} that are still missing, and export again."
+    if outcomes.missing[i].endswith("(expect.spiked)"):
+        return "Spike as many further samples of this batch as the laboratory expects, and measure them."
+    if outcomes.missing[i] == case.open_brackets.get(i):
+        if not case.brackets.opened[i]:
+            return f"Calibrate or measure a check standard, then {case.sample(i)} and a check standard again."
+        return "Measure a check standard now; until it holds, release nothing that was measured since the last one."
     return (
         f"Measure the calibration standards for {case.analyte(i)} and export them together with {case.sample(i)}, or "
         f"state report: additions."
@@ -65,6 +79,32 @@ def _check_standard(case: Case, i: int) -> str:
 
 def _blank(case: Case, i: int) -> str:
     return batch_step("blank", case.sample(i))
+
+
+def _spiked_blank(case: Case, i: int) -> str:
+    return batch_step("spiked_blank", case.sample(i))
+
+
+def _stock(case: Case, i: int) -> str:
+    return f"Prepare the additions of {case.sample(i)} again from a stock within its dates, or correct its dates."
+
+
+def _duplicate(case: Case, i: int) -> str:
+    return f"Mix {case.sample(i)} well, then prepare and measure both portions again."
+
+
+def _channels(case: Case, i: int) -> str:
+    return (
+        f"Look for an interference on the lines or masses of {case.analyte(i)}, and report {case.sample(i)} from the "
+        f"one that is free of it."
+    )
+
+
+def _baseline(case: Case, i: int) -> str:
+    return (
+        f"Correct the background, or dilute {case.sample(i)} until it no longer shifts the baseline; then measure it "
+        f"again with its additions."
+    )
 
 
 def _recovery(case: Case, i: int) -> str:
@@ -147,13 +187,19 @@ def _detection(case: Case, i: int) -> str:
 #: The most telling check first: a broken batch explains its series, not the other way round.
 _STEPS: tuple[tuple[str, Callable[[Case, int], str]], ...] = (
     ("inputs", _inputs),
+    ("stock", _stock),
     ("check_standard", _check_standard),
+    ("bracket", _check_standard),
     ("blank", _blank),
+    ("spiked_blank", _spiked_blank),
+    ("dilution_test", _baseline),
     ("linear_evidence", _dilute),
     ("curvature", _straighten),
     ("lack_of_fit", _straighten),
     ("recovery", _recovery),
     ("slope_certainty", _larger_additions),
+    ("duplicate", _duplicate),
+    ("channels_agree", _channels),
     ("correlation", _scatter),
     ("residual", _scatter),
     ("repeatability", _readings),

@@ -1,25 +1,29 @@
-"""The result of external calibration: unspiked solutions read back from the standards of the same export."""
+"""The result of external calibration: unspiked solutions read back from the standards, or by the instrument itself.
+
+Where the laboratory leaves the choice to the program and no additions can be reported, what the matrix does to the
+slope is not corrected, and so stands in the budget.
+"""
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING
 
 import numpy as np
 
 from rules.budget import common_of_read_back
-from rules.interval import Covariance, Interval, normal_quantile, read_back
+from rules.interval import Covariance, Interval, normal_quantile, read_back, student_t
 from rules.result import Results, Share, combine
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
 
-    from rules.blanks import Blanks
     from rules.calibration import Calibrations
     from rules.line import Floats, Integers
     from rules.method import Method
+    from rules.recovery import Recoveries
+    from rules.seen import Seen
     from rules.series import Series
-    from rules.solutions import Solutions
     from rules.vessels import Vessels
 
 
@@ -37,6 +41,8 @@ class ReadBack:
         float64[m], mean concentration read back in the vessel.
     highest
         float64[m], highest concentration read back among the unspiked vessels.
+    instrument
+        bool[m]: read back by the instrument itself.
     above, below
         bool[m]: beyond the top standard (then there is no number); under the lowest.
     """
@@ -45,24 +51,18 @@ class ReadBack:
     calibration: Integers
     in_vessel: Floats
     highest: Floats
+    instrument: NDArray[np.bool_]
     above: NDArray[np.bool_]
     below: NDArray[np.bool_]
 
 
-def evaluate(
-    series: Series,
-    solutions: Solutions,
-    vessels: Vessels,
-    blanks: Blanks,
-    calibrations: Calibrations,
-    key: Integers,
-    method: Method,
-) -> ReadBack:
+def evaluate(series: Series, vessels: Vessels, seen: Seen, key: Integers, method: Method) -> ReadBack:
     """Read the mean of each series' unspiked solutions back from its calibration.
 
     x = (y - a)/b with the variance s²(1/p + …) of p solutions, x then divided by f and times the predilution.
     S. L. R. Ellison, A. Williams (eds), Quantifying Uncertainty in Analytical Measurement, 3rd ed. 2012, E.4.
     """
+    solutions, blanks, calibrations, limits = seen.solutions, seen.blanks, seen.calibrations, seen.limits
     count = len(series)
     of_series = calibrations.of_key[key] if count else np.zeros(0, dtype=np.int64)
     seg, members = series.segments, series.members
@@ -118,11 +118,13 @@ def evaluate(
         expanded_uncertainty=expanded,
         coverage_factor=k,
         dof=of(lines.dof.astype(float)),
-        detected=~(interval.low <= 0),
+        detected=~(x <= limits.decision[key]),
+        less_than=limits.lod[key] * scale,
         budget=shares,
         reasons=_doubts(calibrations, of_series, interval) | _reasons(key, has, p, above, calibrations, of_series),
     )
-    return ReadBack(results, np.where(has, of_series, -1), x, highest, above, below)
+    instrument = np.append(calibrations.instrument, False)[np.where(has, of_series, -1)]
+    return ReadBack(results, np.where(has, of_series, -1), x, highest, instrument, above, below)
 
 
 def _blank_signal(dilution: Floats, uncertainty: Floats, method: Method) -> Floats:
@@ -139,6 +141,8 @@ def _doubts(calibrations: Calibrations, of_series: Integers, interval: Interval)
                 f"no result: the calibration's slope is too uncertain for a finite interval "
                 f"(g = {interval.g[series]:.2g})"
             )
+        elif calibrations.instrument[of_series[series]]:
+            found[series] = "uncertainty absent: the instrument states none with its concentrations"
         elif not calibrations.lines.scatter[of_series[series]]:
             found[series] = "uncertainty absent: no scatter of the standards at the export's resolution"
     return found
@@ -163,3 +167,43 @@ def _reasons(
         elif of_series[series] < 0:
             reasons[series] = "no calibration in this export"
     return reasons
+
+
+def with_matrix_effect(back: ReadBack, recoveries: Recoveries, chosen: NDArray[np.bool_], method: Method) -> ReadBack:
+    """Add the matrix effect that a calibration's result leaves uncorrected to its budget.
+
+    The effect δ counts whole, as an error that stays (JCGM 100:2008, F.2.4.5), and its own uncertainty beside it:
+    u = x √(δ² + u_δ²). A series without additions says nothing of its matrix, and the component stands as absent.
+
+    Parameters
+    ----------
+    back, recoveries
+        What was read back, and the slopes' ratio.
+    chosen
+        Series that report the calibration's result.
+    method
+        The confidence.
+    """
+    results = back.results
+    effect, own = recoveries.matrix_effect / 100, recoveries.slope_u / 100
+    size = np.abs(results.value)
+    with np.errstate(invalid="ignore"):
+        u = np.where(chosen, size * np.sqrt(effect**2 + own**2), 0.0)
+        t_own = student_t(method.confidence, recoveries.slope_dof)
+        expanded = size * np.sqrt((normal_quantile(method.confidence) * effect) ** 2 + (t_own * own) ** 2)
+        added = np.where(chosen & np.isfinite(expanded), expanded, 0.0)
+        widened = np.sqrt(results.expanded_uncertainty**2 + added**2)
+        total = np.sqrt(results.standard_uncertainty**2 + np.where(added > 0, u, 0.0) ** 2)
+        low = results.value - np.sqrt((results.value - results.low) ** 2 + added**2)
+        high = results.value + np.sqrt((results.high - results.value) ** 2 + added**2)
+        changed = added > 0
+        results = replace(
+            results,
+            low=np.where(changed, low, results.low),
+            high=np.where(changed, high, results.high),
+            standard_uncertainty=total,
+            expanded_uncertainty=widened,
+            coverage_factor=np.where(changed, widened / total, results.coverage_factor),
+            budget=(*results.budget, Share("matrix_effect", u, recoveries.slope_dof)),
+        )
+    return replace(back, results=results)

@@ -14,7 +14,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from rules import ratio
+from rules import line, ratio
 from rules.budget import common_of_recovery
 from rules.interval import normal_quantile, student_t
 
@@ -25,6 +25,7 @@ if TYPE_CHECKING:
     from rules.line import Floats, Integers
     from rules.method import Method
     from rules.reading_back import ReadBack
+    from rules.seen import Seen
     from rules.series import Series
     from rules.solutions import Solutions
     from rules.vessels import Vessels
@@ -47,6 +48,8 @@ class Recoveries:
         float64[m], slope recovery 100 β/b and its standard uncertainty.
     slope_interval, equivalence_interval
         Fieller's interval of the slope recovery, at the method's confidence and at 90 %.
+    slope_dof
+        float64[m], degrees of freedom of the scatter behind the slope recovery.
     levels
         int64[m], distinct additions above zero.
     """
@@ -56,6 +59,7 @@ class Recoveries:
     each_expanded: Floats
     slope: Floats
     slope_u: Floats
+    slope_dof: Floats
     slope_interval: Interval
     equivalence_interval: Interval
     levels: Integers
@@ -75,15 +79,22 @@ class _Scatter:
 
 
 def evaluate(
-    series: Series,
-    solutions: Solutions,
-    vessels: Vessels,
-    fits: Fits,
-    calibrations: Calibrations,
-    back: ReadBack,
-    method: Method,
+    series: Series, vessels: Vessels, seen: Seen, fits: Fits, back: ReadBack, key: Integers, method: Method
 ) -> Recoveries:
-    """Compare additions with the calibration of the same export."""
+    """Compare additions with the calibration.
+
+    Parameters
+    ----------
+    series, vessels, back
+        What was computed.
+    seen, fits
+        Signals, blanks and calibrations, and the lines through those signals.
+    key
+        int64[m], analyte and channel of each series.
+    method
+        The laboratory's decisions.
+    """
+    solutions, calibrations, blank = seen.solutions, seen.calibrations, seen.blanks.mean[key]
     seg, members = series.segments, series.members
     at = back.calibration
 
@@ -97,10 +108,15 @@ def evaluate(
         a, b = of(lines.intercept), of(lines.slope)
         v_aa, v_ab, v_bb = of(covariance.intercept), of(covariance.both), of(covariance.slope)
         natives = seg.sum(series.unspiked.astype(float))
-        y, f, c = solutions.signal[members], vessels.dilution[members], vessels.added[members]
+        y, f, c = solutions.signal[members], vessels.dilution[members], (vessels.addition * vessels.dilution)[members]
         y_0 = seg.sum(np.where(series.unspiked, y, 0.0)) / natives
         f_0 = seg.sum(np.where(series.unspiked, f, 0.0)) / natives
         s_0 = seg.sum(np.where(series.unspiked, scatter.variance, 0.0)) / natives**2
+        if method.undetected_native == "as zero":
+            # what a vessel without the analyte would read
+            nothing = ~back.results.detected
+            y_0 = np.where(nothing, a + (f_0 * blank if method.blank == "preparation" else 0.0), y_0)
+            s_0 = np.where(nothing, 0.0, s_0)
         phi = f / seg.spread(f_0)
         b_c = seg.spread(b) * c
         each = 100 * (y - phi * seg.spread(y_0) - seg.spread(a) * (1 - phi)) / b_c
@@ -118,13 +134,16 @@ def evaluate(
             + t_common**2 * u2_common
         )
         beta, v_beta = _slopes(series, fits, vessels, scatter)
+        moves = _moves_with_intercept(fits, vessels.addition[members], vessels.dilution[members])
+        beta = beta + moves * (a - (blank if method.blank == "subtract" else 0.0))
         slope = 100 * beta / b
-        slope_u = slope * np.sqrt(v_beta / beta**2 + v_bb / b**2 + kappa)
+        joint = v_beta + moves**2 * v_aa - 2 * moves * (beta / b) * v_ab + (beta / b) ** 2 * v_bb
+        slope_u = np.sqrt((100 / b) ** 2 * joint + slope**2 * kappa)
 
     def spanned(confidence: float) -> Interval:
         upper = ratio.Slope(beta, v_beta, student_t(confidence, scatter.dof))
         lower = ratio.Slope(b, v_bb, student_t(confidence, of(lines.dof.astype(float))))
-        return ratio.interval(upper, lower, normal_quantile(confidence) ** 2 * kappa)
+        return ratio.interval(upper, lower, normal_quantile(confidence) ** 2 * kappa, ratio.Shared(moves, v_aa, v_ab))
 
     levels = np.where(fits.of_series >= 0, fits.distinct[fits.of_series] if len(fits.distinct) else 0, 0)
     return Recoveries(
@@ -133,6 +152,7 @@ def evaluate(
         each_expanded=expanded,
         slope=slope,
         slope_u=slope_u,
+        slope_dof=scatter.dof,
         slope_interval=spanned(method.confidence),
         equivalence_interval=spanned(EQUIVALENCE_CONFIDENCE),
         levels=levels.astype(np.int64),
@@ -161,6 +181,18 @@ def _scatter(
         found = np.where(seg.spread(lacking), by_standards, found)
         dof = np.where(lacking, calibrations.lines.dof[at], dof)
     return _Scatter(found, dof)
+
+
+def _moves_with_intercept(fits: Fits, additions: Floats, dilution: Floats) -> Floats:
+    """Return by how much β falls where the calibration's intercept is taken off every signal before it is scaled.
+
+    (y - a)/f has the slope β + a g, g the slope of -1/f on A with the same weights; 0 where f is constant.
+    """
+    a, f = additions[fits.places], dilution[fits.places]
+    with np.errstate(invalid="ignore", divide="ignore"):
+        constant = fits.segments.max(f) <= fits.segments.min(f) * (1 + 1e-12)
+        moved = line.fit(a, -1 / f, fits.weights, fits.segments).slope
+    return np.nan_to_num(fits.spread(np.where(constant, 0.0, moved)))
 
 
 def _slopes(series: Series, fits: Fits, vessels: Vessels, scatter: _Scatter) -> tuple[Floats, Floats]:

@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from rules.case import Reported
-from rules.checks import Check, Outcome, judged, limits_of, percents, severest
+from rules.checks import Check, Outcome, judged, percents, series_limits, severest
 from rules.figures import figure
 
 if TYPE_CHECKING:
@@ -58,7 +58,7 @@ def recovery(case: Case, size: Check) -> Check:
         (size.outcome == Outcome.NOT_EVALUATED) & (case.back.calibration >= 0)
     )
     levels = case.recoveries.levels
-    limits = limits_of(case.method, case.readings.analyte.names, "recovery")
+    limits = series_limits(case, "recovery")
     hardest = _hardest(case, limits)
     single, half = (
         np.append(column, np.nan)[hardest] for column in (case.recoveries.each, case.recoveries.each_expanded)
@@ -79,7 +79,7 @@ def recovery(case: Case, size: Check) -> Check:
             return NOTHING_INDEPENDENT if case.back.calibration[i] < 0 else "the spike is too small for a recovery"
         what = "slope recovery" if levels[i] >= 2 else "recovery"
         found = f"{what} {shown(i)}"
-        doubt = _doubt(limits[int(case.series.analyte[i])].bounds, low[i], high[i])
+        doubt = _doubt(limits[int(case.limit_classes.of_series[i])].bounds, low[i], high[i])
         if outcome is Outcome.PASS:
             return f"{found}{doubt}"
         amount = "less" if value[i] < 100 else "more"
@@ -91,7 +91,7 @@ def recovery(case: Case, size: Check) -> Check:
 def _hardest(case: Case, limits: tuple[CheckLimits, ...]) -> NDArray[np.int64]:
     """Return the place of the single recovery that the limits judge hardest; -1 where there is none."""
     each, owner = case.recoveries.each, case.series.segments.owner
-    return severest(limits, case.series.analyte[owner], each, np.abs(each - 100), owner, len(case))
+    return severest(limits, case.limit_classes.of_series[owner], each, np.abs(each - 100), owner, len(case))
 
 
 def _doubt(bounds: tuple[float, ...], low: float, high: float) -> str:
@@ -106,12 +106,12 @@ def matrix_effect(case: Case) -> Check:
     """Slope in the matrix against the calibration's, 100 (β/b - 1) %."""
     value = np.where(case.judged & (case.recoveries.levels > 0), case.recoveries.matrix_effect, np.nan)
     shown = percents(case, "matrix_effect", value)
-    limits = limits_of(case.method, case.readings.analyte.names, "matrix_effect")
+    limits = series_limits(case, "matrix_effect")
     span = case.recoveries.equivalence_interval
 
     def absence(i: int) -> str:
         """Say "no effect beyond" only where the whole 90 % interval lies inside; not seen is not absent."""
-        judged_by = limits[int(case.series.analyte[i])]
+        judged_by = limits[int(case.limit_classes.of_series[i])]
         limit = judged_by.fail or judged_by.warn
         low, high = 100 * span.low[i] - 100, 100 * span.high[i] - 100
         if limit is None or not (np.isfinite(low) and np.isfinite(high)):

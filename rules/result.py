@@ -45,7 +45,10 @@ class Results:
     dof
         float64[m], degrees of freedom of the line's share.
     detected
-        bool[m]: False where the line alone cannot exclude zero.
+        bool[m]: False where the line alone cannot exclude zero, or a read-back stays below its decision limit.
+    less_than
+        float64[m], what a result that is not detected is less than: the upper end of its interval, or the limit of
+        detection.
     budget
         The components.
     reasons
@@ -60,6 +63,7 @@ class Results:
     coverage_factor: Floats
     dof: Floats
     detected: NDArray[np.bool_]
+    less_than: Floats
     budget: tuple[Share, ...] = ()
     reasons: dict[int, str] = field(default_factory=dict)
 

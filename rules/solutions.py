@@ -85,6 +85,7 @@ def gather(readings: Readings) -> Solutions:
     segments = Segments.of_sizes(sizes)
     rows = members[segments.starts]
     y = readings.signals[members]
+    y = y / _references(readings)[members][:, None]
     present = np.isfinite(y)
     count = segments.sum(present.sum(axis=1).astype(float))
     with np.errstate(invalid="ignore", divide="ignore"):
@@ -93,6 +94,33 @@ def gather(readings: Readings) -> Solutions:
         sd = np.sqrt(segments.sum((deviations**2).sum(axis=1)) / np.where(count > 1, count - 1, np.nan))
     sd, count = _stated_scatter(readings, rows, signal, sd, count)
     return Solutions(rows, members, segments, signal, sd, count, _faults(readings, members, segments))
+
+
+def _references(readings: Readings) -> Floats:
+    """Return what the signal of each row is divided by: its internal standard's signal, 1 where there is none."""
+    reference = readings.reference_signal
+    with np.errstate(invalid="ignore"):
+        return np.where(np.isnan(reference), 1.0, np.where(reference > 0, reference, np.nan))
+
+
+def _reference_faults(readings: Readings) -> Iterator[tuple[int, str]]:
+    """Yield rows whose internal standard is missing or impossible, with the sentence that says so."""
+    reference = readings.reference_signal
+    if np.isnan(reference).all():
+        return
+    analyte = readings.analyte.codes
+    referred = np.bincount(analyte, weights=np.isfinite(reference), minlength=len(readings.analyte.names)) > 0
+    marked = {fault.row for fault in readings.faults if fault.field == "reference_signal"}
+    for row in np.flatnonzero(referred[analyte] & ~(reference > 0)).tolist():
+        if row not in marked:
+            found = "nothing" if np.isnan(reference[row]) else f"{reference[row]:g}"
+            yield (
+                row,
+                (
+                    f"line {readings.line[row]}: expected the signal of the internal standard above 0, got {found}: "
+                    f"the other readings of {readings.analyte[row]} have one; correct the export or measure it again"
+                ),
+            )
 
 
 def _replicates(readings: Readings, order: Integers) -> tuple[Integers, NDArray[Any]]:
@@ -131,7 +159,10 @@ def _begins(same: NDArray[np.bool_], replicate: Floats) -> NDArray[np.bool_]:
 
 
 #: What all replicate rows of a solution must agree on.
-_SHARED = ("role", "level", "stock", "added", "nominal", "spike_volume", "aliquot", "made_up_to", "predilution")
+_SHARED = (
+    "role", "level", "stock", "added", "nominal", "spike_volume", "aliquot", "made_up_to", "predilution",
+    "duplicate_of",
+)  # fmt: skip
 
 
 def _disagreements(readings: Readings, members: Integers, segments: Segments) -> Iterator[tuple[int, str]]:
@@ -156,7 +187,7 @@ def _stated_scatter(
     readings: Readings, rows: Integers, signal: Floats, sd: Floats, count: Floats
 ) -> tuple[Floats, Floats]:
     """Take standard deviation and number of readings from the export where only a mean is given."""
-    stated_sd = readings.signal_sd[rows]
+    stated_sd = readings.signal_sd[rows] / _references(readings)[rows]
     stated_rsd = readings.signal_rsd[rows] / 100 * np.abs(signal)
     single = count <= 1
     sd = np.where(single & np.isfinite(stated_sd), stated_sd, sd)
@@ -169,10 +200,13 @@ def _faults(readings: Readings, members: Integers, segments: Segments) -> dict[i
     faults: dict[int, list[str]] = defaultdict(list)
     for place, sentence in _disagreements(readings, members, segments):
         faults[place].append(sentence)
-    if not readings.faults:
+    unreferred = list(_reference_faults(readings))
+    if not readings.faults and not unreferred:
         return dict(faults)
     solution_of = np.empty(len(readings), dtype=np.int64)
     solution_of[members] = segments.owner
+    for row, sentence in unreferred:
+        faults[int(solution_of[row])].append(sentence)
     for fault in readings.faults:
         faults[int(solution_of[fault.row])].append(str(fault))
     return dict(faults)

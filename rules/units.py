@@ -16,11 +16,14 @@ if TYPE_CHECKING:
 
 #: One unit of each kind, to compare dimensions with and to name in errors.
 VOLUME, CONCENTRATION, MASS, MASS_FRACTION = "mL", "mg/L", "g", "mg/kg"
+AMOUNT_CONCENTRATION, AMOUNT_CONTENT = "mmol/L", "mmol/kg"
 _KINDS = {
     VOLUME: "a volume such as mL or µL",
     CONCENTRATION: "a concentration such as mg/L or µg/L",
     MASS: "a mass such as g or mg",
     MASS_FRACTION: "a content such as mg/kg or µg/g",
+    AMOUNT_CONCENTRATION: "an amount concentration such as mmol/L",
+    AMOUNT_CONTENT: "an amount content such as mmol/kg",
 }
 
 
@@ -29,6 +32,8 @@ _COMMON = {
     "mL": VOLUME, "µL": VOLUME, "L": VOLUME, "g": MASS, "mg": MASS, "kg": MASS,
     "g/L": CONCENTRATION, "mg/L": CONCENTRATION, "µg/L": CONCENTRATION, "ng/L": CONCENTRATION,
     "mg/kg": MASS_FRACTION, "µg/kg": MASS_FRACTION, "µg/g": MASS_FRACTION, "g/kg": MASS_FRACTION,
+    "mol/L": AMOUNT_CONCENTRATION, "mmol/L": AMOUNT_CONCENTRATION, "µmol/L": AMOUNT_CONCENTRATION,
+    "mmol/kg": AMOUNT_CONTENT, "µmol/kg": AMOUNT_CONTENT, "µmol/g": AMOUNT_CONTENT,
 }  # fmt: skip
 
 
@@ -66,16 +71,63 @@ def factor(unit: str, target: str) -> float:
     return float(f"{_registry().convert(1.0, known[0], known[1]):.15g}")
 
 
-def require(unit: str, kind: str) -> None:
-    """Check that a unit is known and of a kind: that of `VOLUME`, `CONCENTRATION`, `MASS` or `MASS_FRACTION`.
+@cache
+def factor_of_substance(unit: str, target: str, molar_mass: float) -> float:
+    """Return the factor between a unit of mass and one of amount, or back.
+
+    Parameters
+    ----------
+    unit, target
+        One holds a mass where the other holds an amount of substance.
+    molar_mass
+        In g/mol.
+
+    >>> factor_of_substance("mmol/L", "mg/L", 65.38)
+    65.38
+    """
+    to_mass = by_amount(unit, target) > 0
+    registry = _registry()
+    weight = registry.Quantity(molar_mass, "g/mol")
+    one = registry.Quantity(1.0, _known(unit))
+    converted = (one * weight if to_mass else one / weight).to(_known(target))
+    return float(f"{converted.magnitude:.15g}")
+
+
+@cache
+def by_amount(unit: str, target: str) -> int:
+    """Tell whether only a molar mass leads from one unit to the other: 1 from amount to mass, -1 back, else 0.
+
+    Raises
+    ------
+    UnitUnusable
+        If one is not known.
+    """
+    kinds = (_COMMON.get(unit), _COMMON.get(target))
+    if None not in kinds and kinds[0] == kinds[1]:
+        return 0
+    ratio = (_known(unit) / _known(target)).dimensionality
+    weight = (_registry().mol / _registry().g).dimensionality
+    return 1 if ratio == weight else -1 if ratio == 1 / weight else 0
+
+
+def convertible(unit: str, target: str) -> bool:
+    """Tell whether a unit leads to another one by a molar mass; unknown ones do not."""
+    try:
+        return unit != target and by_amount(unit, target) != 0
+    except UnitUnusable:
+        return False
+
+
+def require(unit: str, *kinds: str) -> None:
+    """Check that a unit is known and of one of several kinds, such as `VOLUME` or `CONCENTRATION`.
 
     Raises
     ------
     UnitUnusable
         If not.
     """
-    if not same_kind(unit, kind):
-        raise UnitUnusable(f"expected {_KINDS[kind]}, got '{unit}'")
+    if not any(same_kind(unit, kind) for kind in kinds):
+        raise UnitUnusable(f"expected {' or '.join(_KINDS[kind] for kind in kinds)}, got '{unit}'")
 
 
 def same_kind(unit: str, other: str) -> bool:
@@ -97,7 +149,9 @@ def same_kind(unit: str, other: str) -> bool:
 @cache
 def _known(text: str) -> Any:
     if text.lower() in ("ppm", "ppb", "ppt"):
-        raise UnitUnusable(f"'{text}' does not say per what: write mg/L, µg/L or ng/L")
+        raise UnitUnusable(
+            f"'{text}' does not say per what: write mg/L, µg/L or ng/L, or declare units: {{{text.lower()}: mg/L}}"
+        )
     try:
         unit = _registry().parse_units(text)
     except Exception as error:  # pint raises its own errors, tokenizer errors and TypeError alike

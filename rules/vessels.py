@@ -17,6 +17,7 @@ import numpy as np
 
 from parsers.readings import Role
 from rules import units
+from rules.substances import Substance, concentrations
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
@@ -48,8 +49,12 @@ class Vessels:
         c, added concentration in the vessel, in the unit of the vessel.
     predilution
         Factor from aliquot to sample.
+    fraction
+        V_a / V, what of the vessel is the sample; as `dilution` but where the reference signal follows the sample.
     stock
         Index of the stock used in ``Method.stocks``; -1 where none is involved.
+    out_of_date
+        Additions from a stock that was not within its dates when they were measured.
     by_volume
         Whether A comes from volumes and a stock; else from a concentration.
     not_added
@@ -64,7 +69,9 @@ class Vessels:
     addition: Floats
     added: Floats
     predilution: Floats
+    fraction: Floats
     stock: NDArray[np.int32]
+    out_of_date: Bools
     by_volume: Bools
     not_added: Bools
     aliquot: Floats
@@ -88,7 +95,8 @@ def fill(readings: Readings, solutions: Solutions, method: Method, accepted_at: 
     Returns
     -------
     Vessels
-        Standards, blanks and check standards are undiluted and hold no addition.
+        Standards, blanks and check standards are undiluted and hold no addition. Spiked blanks are vessels like those
+        of samples, without a portion of solid.
     """
     return _Filling(readings, solutions, method, accepted_at).vessels()
 
@@ -100,9 +108,11 @@ class _Filling:
         self.readings, self.method, self.accepted_at = readings, method, accepted_at
         self.rows = solutions.rows
         self.n = len(self.rows)
+        self.substances = [Substance.of(method, name) for name in readings.analyte.names]
         self.faults: dict[int, list[str]] = defaultdict(list)
         role = readings.role[self.rows]
-        self.spiked = role == Role.SPIKED
+        self.clean = role == Role.SPIKED_BLANK
+        self.spiked = (role == Role.SPIKED) | self.clean
         self.sample = self.spiked | (role == Role.UNSPIKED)
 
     def vessels(self) -> Vessels:
@@ -110,7 +120,11 @@ class _Filling:
         aliquot = self._volume("aliquot", self.readings.aliquot, self.method.bench.aliquot)
         made_up_to = self._volume("made_up_to", self.readings.made_up_to, self.method.bench.made_up_to)
         stated_volume = self._column("spike_volume", self.readings.spike_volume, units.VOLUME, None)
-        stated_added = self._column("added", self.readings.added, self.method.vessel_unit, self.method.export_unit)
+        stated_added = self._concentrations("added", self.readings.added)
+        # a spiked blank may be named by what it holds, like a check standard
+        named = self.clean & np.isnan(stated_volume)
+        nominal = np.where(named, self._concentrations("nominal", self.readings.nominal), np.nan)
+        stated_added = np.where(np.isnan(stated_added), nominal, stated_added)
         # a level is a default, not a second source: only what the export says row by row must agree
         silent = np.isnan(stated_volume) & np.isnan(stated_added)
         spike = np.where(silent, level_volume, stated_volume)
@@ -120,12 +134,13 @@ class _Filling:
         self._guard_volumes(aliquot, made_up_to, spike, added)
         liquid = self._dilution(aliquot, made_up_to, np.where(has_volume, spike, 0.0))
         portion = self._portion()
-        stock, concentration, not_added = self._stocks(has_volume)
+        stock, concentration, not_added, out_of_date = self._stocks(has_volume)
         with np.errstate(invalid="ignore", divide="ignore"):
             # without an aliquot the digest itself is measured, and standard can only be added as a concentration
             by_volume = concentration * spike / aliquot / portion
         by_added = self._from_concentration(added, has_added, liquid, aliquot, made_up_to) / portion
-        dilution = liquid * portion
+        fraction = liquid * portion
+        dilution = self._seen_dilution(liquid) * portion
         self._agree(by_volume, by_added, has_volume & has_added & ~not_added)
         addition = np.where(has_volume, by_volume, by_added)
         addition = np.where(np.isfinite(addition), addition, np.nan)
@@ -137,9 +152,11 @@ class _Filling:
         return Vessels(
             dilution=dilution,
             addition=addition,
-            added=addition * dilution,
+            added=addition * fraction,
             predilution=self._predilution(),
+            fraction=fraction,
             stock=stock,
+            out_of_date=out_of_date & ~not_added,
             by_volume=has_volume,
             not_added=not_added,
             aliquot=aliquot,
@@ -153,6 +170,12 @@ class _Filling:
         for solution in np.flatnonzero(where):
             row = self.rows[solution]
             self.faults[int(solution)].append(f"line {self.readings.line[row]}: {sentence(int(solution))}")
+
+    def _concentrations(self, name: str, column: Quantities) -> Floats:
+        values, reasons = concentrations(self.readings, column, self.rows, self.method)
+        where = np.isin(np.arange(self.n), list(reasons)) & self.sample
+        self._note(where, lambda solution: f"{name}: {reasons[solution]}")
+        return values
 
     def _column(self, name: str, column: Quantities, unit: str, default: str | None) -> Floats:
         try:
@@ -170,9 +193,11 @@ class _Filling:
 
     def _levels(self) -> tuple[Floats, Floats]:
         """Return spike volumes in mL and concentrations in the result unit that named levels stand for."""
-        column = self.readings.level
-        volumes, added = (np.full(len(column.names) + 1, np.nan) for _ in range(2))
+        column, analytes = self.readings.level, self.readings.analyte
+        volumes = np.full(len(column.names) + 1, np.nan)
+        added = np.full((len(column.names) + 1, len(analytes.names)), np.nan)
         unknown = np.zeros(len(column.names) + 1, dtype=bool)
+        unconvertible: dict[tuple[int, int], str] = {}
         for code, name in enumerate(column.names):
             measure = self.method.bench.levels.get(name)
             if measure is None:
@@ -180,7 +205,11 @@ class _Filling:
             elif _is_volume(measure):
                 volumes[code] = units.of_measure(measure, units.VOLUME)
             else:
-                added[code] = units.of_measure(measure, self.method.vessel_unit)
+                for analyte, substance in enumerate(self.substances):
+                    try:
+                        added[code, analyte] = substance.convert(measure, self.method.vessel_unit)
+                    except units.UnitUnusable as error:
+                        unconvertible[code, analyte] = f"level '{name}': {error}"
         codes = column.codes[self.rows]
         stated = np.isfinite(self.readings.added.values[self.rows]) | np.isfinite(
             self.readings.spike_volume.values[self.rows]
@@ -193,7 +222,12 @@ class _Filling:
                 f"correct the label"
             ),
         )
-        return volumes[codes], added[codes]
+        of_row = analytes.codes[self.rows]
+        for (code, of_analyte), reason in unconvertible.items():
+            self._note(
+                (codes == code) & (of_row == of_analyte) & self.spiked & ~stated, lambda _, reason=reason: reason
+            )
+        return volumes[codes], added[codes, of_row]
 
     def _guard_volumes(self, aliquot: Floats, made_up_to: Floats, spike: Floats, added: Floats) -> None:
         with np.errstate(invalid="ignore"):
@@ -251,7 +285,7 @@ class _Filling:
         with np.errstate(invalid="ignore"):
             for name, column in (("mass", mass), ("digest_volume", volume)):
                 self._note(
-                    self.sample & ~(column > 0),
+                    self.sample & ~self.clean & ~(column > 0),
                     lambda i, n=name, c=column: (
                         f"results in {self.method.result_unit} need {n} above 0, got "
                         f"{'nothing' if np.isnan(c[i]) else f'{c[i]:g}'}: map {n} in the layout, or correct the export"
@@ -259,8 +293,24 @@ class _Filling:
                 )
         with np.errstate(invalid="ignore", divide="ignore"):
             # 1 g/mL is 1 kg/L, and mg/L over kg/L is mg/kg
-            held = mass / volume / units.factor(units.MASS_FRACTION, self.method.result_unit)
-        return np.where(self.sample, np.where(held > 0, held, np.nan), 1.0)
+            content = units.MASS_FRACTION if self.method.vessel_unit == units.CONCENTRATION else units.AMOUNT_CONTENT
+            held = mass / volume / units.factor(content, self.method.result_unit)
+        return np.where(self.sample & ~self.clean, np.where(held > 0, held, np.nan), 1.0)
+
+    def _seen_dilution(self, liquid: Floats) -> Floats:
+        """Return the dilution that signals show: none where the reference was diluted with the sample."""
+        referred = np.isfinite(self.readings.reference_signal[self.rows]) & self.sample
+        if self.method.reference == "diluted with the sample":
+            return np.where(referred, 1.0, liquid)
+        if self.method.reference is None:
+            self._note(
+                referred & (np.abs(liquid - 1) > 1e-9),
+                lambda _: (
+                    "aliquot and vessel differ in volume, and nothing says whether the internal standard was added to "
+                    "each vessel or diluted with the sample: state reference: per vessel, or diluted with the sample"
+                ),
+            )
+        return liquid
 
     def _from_concentration(
         self, added: Floats, has_added: Bools, dilution: Floats, aliquot: Floats, made_up_to: Floats
@@ -300,16 +350,21 @@ class _Filling:
 
     def _predilution(self) -> Floats:
         stated = self.readings.predilution[self.rows]
+        impossible = (stated <= 0) | np.isinf(stated)
         self._note(
-            self.sample & (stated <= 0),
+            self.sample & impossible,
             lambda i: f"predilution is {stated[i]:g}, which cannot be: correct the export",
         )
-        return np.where(self.sample & np.isfinite(stated), stated, self.method.bench.predilution)
+        stated = np.where(impossible, np.nan, stated)
+        return np.where(
+            self.sample & ~np.isnan(self.readings.predilution[self.rows]), stated, self.method.bench.predilution
+        )
 
-    def _stocks(self, needed: Bools) -> tuple[NDArray[np.int32], Floats, Bools]:
+    def _stocks(self, needed: Bools) -> tuple[NDArray[np.int32], Floats, Bools, Bools]:
         """Choose the stock of every addition by volume.
 
-        The mapped one, else the only one that contains the analyte and is within its dates.
+        The mapped one, else the only one that contains the analyte and is within its dates; where there is no choice,
+        the only one that contains it. Being out of date is judged by a check of its own.
         """
         analyte = self.readings.analyte.codes[self.rows]
         names = self.readings.analyte.names
@@ -318,23 +373,32 @@ class _Filling:
         for s, stock in enumerate(stocks):
             for a, name in enumerate(names):
                 if name in stock.contains:
-                    content[s, a] = units.of_measure(stock.contains[name], self.method.vessel_unit)
+                    content[s, a] = self.substances[a].convert(stock.contains[name], self.method.vessel_unit)
         mapped_codes = self.readings.stock.codes[self.rows]
         mapped = mapped_codes >= 0
-        chosen = np.full(self.n, -1, dtype=np.int32)
+        chosen, last = np.full(self.n, -1, dtype=np.int32), np.full(self.n, -1, dtype=np.int32)
         valid_count = np.zeros(self.n, dtype=np.int32)
+        containing = np.isfinite(content[:-1]).sum(axis=0)[analyte] if len(stocks) else np.zeros(self.n)
+        out_of_date = np.zeros(self.n, dtype=bool)
         for s, stock in enumerate(stocks):
-            valid = needed & ~mapped & np.isfinite(content[s, analyte]) & self._within_dates(s)
-            chosen[valid] = s
-            valid_count += valid
+            within = self._within_dates(s)
+            possible = needed & ~mapped & np.isfinite(content[s, analyte])
+            chosen[possible & within] = s
+            valid_count += possible & within
+            last[possible] = s
             wanted = [code for code, name in enumerate(self.readings.stock.names) if name == stock.name]
+            # lots of one name follow each other: the one that was valid, else the last of that name
             by_name = needed & mapped & np.isin(mapped_codes, wanted)
-            chosen[by_name & self._within_dates(s)] = s
+            last[by_name] = s
+            chosen[by_name & within] = s
+        late = (chosen < 0) & (last >= 0) & (mapped | (containing == 1))
+        chosen[late] = last[late]
+        out_of_date |= late
         self._note_stock_faults(needed, mapped, chosen, valid_count, np.isfinite(content).any(axis=0)[analyte])
         concentration = content[chosen, analyte]
         nowhere = ~np.isfinite(content).any(axis=0)[analyte] & ~mapped
         not_added = needed & (nowhere | ((chosen >= 0) & np.isnan(concentration)))
-        return chosen, concentration, not_added
+        return chosen, concentration, not_added, out_of_date
 
     def _note_stock_faults(
         self,
@@ -346,14 +410,12 @@ class _Filling:
     ) -> None:
         names, stocks = self.readings.analyte.names, self.method.stocks
         analyte = self.readings.analyte.codes[self.rows]
-        known = {stock.name for stock in stocks}
         listed = ", ".join(stock.name for stock in stocks) or "none"
         self._note(
             needed & mapped & (chosen < 0),
             lambda i: (
-                f"stock '{(name := self.readings.stock[int(self.rows[i])])}' "
-                + ("was not valid when measured" if name in known else f"is not among the stocks ({listed})")
-                + ": correct the name in the export or the stocks in the settings"
+                f"stock '{self.readings.stock[int(self.rows[i])]}' is not among the stocks ({listed}): correct the "
+                f"name in the export or the stocks in the settings"
             ),
         )
         self._note(
@@ -364,8 +426,10 @@ class _Filling:
             ),
         )
         self._note(
-            needed & ~mapped & (count == 0) & somewhere,
-            lambda i: f"no stock that contains {names[analyte[i]]} was valid when measured: add its dates",
+            needed & ~mapped & (count == 0) & (chosen < 0) & somewhere,
+            lambda i: (
+                f"none of the stocks that contain {names[analyte[i]]} was valid when measured: correct their dates"
+            ),
         )
 
     def _within_dates(self, stock: int) -> Bools:

@@ -248,7 +248,7 @@ def method_for(file: SettingsFile, own: Decisions) -> Method:
         stocks=tuple(_stock(stock) for stock in stocks),
         bench=_bench(own.bench or file.bench or BenchPart()),
         analytes={
-            name: AnalyteRules(part.linear_to, part.proved_on, part.loq, part.limits.stated())
+            name: AnalyteRules(part.linear_to, part.proved_on, part.loq, limits=part.limits.stated())
             for name, part in file.analytes.items()
         },
         limits=_limits(file.limits, own.limits),

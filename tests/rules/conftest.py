@@ -41,7 +41,8 @@ NUMBERS = (
     "reference_signal",
 )
 QUANTITIES = (
-    "added", "nominal", "concentration", "reported_result", "spike_volume", "aliquot", "made_up_to", "mass", "digest_volume",
+    "added", "nominal", "concentration", "reported_result", "spike_volume", "aliquot", "made_up_to",
+    "mass", "digest_volume",
 )  # fmt: skip
 REFERENCE = Path(__file__).parents[1] / "reference"
 

@@ -2,12 +2,16 @@
 
 from __future__ import annotations
 
+import re
+
 import numpy as np
 import pytest
+import statsmodels.api as sm
 
 from rules.checks import Outcome
+from rules.exceptions import LimitException
 from rules.limits import parse_check_limits
-from rules.method import AnalyteRules, Bench, Measure
+from rules.method import AnalyteRules, Bench, Measure, Stock
 
 #: y = 0.02 + 0.1 x, exact
 NOMINAL, READ = [0, 5, 10], [0.02, 0.52, 1.02]
@@ -24,8 +28,8 @@ def at_least(concentration):
 def of_one(outcomes, check, make_additions, make_standards, make_blanks):
     """One check of one series, from signals and additions, standards, check standards and blanks."""
 
-    def made(name, additions=GOOD, standards=None, verify=None, blanks=None, **method):
-        rows = make_additions(*additions) if additions else []
+    def made(name, additions=GOOD, standards=None, verify=None, blanks=None, rows=(), **method):
+        rows = [*rows] or (make_additions(*additions) if additions else [])
         if standards:
             rows += make_standards(NOMINAL, standards)
         if verify:
@@ -41,7 +45,273 @@ def of_one(outcomes, check, make_additions, make_standards, make_blanks):
 PASS, WARN, FAIL, NOT = Outcome.PASS, Outcome.WARN, Outcome.FAIL, Outcome.NOT_EVALUATED
 CALIBRATED = {"standards": READ, "report": "calibration"}
 
+STANDARDS = [
+    {"role": "standard", "label": f"STD {n}", "nominal": n, "signal": s} for n, s in zip(NOMINAL, READ, strict=True)
+]
+CHECK = {"role": "check_standard", "label": "QC 5", "nominal": 5, "signal": 0.52}
+ADDED = [
+    {"sample": "RIV-17", "role": "spiked" if a else "unspiked", "signal": 0.2 + 0.1 * a, **({"added": a} if a else {})}
+    for a in (0.0, 2.0, 4.0, 6.0)
+]
+DATED = {
+    "rows": [
+        {"sample": "RIV-17", "role": "spiked" if v else "unspiked", "signal": 0.2 + v / 25, "spike_volume": v or np.nan}
+        for v in (0.0, 1.0, 2.0)
+    ],
+    "bench": Bench(aliquot=Measure(10, "mL"), made_up_to=Measure(50, "mL")),
+}
+
+
+def zinc_stock(**dates):
+    """The stock of the additions, with its dates."""
+    return (Stock("ZN-5", {"Zn": Measure(5, "mg/L")}, lot="7", **dates),)
+
+
+def one(sample, signal, role="unspiked", **more):
+    """A row of a sample."""
+    return {"sample": sample, "role": role, "signal": signal, **more}
+
+
+def by_calibration(*rows, **method):
+    """What the calibration reports of rows that follow its standards."""
+    return {"rows": [*STANDARDS, *rows], "report": "calibration", **method}
+
+
+def spiked_blank(signal, **more):
+    """Additions with standards and a spiked blank of 4 mg/L."""
+    return {"rows": [*STANDARDS, *ADDED, one("SB-1", signal, "spiked_blank", label="SB-1", added=4.0)], **more}
+
+
+def two_lines(native):
+    """Additions seen on two lines with the same noise, the second of which sees another native."""
+    rows = []
+    for channel, seen in (("213.8", 2.0), ("202.5", native)):
+        for k, a in enumerate((0.0, 1.0, 2.0, 3.0)):
+            signal = 0.1 * (seen + a) + 0.004 * (-1) ** k
+            rows.append(
+                one("RIV-17", signal, "spiked" if a else "unspiked", channel=channel, **({"added": a} if a else {}))
+            )
+    return {"rows": rows}
+
+
+SEVEN = [0.019, 0.020, 0.021, 0.020, 0.019, 0.021, 0.020]
+
 CASES = [
+    # --- stock
+    (
+        "stock",
+        DATED | {"stocks": zinc_stock(valid_from=0.0, valid_until=100.0), "accepted_at": 50.0},
+        PASS,
+        "stock ZN-5 (lot 7) within its dates",
+    ),
+    (
+        "stock",
+        DATED | {"stocks": zinc_stock(valid_from=0.0, valid_until=100.0), "accepted_at": 200.0},
+        FAIL,
+        "stock ZN-5 (lot 7) was out of its dates when these were measured: RIV-17 1, RIV-17 2",
+    ),
+    ("stock", DATED | {"stocks": zinc_stock()}, NOT, "no stock with dates was used"),
+    # --- spiked_blank
+    ("spiked_blank", spiked_blank(0.42), PASS, "spiked blank SB-1 recovers 100 %"),
+    ("spiked_blank", spiked_blank(0.30), FAIL, "spiked blank SB-1 recovers 70 %: stock or spiking suspect"),
+    ("spiked_blank", {}, NOT, "no spiked blank in this export"),
+    (
+        "spiked_blank",
+        {"rows": [*ADDED, one("SB-1", 0.42, "spiked_blank", label="SB-1", added=4.0)]},
+        NOT,
+        "spiked blanks were measured, and there is no calibration to read them back from",
+    ),
+    # --- duplicate
+    (
+        "duplicate",
+        by_calibration(one("RIV-17", 0.52), one("RIV-17 D", 0.54, duplicate_of="RIV-17")),
+        PASS,
+        "RIV-17 and RIV-17 D differ by 3.9 % of their mean",
+    ),
+    (
+        "duplicate",
+        by_calibration(one("RIV-17", 0.52), one("RIV-17 D", 0.72, duplicate_of="RIV-17")),
+        FAIL,
+        "RIV-17 and RIV-17 D differ by 33 % of their mean: the sample is uneven, or one preparation went wrong",
+    ),
+    (
+        "duplicate",
+        by_calibration(
+            one("RIV-17", 0.52),
+            one("RIV-17 D", 0.72, duplicate_of="RIV-17"),
+            analytes={"Zn": AnalyteRules(loq=Measure(2.5, "mg/L"))},
+        ),
+        PASS,
+        "RIV-17 and RIV-17 D are low and differ within one limit of quantification (2.50 mg/L)",
+    ),
+    (
+        "duplicate",
+        by_calibration(
+            one("RIV-17", 0.52),
+            one("RIV-17 D", 0.72, duplicate_of="RIV-17"),
+            analytes={"Zn": AnalyteRules(loq=Measure(1.5, "mg/L"))},
+        ),
+        FAIL,
+        "RIV-17 and RIV-17 D are low and differ by more than one limit of quantification (1.50 mg/L)",
+    ),
+    (
+        "duplicate",
+        by_calibration(
+            one("RIV-17", 0.22),
+            one("RIV-17", 0.42, "spiked", added=2.0, label="RIV-17 MS"),
+            one("RIV-17", 0.44, "spiked", added=2.0, label="RIV-17 MSD", duplicate_of="RIV-17"),
+        ),
+        PASS,
+        "RIV-17 MS and RIV-17 MSD differ by 4.9 % of their mean",
+    ),
+    ("duplicate", {}, NOT, "no duplicate of it in this export"),
+    (
+        "duplicate",
+        by_calibration(one("RIV-17 D", 0.72, duplicate_of="RIV-17")),
+        NOT,
+        "its original 'RIV-17' is not in this export",
+    ),
+    (
+        "duplicate",
+        {
+            "rows": [
+                *ADDED,
+                one("RIV-17", 0.4, "spiked", added=1.5, label="RIV-17 MSD", duplicate_of="RIV-17"),
+            ]
+        },
+        NOT,
+        "RIV-17 MSD has no other portion with the same addition",
+    ),
+    # --- channels_agree
+    (
+        "channels_agree",
+        two_lines(2.1),
+        PASS,
+        "213.8 gives 2.06 and 202.5 2.16 mg/L, 0.83 standard uncertainties apart",
+    ),
+    (
+        "channels_agree",
+        two_lines(2.35),
+        WARN,
+        "213.8 gives 2.06 and 202.5 2.41 mg/L, 2.8 standard uncertainties apart: one of them is interfered with",
+    ),
+    (
+        "channels_agree",
+        two_lines(3.0),
+        FAIL,
+        "213.8 gives 2.06 and 202.5 3.07 mg/L, 7.4 standard uncertainties apart: one of them is interfered with",
+    ),
+    (
+        "channels_agree",
+        {"rows": [*two_lines(2.0)["rows"][:4], one("RIV-17", 0.3, channel="202.5")]},
+        NOT,
+        "another line or mass has no result with an uncertainty",
+    ),
+    ("channels_agree", {}, NOT, "measured on one line or mass only"),
+    # --- dilution_test
+    (
+        "dilution_test",
+        {"rows": [one("RIV-17", 0.52), one("RIV-17", 0.12, predilution=5.0), *ADDED[1:]]},
+        PASS,
+        "diluted, the sample differs from its undiluted reading by 15 % (baseline shift 0.0200)",
+    ),
+    (
+        "dilution_test",
+        {"rows": [one("RIV-17", 0.6), one("RIV-17", 0.2, predilution=5.0), *ADDED[1:]]},
+        FAIL,
+        (
+            "diluted, the sample differs from its undiluted reading by 67 % (baseline shift 0.100): the matrix shifts "
+            "the baseline, which additions do not correct"
+        ),
+    ),
+    (
+        "dilution_test",
+        by_calibration(one("RIV-17", 0.52), one("RIV-17", 0.12, predilution=5.0)),
+        PASS,
+        "diluted, the sample differs from its undiluted reading by 0.0 % (baseline shift 0)",
+    ),
+    (
+        "dilution_test",
+        {},
+        NOT,
+        "unspiked at one dilution only: nothing shows whether the baseline shifts",
+    ),
+    (
+        "dilution_test",
+        by_calibration(
+            one("RIV-17", 0.52),
+            one("RIV-17", 0.12, predilution=5.0),
+            analytes={"Zn": AnalyteRules(loq=Measure(2, "mg/L"))},
+        ),
+        NOT,
+        "the diluted solution is too low to judge the baseline by",
+    ),
+    # --- bracket
+    (
+        "bracket",
+        {"rows": [*STANDARDS, CHECK, *ADDED, CHECK | {"label": "QC 6", "signal": 0.53}]},
+        PASS,
+        "the check standards before and after hold, the farthest is QC 6 with 102 %",
+    ),
+    (
+        "bracket",
+        {"rows": [*STANDARDS, *ADDED, CHECK]},
+        PASS,
+        "the check standards before and after hold, the farthest is QC 5 with 100 %",
+    ),
+    (
+        "bracket",
+        {"rows": [*STANDARDS, CHECK, *ADDED, CHECK | {"label": "QC 6", "signal": 0.62}]},
+        FAIL,
+        "check standard QC 6 of its bracket reads 120 % of nominal",
+    ),
+    (
+        "bracket",
+        {"rows": [*STANDARDS, CHECK, *ADDED]},
+        NOT,
+        "no check standard was measured after it, the last one is on line 5",
+    ),
+    (
+        "bracket",
+        {"rows": [*ADDED, CHECK, *STANDARDS]},
+        NOT,
+        "no check standard and no calibration was measured before it: the bracket is open",
+    ),
+    ("bracket", {"rows": [*STANDARDS, *ADDED]}, NOT, "no check standard in this export"),
+    (
+        "bracket",
+        {"rows": [CHECK, *ADDED, CHECK]},
+        NOT,
+        "there is no calibration to read the check standards back from",
+    ),
+    # --- detection of what is read back
+    (
+        "detection",
+        by_calibration(one("RIV-17", 0.52), blanks=SEVEN, blank="none"),
+        PASS,
+        "above the decision limit of 7 blanks",
+    ),
+    (
+        "detection",
+        by_calibration(one("RIV-17", 0.03), analytes={"Zn": AnalyteRules(lod=Measure(0.3, "mg/L"))}),
+        PASS,
+        "not detected: less than 0.300 mg/L, the limit of the laboratory",
+    ),
+    (
+        "detection",
+        by_calibration(
+            one("RIV-17", 0.05),
+            analytes={"Zn": AnalyteRules(lod=Measure(0.3, "mg/L"), loq=Measure(1, "mg/L"))},
+        ),
+        WARN,
+        "detected, and below the limit of quantification (1.00 mg/L in the vessel)",
+    ),
+    (
+        "detection",
+        by_calibration(one("RIV-17", 0.52)),
+        NOT,
+        "no limit of detection: measure 7 blanks, or state analytes.lod",
+    ),
     # --- inputs
     ("inputs", {}, PASS, "all cells readable, volumes and concentrations possible"),
     (
@@ -623,3 +893,87 @@ def test_checks_rest_on_named_lines(of_one):
     assert residual.lines(0) == [3]
     assert by_name["check_standard"].lines(0) == [9]
     assert by_name["blank"].lines(0) == []
+
+
+@pytest.mark.parametrize("native", [2.1, 2.35, 3.0])
+def test_lines_are_compared_by_their_own_uncertainties(of_one, native):
+    """The distance of two lines is that of statsmodels' intercepts over slopes, with their covariances."""
+    rows = two_lines(native)["rows"]
+    found = []
+    for channel in ("213.8", "202.5"):
+        of_line = [row for row in rows if row["channel"] == channel]
+        added = np.array([row.get("added", 0.0) for row in of_line])
+        fit = sm.OLS(np.array([row["signal"] for row in of_line]), sm.add_constant(added)).fit()
+        a, b = fit.params
+        gradient = np.array([1 / b, -a / b**2])
+        found.append((a / b, gradient @ fit.cov_params() @ gradient))
+    (first, v_first), (second, v_second) = found
+
+    _, check = of_one("channels_agree", rows=rows)
+
+    assert check.value[0] == pytest.approx(abs(first - second) / np.sqrt(v_first + v_second), rel=1e-9)
+    assert check.value[1] == check.value[0]
+
+
+def test_limits_of_seven_blanks_are_those_of_their_scatter(of_one):
+    """L_C = t(0.99, 6) s √(1 + 1/7)/b, LOD twice that and LOQ ten s/b; t(0.99, 6) = 3.143 (40 CFR 136, appendix B)."""
+    given = by_calibration(one("RIV-17", 0.52), blanks=SEVEN, blank="none")
+    del given["report"]
+
+    out, _ = of_one("detection", report="calibration", **given)
+
+    s = np.std(SEVEN, ddof=1)
+    limits, key = out.case.limits, out.case.key[0]
+    assert limits.decision[key] == pytest.approx(3.143 * s * np.sqrt(8 / 7) / 0.1, rel=2e-4)
+    assert limits.lod[key] == pytest.approx(2 * limits.decision[key])
+    assert limits.loq[key] == pytest.approx(10 * s / 0.1)
+
+
+def test_a_read_back_below_its_decision_limit_is_less_than_the_limit_of_detection(of_one):
+    """What cannot be told from a blank is reported as less than the LOD in the sample, dilution counted."""
+    given = by_calibration(one("RIV-17", 0.022, predilution=10.0), blanks=SEVEN, blank="none")
+
+    out, check = of_one("detection", **given)
+
+    lod = 10 * out.case.limits.lod[out.case.key[0]]
+    assert check.sentence(0) == f"not detected: less than {lod:.3g} mg/L, the limit of 7 blanks"
+    assert out.text(0) == f"< {lod:.3g} mg/L (not detected, limit of detection)"
+
+
+def test_exceptions_hold_for_the_samples_that_they_name(of_one):
+    """The first exception that finds the sample and states the check decides; others are judged as usual."""
+    exceptions = (
+        LimitException(re.compile("^SED-"), frozenset({"Hg"}), {"residual": parse_check_limits("off")}),
+        LimitException(re.compile("^RIV-"), frozenset(), {"residual": parse_check_limits("at most 0.1 %")}),
+        LimitException(re.compile("17$"), frozenset({"Zn"}), {"residual": parse_check_limits("off")}),
+    )
+
+    _, named = of_one("residual", exceptions=exceptions)
+    _, usual = of_one("residual", exceptions=exceptions[:1])
+
+    assert Outcome(int(named.outcome[0])) is FAIL
+    assert named.limit_text(of_one("residual", exceptions=exceptions)[0].case, 0) == "fail unless at most 0.1 %"
+    assert Outcome(int(usual.outcome[0])) is PASS
+
+
+def test_spiked_blanks_of_another_stock_say_nothing(of_one):
+    """A spiked blank from another stock does not judge a series; one from the same stock does, whatever else fails."""
+    stocks = (
+        Stock("ZN-5", {"Zn": Measure(5, "mg/L")}),
+        Stock("ZN-9", {"Zn": Measure(5, "mg/L")}),
+    )
+    bench = Bench(aliquot=Measure(10, "mL"), made_up_to=Measure(50, "mL"))
+    series = [
+        one("RIV-17", 0.05 + 0.01 * v, "spiked" if v else "unspiked", stock="ZN-5", spike_volume=v or np.nan)
+        for v in (0.0, 10.0, 20.0)
+    ]
+    other, same = (
+        one("SB", signal, "spiked_blank", label=f"SB {stock}", stock=stock, spike_volume=10.0)
+        for stock, signal in (("ZN-9", 0.05), ("ZN-5", 0.12))
+    )
+
+    _, foreign = of_one("spiked_blank", rows=[*STANDARDS, *series, other], stocks=stocks, bench=bench)
+    _, own = of_one("spiked_blank", rows=[*STANDARDS, *series, other, same], stocks=stocks, bench=bench)
+
+    assert foreign.sentence(0) == "the spiked blanks were made from other stocks"
+    assert own.sentence(0) == "spiked blank SB ZN-5 recovers 100 %"

@@ -6,7 +6,7 @@ from math import inf
 
 import pytest
 
-from rules.checks import limits_of
+from rules.exceptions import limits_of
 from rules.limits import DEFAULTS, CheckLimits, Limit, LimitUnreadable, parse_check_limits
 from rules.method import AnalyteRules
 

@@ -33,7 +33,7 @@ def batch(make_additions, make_standards, make_blanks):
         for k, sample in enumerate(SAMPLES):
             signals = [0.22 + 0.01 * k, 0.421 + 0.01 * k, 0.619 + 0.01 * k, 0.82 + 0.01 * k]
             rows += make_additions(signals, [0, 2, 4, 6.0], sample=sample)
-        return rows
+        return rows + make_standards([5], [0.519], role="check_standard")
 
     return made
 
@@ -94,9 +94,9 @@ def test_fail_goes_before_incomplete(outcomes, make_additions):
 
 def test_an_ordinary_sample_is_not_spiked_and_read_from_the_calibration(outcomes, batch):
     """A sample without additions is reported from the calibration whatever the settings report, and is not judged."""
-    rows = [*batch(), {"sample": "RIV-17", "role": "unspiked", "signal": 0.32}]
+    *rows, last = batch()
 
-    out = outcomes(rows, report="additions", blank="none")
+    out = outcomes([*rows, {"sample": "RIV-17", "role": "unspiked", "signal": 0.32}, last], blank="none")
 
     i = by_name(out)["RIV-17 Zn"]
     assert out.verdict_of(i) is Verdict.NOT_SPIKED
@@ -107,12 +107,14 @@ def test_an_ordinary_sample_is_not_spiked_and_read_from_the_calibration(outcomes
 
 def test_an_ordinary_sample_is_judged_by_its_batch(outcomes, batch):
     """A check standard that does not hold fails ordinary samples too."""
-    rows = [*batch(), {"sample": "RIV-17", "role": "unspiked", "signal": 0.32}]
+    *rows, last = batch()
     rows[3]["signal"] = 0.70
 
-    out = outcomes(rows, blank="none")
+    out = outcomes([*rows, {"sample": "RIV-17", "role": "unspiked", "signal": 0.32}, last], blank="none")
 
-    assert out.failed_checks(by_name(out)["RIV-17 Zn"]) == ("check_standard",)
+    i = by_name(out)["RIV-17 Zn"]
+    assert out.failed_checks(i) == ("check_standard", "bracket")
+    assert out.reasons(i) == ["check standard check_standard 5 reads 136 % of nominal: the calibration does not hold"]
 
 
 def test_an_analyte_that_no_stock_contains_is_not_judged_for_recovery(outcomes, make_standards):
