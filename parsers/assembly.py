@@ -101,7 +101,8 @@ class _Assembly:
             "concentration": values.quantities("concentration"),
             "reported_result": values.quantities("reported_result"),
             "measured_at": values.times(), "predilution": values.predilution(),
-            **{name: values.texts(name) for name in ("stock", "batch", "analyst", "instrument", "duplicate_of", "comment")},
+            **{name: values.texts(name) for name in ("stock", "batch", "analyst", "instrument")},
+            **{name: values.texts(name) for name in ("duplicate_of", "comment")},
         }  # fmt: skip
         present = self.present(role)
         if not present.any():

@@ -7,7 +7,8 @@ from __future__ import annotations
 
 #: Texts of a row.
 TEXTS = (
-    "label", "sample", "role", "analyte", "channel", "level", "stock", "batch", "analyst", "instrument", "duplicate_of", "comment",
+    "label", "sample", "role", "analyte", "channel", "level", "stock", "batch", "analyst", "instrument",
+    "duplicate_of", "comment",
 )  # fmt: skip
 #: Plain numbers of a row; `signal` may have several columns.
 NUMBERS = ("signal", "signal_sd", "signal_rsd", "readings", "replicate", "position", "reference_signal")
@@ -21,8 +22,8 @@ ALL = (*TEXTS, *NUMBERS, *QUANTITIES, "predilution", "measured_at")
 
 #: What a named group of a label rule may say.
 FROM_LABEL = (
-    "sample", "analyte", "channel", "level", "stock", "batch", "duplicate_of", "comment", "replicate", "position", *QUANTITIES,
-    "predilution",
+    "sample", "analyte", "channel", "level", "stock", "batch", "duplicate_of", "comment", "replicate", "position",
+    *QUANTITIES, "predilution",
 )  # fmt: skip
 #: What a value outside the table may say for every row; other headings are kept as they are.
 FROM_HEADING = (

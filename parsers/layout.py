@@ -27,7 +27,10 @@ if TYPE_CHECKING:
 __all__ = ["SETTINGS_KEYS", "Cells", "Claims", "Columns", "Layout", "Source", "Unfold", "parse_layout"]
 
 #: Keys that a layout may hold for the settings side.
-SETTINGS_KEYS = ("bench", "stocks", "limits", "report", "blank", "variance", "added_refers_to")
+SETTINGS_KEYS = (
+    "bench", "stocks", "limits", "report", "blank", "variance", "added_refers_to", "concentration_refers_to",
+    "reference", "spiked_at", "expect",
+)  # fmt: skip
 CONSEQUENCE = "No export can be read with this layout."
 
 
@@ -160,6 +163,10 @@ class Layout(_Part):
     blank: Any = None
     variance: Any = None
     added_refers_to: Any = None
+    concentration_refers_to: Any = None
+    reference: Any = None
+    spiked_at: Any = None
+    expect: Any = None
 
     _document: Document = PrivateAttr()
 

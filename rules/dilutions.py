@@ -23,6 +23,8 @@ if TYPE_CHECKING:
     from rules.vessels import Vessels
 
 
+#: Predilutions of one sample that lie farther apart than this are a slip.
+MOST_RATIO = 1e9
 #: A shift below this part of the highest signal is rounding.
 LEAST_SHIFT = 1e-12
 
@@ -40,8 +42,11 @@ def on_one_base(vessels: Vessels, series: Series) -> Vessels:
     base = np.where(np.isfinite(low), np.where(low == high, low, np.nan), seg.min(factor))
     of_member = seg.spread(base)
     with np.errstate(invalid="ignore", divide="ignore"):
-        moved = series.unspiked & np.isfinite(of_member) & (factor != of_member)
-        ratio = np.where(moved, of_member / factor, 1.0)
+        ratio = of_member / factor
+        # what no bench can do stays as it is, and is a fault of the series
+        possible = (ratio > 1 / MOST_RATIO) & (ratio < MOST_RATIO)
+        moved = series.unspiked & (factor != of_member) & possible
+        ratio = np.where(moved, ratio, 1.0)
     if not moved.any():
         return vessels
     dilution, fraction, predilution = (

@@ -21,6 +21,10 @@ if TYPE_CHECKING:
     from rules.method import Measure, Method
 
 
+#: Words that say nothing until a laboratory declares them.
+PARTS = ("ppm", "ppb", "ppt")
+
+
 @dataclass(frozen=True, slots=True)
 class Substance:
     """An analyte as a substance.
@@ -114,7 +118,9 @@ def concentrations(
             factors[here] = Substance.of(method, readings.analyte.names[analyte]).factor(unit, method.vessel_unit)
         except units.UnitUnusable as error:
             factors[here] = np.nan
-            reasons |= dict.fromkeys(here.tolist(), str(error))
+            # what an instrument writes can be declared; what people write in the settings can be written out
+            declared = f", or declare units: {{{unit.lower()}: mg/L}}" if unit.lower() in PARTS else ""
+            reasons |= dict.fromkeys(here.tolist(), f"{error}{declared}")
     return values * factors, reasons
 
 

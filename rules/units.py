@@ -127,7 +127,7 @@ def require(unit: str, *kinds: str) -> None:
         If not.
     """
     if not any(same_kind(unit, kind) for kind in kinds):
-        raise UnitUnusable(f"expected {' or '.join(_KINDS[kind] for kind in kinds)}, got '{unit}'")
+        raise UnitUnusable(f"expected {_KINDS[kinds[0]]}, got '{unit}'")
 
 
 def same_kind(unit: str, other: str) -> bool:
@@ -149,9 +149,7 @@ def same_kind(unit: str, other: str) -> bool:
 @cache
 def _known(text: str) -> Any:
     if text.lower() in ("ppm", "ppb", "ppt"):
-        raise UnitUnusable(
-            f"'{text}' does not say per what: write mg/L, µg/L or ng/L, or declare units: {{{text.lower()}: mg/L}}"
-        )
+        raise UnitUnusable(f"'{text}' does not say per what: write mg/L, µg/L or ng/L")
     try:
         unit = _registry().parse_units(text)
     except Exception as error:  # pint raises its own errors, tokenizer errors and TypeError alike

@@ -83,6 +83,7 @@ def record_parts(outcomes: Outcomes, export: Export, problems: tuple[str, ...]) 
     yield "series", (_series(outcomes, i) for i in range(len(case)))
     yield "blanks", _blanks(case)
     yield "check_standards", _check_standards(outcomes)
+    yield "spiked_blanks", _spiked_blanks(case)
     yield "calibrations", _calibrations(case)
     yield "set_aside", ({"line": a.line, "reason": a.reason, "text": a.text} for a in case.readings.set_aside)
     yield "problems", problems
@@ -100,8 +101,10 @@ def _series(outcomes: Outcomes, i: int) -> dict[str, Any]:
         "attempt": int(case.series.attempt[i]),
         "verdict": outcomes.verdict_of(i).word,
         "result": result(outcomes, i),
-        "additions_result": _result(case, case.additions, i, Reported.ADDITIONS) if case.judged[i] else None,
-        "calibration_result": _result(case, case.back.results, i, Reported.CALIBRATION)
+        "additions_result": _result(case, case.additions, i, result_by(case, i, Reported.ADDITIONS))
+        if case.judged[i]
+        else None,
+        "calibration_result": _result(case, case.back.results, i, result_by(case, i, Reported.CALIBRATION))
         if case.back.calibration[i] >= 0
         else None,
         "fit": _fit(case, i),
@@ -109,6 +112,7 @@ def _series(outcomes: Outcomes, i: int) -> dict[str, Any]:
         "recoveries": _recoveries(case, i),
         "matrix_effect": _matrix_effect(case, i),
         "budget": _budget(case, reported, i, by),
+        "detection": _detection(case, i),
         "checks": [_check(check, case, i) for check in outcomes.checks],
         "next_step": {"sentence": plan.next_step(outcomes, i) or None, "plan": None},
     }
@@ -117,11 +121,16 @@ def _series(outcomes: Outcomes, i: int) -> dict[str, Any]:
 def result(outcomes: Outcomes, i: int) -> dict[str, Any]:
     """Return the reported result of a series."""
     case = outcomes.case
-    values = _result(case, outcomes.reported(i), i, Reported(int(case.reported[i])))
+    values = _result(case, outcomes.reported(i), i, result_by(case, i, Reported(int(case.reported[i]))))
     return values | {"text": outcomes.text(i)}
 
 
-def _result(case: Case, results: Results, i: int, by: Reported) -> dict[str, Any]:
+def result_by(case: Case, i: int, by: Reported) -> str:
+    """Return what a result comes from: additions, calibration, or the instrument's own concentrations."""
+    return "instrument" if by is Reported.CALIBRATION and case.back.instrument[i] else by.name.lower()
+
+
+def _result(case: Case, results: Results, i: int, by: str) -> dict[str, Any]:
     faulty = i in case.faults
     columns = ("value", "standard_uncertainty", "expanded_uncertainty", "coverage_factor", "low", "high")
     numbers = {name: None if faulty else number(getattr(results, name)[i]) for name in columns}
@@ -133,7 +142,7 @@ def _result(case: Case, results: Results, i: int, by: Reported) -> dict[str, Any
         "coverage_factor": numbers["coverage_factor"],
         "low": numbers["low"],
         "high": numbers["high"],
-        "by": by.name.lower(),
+        "by": by,
         "text": result_text(results, i, case, case.method.confidence),
     }
 
@@ -168,7 +177,7 @@ def _solutions(case: Case, i: int) -> list[dict[str, Any]]:
                 "label": case.label(solution),
                 "role": Role(int(readings.role[row])).word,
                 "added": number(case.vessels.added[solution]),
-                "dilution": number(case.vessels.dilution[solution]),
+                "dilution": number(case.vessels.fraction[solution]),
                 "signal": number(case.solutions.signal[solution]),
                 "readings": values[np.isfinite(values)].tolist(),
                 "position": number(readings.position[row]),
@@ -233,6 +242,18 @@ def _budget(case: Case, results: Results, i: int, by: Reported) -> list[dict[str
     return entries
 
 
+def _detection(case: Case, i: int) -> dict[str, Any]:
+    """List the limits of a read-back in the vessel: what tells from a blank, what is detected, what is quantified."""
+    limits, key = case.limits, int(case.key[i])
+    return {
+        "decision_limit": number(limits.decision[key]),
+        "limit_of_detection": number(limits.lod[key]),
+        "limit_of_quantification": number(limits.loq[key]),
+        "unit": case.method.vessel_unit,
+        "blanks": int(limits.blanks[key]),
+    }
+
+
 def _check(check: Check, case: Case, i: int) -> dict[str, Any]:
     return {
         "check": check.name,
@@ -280,11 +301,26 @@ def _check_standards(outcomes: Outcomes) -> list[dict[str, Any]]:
     ]
 
 
+def _spiked_blanks(case: Case) -> list[dict[str, Any]]:
+    spiked = case.spiked_blanks
+    return [
+        _place(case, solution, key)
+        | {
+            "stock": case.method.stocks[spiked.stock[place]].name if spiked.stock[place] >= 0 else None,
+            "added": number(spiked.added[place]),
+            "measured": number(spiked.measured[place]),
+            "unit": case.method.vessel_unit,
+            "recovery": number(spiked.percent[place]),
+        }
+        for place, (solution, key) in enumerate(_pairs(spiked.solutions.tolist(), spiked.key.tolist()))
+    ]
+
+
 def _calibrations(case: Case) -> list[dict[str, Any]]:
     calibrations = case.calibrations
     lines, segments = calibrations.lines, calibrations.segments
     listed = []
-    for at, key in enumerate(calibrations.key.tolist()):
+    for at, key in enumerate(calibrations.key[~calibrations.instrument].tolist()):
         analyte, channel = case.keys.split(key)
         start, size = int(segments.starts[at]), int(segments.sizes[at])
         standards = calibrations.solutions[start : start + size].tolist()

@@ -16,7 +16,7 @@ from parsers.readings import line_ranges
 from rules import plan
 from rules.case import Reported
 from rules.figures import figure
-from watcher.record import Export, record_parts
+from watcher.record import Export, record_parts, result_by
 
 if TYPE_CHECKING:
     from collections.abc import Iterator
@@ -122,14 +122,14 @@ def _row(outcomes: Outcomes, i: int, export: Export) -> dict[str, Any]:
     sound = i not in case.faults
     at = int(case.fits.of_series[i])
     lines = case.fits.lines
-    detected = results.detected[i] or case.reported[i] == Reported.CALIBRATION
+    less_than = float(results.less_than[i])
 
     def of_result(column: Any) -> float | None:
         return float(column[i]) if sound else None
 
     value: Any = of_result(results.value)
-    if sound and not detected and math.isfinite(results.high[i]):
-        value = f"< {figure(float(results.high[i]))}"
+    if sound and not results.detected[i] and math.isfinite(less_than):
+        value = f"< {figure(less_than)}"
     return {
         "sample": case.sample(i),
         "analyte": case.analyte(i),
@@ -141,7 +141,7 @@ def _row(outcomes: Outcomes, i: int, export: Export) -> dict[str, Any]:
         "coverage_factor": of_result(results.coverage_factor) if results.symmetric(i) else None,
         "low": of_result(results.low),
         "high": of_result(results.high),
-        "result_by": Reported(int(case.reported[i])).name.lower(),
+        "result_by": result_by(case, i, Reported(int(case.reported[i]))),
         "slope": None if at < 0 else float(lines.slope[at]),
         "intercept": None if at < 0 else float(lines.intercept[at]),
         "correlation": None if at < 0 else float(lines.correlation[at]),

@@ -18,6 +18,7 @@ _NUMBER = r"[-+]?[0-9]+(?:\.[0-9]+)?(?:[eE][-+]?[0-9]+)?"
 _MEASURE = re.compile(rf"^(?P<number>{_NUMBER})\s*(?P<unit>.*)$")
 _SECONDS = {"ms": 0.001, "s": 1.0, "min": 60.0, "h": 3600.0, "d": 86400.0}
 _UNCERTAINTY = re.compile(rf"^(?P<value>{_NUMBER})\s*%(?:\s*,\s*k\s*=\s*(?P<k>{_NUMBER}))?$")
+_SHARE = re.compile(r"^(?P<wanted>\d{1,6}) per (?P<among>\d{1,6}) samples?$")
 _DAY = "%Y-%m-%d"
 SECONDS_PER_DAY = 86400
 
@@ -88,14 +89,14 @@ def volume(text: str) -> Measure:
 
 
 def concentration(text: str) -> Measure:
-    """Read a concentration above zero."""
-    return _of_kind(text, units.CONCENTRATION)
+    """Read a concentration above zero, of mass or of amount."""
+    return _of_kind(text, units.CONCENTRATION, units.AMOUNT_CONCENTRATION)
 
 
 def volume_or_concentration(text: str) -> Measure:
     """Read what a level adds: a volume of stock, or a concentration."""
     stated = measure(text)
-    for kind in (units.VOLUME, units.CONCENTRATION):
+    for kind in (units.VOLUME, units.CONCENTRATION, units.AMOUNT_CONCENTRATION):
         try:
             units.require(stated.unit, kind)
         except units.UnitUnusable:
@@ -105,15 +106,15 @@ def volume_or_concentration(text: str) -> Measure:
 
 
 def concentration_unit(text: str) -> str:
-    """Read a unit of concentrations."""
-    units.require(text.strip(), units.CONCENTRATION)
+    """Read a unit of concentrations, of mass or of amount."""
+    units.require(text.strip(), units.CONCENTRATION, units.AMOUNT_CONCENTRATION)
     return text.strip()
 
 
 def result_unit(text: str) -> str:
     """Read a unit of results: a concentration, or the content of a solid."""
-    if not units.same_kind(text.strip(), units.MASS_FRACTION):
-        units.require(text.strip(), units.CONCENTRATION)
+    if not any(units.same_kind(text.strip(), kind) for kind in (units.MASS_FRACTION, units.AMOUNT_CONTENT)):
+        units.require(text.strip(), units.CONCENTRATION, units.AMOUNT_CONCENTRATION)
     return text.strip()
 
 
@@ -189,6 +190,49 @@ def day_ends(text: str) -> float:
     return day_begins(text) + SECONDS_PER_DAY - 1e-3
 
 
+def molar_mass(text: str) -> float:
+    """Read a molar mass in g/mol.
+
+    >>> molar_mass("65.38 g/mol")
+    65.38
+    """
+    stated = measure(text)
+    if stated.unit != "g/mol":
+        raise ValueError(f"expected a molar mass such as '65.38 g/mol', got '{text}'")
+    return _positive(stated, text).value
+
+
+def share(text: str) -> tuple[int, int]:
+    """Read how many of so many samples.
+
+    >>> share("1 per 20 samples")
+    (1, 20)
+    """
+    found = _SHARE.match(" ".join(text.split()))
+    if found is None or not 1 <= int(found["wanted"]) <= int(found["among"]):
+        raise ValueError(f"expected a share such as '1 per 20 samples', got '{text}'")
+    return int(found["wanted"]), int(found["among"])
+
+
+def whole_number(text: str) -> int:
+    """Read a whole number above zero.
+
+    >>> whole_number("3")
+    3
+    """
+    if not re.fullmatch(r"\d{1,6}", text.strip()) or int(text) < 1:
+        raise ValueError(f"expected a whole number above 0, got '{text}'")
+    return int(text)
+
+
+def pattern(text: str) -> re.Pattern[str]:
+    """Read a pattern that is searched for."""
+    try:
+        return re.compile(text)
+    except re.error as error:
+        raise ValueError(f"expected a pattern (Python re), got '{text}': {error}") from error
+
+
 def _finite(digits: str, text: str) -> float:
     value = float(digits)
     if isinf(value):
@@ -196,9 +240,9 @@ def _finite(digits: str, text: str) -> float:
     return value
 
 
-def _of_kind(text: str, kind: str) -> Measure:
+def _of_kind(text: str, *kinds: str) -> Measure:
     stated = measure(text)
-    units.require(stated.unit, kind)
+    units.require(stated.unit, *kinds)
     return _positive(stated, text)
 
 

@@ -84,8 +84,23 @@ PercentLimit = Annotated[CheckLimits | None, _limit_in("%")]
 LoqLimit = Annotated[CheckLimits | None, _limit_in("LOQ")]
 
 
-class LimitsPart(Part):
-    """Limits of the checks; a bare limit is a fail limit, and stating a check replaces its default whole."""
+def _list_of_texts(value: object) -> object:
+    """Let one text stand for a list of it."""
+    return [value] if isinstance(value, str) else value
+
+
+def _only_off(value: object) -> CheckLimits:
+    """Take the one word that a check without number understands."""
+    if value != "off":
+        raise ValueError(f"expected off, which is all that this check understands, got {got(value)}")
+    return parse_check_limits("off")
+
+
+OnlyOff = Annotated[CheckLimits | None, BeforeValidator(_only_off)]
+
+
+class SampleLimitsPart(Part):
+    """Limits of the checks that judge a sample."""
 
     levels: PlainLimit = None
     slope_certainty: PlainLimit = None
@@ -98,21 +113,42 @@ class LimitsPart(Part):
     spike_size: PercentLimit = None
     matrix_effect: PercentLimit = None
     repeatability: PercentLimit = None
-    check_standard: PercentLimit = None
-    blank: LoqLimit = None
+    duplicate: PercentLimit = None
+    channels_agree: PlainLimit = None
+    dilution_test: PercentLimit = None
 
     def stated(self) -> dict[str, CheckLimits]:
         """Return the checks that the laboratory states."""
         limits = {name: getattr(self, name) for name in type(self).model_fields}
-        return {name: limit for name, limit in limits.items() if limit is not None}
+        return {name: limit for name, limit in limits.items() if isinstance(limit, CheckLimits)}
+
+
+class LimitsPart(SampleLimitsPart):
+    """Limits of the checks; a bare limit is a fail limit, and stating a check replaces its default whole."""
+
+    check_standard: PercentLimit = None
+    bracket: OnlyOff = None
+    blank: LoqLimit = None
+    spiked_blank: PercentLimit = None
+
+
+class ExceptionPart(SampleLimitsPart):
+    """Limits for the samples that a pattern finds; what judges a whole batch cannot differ by sample."""
+
+    samples: Annotated[re.Pattern[str], _read(scalars.pattern)]
+    analytes: Annotated[tuple[str, ...], BeforeValidator(_list_of_texts)] = ()
+
+    @model_validator(mode="after")
+    def _some_limit(self) -> ExceptionPart:
+        if not self.stated():
+            raise ValueError("an exception without limit\nState for instance recovery: 60 to 140 %")
+        return self
 
 
 class Folders(Part):
     """Where exports come from, and where results and records go."""
 
-    exports: Annotated[tuple[str, ...], BeforeValidator(lambda v: [v] if isinstance(v, str) else v)] = Field(
-        min_length=1
-    )
+    exports: Annotated[tuple[str, ...], BeforeValidator(_list_of_texts)] = Field(min_length=1)
     results: str = Field(min_length=1)
     records: str = "records"
 
@@ -180,6 +216,8 @@ class AnalytePart(Part):
     linear_to: Concentration | None = None
     proved_on: str = ""
     loq: Concentration | None = None
+    lod: Concentration | None = None
+    molar_mass: Annotated[float | None, _read(scalars.molar_mass)] = None
     limits: LimitsPart = LimitsPart()
 
 
@@ -188,6 +226,21 @@ class UnitsPart(Part):
 
     export: ConcentrationUnit
     result: Annotated[str, _read(scalars.result_unit)]
+    ppm: ConcentrationUnit | None = None
+    ppb: ConcentrationUnit | None = None
+    ppt: ConcentrationUnit | None = None
+
+    def words(self) -> dict[str, str]:
+        """Return what parts per million and the like mean, where that is declared."""
+        stated = {word: getattr(self, word) for word in ("ppm", "ppb", "ppt")}
+        return {word: unit for word, unit in stated.items() if unit is not None}
+
+
+class ExpectPart(Part):
+    """What a batch must hold."""
+
+    spiked: Annotated[tuple[int, int] | None, _read(scalars.share)] = None
+    levels: Annotated[int | None, _read(scalars.whole_number)] = None
 
 
 class WatchingPart(Part):
@@ -204,7 +257,7 @@ class MailPart(Part):
 
     server: str = Field(min_length=1)
     from_: str = Field(alias="from")
-    to: Annotated[tuple[str, ...], BeforeValidator(lambda v: [v] if isinstance(v, str) else v)] = Field(min_length=1)
+    to: Annotated[tuple[str, ...], BeforeValidator(_list_of_texts)] = Field(min_length=1)
     port: Annotated[int | None, _read(lambda t: int(scalars.number(t)))] = Field(default=None, gt=0, lt=65536)
     security: Literal["starttls", "tls", "none"] = "starttls"
     user: str | None = None
@@ -294,10 +347,14 @@ class Decisions(Part):
     stocks: tuple[StockPart, ...] | None = None
     bench: BenchPart | None = None
     limits: LimitsPart = LimitsPart()
-    report: Literal["additions", "calibration"] | None = None
+    report: Literal["additions", "calibration", "automatic"] | None = None
     blank: Literal["subtract", "preparation", "none"] | None = None
     variance: Variance | None = None
     added_refers_to: Literal["vessel", "aliquot", "nominal"] | None = None
+    concentration_refers_to: Literal["vessel", "sample"] | None = None
+    reference: Literal["per vessel", "diluted with the sample"] | None = None
+    spiked_at: Literal["before preparation", "after preparation"] | None = None
+    expect: ExpectPart | None = None
 
 
 class SettingsFile(Decisions):
@@ -306,12 +363,13 @@ class SettingsFile(Decisions):
     laboratory: str = Field(min_length=1)
     folders: Folders
     layouts: tuple[str, ...] = Field(min_length=1)
-    report: Literal["additions", "calibration"]
+    report: Literal["additions", "calibration", "automatic"]
     units: UnitsPart
     mail: Mailing
     analytes: dict[str, AnalytePart] = {}
     confidence: Annotated[float, _read(scalars.percentage)] = Field(default=0.95, gt=0.5, lt=1)
-    spiked_at: Literal["before preparation", "after preparation"] = "before preparation"
+    undetected_native: Literal["as measured", "as zero"] = "as measured"
+    exceptions: tuple[ExceptionPart, ...] = ()
     repeats: Literal["new attempt", "same series", "refuse"] = "new attempt"
     complete_after: Seconds = 7200.0
     watching: WatchingPart = WatchingPart()

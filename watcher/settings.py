@@ -18,9 +18,12 @@ from typing import TYPE_CHECKING, Any
 from parsers.document import load, validate
 from parsers.errors import DocumentFault, DocumentInvalid
 from parsers.layout import Layout, parse_layout
+from rules.exceptions import LimitException
 from rules.method import AnalyteRules, Bench, Measure, Method, Preparation, Stock
+from rules.substances import Substance
+from rules.units import UnitUnusable
 from watcher.errors import WatcherError
-from watcher.schema import BenchPart, Decisions, LimitsPart, SettingsFile, StockPart
+from watcher.schema import BenchPart, Decisions, ExpectPart, LimitsPart, SettingsFile, StockPart
 
 if TYPE_CHECKING:
     from collections.abc import Mapping
@@ -219,7 +222,26 @@ def compile_snapshot(snapshot: Snapshot) -> Settings:
     if faults or file is None:
         raise SettingsInvalid(tuple(faults))
     decided = file
-    return Settings(snapshot, decided, tuple((layout, method_for(decided, own)) for layout, own in read))
+    settings = Settings(snapshot, decided, tuple((layout, method_for(decided, own)) for layout, own in read))
+    if unconvertible := _without_molar_mass(settings):
+        raise SettingsInvalid(unconvertible)
+    return settings
+
+
+def _without_molar_mass(settings: Settings) -> tuple[DocumentFault, ...]:
+    """Concentrations of the settings that only a molar mass nobody knows could convert."""
+    faults: dict[str, DocumentFault] = {}
+    for layout, method in settings.layouts:
+        stated = [(stock.name, name, measure) for stock in method.stocks for name, measure in stock.contains.items()]
+        for name, rules in method.analytes.items():
+            stated += [(name, name, m) for m in (rules.loq, rules.lod, rules.linear_to) if m is not None]
+        for place, name, measure in stated:
+            try:
+                Substance.of(method, name).convert(measure, method.vessel_unit)
+            except UnitUnusable as error:
+                sentence = f"{measure} of {place}: {error}"
+                faults.setdefault(sentence, layout.document.fault((), sentence, CONSEQUENCE, ""))
+    return tuple(faults.values())
 
 
 def _same_names(layouts: list[Layout]) -> list[DocumentFault]:
@@ -240,22 +262,34 @@ def method_for(file: SettingsFile, own: Decisions) -> Method:
     A bench is one thing: made_up_to of another practice must not slip into it.
     """
     stocks = own.stocks if own.stocks is not None else file.stocks or ()
+    expect = own.expect or file.expect or ExpectPart()
     return Method(
         report=own.report or file.report,
         export_unit=file.units.export,
         result_unit=file.units.result,
+        unit_words=file.units.words(),
         blank=own.blank or file.blank,
         stocks=tuple(_stock(stock) for stock in stocks),
         bench=_bench(own.bench or file.bench or BenchPart()),
         analytes={
-            name: AnalyteRules(part.linear_to, part.proved_on, part.loq, limits=part.limits.stated())
+            name: AnalyteRules(
+                part.linear_to, part.proved_on, part.loq, part.lod, part.molar_mass, part.limits.stated()
+            )
             for name, part in file.analytes.items()
         },
         limits=_limits(file.limits, own.limits),
+        exceptions=tuple(
+            LimitException(part.samples, frozenset(part.analytes), part.stated()) for part in file.exceptions
+        ),
         variance=stated.model if (stated := own.variance or file.variance) else "constant",
         confidence=file.confidence,
         added_refers_to=own.added_refers_to or file.added_refers_to,
-        spiked_at=file.spiked_at,
+        concentration_refers_to=own.concentration_refers_to or file.concentration_refers_to,
+        reference=own.reference or file.reference,
+        undetected_native=file.undetected_native,
+        expected_spiked=expect.spiked,
+        expected_levels=expect.levels,
+        spiked_at=own.spiked_at or file.spiked_at or "before preparation",
         repeats=file.repeats,
     )
 

@@ -29,7 +29,7 @@ layouts: [plain.yaml]
 report: additions
 blank: none
 units: {export: mg/L, result: mg/L}
-limits: {recovery: 75 to 125 %}
+limits: {recovery: 75 to 125 %, bracket: off}
 mail: none
 """
 LAYOUT = """\
