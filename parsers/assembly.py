@@ -103,6 +103,7 @@ class _Assembly:
             "measured_at": values.times(), "predilution": values.predilution(),
             **{name: values.texts(name) for name in ("stock", "batch", "analyst", "instrument")},
             **{name: values.texts(name) for name in ("duplicate_of", "comment")},
+            "origin": Texts.absent(len(table.line)),
         }  # fmt: skip
         present = self.present(role)
         if not present.any():

@@ -204,7 +204,8 @@ class Readings:
         int64[n], line of the export from 1 on which the row begins.
     label, sample, analyte, channel, level, stock, batch, analyst, instrument, duplicate_of, comment
         Texts. `label` is as written, trimmed. `sample` groups spiked with unspiked. `analyte` is always there.
-        `duplicate_of` names what the row is a duplicate of.
+        `duplicate_of` names what the row is a duplicate of, `origin` the other export that a row was lent by: rows
+        of the export itself have none.
     role
         int8[n], codes of `Role`.
     signals
@@ -254,6 +255,7 @@ class Readings:
     instrument: Texts
     duplicate_of: Texts
     comment: Texts
+    origin: Texts
     signals: Floats
     signal_sd: Floats
     signal_rsd: Floats

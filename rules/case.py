@@ -127,10 +127,12 @@ class Case:
             if not found.opened[i]:
                 sentences[i] = "no check standard and no calibration was measured before it: the bracket is open"
                 continue
-            since = self.lines_of([int(found.opened_by[i])])
-            sentences[i] = f"no check standard was measured after it, the last one is on line {since[0]}"
-            if self.readings.role[self.solutions.rows[found.opened_by[i]]] == Role.STANDARD:
-                sentences[i] = f"no check standard was measured after it; the calibration ended on line {since[0]}"
+            row = int(self.solutions.rows[found.opened_by[i]])
+            of = f" of {self.readings.origin[row]}" if self.readings.origin[row] else ""
+            place = f"on line {self.readings.line[row]}{of}"
+            sentences[i] = f"no check standard was measured after it, the last one is {place}"
+            if self.readings.role[row] == Role.STANDARD:
+                sentences[i] = f"no check standard was measured after it; the calibration ended {place}"
         return sentences
 
     @cached_property
@@ -195,12 +197,17 @@ class Case:
         return f"{self.sample(series)} {self.analyte(series)}" + (f" {channel}" if channel else "")
 
     def label(self, solution: int) -> str:
-        """Return the label of a solution."""
-        return self.readings.label[int(self.solutions.rows[solution])] or ""
+        """Return the label of a solution; one that another export lends says so."""
+        row = int(self.solutions.rows[solution])
+        label, origin = self.readings.label[row] or "", self.readings.origin[row]
+        return f"{label} of {origin}" if origin else label
 
     def lines_of(self, solutions: list[int]) -> list[int]:
-        """Return the export lines of solutions."""
-        return sorted({int(self.readings.line[row]) for s in solutions for row in self.solutions.rows_of(s)})
+        """Return the lines of solutions in this export; those that another one lends have none here."""
+        own = self.readings.origin.codes < 0
+        return sorted(
+            {int(self.readings.line[row]) for s in solutions for row in self.solutions.rows_of(s) if own[row]}
+        )
 
     def series_lines(self, series: int) -> list[int]:
         """Return the export lines of a series."""
@@ -210,8 +217,10 @@ class Case:
     def _lines_of_series(self) -> list[list[int]]:
         """Export lines of every series: nearly every check rests on all of them."""
         rows, sizes = self._rows_of_members
-        lines = self.readings.line[rows]
         of_series = np.repeat(self.series.segments.owner, sizes)
+        own = self.readings.origin.codes[rows] < 0
+        rows, of_series = rows[own], of_series[own]
+        lines = self.readings.line[rows]
         order = np.lexsort((lines, of_series))
         lines, of_series = lines[order], of_series[order]
         new = np.ones(len(lines), dtype=bool)

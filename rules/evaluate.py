@@ -37,18 +37,22 @@ from rules.case import Case, Reported
 from rules.checks import Check, Outcome
 from rules.outcomes import Outcomes, decide
 from rules.seen import Seen
+from rules.spanning import joined, lend
 from rules.substances import of_analytes
 
 if TYPE_CHECKING:
+    from collections.abc import Mapping
+
     from numpy.typing import NDArray
 
     from parsers.readings import Readings
     from rules.line import Floats, Integers
     from rules.method import Method
     from rules.result import Results
+    from rules.spanning import Key, Loan, Other
 
 
-def evaluate(readings: Readings, method: Method, accepted_at: float) -> Outcomes:
+def evaluate(readings: Readings, method: Method, accepted_at: float, others: tuple[Other, ...] = ()) -> Outcomes:
     """Compute and judge everything that one export holds.
 
     Parameters
@@ -60,20 +64,30 @@ def evaluate(readings: Readings, method: Method, accepted_at: float) -> Outcomes
     accepted_at
         Seconds since 1970-01-01 in the laboratory's local time; judges the dates of stocks where the export has no
         times.
+    others
+        Exports of the same layout that may lend what is missing here, if the method lets series span exports.
     """
     # absurd numbers overflow to infinity, and what is not finite never passes: no warning is needed on top
     with np.errstate(over="ignore"):
         case = compute(readings, method, accepted_at)
+        loans: tuple[Loan, ...] = ()
+        if others:
+            loans, refused = lend(case, accepted_at, others, lambda o: compute(o.readings, method, o.accepted_at))
+            if loans or refused:
+                case = compute(joined(readings, loans, accepted_at), method, accepted_at, refused)
         checks = check(case)
         if unexplained := _without_explanation(case, checks):
             case = replace(case, faults=case.faults | unexplained)
             # only the inputs are judged anew: the other checks say what they found before
             checks = tuple(batch_checks.inputs(case) if one.name == "inputs" else one for one in checks)
-        return decide(case, checks)
+        return decide(case, checks, loans)
 
 
-def compute(readings: Readings, method: Method, accepted_at: float) -> Case:
-    """Compute results, recoveries and faults; judge nothing."""
+def compute(readings: Readings, method: Method, accepted_at: float, refused: Mapping[Key, str] | None = None) -> Case:
+    """Compute results, recoveries and faults; judge nothing.
+
+    `refused` says of analytes why the calibration of another export may not be used.
+    """
     gathered = solutions.gather(readings)
     filled = vessels.fill(readings, gathered, method, accepted_at)
     grouped = series.group(readings, gathered, filled, method)
@@ -88,6 +102,7 @@ def compute(readings: Readings, method: Method, accepted_at: float) -> Case:
     calibrations, read_back_from, unread = instrument.stand_in(
         readings, gathered, filled, calibration.calibrate(readings, gathered, keys, floor, method), keys, method
     )
+    _note_refused(readings, keys, calibrations, refused or {})
     seen_blanks, seen_fits = measured_blanks, fits
     if read_back_from is not gathered:
         gathered = replace(gathered, faults=_merged(gathered.faults, unread))
@@ -152,6 +167,15 @@ def _baseline(seen: Seen, blank: Floats, key: Integers, by_additions: NDArray[np
     at = calibrations.of_key[key]
     read = (at >= 0) & ~by_additions & ~np.append(calibrations.instrument, True)[at]
     return np.where(read, np.append(calibrations.lines.intercept, np.nan)[at], subtracted)
+
+
+def _note_refused(
+    readings: Readings, keys: blanks.Keys, calibrations: calibration.Calibrations, refused: Mapping[Key, str]
+) -> None:
+    for (analyte, channel), sentence in refused.items():
+        of_channel = -1 if channel is None else readings.channel.names.index(channel)
+        codes = (np.array([readings.analyte.names.index(analyte)]), np.array([of_channel]))
+        calibrations.refused.setdefault(int(keys.code(codes[0], codes[1])[0]), []).append(sentence)
 
 
 def _merged(faults: dict[int, list[str]], more: dict[int, list[str]]) -> dict[int, list[str]]:

@@ -154,6 +154,9 @@ class Method:
     expected_spiked, expected_levels
         So many spiked samples for so many samples of a batch; additions of a spiked sample. None where nothing is
         expected.
+    pair_seconds, calibration_seconds
+        How far exports may lie apart that a series and its bracket span, and how old a calibration may be that another
+        export lends; 0 where every export stands alone.
     spiked_at
         ``before preparation`` or ``after preparation``.
     repeats
@@ -182,6 +185,8 @@ class Method:
     undetected_native: Literal["as measured", "as zero"] = "as measured"
     expected_spiked: tuple[int, int] | None = None
     expected_levels: int | None = None
+    pair_seconds: float = 0.0
+    calibration_seconds: float = 0.0
     spiked_at: Literal["before preparation", "after preparation"] = "before preparation"
     repeats: Literal["new attempt", "same series", "refuse"] = "new attempt"
 

@@ -23,6 +23,7 @@ if TYPE_CHECKING:
 
     from rules.case import Case
     from rules.result import Results
+    from rules.spanning import Loan
 
 
 class Verdict(IntEnum):
@@ -54,12 +55,15 @@ class Outcomes:
         int8[m], codes of `Verdict`.
     missing
         Series to what is expected and not there.
+    loans
+        What other exports lend.
     """
 
     case: Case
     checks: tuple[Check, ...]
     verdict: NDArray[np.int8]
     missing: dict[int, str]
+    loans: tuple[Loan, ...] = ()
 
     def verdict_of(self, series: int) -> Verdict:
         """Return the verdict of a series."""
@@ -187,7 +191,7 @@ def result_text(results: Results, series: int, case: Case, confidence: float) ->
     return f"{plus_minus(value, expanded)} {unit} ({level}, k = {k:.2f}, t with {dof})"
 
 
-def decide(case: Case, checks: tuple[Check, ...]) -> Outcomes:
+def decide(case: Case, checks: tuple[Check, ...], loans: tuple[Loan, ...] = ()) -> Outcomes:
     """Add the checks up to a verdict for every series."""
     count = len(case)
     failing = np.zeros(count, dtype=bool)
@@ -205,4 +209,4 @@ def decide(case: Case, checks: tuple[Check, ...]) -> Outcomes:
     verdict[ordinary] = Verdict.NOT_SPIKED
     verdict[lacking] = Verdict.INCOMPLETE
     verdict[failing] = Verdict.FAIL
-    return Outcomes(case, checks, verdict, missing)
+    return Outcomes(case, checks, verdict, missing, loans)

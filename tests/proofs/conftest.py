@@ -30,7 +30,7 @@ if TYPE_CHECKING:
     Floats = NDArray[np.float64]
 
 REFERENCE = Path(__file__).parents[1] / "reference"
-TEXTS = ("level", "stock", "batch", "analyst", "instrument", "duplicate_of", "comment")
+TEXTS = ("level", "stock", "batch", "analyst", "instrument", "duplicate_of", "origin", "comment")
 NUMBERS = (
     "signal_sd",
     "signal_rsd",

@@ -28,6 +28,7 @@ TEXTS = (
     "analyst",
     "instrument",
     "duplicate_of",
+    "origin",
     "comment",
 )
 NUMBERS = (
