@@ -37,11 +37,11 @@ from rules.case import Case, Reported
 from rules.checks import Check, Outcome
 from rules.outcomes import Outcomes, decide
 from rules.seen import Seen
-from rules.spanning import joined, lend
+from rules.spanning import joined, lacks, lend
 from rules.substances import of_analytes
 
 if TYPE_CHECKING:
-    from collections.abc import Mapping
+    from collections.abc import Callable, Iterable, Mapping
 
     from numpy.typing import NDArray
 
@@ -52,7 +52,9 @@ if TYPE_CHECKING:
     from rules.spanning import Key, Loan, Other
 
 
-def evaluate(readings: Readings, method: Method, accepted_at: float, others: tuple[Other, ...] = ()) -> Outcomes:
+def evaluate(
+    readings: Readings, method: Method, accepted_at: float, others: Callable[[], Iterable[Other]] | None = None
+) -> Outcomes:
     """Compute and judge everything that one export holds.
 
     Parameters
@@ -65,22 +67,36 @@ def evaluate(readings: Readings, method: Method, accepted_at: float, others: tup
         Seconds since 1970-01-01 in the laboratory's local time; judges the dates of stocks where the export has no
         times.
     others
-        Exports of the same layout that may lend what is missing here, if the method lets series span exports.
+        Gives the exports of the same layout that may lend something; called only where something is missing that
+        the method lets others lend.
     """
     # absurd numbers overflow to infinity, and what is not finite never passes: no warning is needed on top
     with np.errstate(over="ignore"):
         case = compute(readings, method, accepted_at)
         loans: tuple[Loan, ...] = ()
-        if others:
-            loans, refused = lend(case, accepted_at, others, lambda o: compute(o.readings, method, o.accepted_at))
-            if loans or refused:
-                case = compute(joined(readings, loans, accepted_at), method, accepted_at, refused)
+        if others is not None and lacks(case):
+            case, loans = _with_loans(readings, method, accepted_at, case, tuple(others()))
         checks = check(case)
         if unexplained := _without_explanation(case, checks):
             case = replace(case, faults=case.faults | unexplained)
             # only the inputs are judged anew: the other checks say what they found before
             checks = tuple(batch_checks.inputs(case) if one.name == "inputs" else one for one in checks)
         return decide(case, checks, loans)
+
+
+def _with_loans(
+    readings: Readings, method: Method, accepted_at: float, case: Case, others: tuple[Other, ...]
+) -> tuple[Case, tuple[Loan, ...]]:
+    """Take what others lend, and then what a lent calibration's check standard makes necessary: one that closes."""
+    loans: tuple[Loan, ...] = ()
+    refused: dict[Key, str] = {}
+    for _ in range(2):
+        more, reasons = lend(case, accepted_at, others, lambda o: compute(o.readings, method, o.accepted_at))
+        if not more and not reasons:
+            break
+        loans, refused = (*loans, *more), refused | reasons
+        case = compute(joined(readings, loans, accepted_at), method, accepted_at, refused)
+    return case, loans
 
 
 def compute(readings: Readings, method: Method, accepted_at: float, refused: Mapping[Key, str] | None = None) -> Case:

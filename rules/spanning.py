@@ -78,6 +78,13 @@ class _Loans:
             self.loans.append(Loan(other, rows.astype(np.int64), purpose))
 
 
+def lacks(case: Case) -> bool:
+    """Whether an export lacks something that the laboratory lets others lend."""
+    method = case.method
+    by_pair = bool(method.pair_seconds) and bool(_without_native(case) or _unclosed(case))
+    return by_pair or (bool(method.calibration_seconds) and bool(_uncalibrated(case)))
+
+
 def lend(
     case: Case, accepted_at: float, others: Iterable[Other], compute: Callable[[Other], Case]
 ) -> tuple[tuple[Loan, ...], dict[Key, str]]:
@@ -136,8 +143,8 @@ def joined(readings: Readings, loans: tuple[Loan, ...], accepted_at: float) -> R
 
 
 def _times(readings: Readings, accepted_at: float) -> tuple[float, float]:
-    """First and last time of an export; its acceptance where it holds none."""
-    times = readings.measured_at[np.isfinite(readings.measured_at)]
+    """First and last time of an export's own rows; its acceptance where they hold none."""
+    times = readings.measured_at[np.isfinite(readings.measured_at) & (readings.origin.codes < 0)]
     return (float(times.min()), float(times.max())) if len(times) else (accepted_at, accepted_at)
 
 

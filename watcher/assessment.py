@@ -75,6 +75,7 @@ class Assessment:
     ) -> None:
         self._adopted = adopted
         self._staging = settings.records / STAGING_NAME
+        self._span_seconds = settings.span_seconds
         self._complete_after = timedelta(seconds=settings.complete_after_seconds)
         self._worker = worker
         self._ledger = ledger
@@ -140,9 +141,22 @@ class Assessment:
             "staging": str(self._staging),
             "final": complete,
             "alerted": sorted(self._ledger.alerted_keys(export.name)),
+            "others": [self._other(each) for each in self._ledger.neighbours(export, self._span_seconds)],
+            "lent": export.lent,
+        }
+
+    def _other(self, export: ExportRow) -> dict[str, Any]:
+        return {
+            "copy": str(self._copies.path_of(export.sha256)),
+            "name": export.name,
+            "revision": export.revision,
+            "accepted_at": export.accepted_at,
         }
 
     def _finish(self, export: ExportRow, reply: Reply, *, at_once: bool) -> Assessed:
+        if reply.fate == "unchanged":
+            counts = self._ledger.unchanged(export, wants=reply.wants)
+            return Assessed(self._ledger.export(export.id), counts)
         mails = (self._addressing.address(wanted, at_once=at_once) for wanted in reply.mails)
         fate = Fate(
             state=reply.fate,
@@ -153,9 +167,11 @@ class Assessment:
             series=reply.series,
             counts=reply.counts,
             problem=reply.problem,
+            lent=reply.lent,
+            wants=reply.wants,
         )
         try:
-            self._ledger.finish(export, fate)
+            self._ledger.finish(export, fate, self._span_seconds)
         except TargetTaken as error:
             return self._refuse(export, str(error))
         _log.info("export evaluated", export=export.name, fate=fate.state, counts=fate.counts, problem=fate.problem)

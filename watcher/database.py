@@ -14,7 +14,7 @@ from typing import TYPE_CHECKING, Any
 
 from watcher.errors import WatcherError
 from watcher.kill_points import at
-from watcher.ledger_schema import TABLES, VERSION
+from watcher.ledger_schema import STEPS, TABLES, VERSION
 
 if TYPE_CHECKING:
     from collections.abc import Iterator
@@ -105,6 +105,8 @@ class Database:
         (tables,) = self._connection.execute("SELECT count(*) FROM sqlite_schema").fetchone()
         if version == 0 and tables == 0:
             self._connection.executescript(f"BEGIN IMMEDIATE;{TABLES}PRAGMA user_version = {VERSION};COMMIT;")
+        elif version in STEPS and version < VERSION:
+            self._migrate(version)
         elif version != VERSION:
             raise LedgerUnusable(
                 self._path,
@@ -114,6 +116,16 @@ class Database:
         (verdict,) = self._connection.execute("PRAGMA quick_check(1)").fetchone()
         if verdict != "ok":
             raise self._damaged(verdict)
+
+    def _migrate(self, version: int) -> None:
+        """Bring an older ledger up to this version, all steps or none."""
+        steps = "".join(STEPS[each] for each in range(version, VERSION))
+        try:
+            self._connection.executescript(f"BEGIN IMMEDIATE;{steps}PRAGMA user_version = {VERSION};COMMIT;")
+        except sqlite3.DatabaseError:
+            if self._connection.in_transaction:
+                self._connection.execute("ROLLBACK")
+            raise
 
     def _damaged(self, detail: str) -> LedgerUnusable:
         return LedgerUnusable(

@@ -8,6 +8,7 @@ from __future__ import annotations
 
 import calendar
 import hashlib
+import json
 from dataclasses import dataclass
 from functools import partial
 from pathlib import Path
@@ -16,17 +17,18 @@ from typing import TYPE_CHECKING, Any
 from parsers.errors import ExportRefused
 from parsers.read import claims, is_finished, read
 from rules.evaluate import evaluate
+from rules.spanning import Other, lacks
 from watcher import VERSION, mail, results
 from watcher.clock import moment
 from watcher.disk import Disk
 from watcher.names import target
-from watcher.record import Export, number
+from watcher.record import Export, lent, number
 from watcher.scalars import duration
 from watcher.settings import Settings, SettingsInvalid, Snapshot, compile_snapshot, read_files
 from watcher.worker_loop import serve
 
 if TYPE_CHECKING:
-    from collections.abc import Iterable, Iterator
+    from collections.abc import Callable, Iterable, Iterator, Mapping
 
     from parsers.layout import Layout
     from rules.method import Method
@@ -104,8 +106,13 @@ def choose_layout(settings: Settings, job: Job) -> tuple[Layout, Method]:
     return claiming[0]
 
 
-def evaluate_job(settings: Settings, job: Job, *, final: bool) -> Evaluated:
+def evaluate_job(
+    settings: Settings, job: Job, *, final: bool, others: Callable[[], Iterable[Job]] = lambda: ()
+) -> Evaluated:
     """Read and evaluate one export.
+
+    `others` gives the exports that may lend what is missing in it; those of another layout, and those that cannot be
+    read, lend nothing.
 
     Raises
     ------
@@ -123,7 +130,7 @@ def evaluate_job(settings: Settings, job: Job, *, final: bool) -> Evaluated:
             f"{_no_end(layout)} What is there was evaluated all the same. Look whether the run was cut short, and "
             f"export it whole."
         )
-    outcomes = evaluate(readings, method, _local_seconds(job.accepted_at))
+    outcomes = evaluate(readings, method, _local_seconds(job.accepted_at), lambda: _lenders(settings, layout, others()))
     export = Export(
         name=job.name,
         sha256=job.sha256,
@@ -137,6 +144,16 @@ def evaluate_job(settings: Settings, job: Job, *, final: bool) -> Evaluated:
     return Evaluated(export, layout, outcomes, tuple(problems))
 
 
+def _lenders(settings: Settings, layout: Layout, jobs: Iterable[Job]) -> Iterator[Other]:
+    for job in jobs:
+        try:
+            if choose_layout(settings, job)[0] is layout:
+                readings = read(job.data, layout, job.name)
+                yield Other(job.name, job.sha256, job.revision, _local_seconds(job.accepted_at), readings)
+        except (Unclaimed, ExportRefused):
+            continue
+
+
 def _no_end(layout: Layout) -> str:
     """Say which line is missing."""
     pattern = layout.finished.pattern if layout.finished else ""
@@ -147,7 +164,8 @@ def _no_end(layout: Layout) -> str:
 
 def _local_seconds(accepted_at: str) -> float:
     """Return a moment of the ledger as seconds of local time, the time that exports and bottles are labelled with."""
-    return float(calendar.timegm(moment(accepted_at).astimezone().timetuple()))
+    local = moment(accepted_at).astimezone()
+    return calendar.timegm(local.timetuple()) + local.microsecond / 1e6
 
 
 class Hashed:
@@ -227,10 +245,12 @@ class Worker:
     def _evaluate(self, request: dict[str, Any]) -> dict[str, Any]:
         if self._settings is None:
             raise ValueError("asked to evaluate before settings were adopted")
-        job = Job(request["name"], Path(request["copy"]).read_bytes(), request["revision"], request["accepted_at"])
+        job = _job(request)
         answer = partial(_answer, name=job.name)
         try:
-            evaluated = evaluate_job(self._settings, job, final=request["final"])
+            evaluated = evaluate_job(
+                self._settings, job, final=request["final"], others=lambda: map(_job, request["others"])
+            )
         except Unclaimed:
             return answer("unclaimed", problem=unclaimed_sentence(self._settings))
         except Unfinished as unfinished:
@@ -241,6 +261,10 @@ class Worker:
             letter = mail.refusal(job.name, str(refused), refused.remedy, job.sha256)
             return answer("refused", problem=str(refused), mails=[letter.plain()])
         outcomes = evaluated.outcomes
+        loans = json.dumps(lent(outcomes), sort_keys=True, ensure_ascii=False)
+        wants = lacks(outcomes.case)
+        if request["lent"] == loans:
+            return answer("unchanged", lent=loans, wants=wants)
         letters = mail.mails(
             outcomes, evaluated.export, evaluated.problems, self._settings.file.complete_after, request["alerted"]
         )
@@ -252,7 +276,13 @@ class Worker:
             series=series_index(outcomes),
             verdicts=verdict_counts(outcomes),
             problems=list(evaluated.problems),
+            lent=loans,
+            wants=wants,
         )
+
+
+def _job(plain: Mapping[str, Any]) -> Job:
+    return Job(plain["name"], Path(plain["copy"]).read_bytes(), plain["revision"], plain["accepted_at"])
 
 
 def _answer(  # noqa: PLR0913 - the reply has these parts
@@ -266,6 +296,8 @@ def _answer(  # noqa: PLR0913 - the reply has these parts
     series: list[dict[str, Any]] | None = None,
     verdicts: dict[str, int] | None = None,
     problems: list[str] | None = None,
+    lent: str = "[]",
+    wants: bool = False,
 ) -> dict[str, Any]:
     return {
         "fate": fate,
@@ -277,6 +309,8 @@ def _answer(  # noqa: PLR0913 - the reply has these parts
         "series": series or [],
         "verdicts": verdicts or {},
         "problems": problems or [],
+        "lent": lent,
+        "wants": wants,
     }
 
 

@@ -13,7 +13,7 @@ import json
 from datetime import timedelta
 from typing import TYPE_CHECKING, Self
 
-from watcher.clock import SystemClock, stamp
+from watcher.clock import SystemClock, moment, stamp
 from watcher.database import Database, LedgerUnusable
 from watcher.ledger_entries import append_entry
 from watcher.ledger_rows import AdoptedSettings, ExportRow, RefusedExport, SeriesRow
@@ -181,8 +181,40 @@ class Ledger:
         )
         return [_export(row) for row in rows]
 
-    def finish(self, export: ExportRow, fate: Fate) -> int:
+    def unchanged(self, export: ExportRow, *, wants: bool) -> dict[str, int]:
+        """Record that an export that was opened again borrows what it borrowed before: its results stand.
+
+        Returns
+        -------
+        dict
+            Verdict to number of its series.
+        """
+        with self._database.transaction("unchanged") as txn:
+            txn.execute(
+                "UPDATE exports SET state = 'done', revision = last_revision, wants = ? WHERE id = ?",
+                (wants, export.id),
+            )
+            (counts,) = txn.execute("SELECT counts FROM exports WHERE id = ?", (export.id,)).fetchone()
+            return dict(json.loads(counts))
+
+    def neighbours(self, export: ExportRow, span_seconds: float) -> list[ExportRow]:
+        """Evaluated exports that were taken in near an export, the newest content of each name, oldest first."""
+        if not span_seconds:
+            return []
+        rows = self._database.rows(
+            f"{_EXPORTS} WHERE e.last_revision IS NOT NULL AND e.name <> :name "
+            "AND e.accepted_at BETWEEN :begin AND :end "
+            "AND NOT EXISTS (SELECT 1 FROM exports n WHERE n.name = e.name AND n.id > e.id "
+            "AND n.last_revision IS NOT NULL) ORDER BY e.id",
+            {"name": export.name} | _window(export, span_seconds),
+        )
+        return [_export(row) for row in rows]
+
+    def finish(self, export: ExportRow, fate: Fate, span_seconds: float = 0.0) -> int:
         """Record what became of an export: state, index of series, result files, mails and entry, all or nothing.
+
+        The first evaluation of an export opens those again that were taken in within `span_seconds` of it and borrow
+        from others or lack something: it may be what they waited for.
 
         Undelivered mails about incomplete samples in earlier content of the same name are withdrawn.
 
@@ -199,11 +231,14 @@ class Ledger:
         now = self._clock.now()
         with self._database.transaction("finish") as txn:
             txn.execute(
-                "UPDATE exports SET state = ?, revision = ?, settings_number = ?, layout = ?, finished_at = ?, "
-                "problem = ?, counts = ? WHERE id = ?",
+                "UPDATE exports SET state = ?, revision = ?, last_revision = coalesce(?, last_revision), lent = ?, "
+                "wants = ?, settings_number = ?, layout = ?, finished_at = ?, problem = ?, counts = ? WHERE id = ?",
                 (
                     fate.state,
                     export.revision if fate.state == "done" else None,
+                    export.revision if fate.state == "done" else None,
+                    fate.lent if fate.state == "done" else export.lent,
+                    fate.wants,
                     fate.settings_number,
                     fate.layout,
                     stamp(now),
@@ -214,6 +249,8 @@ class Ledger:
             )
             _index_series(txn, export.id, fate)
             queue_files(txn, export.id, fate.files, now)
+            if fate.state == "done" and export.lent is None and span_seconds:
+                _reopen_borrowers(txn, export, span_seconds)
             withdrawn = withdraw_incomplete(txn, export.name)
             queued = [mail.message_id for mail in fate.mails if queue_mail(txn, export.id, mail, now)]
             return append_entry(
@@ -318,14 +355,29 @@ class Ledger:
 
 
 _EXPORTS = (
-    "SELECT e.id, e.name, e.sha256, e.bytes, e.state, coalesce(e.revision, 1 + (SELECT count(*) FROM exports d "
-    "WHERE d.name = e.name AND d.id < e.id AND d.state = 'done')), e.settings_number, e.attempts, e.accepted_at, "
-    "e.problem FROM exports e"
+    "SELECT e.id, e.name, e.sha256, e.bytes, e.state, coalesce(e.revision, 1 + coalesce((SELECT max(d.last_revision) "
+    "FROM exports d WHERE d.name = e.name), 0)), e.settings_number, e.attempts, e.accepted_at, e.problem, e.lent "
+    "FROM exports e"
 )
 
 
 def _export(row: sqlite3.Row) -> ExportRow:
     return ExportRow(*row)
+
+
+def _window(export: ExportRow, span_seconds: float) -> dict[str, str]:
+    span = timedelta(seconds=span_seconds)
+    accepted = moment(export.accepted_at)
+    return {"begin": stamp(accepted - span), "end": stamp(accepted + span)}
+
+
+def _reopen_borrowers(txn: sqlite3.Connection, export: ExportRow, span_seconds: float) -> None:
+    txn.execute(
+        "UPDATE exports SET state = 'accepted', attempts = 0, revision = NULL WHERE state = 'done' AND id <> :id "
+        "AND name <> :name AND (wants = 1 OR lent <> '[]') AND accepted_at BETWEEN :begin AND :end "
+        "AND NOT EXISTS (SELECT 1 FROM exports n WHERE n.name = exports.name AND n.id > exports.id)",
+        {"id": export.id, "name": export.name} | _window(export, span_seconds),
+    )
 
 
 def _index_series(txn: sqlite3.Connection, export_id: int, fate: Fate) -> None:

@@ -46,6 +46,8 @@ class ExportRow:
         When its copy was durable.
     problem
         Why it is refused, or what is to be known about it.
+    lent
+        What other exports lend it, as JSON text; None where it was not evaluated before.
     """
 
     id: int
@@ -58,6 +60,7 @@ class ExportRow:
     attempts: int
     accepted_at: str
     problem: str | None
+    lent: str | None = None
 
 
 @dataclass(frozen=True, slots=True)
@@ -119,6 +122,8 @@ class Fate:
         The settings it was evaluated under.
     counts
         Verdict to number of series.
+    lent, wants
+        What other exports lend, as JSON text; whether something is missing that another one may lend.
     """
 
     state: str
@@ -129,6 +134,8 @@ class Fate:
     series: tuple[SeriesRow, ...] = ()
     counts: Mapping[str, int] = field(default_factory=dict)
     problem: str | None = None
+    lent: str = "[]"
+    wants: bool = False
 
 
 @dataclass(frozen=True, slots=True)

@@ -1,4 +1,4 @@
-"""The tables of the ledger, version 1.
+"""The tables of the ledger, version 2, and the steps from every earlier version.
 
 Times are texts, ISO 8601 in UTC with microseconds. Nothing is ever deleted from `entries`, `exports`, `mails` or
 `settings`; `alerts` loses a key only together with a mail that was withdrawn before anyone had it. `seal` is kept
@@ -7,7 +7,17 @@ for a chain of hashes over the entries and stays empty for now.
 
 from __future__ import annotations
 
-VERSION = 1
+VERSION = 2
+
+#: Version to the statements that make the next one of it.
+STEPS = {
+    1: """
+ALTER TABLE exports ADD COLUMN last_revision INTEGER;
+ALTER TABLE exports ADD COLUMN lent TEXT;
+ALTER TABLE exports ADD COLUMN wants INTEGER NOT NULL DEFAULT 0;
+UPDATE exports SET last_revision = revision, lent = '[]' WHERE state = 'done';
+""",
+}
 
 TABLES = """
 CREATE TABLE settings (
@@ -35,6 +45,9 @@ CREATE TABLE exports (
     finished_at TEXT,
     problem TEXT,
     counts TEXT NOT NULL DEFAULT '{}',
+    last_revision INTEGER,
+    lent TEXT,
+    wants INTEGER NOT NULL DEFAULT 0,
     UNIQUE (name, sha256)
 ) STRICT;
 CREATE INDEX exports_by_state ON exports (state, settings_number, id);

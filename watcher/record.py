@@ -85,6 +85,7 @@ def record_parts(outcomes: Outcomes, export: Export, problems: tuple[str, ...]) 
     yield "check_standards", _check_standards(outcomes)
     yield "spiked_blanks", _spiked_blanks(case)
     yield "calibrations", _calibrations(case)
+    yield "others", lent(outcomes)
     yield "set_aside", ({"line": a.line, "reason": a.reason, "text": a.text} for a in case.readings.set_aside)
     yield "problems", problems
     yield "seal", None
@@ -182,7 +183,7 @@ def _solutions(case: Case, i: int) -> list[dict[str, Any]]:
                 "readings": values[np.isfinite(values)].tolist(),
                 "position": number(readings.position[row]),
                 "measured_at": local_time(float(readings.measured_at[row])),
-                "export_lines": line_ranges(case.lines_of([solution])),
+                "export_lines": _lines(case, solution),
             }
         )
     return listed
@@ -198,7 +199,7 @@ def _recoveries(case: Case, i: int) -> list[dict[str, Any]]:
             "recovery": number(case.recoveries.each[start + offset]),
             "standard_uncertainty": number(case.recoveries.each_u[start + offset]),
             "expanded_uncertainty": number(case.recoveries.each_expanded[start + offset]),
-            "export_lines": line_ranges(case.lines_of([solution])),
+            "export_lines": _lines(case, solution),
         }
         for offset, solution in enumerate(members)
         if case.series.spiked[start + offset] and number(case.recoveries.each[start + offset]) is not None
@@ -273,8 +274,28 @@ def _place(case: Case, solution: int, key: int) -> dict[str, Any]:
         "analyte": case.readings.analyte.names[analyte],
         "channel": None if channel < 0 else case.readings.channel.names[channel],
         "signal": number(case.solutions.signal[solution]),
-        "export_lines": line_ranges(case.lines_of([solution])),
+        "export_lines": _lines(case, solution),
     }
+
+
+def lent(outcomes: Outcomes) -> list[dict[str, Any]]:
+    """List what other exports lend: which, by hash, and what for."""
+    lenders: dict[tuple[str, str, int], list[str]] = {}
+    for loan in outcomes.loans:
+        other = loan.other
+        lenders.setdefault((other.name, other.sha256, other.revision), []).append(loan.purpose)
+    return [
+        {"name": name, "sha256": sha256, "revision": revision, "lends": sorted(purposes)}
+        for (name, sha256, revision), purposes in sorted(lenders.items())
+    ]
+
+
+def _lines(case: Case, solution: int) -> str:
+    """Write the lines of a solution; those of another export with its name."""
+    rows = case.solutions.rows_of(solution)
+    ranges = line_ranges([int(line) for line in case.readings.line[rows]])
+    origin = case.readings.origin[int(rows[0])]
+    return f"{origin}: {ranges}" if origin else ranges
 
 
 def _pairs(solutions: Iterable[int], keys: Iterable[int]) -> Iterable[tuple[int, int]]:
@@ -341,7 +362,7 @@ def _calibrations(case: Case) -> list[dict[str, Any]]:
                     {"label": case.label(s), "nominal": number(calibrations.nominal[start + offset])}
                     | {
                         "signal": number(case.solutions.signal[s]),
-                        "export_lines": line_ranges(case.lines_of([s])),
+                        "export_lines": _lines(case, s),
                     }
                     for offset, s in enumerate(standards)
                 ],

@@ -17,7 +17,7 @@ from watcher.ledger_rows import SeriesRow, StagedFile
 if TYPE_CHECKING:
     from collections.abc import Mapping
 
-FATES = ("done", "refused", "unclaimed", "waiting", "bug")
+FATES = ("done", "unchanged", "refused", "unclaimed", "waiting", "bug")
 
 
 @dataclass(eq=False)
@@ -51,6 +51,10 @@ class Reply:
     ----------
     fate
         One of `FATES`.
+    lent
+        What other exports lend, as JSON text.
+    wants
+        Whether something is missing that another export may lend.
     error, traceback
         Of a defect, where `fate` is ``bug``.
     """
@@ -62,6 +66,8 @@ class Reply:
     series: tuple[SeriesRow, ...] = ()
     counts: Mapping[str, int] = field(default_factory=dict)
     problem: str | None = None
+    lent: str = "[]"
+    wants: bool = False
     error: str | None = None
     traceback: str | None = None
 
@@ -95,6 +101,8 @@ def read_reply(message: Mapping[str, Any], staging: Path) -> Reply:
         series=tuple(_series(each) for each in _maps(message, "series")),
         counts=_counts(message),
         problem=_get(message, "problem", str, optional=True) or "\n".join(problems) or None,
+        lent=_get(message, "lent", str, default="[]"),
+        wants=_get(message, "wants", bool, default=False),
     )
 
 

@@ -59,6 +59,20 @@ def seconds(text: str) -> float:
     return _finite(found["number"], text) * _SECONDS[unit]
 
 
+def span(text: str) -> float:
+    """Read how far exports may lie apart: ``export`` (each stands alone) or a duration.
+
+    >>> span("export"), span("12 h")
+    (0.0, 43200.0)
+    """
+    if text.strip() == "export":
+        return 0.0
+    try:
+        return seconds(text)
+    except ValueError:
+        raise ValueError(f"expected export, or a duration such as '12 h', got '{text}'") from None
+
+
 def duration(seconds_long: float) -> str:
     """Write a duration as people do.
 

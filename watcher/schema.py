@@ -371,6 +371,8 @@ class SettingsFile(Decisions):
     undetected_native: Literal["as measured", "as zero"] = "as measured"
     exceptions: tuple[ExceptionPart, ...] = ()
     repeats: Literal["new attempt", "same series", "refuse"] = "new attempt"
+    pair_within: Annotated[float, _read(scalars.span)] = 0.0
+    calibration_within: Annotated[float, _read(scalars.span)] = 0.0
     complete_after: Seconds = 7200.0
     watching: WatchingPart = WatchingPart()
     csv: CsvPart = CsvPart()

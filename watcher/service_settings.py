@@ -113,6 +113,8 @@ class ServiceSettings:
         The largest export; the space that must stay free on the disk of the records.
     complete_after_seconds
         After how long without change an export counts as complete.
+    span_seconds
+        How far exports may lie apart that lend each other something; 0 where each stands alone.
     mail
         None: no mail is sent.
     """
@@ -131,6 +133,7 @@ class ServiceSettings:
     size_limit_bytes: int = 200 * MEBIBYTE
     reserve_bytes: int = 200 * MEBIBYTE
     complete_after_seconds: float = 7200.0
+    span_seconds: float = 0.0
     mail: MailSettings | None = None
 
     @classmethod

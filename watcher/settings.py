@@ -131,6 +131,7 @@ class Settings:
             "subfolders": file.watching.subfolders,
             "events": file.watching.events,
             "complete_after_seconds": file.complete_after,
+            "span_seconds": max(file.pair_within, file.calibration_within),
             "mail": mail,
         }
 
@@ -289,6 +290,8 @@ def method_for(file: SettingsFile, own: Decisions) -> Method:
         undetected_native=file.undetected_native,
         expected_spiked=expect.spiked,
         expected_levels=expect.levels,
+        pair_seconds=file.pair_within,
+        calibration_seconds=file.calibration_within,
         spiked_at=own.spiked_at or file.spiked_at or "before preparation",
         repeats=file.repeats,
     )

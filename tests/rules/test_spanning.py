@@ -41,7 +41,7 @@ def judged(make_readings, make_method):
             Other(f"FL-{k}.csv", f"{k:064}", 1, hour * HOUR, readings(hour, some))
             for k, (hour, some) in enumerate(others)
         )
-        return evaluate(readings(0.0, rows), make_method(**spans | method), 0.0, lending)
+        return evaluate(readings(0.0, rows), make_method(**spans | method), 0.0, lambda: lending)
 
     return made
 

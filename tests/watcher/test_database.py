@@ -3,15 +3,13 @@
 from __future__ import annotations
 
 import sqlite3
-from typing import TYPE_CHECKING
+from pathlib import Path
 
 import pytest
 
 from watcher.database import PRAGMAS, Database, LedgerUnusable
 from watcher.ledger import Ledger
-
-if TYPE_CHECKING:
-    from pathlib import Path
+from watcher.ledger_schema import STEPS, VERSION
 
 
 def test_every_pragma_is_in_force(tmp_path: Path) -> None:
@@ -54,7 +52,7 @@ def test_a_file_that_is_no_ledger_is_refused(tmp_path: Path) -> None:
         Database(tmp_path / "ledger.sqlite")
 
 
-@pytest.mark.parametrize("version", [0, 2, 99])
+@pytest.mark.parametrize("version", [0, VERSION + 1, 99])
 def test_a_ledger_of_another_version_is_refused(tmp_path: Path, version: int) -> None:
     """A ledger of a newer program, or tables that are none of ours, are not touched."""
     path = tmp_path / "ledger.sqlite"
@@ -63,8 +61,38 @@ def test_a_ledger_of_another_version_is_refused(tmp_path: Path, version: int) ->
         other.execute(f"PRAGMA user_version = {version}")
     other.close()
 
-    with pytest.raises(LedgerUnusable, match=f"it has version {version}, this program reads version 1"):
+    with pytest.raises(LedgerUnusable, match=f"it has version {version}, this program reads version {VERSION}"):
         Database(path)
+
+
+@pytest.mark.parametrize("version", sorted(STEPS))
+def test_an_older_ledger_becomes_one_of_this_version(tmp_path: Path, version: int) -> None:
+    """A ledger that an earlier release wrote is brought up to date, keeps its rows, and has the tables of a new one."""
+    path = tmp_path / "ledger.sqlite"
+    with sqlite3.connect(path) as old:
+        old.executescript((Path(__file__).parent / "ledgers" / f"version-{version}.sql").read_text("utf-8"))
+        old.execute(
+            "INSERT INTO exports (name, sha256, bytes, revision, state, accepted_at) VALUES "
+            "('FL-1.csv', 'ab', 3, 2, 'done', '2026-03-02T08:00:00.000000Z')"
+        )
+        old.execute(f"PRAGMA user_version = {version}")
+    old.close()
+
+    migrated, new = Database(path), Database(tmp_path / "new.sqlite")
+
+    def columns(database: Database) -> dict[str, set[tuple[object, ...]]]:
+        tables = [row[0] for row in database.rows("SELECT name FROM sqlite_schema WHERE type = 'table'")]
+        wanted = "SELECT name, type, \"notnull\", pk FROM pragma_table_info('{}')"
+        return {table: {tuple(row) for row in database.rows(wanted.format(table))} for table in tables}
+
+    assert columns(migrated) == columns(new)
+    (row,) = migrated.rows("SELECT name, revision, last_revision, lent, wants FROM exports")
+    assert tuple(row) == ("FL-1.csv", 2, 2, "[]", 0)
+    migrated.close()
+    again = Database(path)
+    assert again.rows("PRAGMA user_version")[0][0] == VERSION
+    again.close()
+    new.close()
 
 
 def test_a_ledger_held_by_another_connection_is_refused(tmp_path: Path) -> None:

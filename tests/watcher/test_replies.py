@@ -55,7 +55,7 @@ def test_problems_of_a_done_export_become_its_problem() -> None:
 @pytest.mark.parametrize(
     ("change", "said"),
     [
-        ({"fate": "good"}, "fate: expected one of done, refused, unclaimed, waiting, bug, got 'good'"),
+        ({"fate": "good"}, "fate: expected one of done, unchanged, refused, unclaimed, waiting, bug, got 'good'"),
         ({"fate": None}, "fate: expected a str, got None"),
         ({"files": [FILE | {"staged": "/etc/passwd"}]}, "files.staged: expected a file in /bench/records/outgoing"),
         ({"files": {}}, "files: expected a list"),

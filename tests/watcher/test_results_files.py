@@ -219,11 +219,17 @@ def test_no_text_begins_a_formula(text: str) -> None:
 
 # -- JSON ----------------------------------------------------------------------------------------------------------
 
-RECORD = {"format", "export", "series", "blanks", "check_standards", "calibrations", "set_aside", "problems", "seal"}
+RECORD = {"format", "export", "series", "blanks", "check_standards", "calibrations"} | {
+    "spiked_blanks",
+    "others",
+    "set_aside",
+    "problems",
+    "seal",
+}
 EXPORT = {"name", "sha256", "bytes", "revision", "accepted_at", "layout", "settings", "program"}
 SERIES = {
     "sample", "analyte", "channel", "attempt", "verdict", "result", "additions_result", "calibration_result", "fit",
-    "solutions", "recoveries", "matrix_effect", "budget", "checks", "next_step",
+    "solutions", "recoveries", "matrix_effect", "budget", "checks", "detection", "next_step",
 }  # fmt: skip
 RESULT = {
     "value", "unit", "standard_uncertainty", "expanded_uncertainty", "coverage_factor", "low", "high", "by", "text",

@@ -103,8 +103,8 @@ def test_bad_settings_are_not_done(laboratory: Any, squeezed: Any, command: str)
 
     assert done.returncode == 2
     assert (
-        "config.yaml, line 10, report: expected one of 'additions', 'calibration', got 'additons'. Nothing is "
-        "evaluated with these settings. Did you mean 'additions'?" in squeezed(done.stderr)
+        "config.yaml, line 10, report: expected one of 'additions', 'calibration', 'automatic', got 'additons'. "
+        "Nothing is evaluated with these settings. Did you mean 'additions'?" in squeezed(done.stderr)
     )
     assert not (laboratory.folder / "records").exists()
 
