@@ -57,7 +57,7 @@ def common(series: Series, vessels: Vessels, method: Method) -> tuple[Common, ..
         scaled &= False
     predilution = series.segments.max(vessels.predilution[members])
     tolerances = method.bench.tolerances
-    smallest = _smallest(series, np.where(spiked, vessels.spike_volume[members], np.nan))
+    smallest = _smallest_step(series, vessels)
     solid = np.full(len(series), method.solid)
     aliquot, vessel = (_smallest(series, column[members]) for column in (vessels.aliquot, vessels.made_up_to))
     nothing = np.zeros(len(series))
@@ -91,7 +91,7 @@ def common_of_recovery(series: Series, vessels: Vessels, method: Method) -> Floa
     members = series.members
     by_volume = _any(series, series.spiked & vessels.by_volume[members])
     tolerances = method.bench.tolerances
-    smallest = _smallest(series, np.where(series.spiked, vessels.spike_volume[members], np.nan))
+    smallest = _smallest_step(series, vessels)
     vessel = _smallest(series, vessels.made_up_to[members])
     parts = (
         _stock(series, vessels, method),
@@ -129,6 +129,25 @@ def _smallest(series: Series, values: Floats) -> Floats:
     """Smallest finite member; an absolute tolerance weighs most on it, so this errs on the safe side."""
     lowest = series.segments.min(np.where(np.isfinite(values), values, np.inf))
     return np.where(np.isfinite(lowest), lowest, np.nan)
+
+
+def _smallest_step(series: Series, vessels: Vessels) -> Floats:
+    """Return the smallest volume of standard that was dispensed in each series.
+
+    Where the standard goes on top, volumes may be totals of one vessel to which standard was added again and again: the
+    error of every step counts, so the smallest step between volumes decides. That errs on the safe side for vessels of
+    their own.
+    """
+    members, owner = series.members, series.segments.owner
+    volume = np.where(series.spiked, vessels.spike_volume[members], np.nan)
+    smallest = _smallest(series, volume)
+    order = np.lexsort((volume, owner))
+    steps = np.diff(volume[order])
+    same = (np.diff(owner[order]) == 0) & (steps > 1e-9 * np.nan_to_num(volume[order][1:]))
+    on_top = np.isnan(vessels.made_up_to[members[order][1:]])
+    step = np.full(len(members), np.nan)
+    step[order[1:]] = np.where(same & on_top, steps, np.nan)
+    return np.fmin(smallest, _smallest(series, step))
 
 
 def _stock(series: Series, vessels: Vessels, method: Method) -> Floats:

@@ -14,6 +14,10 @@ if TYPE_CHECKING:
     from rules.case import Case
 
 
+#: How a sentence ends that says what the batch lacks.
+OF_BATCH = "(expect.spiked)"
+
+
 def missing(case: Case) -> dict[int, str]:
     """Return each series that lacks something, with one sentence that says what.
 
@@ -27,6 +31,11 @@ def missing(case: Case) -> dict[int, str]:
     for part in (_calibration(case), _levels(case), _spiked(case), _brackets(case)):
         found = part | found
     return {series: found[series] for series in sorted(found)}
+
+
+def of_batch(case: Case, series: int, sentence: str) -> bool:
+    """Tell whether what a series lacks is lacking to its batch, so that one step mends it for all."""
+    return bool(sentence) and (sentence == case.open_brackets.get(series) or sentence.endswith(OF_BATCH))
 
 
 def _calibration(case: Case) -> dict[int, str]:
@@ -71,7 +80,7 @@ def _spiked(case: Case) -> dict[int, str]:
         if spiked < needed:
             sentence = (
                 f"{spiked} of {samples} samples are spiked with {analyte}, and the laboratory expects {wanted} per "
-                f"{among} (expect.spiked)"
+                f"{among} {OF_BATCH}"
             )
             found |= dict.fromkeys(series.tolist(), sentence)
     return found

@@ -15,7 +15,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from parsers.readings import line_ranges
-from rules import plan
+from rules import expectations, plan
 from rules.checks import Outcome
 from rules.figures import several
 from rules.outcomes import Verdict, measured
@@ -36,7 +36,7 @@ MOST_SUBJECT = 120
 #: Causes that one mail spells out; the rest is counted, and stands in the result files.
 MOST_CAUSES = 12
 #: Checks that judge the batch: their failure is one cause for all series of the analyte.
-BATCH_CHECKS = ("check_standard", "blank")
+BATCH_CHECKS = ("check_standard", "bracket", "blank", "spiked_blank")
 
 
 @dataclass(frozen=True, slots=True)
@@ -179,15 +179,22 @@ def _of_series(
 def _causes(outcomes: Outcomes, series: list[int]) -> list[_Cause]:
     """Group series by cause.
 
-    A failed batch check is one cause for all series of its analyte, and so is one faulty cell that they share; any
-    other cause belongs to its series.
+    A failed batch check is one cause for all series of its analyte, and so are one faulty cell that they share and
+    what the batch lacks; any other cause belongs to its series.
     """
     groups: dict[tuple[Any, ...], list[int]] = defaultdict(list)
     for i in series:
         failed = outcomes.failed_checks(i)
         batch = next((name for name in BATCH_CHECKS if name in failed and "inputs" not in failed), None)
         faults = tuple(outcomes.case.faults.get(i, ()))
-        key = (batch, int(outcomes.case.key[i])) if batch else (None, faults) if faults else (None, i)
+        lacks = outcomes.missing.get(i, "") if failed == ("incomplete",) else ""
+        key: tuple[Any, ...] = (None, i)
+        if batch:
+            key = (batch, int(outcomes.case.key[i]))
+        elif faults:
+            key = (None, faults)
+        elif expectations.of_batch(outcomes.case, i, lacks):
+            key = (None, lacks)
         groups[key].append(i)
     return [_Cause(tuple(group), key[0]) for key, group in groups.items()]
 
@@ -208,11 +215,9 @@ def _do(outcomes: Outcomes, cause: _Cause) -> str:
         samples = dict.fromkeys(outcomes.case.sample(i) for i in cause.series)
         return plan.batch_step(cause.batch, several(list(samples), most=8))
     sentence = plan.next_step(outcomes, cause.first) or "Look at the result files."
-    return (
-        sentence
-        if len(cause.series) == 1
-        else f"{sentence} The same holds for {_all_names(outcomes, cause.series[1:])}."
-    )
+    lacks = outcomes.missing.get(cause.first, "")
+    whole = len(cause.series) == 1 or expectations.of_batch(outcomes.case, cause.first, lacks)
+    return sentence if whole else f"{sentence} The same holds for {_all_names(outcomes, cause.series[1:])}."
 
 
 def _hold(outcomes: Outcomes, series: list[int]) -> list[str]:
@@ -260,8 +265,7 @@ def _people(outcomes: Outcomes) -> list[str]:
 
 
 def _why(outcomes: Outcomes, cause: _Cause) -> str:
-    failing = [check.sentence(cause.first) for check in outcomes.deciding(cause.first, Outcome.FAIL)]
-    reasons = failing or outcomes.reasons(cause.first)
+    reasons = outcomes.failing_sentences(cause.first) or outcomes.reasons(cause.first)
     return f"{_all_names(outcomes, cause.series)}: {'; '.join(reasons)}"
 
 

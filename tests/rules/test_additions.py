@@ -564,3 +564,28 @@ def test_weights_include_the_blank_that_was_measured_with_the_signal(outcomes, m
     again = np.polyfit(a, np.array(signals) - 120, 1, w=np.sqrt(fits.weights))
     assert fits.lines.intercept[0] == pytest.approx(again[1])
     assert fits.weights == pytest.approx(1 / (np.polyval(again, a) + 120), rel=1e-6)
+
+
+def test_errors_of_volumes_added_again_and_again_accumulate(outcomes):
+    """Total volumes 0.4, 0.5, 0.6 mL in one vessel: the tolerance counts against the smallest step, 0.1 mL.
+
+    Made up to a volume each vessel got its own 0.4 to 0.6 mL, and the smallest of those counts.
+    """
+    stocks = (Stock("ZN-500", {"Zn": Measure(500, "mg/L")}),)
+    rows = [
+        {"sample": "BRN-3", "role": "spiked" if v else "unspiked", "signal": s, "spike_volume": v or np.nan}
+        for v, s in zip((0.0, 0.4, 0.5, 0.6), (0.4, 2.31, 2.78, 3.22), strict=True)
+    ]
+    tolerances = {"spike_volume": Measure(0.002, "mL")}
+
+    on_top = outcomes(rows, bench=Bench(aliquot=Measure(10, "mL"), tolerances=tolerances), stocks=stocks)
+    filled = outcomes(
+        rows, bench=Bench(aliquot=Measure(10, "mL"), made_up_to=Measure(50, "mL"), tolerances=tolerances), stocks=stocks
+    )
+
+    def relative(out):
+        share = next(part for part in out.case.additions.budget if part.component == "spike_volume")
+        return share.standard_uncertainty[0] / out.case.additions.value[0]
+
+    assert relative(on_top) == pytest.approx(0.002 / np.sqrt(3) / 0.1)
+    assert relative(filled) == pytest.approx(0.002 / np.sqrt(3) / 0.4)

@@ -178,6 +178,26 @@ def test_an_incomplete_sample_waits() -> None:
     assert sections(one.body)["DO"].startswith("Measure BRN-3 unspiked now")
 
 
+def test_an_open_bracket_is_one_cause_with_one_step() -> None:
+    """Samples that wait for the next check standard are one line, whatever their number and analytes."""
+    rows = [*additions("SED-12"), *additions("SED-13"), *additions("BRN-3")]
+    bracketed = CONFIG.replace(", bracket: off", "")
+    settings = compile_snapshot(Snapshot("/laboratory", File("config.yaml", bracketed), (File("plain.yaml", LAYOUT),)))
+    numbered = [f"{number};{text}" for number, text in enumerate([*batch(), *rows], start=1)]
+    data = "\n".join(["Run;Label;Element;R1;R2;Added;By", *numbered]).encode()
+
+    (one,) = mails(evaluate_job(settings, Job("PL-0901.csv", data, 1, ACCEPTED), final=True))
+
+    told = sections(one.body)
+    assert one.kind == "incomplete"
+    assert told["DO"] == (
+        "Measure a check standard now; until it holds, release nothing that was measured since the last one."
+    )
+    assert told["WHY"] == (
+        "SED-12 Zn, SED-13 Zn, BRN-3 Zn: no check standard was measured after it, the last one is on line 8"
+    )
+
+
 def test_a_second_attempt_is_named() -> None:
     """A sample that fails when measured again is named with its attempt."""
     rows = [*additions("RIV-17"), *additions("RIV-17", recovery=0.6)]

@@ -232,7 +232,8 @@ SERIES = {
     "solutions", "recoveries", "matrix_effect", "budget", "checks", "detection", "next_step",
 }  # fmt: skip
 RESULT = {
-    "value", "unit", "standard_uncertainty", "expanded_uncertainty", "coverage_factor", "low", "high", "by", "text",
+    "value", "unit", "standard_uncertainty", "expanded_uncertainty", "coverage_factor", "low", "high", "effective_dof",
+    "by", "text",
 }  # fmt: skip
 FIT = {"slope", "intercept", "correlation", "residual_sd", "n", "dof", "variance", "g", "u_line"}
 SOLUTION = {"label", "role", "added", "dilution", "signal", "readings", "position", "measured_at", "export_lines"}
@@ -318,3 +319,13 @@ def test_staged_files_are_what_was_announced(settings: Settings, name: str, tmp_
     record = json.loads(Path(files[1]["staged"]).read_bytes())
     assert record["export"]["sha256"] == hashlib.sha256(data).hexdigest()
     assert record["export"]["settings"] == settings.sha256
+
+
+def test_effective_degrees_of_freedom_are_those_of_welch_and_satterthwaite() -> None:
+    """ν = u⁴ / Σ u_i⁴/ν_i over the budget, given for information beside U."""
+    _, found = evaluated(KINDS["pass"])
+    (series, *_) = json_of(found)["series"]
+
+    parts = [share for share in series["budget"] if share["standard_uncertainty"] and share["dof"]]
+    fourth = sum(share["standard_uncertainty"] ** 4 / share["dof"] for share in parts)
+    assert series["result"]["effective_dof"] == pytest.approx(series["result"]["standard_uncertainty"] ** 4 / fourth)
