@@ -31,6 +31,10 @@ if TYPE_CHECKING:
 LEDGER_NAME = "ledger.sqlite"
 #: Evaluations that may end with the worker's death before an export is refused.
 ATTEMPTS_ALLOWED = 3
+#: Exports that are looked through for what one lacks, and opened again for what a new one may lend: the nearest.
+MOST_NEIGHBOURS = 50
+#: How much later than its neighbours an export may be taken in and still lend and borrow.
+ARRIVAL_SLACK = timedelta(days=3)
 
 
 class Ledger:
@@ -198,17 +202,22 @@ class Ledger:
             return dict(json.loads(counts))
 
     def neighbours(self, export: ExportRow, span_seconds: float) -> list[ExportRow]:
-        """Evaluated exports that were taken in near an export, the newest content of each name, oldest first."""
+        """Evaluated exports that were taken in near an export, the newest content of each name, oldest first.
+
+        Days of slack are added: what was measured together may have been taken in apart, after a weekend or a lost
+        share. Of many the nearest are chosen.
+        """
         if not span_seconds:
             return []
         rows = self._database.rows(
             f"{_EXPORTS} WHERE e.last_revision IS NOT NULL AND e.name <> :name "
             "AND e.accepted_at BETWEEN :begin AND :end "
             "AND NOT EXISTS (SELECT 1 FROM exports n WHERE n.name = e.name AND n.id > e.id "
-            "AND n.last_revision IS NOT NULL) ORDER BY e.id",
-            {"name": export.name} | _window(export, span_seconds),
+            "AND n.last_revision IS NOT NULL) "
+            "ORDER BY abs(julianday(e.accepted_at) - julianday(:accepted)), e.id LIMIT :most",
+            {"name": export.name, "most": MOST_NEIGHBOURS} | _window(export, span_seconds),
         )
-        return [_export(row) for row in rows]
+        return sorted((_export(row) for row in rows), key=lambda each: each.id)
 
     def finish(self, export: ExportRow, fate: Fate, span_seconds: float = 0.0) -> int:
         """Record what became of an export: state, index of series, result files, mails and entry, all or nothing.
@@ -250,7 +259,7 @@ class Ledger:
             _index_series(txn, export.id, fate)
             queue_files(txn, export.id, fate.files, now)
             if fate.state == "done" and export.lent is None and span_seconds:
-                _reopen_borrowers(txn, export, span_seconds)
+                _reopen_borrowers(txn, export, fate.layout, span_seconds)
             withdrawn = withdraw_incomplete(txn, export.name)
             queued = [mail.message_id for mail in fate.mails if queue_mail(txn, export.id, mail, now)]
             return append_entry(
@@ -366,17 +375,20 @@ def _export(row: sqlite3.Row) -> ExportRow:
 
 
 def _window(export: ExportRow, span_seconds: float) -> dict[str, str]:
-    span = timedelta(seconds=span_seconds)
+    span = timedelta(seconds=span_seconds) + ARRIVAL_SLACK
     accepted = moment(export.accepted_at)
-    return {"begin": stamp(accepted - span), "end": stamp(accepted + span)}
+    return {"accepted": export.accepted_at, "begin": stamp(accepted - span), "end": stamp(accepted + span)}
 
 
-def _reopen_borrowers(txn: sqlite3.Connection, export: ExportRow, span_seconds: float) -> None:
+def _reopen_borrowers(txn: sqlite3.Connection, export: ExportRow, layout: str | None, span_seconds: float) -> None:
     txn.execute(
-        "UPDATE exports SET state = 'accepted', attempts = 0, revision = NULL WHERE state = 'done' AND id <> :id "
-        "AND name <> :name AND (wants = 1 OR lent <> '[]') AND accepted_at BETWEEN :begin AND :end "
-        "AND NOT EXISTS (SELECT 1 FROM exports n WHERE n.name = exports.name AND n.id > exports.id)",
-        {"id": export.id, "name": export.name} | _window(export, span_seconds),
+        "UPDATE exports SET state = 'accepted', attempts = 0, revision = NULL WHERE id IN (SELECT e.id FROM exports e "
+        "WHERE e.state = 'done' AND e.id <> :id AND e.name <> :name AND e.layout = :layout "
+        "AND (e.wants = 1 OR e.lent <> '[]') AND e.accepted_at BETWEEN :begin AND :end "
+        "AND NOT EXISTS (SELECT 1 FROM exports n WHERE n.name = e.name AND n.id > e.id) "
+        "ORDER BY abs(julianday(e.accepted_at) - julianday(:accepted)), e.id LIMIT :most)",
+        {"id": export.id, "name": export.name, "layout": layout, "most": MOST_NEIGHBOURS}
+        | _window(export, span_seconds),
     )
 
 
