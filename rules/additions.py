@@ -13,7 +13,7 @@ import numpy as np
 
 from rules import line, variance
 from rules.interval import BlankTerm, Covariance, Interval, extrapolation, normal_quantile, student_t
-from rules.result import Results, Share, combine
+from rules.result import Results, Share, combine, with_fixed_factor
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
@@ -242,6 +242,7 @@ def evaluate(
         *(np.full(count, t_common) for _ in common),
     )
     u, expanded, k = combine(shares, quantiles)
+    expanded, k = with_fixed_factor(shares, u, expanded, k, method.fixed_factor)
     usable = fits.spread((lines.slope > 0).astype(float)) == 1
     printable = usable & ~(fits.spread(interval.g) >= 1)
     value = np.where(printable, fits.spread(c) * factor, np.nan)

@@ -143,6 +143,8 @@ class Method:
         How the scatter of a signal goes with it.
     confidence
         Of intervals, as a fraction.
+    fixed_factor
+        k of U where at least ten effective degrees of freedom allow it; None: by Student's t always.
     added_refers_to
         What an added concentration in the export refers to; None where not declared.
     concentration_refers_to
@@ -179,6 +181,7 @@ class Method:
     exceptions: tuple[LimitException, ...] = ()
     variance: VarianceModel = "constant"
     confidence: float = 0.95
+    fixed_factor: float | None = None
     added_refers_to: AddedRefersTo | None = None
     concentration_refers_to: Literal["vessel", "sample"] | None = None
     reference: Reference | None = None

@@ -187,8 +187,9 @@ def result_text(results: Results, series: int, case: Case, confidence: float) ->
     if not results.symmetric(series):
         return f"{span(value, low, high)} {unit} ({level})"
     expanded, k = float(results.expanded_uncertainty[series]), float(results.coverage_factor[series])
-    dof = f"{results.dof[series]:g} dof"
-    return f"{plus_minus(value, expanded)} {unit} ({level}, k = {k:.2f}, t with {dof})"
+    by_t = f"{level}, k = {k:.2f}, t with {results.dof[series]:g} dof"
+    by_factor = f"k = {k:g}, fixed"
+    return f"{plus_minus(value, expanded)} {unit} ({by_factor if k == case.method.fixed_factor else by_t})"
 
 
 def decide(case: Case, checks: tuple[Check, ...], loans: tuple[Loan, ...] = ()) -> Outcomes:

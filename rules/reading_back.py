@@ -13,7 +13,7 @@ import numpy as np
 
 from rules.budget import common_of_read_back
 from rules.interval import Covariance, Interval, normal_quantile, read_back, student_t
-from rules.result import Results, Share, combine
+from rules.result import Results, Share, combine, with_fixed_factor
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
@@ -110,6 +110,7 @@ def evaluate(series: Series, vessels: Vessels, seen: Seen, key: Integers, method
         )
         t_blank = np.nan_to_num(np.sqrt(blanks.variance[key]) / blanks.standard_uncertainty[key])
         u, expanded, k = combine(shares, (t, t_blank, *(np.full(count, t_common) for _ in shares[2:])))
+        expanded, k = with_fixed_factor(shares, u, expanded, k, method.fixed_factor)
     results = Results(
         value=value * shown,
         low=interval.low * scale * shown,

@@ -13,6 +13,10 @@ if TYPE_CHECKING:
     from rules.line import Floats
 
 
+#: Below so many effective degrees of freedom a fixed k = 2 says too much (method, 3).
+LEAST_DOF_OF_FIXED_FACTOR = 10.0
+
+
 @dataclass(frozen=True, slots=True)
 class Share:
     """One component of a budget.
@@ -88,3 +92,29 @@ def combine(shares: tuple[Share, ...], t: tuple[Floats, ...]) -> tuple[Floats, F
             sum(((q * part) ** 2 for q, part in zip(t, uncertainties, strict=True)), np.zeros(len(line)))
         )
         return u, expanded, np.where(u > 0, expanded / u, np.nan)
+
+
+def effective_dof(shares: tuple[Share, ...], u: Floats) -> Floats:
+    """Return Welch and Satterthwaite's degrees of freedom of u: ν = u⁴ / Σ u_i⁴/ν_i.
+
+    JCGM 100:2008, G.4.1. For information, and to allow a fixed coverage factor: U does not rest on them.
+    """
+    with np.errstate(invalid="ignore", divide="ignore"):
+        limited = sum(
+            (
+                np.nan_to_num(share.standard_uncertainty) ** 4 / np.where(share.dof > 0, share.dof, np.inf)
+                for share in shares
+            ),
+            np.zeros(len(u)),
+        )
+        return np.where(np.isfinite(u) & (u > 0), u**4 / limited, np.nan)
+
+
+def with_fixed_factor(
+    shares: tuple[Share, ...], u: Floats, expanded: Floats, k: Floats, fixed: float | None
+) -> tuple[Floats, Floats]:
+    """Return U and k with the laboratory's fixed factor where ten effective degrees of freedom allow it."""
+    if fixed is None:
+        return expanded, k
+    allowed = effective_dof(shares, u) >= LEAST_DOF_OF_FIXED_FACTOR
+    return np.where(allowed, fixed * u, expanded), np.where(allowed, fixed, k)

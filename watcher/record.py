@@ -18,6 +18,7 @@ from rules import plan
 from rules.case import Reported
 from rules.checks import Check, Outcome
 from rules.outcomes import result_text
+from rules.result import effective_dof
 
 if TYPE_CHECKING:
     from collections.abc import Iterable, Iterator
@@ -143,20 +144,10 @@ def _result(case: Case, results: Results, i: int, by: str) -> dict[str, Any]:
         "coverage_factor": numbers["coverage_factor"],
         "low": numbers["low"],
         "high": numbers["high"],
-        "effective_dof": None if faulty else _effective_dof(results, i),
+        "effective_dof": None if faulty else number(effective_dof(results.budget, results.standard_uncertainty)[i]),
         "by": by,
         "text": result_text(results, i, case, case.method.confidence),
     }
-
-
-def _effective_dof(results: Results, i: int) -> float | None:
-    """Welch and Satterthwaite's degrees of freedom of u, for information: U does not rest on them (method, 3)."""
-    u = number(results.standard_uncertainty[i])
-    if not u:
-        return None
-    parts = [(number(share.standard_uncertainty[i]) or 0.0, float(share.dof[i])) for share in results.budget]
-    fourth = sum(part**4 / dof for part, dof in parts if dof > 0)
-    return number(u**4 / fourth) if fourth > 0 else None
 
 
 def _fit(case: Case, i: int) -> dict[str, Any] | None:

@@ -216,6 +216,20 @@ def molar_mass(text: str) -> float:
     return _positive(stated, text).value
 
 
+def coverage(text: str) -> float | None:
+    """Read how U is expanded: ``t`` (Student's, always), or a fixed factor such as ``k = 2``.
+
+    >>> coverage("t"), coverage("k = 2")
+    (None, 2.0)
+    """
+    if text.strip() == "t":
+        return None
+    found = re.fullmatch(rf"k\s*=\s*({_NUMBER})", text.strip())
+    if found is None or not 1 <= float(found[1]) <= 5:
+        raise ValueError(f"expected t, or a fixed factor such as 'k = 2', got '{text}'")
+    return float(found[1])
+
+
 def share(text: str) -> tuple[int, int]:
     """Read how many of so many samples.
 

@@ -368,6 +368,7 @@ class SettingsFile(Decisions):
     mail: Mailing
     analytes: dict[str, AnalytePart] = {}
     confidence: Annotated[float, _read(scalars.percentage)] = Field(default=0.95, gt=0.5, lt=1)
+    coverage: Annotated[float | None, _read(scalars.coverage)] = None
     undetected_native: Literal["as measured", "as zero"] = "as measured"
     exceptions: tuple[ExceptionPart, ...] = ()
     repeats: Literal["new attempt", "same series", "refuse"] = "new attempt"

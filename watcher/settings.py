@@ -284,6 +284,7 @@ def method_for(file: SettingsFile, own: Decisions) -> Method:
         ),
         variance=stated.model if (stated := own.variance or file.variance) else "constant",
         confidence=file.confidence,
+        fixed_factor=file.coverage,
         added_refers_to=own.added_refers_to or file.added_refers_to,
         concentration_refers_to=own.concentration_refers_to or file.concentration_refers_to,
         reference=own.reference or file.reference,

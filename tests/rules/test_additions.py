@@ -589,3 +589,20 @@ def test_errors_of_volumes_added_again_and_again_accumulate(outcomes):
 
     assert relative(on_top) == pytest.approx(0.002 / np.sqrt(3) / 0.1)
     assert relative(filled) == pytest.approx(0.002 / np.sqrt(3) / 0.4)
+
+
+@pytest.mark.parametrize(("n", "fixed"), [(6, False), (13, True)])
+def test_a_fixed_factor_needs_ten_degrees_of_freedom(outcomes, make_additions, n, fixed):
+    """With k = 2 fixed U is 2 u from ten effective degrees of freedom on, else Student's t as ever."""
+    added = np.linspace(0, 6, n)
+    signals = 0.2 + 0.1 * added + 0.003 * (-1.0) ** np.arange(n)
+    rows = make_additions(signals.tolist(), added.tolist())
+
+    by_t, by_k = outcomes(rows), outcomes(rows, fixed_factor=2.0)
+
+    u = by_k.reported(0).standard_uncertainty[0]
+    assert bool(np.isclose(by_k.reported(0).expanded_uncertainty[0], 2 * u)) is fixed
+    assert by_k.text(0).endswith("(k = 2, fixed)") is fixed
+    assert by_k.reported(0).low[0] == by_t.reported(0).low[0]
+    if not fixed:
+        assert by_k.text(0) == by_t.text(0)
