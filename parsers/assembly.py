@@ -6,24 +6,25 @@ splits lines or converts cells.
 
 from __future__ import annotations
 
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
-from parsers import fields
+from parsers import fates, fields
 from parsers.cells import Cell, Kind
 from parsers.judgement import find_faults, label_uses
 from parsers.labels import understand
 from parsers.readings import Problem, Quantities, Readings, Role, SetAside, Texts, line_ranges
 from parsers.roles import find_roles, is_sample
-from parsers.spelling import folded, looked_up, renamed, shown
-from parsers.values import Values
+from parsers.spelling import folded, renamed, shown
+from parsers.table import RowTable
+from parsers.values import Odd, Values, filled
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
 
-    from parsers.columns import Plan
+    from parsers.columns import Entry, Plan
     from parsers.heading import Heading
     from parsers.layout import Layout
     from parsers.readings import Floats
@@ -32,6 +33,8 @@ if TYPE_CHECKING:
 #: Most labels that one error names.
 MOST_NAMED = 100
 EMPTY_ROW = "no cell is filled"
+#: Words that say whether a row is excluded.
+_YES_NO = dict.fromkeys(("yes", "true", "1"), True) | dict.fromkeys(("no", "false", "0"), False)
 NO_SAMPLE = "row without sample ID"
 NO_ANALYTE = "row without analyte"
 UNMATCHED = "label matches no rule"
@@ -45,32 +48,36 @@ def assemble(frame: Frame, layout: Layout, plan: Plan, table: Table, heading: di
     ExportRefused
         If labels match no rule and the layout does not set them aside, or no reading remains.
     """
-    label = _label(layout, plan, table, heading)
-    understood = understand(folded(label.names), layout.labels)
-    values = Values(frame, layout, plan, table, heading, label, understood)
+    nobody = Texts.absent(len(table.line))
+    values = Values(frame, layout, plan, table, heading, nobody, understand((), ()))
+    values.label = _label(values)
+    values.understood = understand(folded(values.label.names), layout.labels)
     return _Assembly(values, keep=np.ones(len(table.line), dtype=bool)).readings()
 
 
-def _label(layout: Layout, plan: Plan, table: Table, heading: dict[str, Heading]) -> Texts:
-    """Return the label of each row as written; the sample ID where no column is the label or a cell of it is empty."""
-    mapped = plan.mapped.get("label")
-    sample = plan.mapped.get("sample")
-    if mapped is None and sample is None:
-        return Texts.constant(heading["sample"].value, len(table.line))
-    if mapped is None or (sample is not None and not layout.labels):
-        named = table.texts(sample.columns[0]) if sample is not None else Texts.absent(len(table.line))
-        return named if mapped is None else filled(table.texts(mapped.columns[0]), named)
-    return table.texts(mapped.columns[0])
+def _label(values: Values) -> Texts:
+    """Return the label of each row as written; the sample ID where nothing is the label or a cell of it is empty."""
+    label = _as_written(values, "label")
+    if label is not None:
+        values.label = label
+        label = values.meant_label()
+        if values.layout.labels or not values.has_source("sample"):
+            return label
+    sample = _as_written(values, "sample")
+    if label is None:
+        return sample if sample is not None else Texts.absent(values.rows)
+    return label if sample is None else filled(label, sample)
 
 
-def filled(texts: Texts, other: Texts) -> Texts:
-    """Return a column with its gaps filled from another one."""
-    gaps = texts.codes < 0
-    if not gaps.any():
-        return texts
-    together = Texts.of([*texts.names, *other.names])
-    codes = np.where(gaps & (other.codes >= 0), other.codes + np.int32(len(texts.names)), texts.codes)
-    return looked_up(together, Texts(codes, (*texts.names, *other.names)))
+def _as_written(values: Values, name: str) -> Texts | None:
+    """Return a text field with the blanks inside it as they are, where it comes from one column."""
+    source = getattr(values.layout.columns, name)
+    mapped = values.plan.mapped.get(name)
+    if source is not None and source.plain and mapped is not None:
+        return values.table.texts(mapped.columns[0])
+    if source is None and name not in values.heading and name not in values.plan.captured:
+        return None
+    return values.texts(name)
 
 
 @dataclass(slots=True)
@@ -82,6 +89,7 @@ class _Assembly:
 
     def readings(self) -> Readings:
         values, table = self.values, self.values.table
+        self.excluded()
         self.leave_out(values.label.codes < 0, NO_SAMPLE)
         self.unmatched()
         added, nominal = values.quantities("added"), values.quantities("nominal")
@@ -90,19 +98,19 @@ class _Assembly:
         sample = self.sample(role)
         analyte = self.analyte()
         signals = self.signals()
-        statistics = {name: self.statistic(name) for name in fields.STATISTICS}
+        statistics: dict[str, Any] = {name: self.statistic(name) for name in fields.STATISTICS}
+        statistics |= {name: self.quantity(name) for name in fields.OF_READINGS}
         per_row: dict[str, Any] = {
             "line": table.line, "label": values.label, "sample": sample, "role": role, "level": level,
             "added": added, "nominal": nominal, "spike_volume": spike_volume,
             "aliquot": values.quantities("aliquot"), "made_up_to": values.quantities("made_up_to"),
             "mass": values.quantities("mass"), "digest_volume": values.quantities("digest_volume"),
             "replicate": values.numbers("replicate"), "position": values.numbers("position"),
-            "reference_signal": values.numbers("reference_signal"),
-            "concentration": values.quantities("concentration"),
-            "reported_result": values.quantities("reported_result"),
             "measured_at": values.times(), "predilution": values.predilution(),
-            **{name: values.texts(name) for name in ("stock", "batch", "analyst", "instrument")},
-            **{name: values.texts(name) for name in ("duplicate_of", "comment")},
+            **{
+                name: values.texts(name)
+                for name in ("stock", "batch", "analyst", "instrument", "comment", "duplicate_of")
+            },
             "origin": Texts.absent(len(table.line)),
         }  # fmt: skip
         present = self.present(role)
@@ -115,11 +123,13 @@ class _Assembly:
         flat = row * present.shape[1] + entry
         columns |= {name: column if everything else _take(column, flat) for name, column in per_reading.items()}
         columns["signals"] = signals if everything else signals[flat]
+        if isinstance(table, RowTable) and table.across:
+            columns["line"] = np.array(list(map(self.line_of_signal, row.tolist(), entry.tolist())), dtype=np.int64)
         return Readings(
             **columns,
             faults=find_faults(values, present, role),
             set_aside=tuple(sorted([*table.set_aside, *self.set_aside], key=lambda aside: aside.line)),
-            problems=tuple(sorted(self.problems, key=lambda problem: problem.line)),
+            problems=tuple(sorted([*self.problems, *values.disagreements.values()], key=lambda problem: problem.line)),
             labels=label_uses(values, role, sample),
             columns=values.plan.uses,
             heading={name: found.value for name, found in values.heading.items()},
@@ -170,8 +180,7 @@ class _Assembly:
     def sample(self, role: NDArray[np.int8]) -> Texts:
         """Return what groups spiked with unspiked; standards, blanks and checks may go by their label."""
         values = self.values
-        by_rule = "sample" in values.understood.said
-        if values.layout.columns.sample is None and "sample" not in values.heading and not by_rule:
+        if not values.has_source("sample"):
             return renamed(values.label, folded(values.label.names))
         sample = values.texts("sample")
         gaps = sample.codes < 0
@@ -200,16 +209,63 @@ class _Assembly:
         """Return the signals of each reading, before rows are left out."""
         values, plan = self.values, self.values.plan
         if plan.entries:
-            columns = [
-                values.numbers("signal", entry=number, column=entry.columns["signal"])
-                for number, entry in enumerate(plan.entries)
-            ]
-            return np.stack(columns, axis=1).reshape(-1, 1)
-        mapped = plan.mapped["signal"]
+            of_entries = [self.signals_of(number, entry.columns["signal"]) for number, entry in enumerate(plan.entries)]
+            width = max(signals.shape[1] for signals in of_entries)
+            cube = np.full((values.rows, len(of_entries), width), np.nan)
+            for number, signals in enumerate(of_entries):
+                cube[:, number, : signals.shape[1]] = signals
+            return cube.reshape(-1, width)
+        mapped = plan.mapped.get("signal")
+        source = values.layout.columns.signal
+        if mapped is None or source is None or not source.plain:
+            return values.numbers("signal").reshape(-1, 1)
         signals = np.stack([values.numbers("signal", column=column) for column in mapped.columns], axis=1)
         if mapped.source.optional:
             self.signalless(np.all(np.isnan(signals), axis=1))
         return signals
+
+    def signals_of(self, entry: int, columns: tuple[int, ...]) -> Floats:
+        """Return the replicate readings of one analyte; where all of them are empty, the reading is missing."""
+        values = self.values
+        if len(columns) == 1:
+            return values.numbers("signal", entry=entry, column=columns[0]).reshape(-1, 1)
+        before = len(values.odd)
+        signals = np.stack([values.numbers("signal", entry=entry, column=column) for column in columns], axis=1)
+        noted, values.odd[before:] = values.odd[before:], []
+        odd: set[int] = set()
+        for one in noted:
+            cells = {row: cell for row, cell in one.cells.items() if cell.kind is not Kind.MISSING}
+            odd |= cells.keys()
+            if cells:
+                values.odd.append(replace(one, cells=cells))
+        empty = set(np.flatnonzero(np.all(np.isnan(signals), axis=1)).tolist()) - odd
+        if empty:
+            cells = dict.fromkeys(sorted(empty), values.layout.grammar.cell(""))
+            header = values.table.headers[columns[0]]
+            values.odd.append(Odd("signal", header, entry, cells, optional=False, in_table=True, column=columns[0]))
+        return signals
+
+    def line_of_signal(self, row: int, entry: int) -> int:
+        """Return the line on which the signal of a reading stands."""
+        plan = self.values.plan
+        if plan.entries:
+            return self.values.table.line_of(row, plan.entries[entry].columns["signal"][0])
+        mapped = plan.mapped.get("signal")
+        return self.values.table.line_of(row, mapped.columns[0] if mapped else None)
+
+    def excluded(self) -> None:
+        """Set rows aside that the export itself excludes; a word that says neither yes nor no is a fault."""
+        said = self.values.texts("excluded")
+        words = [_YES_NO.get(name.casefold()) for name in said.names]
+        self.leave_out(np.array([*(word is True for word in words), False])[said.codes], fates.EXCLUDED)
+        strange = np.array([*(word is None for word in words), False])[said.codes]
+        if strange.any():
+            todo = "Explain the word in the layout: columns.excluded.map"
+            cells = {
+                row: Cell(Kind.UNREADABLE, np.nan, said[row] or "", f"expected yes or no, got {said[row]!r}", todo)
+                for row in np.flatnonzero(strange).tolist()
+            }
+            self.values.doubt("excluded", self.values.header_of("excluded"), cells)
 
     def signalless(self, rows: NDArray[np.bool_]) -> None:
         """Note rows whose optional replicates are all empty."""
@@ -225,12 +281,32 @@ class _Assembly:
         if not any(name in entry.columns for entry in entries):
             return np.repeat(values.numbers(name), max(len(entries), 1))
         columns = [
-            values.numbers(name, entry=number, column=entry.columns[name])
+            values.numbers(name, entry=number, column=entry.columns[name][0])
             if name in entry.columns
             else np.full(values.rows, np.nan)
             for number, entry in enumerate(entries)
         ]
         return np.stack(columns, axis=1).ravel()
+
+    def quantity(self, name: str) -> Quantities:
+        """Return a quantity of each reading, before rows are left out."""
+        values, entries = self.values, self.values.plan.entries
+        if not any(name in entry.columns for entry in entries):
+            everywhere = values.quantities(name)
+            return everywhere if len(entries) <= 1 else everywhere.take(np.repeat(np.arange(values.rows), len(entries)))
+        found = [
+            values.quantity_column(name, entry.columns[name][0], None, self.unit_of(entry, name), number)
+            if name in entry.columns
+            else Quantities.absent(values.rows)
+            for number, entry in enumerate(entries)
+        ]
+        units = [one.units[row] for row in range(values.rows) for one in found]
+        return Quantities(np.stack([one.values for one in found], axis=1).ravel(), Texts.of(units))
+
+    def unit_of(self, entry: Entry, name: str) -> Texts:
+        """Return the unit that the header of a wide table says."""
+        unit = entry.units.get(name)
+        return Texts.constant(unit, self.values.rows) if unit else Texts.absent(self.values.rows)
 
     def present(self, role: NDArray[np.int8]) -> NDArray[np.bool_]:
         """Return bool[rows, entries]: which readings there are.

@@ -67,6 +67,7 @@ def _qualifies(frame: Frame, layout: Layout) -> bool:
         and not frame.lines.may_be_long()
         and separator.isascii()
         and separator not in " 0123456789+-eE" + grammar.decimal
+        and not grammar.others
         and all(_spares_numbers(pattern) for pattern in (grammar.below, grammar.above, grammar.flags))
     )
 
@@ -103,6 +104,10 @@ class BlockTable:
         """Return a column as numbers."""
         values = self.columns[column]
         return values if isinstance(values, Numbers) else grammar.column(values)
+
+    def line_of(self, row: int, column: int | None) -> int:  # noqa: ARG002 (a row is one line)
+        """Return the line on which a cell of a row stands."""
+        return int(self.line[row])
 
     def read(self, separator: str, plan: Plan, grammar: Grammar) -> None:
         """Convert the columns of a plan, all at once where each number column holds plain numbers only.
@@ -156,6 +161,8 @@ class BlockTable:
             *grammar.missing,
             *(word for some in (grammar.below, grammar.above) if isinstance(some, tuple) for word in some),
         )
+        if grammar.zero != "number":
+            words = (*words, "0")
         written = [value for word in words if (value := grammar.value(word)) is not None]
         doubtful = doubtful | ~np.isfinite(values)
         if written:

@@ -92,6 +92,12 @@ class Grammar:
         A pattern searched in the cell, or words that fill it.
     flags
         A pattern whose matches are taken out before the number is read.
+    glued
+        Words that may stand behind a number.
+    zero
+        What a bare zero means: a number, ``below`` or ``missing``.
+    others
+        Other grammars for the cells that a pattern finds, tried in order.
     number, plain
         The form of a number, made of the marks; and the usual one, in which nothing is left to explain.
     """
@@ -102,6 +108,9 @@ class Grammar:
     below: PatternOrWords = ()
     above: PatternOrWords = ()
     flags: re.Pattern[str] | None = None
+    glued: frozenset[str] = frozenset()
+    zero: str = "number"
+    others: tuple[tuple[re.Pattern[str], Grammar], ...] = ()
     number: re.Pattern[str] = field(init=False)
     plain: re.Pattern[str] = field(init=False)
 
@@ -137,13 +146,27 @@ class Grammar:
             known = self._explained(folded)
         if known is not None:
             return known
-        value = self.value(folded)
+        value = self._written(folded)
         if value is None:
             return Cell(Kind.UNREADABLE, math.nan, text.strip(), *self._complaint(folded))
+        if value == 0 and self.zero != "number":
+            kind = Kind.BELOW if self.zero == "below" else Kind.MISSING
+            expected = f"expected a number, got {shown(folded)}, which means {self.zero} in this export"
+            return Cell(kind, math.nan, text.strip(), expected, "Measure again inside the range")
         if math.isinf(value):
             expected = f"expected a number that a computer can hold, got {shown(folded)}"
             return Cell(Kind.UNREADABLE, math.nan, text.strip(), expected, "Correct the export")
         return Cell(Kind.NUMBER, value, folded)
+
+    def _written(self, text: str) -> float | None:
+        """Return the number of a cell: under other marks where a pattern says so, and without the words glued to it."""
+        grammar = next((other for pattern, other in self.others if pattern.search(text)), self)
+        value = grammar.value(text)
+        if value is None and self.glued:
+            match = grammar.number.match(text)
+            if match is not None and text[match.end() :].strip() in self.glued:
+                value = grammar.value(match.group())
+        return value
 
     def value(self, text: str) -> float | None:
         """Return the number that the whole text writes, infinity where it is too large, None where it is none."""
@@ -161,6 +184,8 @@ class Grammar:
         """Return a quick way to the number of a cell that needs no explanation; it returns None for any other cell."""
         if self.flags is not None or not isinstance(self.below, tuple) or not isinstance(self.above, tuple):
             return None  # a pattern may explain any cell
+        if self.zero != "number" or self.others:
+            return None
         words = {*self.missing, *self.below, *self.above}
         usual, mark = self.plain.fullmatch, self.decimal
 
@@ -214,8 +239,11 @@ class Grammar:
                 "Complete the export",
             )
         for kind, words, where in ((Kind.BELOW, self.below, "below"), (Kind.ABOVE, self.above, "above")):
-            if text in words if isinstance(words, tuple) else words.search(text):
-                expected = f"expected a number, got {shown(text)}, which means {where} the instrument's range"
+            match = None if isinstance(words, tuple) else words.search(text)
+            if match or (isinstance(words, tuple) and text in words):
+                limit = match["limit"] if match and "limit" in match.re.groupindex else None
+                beyond = f"{where} {limit}" if limit else f"{where} the instrument's range"
+                expected = f"expected a number, got {shown(text)}, which means {beyond}"
                 return Cell(kind, math.nan, text, expected, "Measure again inside the range")
         return None
 

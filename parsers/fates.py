@@ -31,6 +31,10 @@ FINISHED = "end mark of the export"
 UNTIL = "end of the table"
 AFTER = "after the table"
 CONTINUED = "continues the line above"
+OUTSIDE = "outside the blocks"
+HEADING = "heading of a block"
+ACROSS = "read across"
+EXCLUDED = "excluded by the export"
 
 
 def judge(frame: Frame, layout: Layout) -> Callable[[int, str], str | None]:
@@ -62,17 +66,25 @@ def header_again(frame: Frame, at: int, line: str, layout: Layout) -> bool:
     ExportRefused
         If it is a header by its pattern, but another one.
     """
-    if line == frame.header:
+    if frame.header and (line == frame.header or line in frame.again):
         return True
-    if layout.header is None or not layout.header.search(line):
+    pattern = layout.header_pattern
+    if not frame.header or pattern is None or not pattern.search(line):
         return False
     sentence = f"expected rows under the header of line {frame.header_at + 1}, got another header: {shown(line)}"
-    raise frame.lines.refusal(at, sentence, "Export each batch on its own, or set until in the layout")
+    raise frame.lines.refusal(
+        at, sentence, "Begin a block at each header (blocks in the layout), set until, or export each batch on its own"
+    )
 
 
 def outside(lines: Sequence[str], at: int, reason: str) -> list[SetAside]:
     """Return the fate of lines before or behind the table, the first of which has the index `at`."""
-    return [SetAside(number, reason if text.strip() else BLANK, text) for number, text in enumerate(lines, at + 1)]
+    return noted(enumerate(lines, at), reason)
+
+
+def noted(lines: Iterable[tuple[int, str]], reason: str) -> list[SetAside]:
+    """Return the fate of lines, given by index and text."""
+    return [SetAside(at + 1, reason if text.strip() else BLANK, text) for at, text in lines]
 
 
 @dataclass(slots=True)
@@ -143,8 +155,9 @@ class Fates:
 
     def _perhaps_headers(self, layout: Layout) -> Iterable[Line]:
         frame, lines = self.frame, self.frame.lines
-        if layout.header is not None:  # the header itself matches its pattern, so a repetition does
-            return lines.matching(layout.header, frame.first, frame.offset)
+        pattern = layout.header_pattern
+        if pattern is not None:  # the header itself matches its pattern, so a repetition does
+            return lines.matching(pattern, frame.first, frame.offset)
         again = lines.text.find(frame.header, frame.offset, self.end) >= 0
         return lines.all_from(frame.first, frame.offset) if again else ()
 

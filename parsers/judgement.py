@@ -43,7 +43,7 @@ def find_faults(values: Values, present: NDArray[np.bool_], role: NDArray[np.int
             if not _fails(odd, cell, on_sample=bool(samples[row])):
                 continue
             sentence = f"{cell.expected}. {_FOLLOWS} {cell.remedy}."
-            line = int(values.table.line[row])
+            line = values.table.line_of(row, odd.column)
             for entry in range(present.shape[1]) if odd.entry is None else (odd.entry,):
                 if present[row, entry]:
                     at = int(number[row, entry])
@@ -53,10 +53,10 @@ def find_faults(values: Values, present: NDArray[np.bool_], role: NDArray[np.int
 
 def _fails(odd: Odd, cell: Cell, *, on_sample: bool) -> bool:
     """Tell whether a cell that gave no value spoils its series."""
-    if cell.kind is Kind.UNREADABLE:
-        return True
+    if odd.field in fields.BESIDE:
+        return False  # a word where a statistic or a reported number belongs does not spoil the reading
     if cell.kind is not Kind.MISSING:
-        return odd.field not in fields.STATISTICS
+        return True
     if odd.optional or not odd.in_table:
         return False
     return odd.field == "signal" or (odd.field in fields.NEEDED_ON_SAMPLES and on_sample)

@@ -5,6 +5,8 @@
     resolve       header + layout → columns of fields   parsers.columns
     assemble      rows → readings                       parsers.assembly
 
+An export that is more than one plain table is first put together as one (`parsers.shaping`).
+
 What breaks the structure raises `ExportRefused`; a cell that cannot be used is a fault of its row, and the rest is
 read. Nothing here opens a file.
 """
@@ -12,6 +14,7 @@ read. Nothing here opens a file.
 from __future__ import annotations
 
 import re
+from dataclasses import replace
 from fnmatch import fnmatchcase
 from typing import TYPE_CHECKING
 
@@ -19,13 +22,17 @@ from parsers.assembly import assemble
 from parsers.block import read_block
 from parsers.columns import resolve
 from parsers.errors import ExportRefused, ParsersError
-from parsers.heading import read_heading
+from parsers.heading import read_heading, read_name
+from parsers.joining import joined
+from parsers.shaping import shape
 from parsers.table import find_table, read_rows
 from parsers.text import decode
 
 if TYPE_CHECKING:
     from parsers.layout import Layout
     from parsers.readings import Readings
+    from parsers.table import Frame, Table
+    from parsers.text import Lines
 
 #: Lines in which the text of a claim is looked for before the whole export is split.
 _LIKELY_HEAD = 200
@@ -95,10 +102,35 @@ def read(data: bytes, layout: Layout, name: str) -> Readings:
         If its structure is broken: encoding, header, number of fields, quotes, labels without rule, no rows.
     """
     lines = decode(data, layout.encodings, name)
+    return _read_plain(lines, layout) if layout.plain else _read_shaped(lines, layout)
+
+
+def _read_plain(lines: Lines, layout: Layout) -> Readings:
     frame = find_table(lines, layout)
-    heading = read_heading(frame, layout)
-    plan = resolve(frame, layout)
-    table = read_block(frame, layout, plan) or read_rows(frame, layout)
+    above = lines.head(frame.header_at)
+    heading = read_name(lines, layout)
+    heading |= read_heading(lines, layout.heading, enumerate(above), "above the table", None)
+    singles = layout.singles()
+    plans = [resolve(frame, single) for single in singles]
+    block = read_block(frame, layout, plans[0]) if len(plans) == 1 else None
+    table = block or read_rows(frame, layout)
+    _refuse_empty(lines, frame, table)
+    return joined([assemble(frame, one, plan, table, heading) for one, plan in zip(singles, plans, strict=True)])
+
+
+def _read_shaped(lines: Lines, layout: Layout) -> Readings:
+    shaped = shape(lines, layout)
+    frame, table = shaped.frame, shaped.table
+    _refuse_empty(lines, frame, table)
+    found = []
+    for single in layout.singles():
+        plan = replace(resolve(frame, single), captured=shaped.captured).with_statistics(shaped.beside)
+        if shaped.replicate is not None:
+            plan = plan.with_column("replicate", shaped.replicate)
+        found.append(assemble(frame, single, plan, table, shaped.heading))
+    return joined(found)
+
+
+def _refuse_empty(lines: Lines, frame: Frame, table: Table) -> None:
     if not len(table.line):
         raise lines.refusal(frame.header_at, "expected rows under the header, got none", "Export again with its runs")
-    return assemble(frame, layout, plan, table, heading)

@@ -222,10 +222,9 @@ class Readings:
         float64[n]: seconds since 1970-01-01 of the local time that the export wrote; NaN where absent.
     added, nominal
         Concentrations added to a spiked solution, and of a standard or check standard.
-    concentration, reported_result
-        What the instrument itself computed: the concentration that it read back, the result that it reports.
-    reference_signal
-        float64[n]: signal of the internal standard that belongs to the row's signal; NaN where absent.
+    concentration, reported_result, reference_signal
+        What the instrument reports beside the signal: the concentration in the solution, the result of the sample,
+        and the signal of an internal standard.
     spike_volume, aliquot, made_up_to, digest_volume
         Volumes; `digest_volume` is what a solid's digest was made up to.
     mass
@@ -264,16 +263,16 @@ class Readings:
     position: Floats
     measured_at: Floats
     predilution: Floats
-    reference_signal: Floats
     added: Quantities
     nominal: Quantities
-    concentration: Quantities
-    reported_result: Quantities
     spike_volume: Quantities
     aliquot: Quantities
     made_up_to: Quantities
     mass: Quantities
     digest_volume: Quantities
+    concentration: Quantities
+    reported_result: Quantities
+    reference_signal: Quantities
     faults: tuple[Fault, ...]
     set_aside: tuple[SetAside, ...]
     problems: tuple[Problem, ...]

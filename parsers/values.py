@@ -7,8 +7,9 @@ Nothing here decides what a row is.
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from datetime import UTC, datetime
+from functools import partial
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -16,10 +17,12 @@ import pandas as pd
 
 from parsers import fields
 from parsers.cells import Cell, Grammar, Kind, Numbers, converted
-from parsers.readings import Quantities, Texts
+from parsers.readings import Problem, Quantities, Texts
+from parsers.source import IN_CELL, UNSAID
 from parsers.spelling import fold, folded, looked_up, renamed, shown
 
 if TYPE_CHECKING:
+    import re
     from collections.abc import Callable, Sequence
 
     from parsers.columns import Mapped, Plan
@@ -27,6 +30,7 @@ if TYPE_CHECKING:
     from parsers.labels import Understanding
     from parsers.layout import Layout
     from parsers.readings import Floats
+    from parsers.sidetable import SideTable
     from parsers.source import Source
     from parsers.table import Frame, Table
 
@@ -36,6 +40,10 @@ MANY_TIMES = 500
 PLAUSIBLE = (pd.Timestamp(1900, 1, 1), pd.Timestamp(2200, 1, 1))
 #: How constants of a layout are written, whatever marks its exports use.
 _LAYOUT_GRAMMAR = Grammar()
+#: Most disagreements between sources that are listed.
+MOST_DISAGREEMENTS = 100
+#: Stands between a text and its unit.
+_PAIR = "\x1f"
 
 
 @dataclass(frozen=True, slots=True)
@@ -54,6 +62,8 @@ class Odd:
         Whether a cell may be empty.
     in_table
         Whether the value comes from a column of its own, and not from the label.
+    column
+        Index of the column, or None.
     """
 
     field: str
@@ -62,6 +72,7 @@ class Odd:
     cells: dict[int, Cell]
     optional: bool
     in_table: bool
+    column: int | None = None
 
 
 @dataclass(slots=True)
@@ -76,6 +87,9 @@ class Values:
     label: Texts
     understood: Understanding
     odd: list[Odd] = field(default_factory=list)
+    disagreements: dict[tuple[str, str, str], Problem] = field(default_factory=dict)
+    _known: dict[str, Floats] = field(default_factory=dict)
+    _looking: list[str] = field(default_factory=list)
 
     @property
     def rows(self) -> int:
@@ -92,102 +106,418 @@ class Values:
         mapped = self.plan.mapped.get(name)
         return self.table.headers[mapped.columns[0]] if mapped else self.label_header()
 
+    def has_source(self, name: str) -> bool:
+        """Tell whether anything may say a field."""
+        return bool(
+            getattr(self.layout.columns, name)
+            or name in self.heading
+            or name in self.plan.captured
+            or name in self.understood.said
+            or any(name in side.lookup.fields for side in self.layout.side_tables)
+        )
+
     def doubt(self, name: str, header: str, cells: dict[int, Cell]) -> None:
         """Note rows in which a field cannot be made out."""
         self.odd.append(Odd(name, header, None, cells, optional=False, in_table=True))
 
     def texts(self, name: str) -> Texts:
         """Return a text field: blanks folded, words mapped, absent where the row says nothing."""
-        source: Source | None = getattr(self.layout.columns, name)
-        mapped = self.plan.mapped.get(name)
-        if mapped is not None:
-            words = {fold(code): word for code, word in mapped.source.map.items()}
-            raw = self.table.texts(mapped.columns[0])
-            names = folded(raw.names)
-            return renamed(raw, [words.get(name, name) or None for name in names] if words else names)
-        if source is not None and source.constant is not None:
-            return Texts.constant(source.constant, self.rows)
-        if name in self.heading:
-            return Texts.constant(self.heading[name].value, self.rows)
-        return self._captured(name)
+        found: Texts | None = None
+        header = ""
+        for told in self.told(name):
+            names = folded(told.texts.names)
+            texts = renamed(told.texts, names)
+            if found is not None:
+                self._compare(name, (header, found), (told.header, texts))
+            found, header = (texts, told.header) if found is None else (filled(found, texts), header)
+        return Texts.absent(self.rows) if found is None else found
 
     def numbers(self, name: str, *, entry: int | None = None, column: int | None = None) -> Floats:
         """Return a number field, or one column of it: NaN where the row has none."""
-        mapped = self.plan.mapped.get(name)
-        if column is None and mapped is not None:
-            column = mapped.columns[0]
-        if column is not None:
-            numbers = self.table.numbers(column, self.layout.grammar)
-            self._keep(name, column, numbers, mapped, entry)
-            return numbers.values
-        return self._elsewhere(name, lambda text, grammar: (grammar.cell(text), ""), units=False).values
+        if column is None and name in self._known:
+            return self._known[name]
+        at = self._plain_column(name) if column is None else column
+        if at is not None:
+            numbers = self.table.numbers(at, self.layout.grammar)
+            self._keep(name, at, numbers, self.plan.mapped.get(name), entry)
+            values = numbers.values
+        else:
+            values = self._chain(name, lambda text, grammar: (grammar.cell(text), "")).values
+        if column is None:
+            self._known[name] = values
+        return values
 
     def quantities(self, name: str) -> Quantities:
         """Return a quantity with its unit."""
+        at = self._plain_column(name)
         mapped = self.plan.mapped.get(name)
-        if mapped is None:
-            return self._elsewhere(name, lambda text, grammar: _quantity(text, grammar, name), units=True)
-        unit = mapped.source.unit
-        return Quantities(self.numbers(name), Texts.constant(unit, self.rows) if unit else Texts.absent(self.rows))
+        if at is None or mapped is None or mapped.source.unit == IN_CELL:
+            return self._chain(name, _quantity)
+        return self.quantity_column(name, at, mapped.source, self._units(mapped), None)
+
+    def quantity_column(
+        self, name: str, column: int, source: Source | None, units: Texts, entry: int | None
+    ) -> Quantities:
+        """Return a column of a quantity; a unit may be glued to a number where it is the one that is stated."""
+        numbers = self.table.numbers(column, self.layout.grammar)
+        values, odd = numbers.values, {}
+        glued: dict[int, str] = {}
+        for row, cell in numbers.odd.items():
+            found, unit = _quantity(cell.text, self.layout.grammar) if cell.kind is Kind.UNREADABLE else (cell, "")
+            found = _in_unit(found, unit, units[row])
+            if found.kind is Kind.NUMBER:
+                values[row] = found.value
+                glued[row] = unit
+            else:
+                odd[row] = found
+        if odd:
+            optional = source is not None and source.optional
+            self.odd.append(Odd(name, self.table.headers[column], entry, odd, optional, in_table=True, column=column))
+        if glued:
+            units = Texts.of([glued.get(row, units[row]) or None for row in range(self.rows)])
+        return Quantities(values, units)
 
     def predilution(self) -> Floats:
         """Return the factor from aliquot to sample."""
-        mapped = self.plan.mapped.get("predilution")
-        if mapped is None:
-            return self._elsewhere(
-                "predilution", lambda text, grammar: (_predilution(text, grammar), ""), units=False
-            ).values
-        texts = self.table.texts(mapped.columns[0])
-        numbers = converted(texts, lambda text: _predilution(text, self.layout.grammar))
-        self._keep("predilution", mapped.columns[0], numbers, mapped, None)
-        return numbers.values
+        return self._chain("predilution", lambda text, grammar: (_predilution(text, grammar), "")).values
 
     def times(self) -> Floats:
         """Return the time of measurement in seconds since 1970-01-01 of the local time that was written."""
-        mapped = self.plan.mapped.get("measured_at")
-        if mapped is None:
-            return np.full(self.rows, np.nan)
+        found = self._told_in_layout("measured_at")
+        values = np.full(self.rows, np.nan)
+        doubts: dict[int, tuple[Told, Cell]] = {}
+        for told in found:
+            forms, grammar = told.source.format, self.layout.grammar
+            known = _times_at_once(told.texts.names, forms)
+            convert = partial(_time, forms=forms, grammar=grammar)
+            numbers = converted(told.texts, convert, known.get, missing=False)
+            self._doubt_unless_known(doubts, told, numbers.odd, values)
+            values = np.where(np.isnan(values), numbers.values, values)
+        self._note_doubts("measured_at", doubts, values)
+        return values
+
+    def told(self, name: str) -> list[Told]:
+        """Return everything that may say a field, in the order of precedence."""
+        found = self._told_in_layout(name)
+        source: Source | None = getattr(self.layout.columns, name)
+        if source is None and (name in self.heading or name in self.plan.captured):
+            found.append(self._told_heading(name, UNSAID, name))
+        explicit = {one.group for one in source.sources} if source is not None else set()
+        said = self.understood.said.get(name)
+        if said is not None and name not in explicit:
+            found.append(Told(looked_up(said, self.label), self.label_header(), UNSAID, in_table=False))
+        return found + self._told_beside(name)
+
+    def _told_in_layout(self, name: str) -> list[Told]:
+        source: Source | None = getattr(self.layout.columns, name)
+        found = []
+        for number, one in enumerate(source.sources if source is not None else ()):
+            mapped = self.plan.choices.get(name, {}).get(number)
+            if one.constant is not None:
+                texts = Texts.constant(one.constant, self.rows)
+                unit = Texts.constant(one.stated_unit, self.rows) if one.stated_unit else None
+                found.append(Told(texts, "constant", one, in_table=True, unit=unit, grammar=_LAYOUT_GRAMMAR))
+            elif one.group:
+                said = self.understood.said.get(one.group)
+                texts = Texts.absent(self.rows) if said is None else looked_up(said, self.label)
+                found.append(Told(_cut(texts, one, name), self.label_header(), one, in_table=False))
+            elif mapped is None and one.heading:
+                found.append(self._told_heading(one.heading, one, name))
+            elif mapped is not None:
+                found.append(self._told_column(name, one, mapped))
+        return found
+
+    def _told_column(self, name: str, source: Source, mapped: Mapped) -> Told:
+        header = self.table.headers[mapped.columns[0]]
         texts = self.table.texts(mapped.columns[0])
+        more = {"in_table": True, "unit": self._units(mapped), "column": mapped.columns[0]}
+        if source.as_ == "ratio" and len(mapped.columns) == 2:
+            ratio = self._ratio(texts, self.table.texts(mapped.columns[1]))
+            return Told(ratio, header, source, grammar=_LAYOUT_GRAMMAR, **more)  # type: ignore[arg-type]
         for column in mapped.columns[1:]:
             texts = _joined(texts, self.table.texts(column))
-        forms, grammar = mapped.source.format, self.layout.grammar
-        known = _times_at_once(texts.names, forms)
-        numbers = converted(texts, lambda text: _time(text, forms, grammar), known.get, missing=False)
-        self._keep("measured_at", mapped.columns[0], numbers, mapped, None)
-        return numbers.values
+        if source.heading:
+            texts = _joined(self._heading_texts(source.heading), texts)
+        return Told(_cut(texts, source, name), header, source, **more)  # type: ignore[arg-type]
+
+    def _told_heading(self, heading: str, source: Source, name: str) -> Told:
+        column = self.plan.captured.get(heading)
+        header = f"heading {heading}"
+        at = self.heading[heading].at if heading in self.heading else None
+        unit = Texts.constant(source.stated_unit, self.rows) if source.stated_unit else None
+        texts = _cut(self._heading_texts(heading), source, name)
+        return Told(texts, header, source, in_table=column is not None, unit=unit, heading_at=at)
+
+    def _heading_texts(self, heading: str) -> Texts:
+        if heading in self.plan.captured:
+            return self.table.texts(self.plan.captured[heading])
+        if heading in self.heading:
+            return Texts.constant(self.heading[heading].value, self.rows)
+        return Texts.absent(self.rows)
+
+    def _told_beside(self, name: str) -> list[Told]:
+        """Return what side tables say."""
+        found: list[Told] = []
+        for side in self.layout.side_tables:
+            lookup = side.lookup
+            if name not in lookup.fields or lookup.by in self._looking:
+                continue
+            self._refuse_unread(side)
+            self._looking.append(lookup.by)
+            keys = self._keys(lookup.by)
+            self._looking.pop()
+            source = lookup.columns.get(name, UNSAID)
+            texts = _cut(looked_up(Texts.of(side.texts(name, keys)), keys), source, name)
+            unit = Texts.constant(source.stated_unit, self.rows) if source.stated_unit else None
+            grammar = replace(_LAYOUT_GRAMMAR, decimal=lookup.decimal)
+            header = f"{lookup.file or 'lookup'} by {lookup.by}"
+            in_table = not (lookup.optional or source.optional)
+            found.append(Told(texts, header, source, in_table=in_table, unit=unit, grammar=grammar))
+        return found
+
+    def meant_label(self) -> Texts:
+        """Return the labels with those that a side table replaces by what they mean."""
+        for side in self.layout.side_tables:
+            if side.lookup.by == "label" and "label" in side.lookup.fields:
+                self._refuse_unread(side)
+                names = [
+                    meant or name for meant, name in zip(side.texts("label", self.label), self.label.names, strict=True)
+                ]
+                return renamed(self.label, names)
+        return self.label
+
+    def _refuse_unread(self, side: SideTable) -> None:
+        if not side.known:
+            sentence = f"expected the side table {side.lookup.file!r} (lookup), which was not read"
+            raise self.frame.lines.refusal(None, sentence, "Put it beside the layout")
+
+    def _keys(self, by: str) -> Texts:
+        if by == "label":
+            return self.label
+        if by != "position":
+            return self.texts(by)
+        numbers = self.numbers("position").tolist()
+        return Texts.of([None if math.isnan(number) else f"{number:g}" for number in numbers])
+
+    def _plain_column(self, name: str) -> int | None:
+        """Return the column of a field that has this source only, and whose cells are the values."""
+        source: Source | None = getattr(self.layout.columns, name)
+        mapped = self.plan.mapped.get(name)
+        if mapped is None or len(mapped.columns) != 1 or not (source is None or source.plain):
+            return None
+        beside = any(name in side.lookup.fields for side in self.layout.side_tables)
+        return None if beside or name in self.understood.said else mapped.columns[0]
+
+    def _units(self, mapped: Mapped) -> Texts:
+        if mapped.unit_column is not None:
+            return self.table.texts(mapped.unit_column)
+        unit = mapped.unit or mapped.source.stated_unit
+        return Texts.constant(unit, self.rows) if unit else Texts.absent(self.rows)
+
+    def _ratio(self, taken: Texts, made_up_to: Texts) -> Texts:
+        """Return the ratio of two columns as texts, and the cell itself where one of the two is no volume."""
+        grammar = self.layout.grammar
+        known: dict[tuple[str | None, str | None], str | None] = {}
+        ratios = []
+        for row in range(self.rows):
+            pair = (taken[row], made_up_to[row])
+            if pair not in known:
+                one, other = (grammar.cell(text or "") for text in pair)
+                good = one.kind is other.kind is Kind.NUMBER and one.value > 0
+                both = f"{pair[0] or ''} and {pair[1] or ''}"
+                known[pair] = repr(other.value / one.value) if good else None if pair == (None, None) else both
+            ratios.append(known[pair])
+        return Texts.of(ratios)
 
     def _keep(self, name: str, column: int, numbers: Numbers, mapped: Mapped | None, entry: int | None) -> None:
         if numbers.odd:
             optional = mapped is not None and mapped.source.optional
-            self.odd.append(Odd(name, self.table.headers[column], entry, numbers.odd, optional, in_table=True))
+            header = self.table.headers[column]
+            self.odd.append(Odd(name, header, entry, numbers.odd, optional, in_table=True, column=column))
 
-    def _captured(self, name: str) -> Texts:
-        said = self.understood.said.get(name)
-        return Texts.absent(self.rows) if said is None else looked_up(said, self.label)
+    def _chain(self, name: str, convert: Callable[[str, Grammar], tuple[Cell, str]]) -> Quantities:
+        """Return a number from whichever source says it first."""
+        values, units = np.full(self.rows, np.nan), Texts.absent(self.rows)
+        doubts: dict[int, tuple[Told, Cell]] = {}
+        header = ""
+        for told in self.told(name):
+            found = self._converted(name, told, convert)
+            numbers = Quantities(found[0].values, found[1])
+            if header:
+                self._compare_numbers(name, (header, Quantities(values, units)), (told.header, numbers))
+            self._doubt_unless_known(doubts, told, found[0].odd, values)
+            take = np.isnan(values) & np.isfinite(numbers.values)
+            if take.any():
+                units = filled(units, Texts(np.where(take, numbers.units.codes, -1), numbers.units.names))
+                values = np.where(take, numbers.values, values)
+            header = header or told.header
+        self._note_doubts(name, doubts, values)
+        return Quantities(values, units)
 
-    def _elsewhere(self, name: str, convert: Callable[[str, Grammar], tuple[Cell, str]], *, units: bool) -> Quantities:
-        """Return a number from a constant, a heading or the label."""
-        source: Source | None = getattr(self.layout.columns, name)
-        if source is not None and source.constant is not None:
-            cell, _ = convert(f"{source.constant} {source.unit}" if units else source.constant, _LAYOUT_GRAMMAR)
-            return self._everywhere(cell.value, source.unit)
-        if name in self.heading:
-            cell, unit = convert(self.heading[name].value, self.layout.grammar)
-            if cell.kind is not Kind.NUMBER:
-                raise self.frame.lines.refusal(self.heading[name].at, cell.expected, cell.remedy, f"heading {name}")
-            return self._everywhere(cell.value, unit)
-        texts = self._captured(name)
-        if not texts.names:
-            return Quantities.absent(self.rows)
-        known = {text: convert(text, self.layout.grammar) for text in texts.names}
-        absent = Cell(Kind.MISSING, math.nan, "")
-        numbers = converted(texts, lambda text: known[text][0] if text else absent, missing=False)
-        self.odd.append(Odd(name, self.label_header(), None, numbers.odd, optional=True, in_table=False))
-        return Quantities(numbers.values, renamed(texts, [known[text][1] or None for text in texts.names]))
+    def _converted(
+        self, name: str, told: Told, convert: Callable[[str, Grammar], tuple[Cell, str]]
+    ) -> tuple[Numbers, Texts]:
+        """Convert what one source says; return its numbers and their units."""
+        grammar, source = told.grammar or self.layout.grammar, told.source
+        volume = name in (*fields.VOLUMES, *fields.MASSES)
+        texts = told.texts
+        if told.unit is not None and told.unit.names:
+            # text and unit decide together whether a unit that is glued to the number is the right one
+            texts = _paired(texts, told.unit)
+        known: dict[str, tuple[Cell, str]] = {}
+        for text in texts.names:
+            written, _, stated = text.partition(_PAIR)
+            cell, glued = convert(written, grammar)
+            cell = _in_unit(cell, glued, stated)
+            if volume and cell.kind is Kind.NUMBER and not (glued or stated):
+                expected = f"expected a volume with its unit, got {shown(written)}"
+                cell = Cell(Kind.UNREADABLE, math.nan, written, expected, "Write for instance 5 mL")
+            if cell.kind is Kind.NUMBER:
+                cell = _rescaled(cell, source)
+            elif told.heading_at is not None:
+                raise self.frame.lines.refusal(told.heading_at, cell.expected, cell.remedy, told.header)
+            known[text] = (cell, glued or stated)
+        absent = Cell(Kind.MISSING, math.nan, "", "expected a number, got an empty cell", "Complete the export")
+        numbers = converted(texts, lambda text: known[text][0] if text else absent)
+        return numbers, renamed(texts, [known[text][1] or None for text in texts.names])
 
-    def _everywhere(self, value: float, unit: str) -> Quantities:
-        units = Texts.constant(unit, self.rows) if unit else Texts.absent(self.rows)
-        return Quantities(np.full(self.rows, value), units)
+    @staticmethod
+    def _doubt_unless_known(
+        doubts: dict[int, tuple[Told, Cell]], told: Told, odd: dict[int, Cell], values: Floats
+    ) -> None:
+        for row, cell in odd.items():
+            if cell.kind is not Kind.UNREADABLE and not math.isnan(values[row]):
+                continue
+            before = doubts.get(row)
+            if before is None or (before[1].kind is Kind.MISSING and cell.kind is not Kind.MISSING):
+                doubts[row] = (told, cell)
+
+    def _note_doubts(self, name: str, doubts: dict[int, tuple[Told, Cell]], values: Floats) -> None:
+        """Keep what could not be read; what another source says is no longer missing."""
+        of_source: dict[int, tuple[Told, dict[int, Cell]]] = {}
+        for row, (told, cell) in sorted(doubts.items()):
+            if cell.kind is Kind.UNREADABLE or math.isnan(values[row]):
+                of_source.setdefault(id(told), (told, {}))[1][row] = cell
+        for told, cells in of_source.values():
+            optional = told.source.optional or not told.in_table
+            self.odd.append(Odd(name, told.header, None, cells, optional, told.in_table, told.column))
+
+    def _compare(self, name: str, one: tuple[str, Texts], other: tuple[str, Texts]) -> None:
+        pairs = np.stack([one[1].codes, other[1].codes])
+        for row in np.flatnonzero((pairs >= 0).all(axis=0)).tolist():
+            first, second = one[1][row] or "", other[1][row] or ""
+            if first != second:
+                self._disagree(name, row, (one[0], first), (other[0], second))
+
+    def _compare_numbers(self, name: str, one: tuple[str, Quantities], other: tuple[str, Quantities]) -> None:
+        first, second = one[1], other[1]
+        with np.errstate(invalid="ignore"):
+            unlike = np.isfinite(first.values) & np.isfinite(second.values) & (first.values != second.values)
+        for row in np.flatnonzero(unlike).tolist():
+            said = [f"{x.values[row]:g} {x.units[row] or ''}".strip() for x in (first, second)]
+            self._disagree(name, row, (one[0], said[0]), (other[0], said[1]))
+
+    def _disagree(self, name: str, row: int, one: tuple[str, str], other: tuple[str, str]) -> None:
+        """Report two sources of a field that say unlike things, each pair of values once."""
+        if len(self.disagreements) < MOST_DISAGREEMENTS:
+            sentence = (
+                f"expected one {name}, got {one[1]!r} from {one[0]!r} and {other[1]!r} from {other[0]!r}. The first is "
+                f"used. Correct the one that is wrong."
+            )
+            line = self.table.line_of(row, None)
+            self.disagreements.setdefault((name, one[1], other[1]), Problem(line, one[0], sentence))
+
+
+@dataclass(frozen=True, slots=True)
+class Told:
+    """What one source says of a field.
+
+    Attributes
+    ----------
+    texts
+        One text a row, already cut out and mapped.
+    header
+        Where it stands, in words.
+    source
+        What the layout says of it.
+    in_table
+        Whether a missing value can be a fault: it has a place of its own.
+    unit
+        The unit of each row where it is stated apart, or None.
+    grammar
+        How its numbers are written; None where as in the export.
+    column
+        Index of its column, or None.
+    heading_at
+        Index of the line of a value that holds for all rows, or None.
+    """
+
+    texts: Texts
+    header: str
+    source: Source
+    in_table: bool
+    unit: Texts | None = None
+    grammar: Grammar | None = None
+    column: int | None = None
+    heading_at: int | None = None
+
+
+def filled(texts: Texts, other: Texts) -> Texts:
+    """Return a column with its gaps filled from another one."""
+    gaps = texts.codes < 0
+    if not gaps.any():
+        return texts
+    together = Texts.of([*texts.names, *other.names])
+    codes = np.where(gaps & (other.codes >= 0), other.codes + np.int32(len(texts.names)), texts.codes)
+    return looked_up(together, Texts(codes.astype(np.int32), (*texts.names, *other.names)))
+
+
+def _cut(texts: Texts, source: Source, name: str) -> Texts:
+    """Take out of each text what the source means, and put in the words that are meant."""
+    pattern = source.pattern
+    if pattern is None and not source.map:
+        return texts
+    names: list[str | None] = list(folded(texts.names))
+    if pattern is not None:
+        names = [_matched(pattern, text, name) for text in names]
+    words = {fold(code): word for code, word in source.map.items()}
+    mapped = renamed(texts, [(words.get(text, text) or None) if text is not None else None for text in names])
+    if "" in words:  # an empty cell may be explained as well
+        mapped = filled(mapped, Texts(np.where(texts.codes < 0, np.int32(0), np.int32(-1)), (words[""],)))
+    return mapped
+
+
+def _matched(pattern: re.Pattern[str], text: str | None, name: str) -> str | None:
+    match = pattern.search(text or "")
+    if match is None:
+        return None
+    said = match[name] if name in pattern.groupindex else match[1] if pattern.groups else match[0]
+    return fold(said or "") or None
+
+
+def _paired(texts: Texts, units: Texts) -> Texts:
+    """Write the unit of each row behind its text."""
+    pairs = texts.codes.astype(np.int64) * (len(units.names) + 1) + units.codes
+    distinct, first, codes = np.unique(pairs, return_index=True, return_inverse=True)
+    names = [None if texts[row] is None else f"{texts[row]}{_PAIR}{units[row] or ''}" for row in first.tolist()]
+    joined = Texts.of(names)
+    return Texts(joined.codes[codes.reshape(-1)], joined.names) if len(distinct) else texts
+
+
+def _in_unit(cell: Cell, glued: str, stated: str | None) -> Cell:
+    """Refuse a number whose glued unit is not the one that is stated."""
+    if cell.kind is not Kind.NUMBER or not glued or not stated or glued == stated:
+        return cell
+    expected = f"expected a number in {stated}, got {shown(cell.text)}"
+    return Cell(Kind.UNREADABLE, math.nan, cell.text, expected, "Correct the export, or write unit: in cell")
+
+
+def _rescaled(cell: Cell, source: Source) -> Cell:
+    """Turn what the export writes into what is meant."""
+    value = cell.value * (1 if source.scale is None else source.scale)
+    if source.as_ == "inverse":
+        value = 1 / value
+    return replace(cell, value=value) if value != cell.value else cell
 
 
 def _joined(left: Texts, right: Texts) -> Texts:
@@ -201,17 +531,15 @@ def _joined(left: Texts, right: Texts) -> Texts:
     return Texts(joined.codes[codes], joined.names)
 
 
-def _quantity(text: str, grammar: Grammar, name: str) -> tuple[Cell, str]:
-    """Understand a number with a glued unit; a volume must have one."""
+def _quantity(text: str, grammar: Grammar) -> tuple[Cell, str]:
+    """Understand a number with a glued unit."""
+    plain = grammar.cell(text)
+    if plain.kind is not Kind.UNREADABLE:
+        return plain, ""
     found = grammar.quantity(text)
     if found is None:
-        plain = grammar.cell(text)
         return Cell(Kind.UNREADABLE, math.nan, text, plain.expected, plain.remedy), ""
-    value, unit = found
-    if name in (*fields.VOLUMES, *fields.MASSES) and not unit:
-        expected = f"expected a volume with its unit, got {shown(text)}"
-        return Cell(Kind.UNREADABLE, math.nan, text, expected, "Write for instance 5 mL"), ""
-    return Cell(Kind.NUMBER, value, text), unit
+    return Cell(Kind.NUMBER, found[0], text), found[1]
 
 
 def _predilution(text: str, grammar: Grammar) -> Cell:

@@ -103,14 +103,14 @@ def gather(readings: Readings) -> Solutions:
 
 def _references(readings: Readings) -> Floats:
     """Return what the signal of each row is divided by: its internal standard's signal, 1 where there is none."""
-    reference = readings.reference_signal
+    reference = readings.reference_signal.values
     with np.errstate(invalid="ignore"):
         return np.where(np.isnan(reference), 1.0, np.where(reference > 0, reference, np.nan))
 
 
 def _reference_faults(readings: Readings) -> Iterator[tuple[int, str]]:
     """Yield rows whose internal standard is missing or impossible, with the sentence that says so."""
-    reference = readings.reference_signal
+    reference = readings.reference_signal.values
     if np.isnan(reference).all():
         return
     analyte = readings.analyte.codes

@@ -299,7 +299,7 @@ class _Filling:
 
     def _seen_dilution(self, liquid: Floats) -> Floats:
         """Return the dilution that signals show: none where the reference was diluted with the sample."""
-        referred = np.isfinite(self.readings.reference_signal[self.rows]) & self.sample
+        referred = np.isfinite(self.readings.reference_signal.values[self.rows]) & self.sample
         if self.method.reference == "diluted with the sample":
             return np.where(referred, 1.0, liquid)
         if self.method.reference is None:

@@ -12,7 +12,7 @@ import hashlib
 import json
 from dataclasses import dataclass
 from functools import cached_property
-from pathlib import Path
+from pathlib import Path, PurePosixPath
 from typing import TYPE_CHECKING, Any
 
 from parsers.document import load, validate
@@ -54,22 +54,36 @@ class File:
 
 @dataclass(frozen=True, slots=True)
 class Snapshot:
-    """Configuration and layouts as texts, and the folder that relative paths start from."""
+    """Configuration, layouts and their side tables as texts, and the folder that relative paths start from."""
 
     folder: str
     config: File
     layouts: tuple[File, ...]
+    tables: tuple[File, ...] = ()
 
     @property
     def body(self) -> str:
         """The texts as one JSON text, as the ledger keeps and hashes them; the folder was not decided by anybody."""
         config, *layouts = ({"path": file.path, "text": file.text} for file in (self.config, *self.layouts))
-        return json.dumps({"config": config, "layouts": layouts}, sort_keys=True, ensure_ascii=False)
+        tables = {"tables": [{"path": file.path, "text": file.text} for file in self.tables]} if self.tables else {}
+        return json.dumps({"config": config, "layouts": layouts} | tables, sort_keys=True, ensure_ascii=False)
+
+    def beside(self, layout: File) -> dict[str, str]:
+        """Return the side tables that lie beside a layout, by the name that it gives them."""
+        folder = PurePosixPath(layout.path).parent
+        known = {file.path: file.text for file in self.tables}
+        names = [name for name in side_tables(layout) if (folder / name).as_posix() in known]
+        return {name: known[(folder / name).as_posix()] for name in names}
 
     @classmethod
     def of_plain(cls, plain: Mapping[str, Any]) -> Snapshot:
         """Return the snapshot whose body holds these values; where it lies is not known any more."""
-        return cls("", File(**plain["config"]), tuple(File(**layout) for layout in plain["layouts"]))
+        return cls(
+            "",
+            File(**plain["config"]),
+            tuple(File(**layout) for layout in plain["layouts"]),
+            tuple(File(**table) for table in plain.get("tables", ())),
+        )
 
     @property
     def sha256(self) -> str:
@@ -162,10 +176,29 @@ def read_files(config: Path) -> Snapshot:
         except SettingsInvalid as invalid:
             reason = invalid.faults[0].sentence
             faults.append(DocumentFault(file.path, document.line(("layouts", index)), f"layouts[{index + 1}]", reason))
-    snapshot = Snapshot(str(folder), file, tuple(layouts))
+    tables: dict[str, File] = {}
+    for layout in layouts:
+        for name in side_tables(layout):
+            path = (PurePosixPath(layout.path).parent / name).as_posix()
+            if path not in tables and (folder / path).is_file():
+                try:
+                    tables[path] = File(path, _text(folder / path, path))
+                except SettingsInvalid as invalid:
+                    faults += invalid.faults
+    snapshot = Snapshot(str(folder), file, tuple(layouts), tuple(tables.values()))
     if faults:
         raise SettingsInvalid((*faults, *_faults_of(snapshot)))
     return snapshot
+
+
+def side_tables(layout: File) -> list[str]:
+    """Return the files that a layout looks values up in; of a layout that cannot be read, none."""
+    try:
+        lookups = load(layout.text, layout.path, LAYOUT_CONSEQUENCE).values.get("lookup", [])
+    except DocumentInvalid:
+        return []
+    named = [lookup.get("file") for lookup in lookups if isinstance(lookup, dict)] if isinstance(lookups, list) else []
+    return [name for name in dict.fromkeys(named) if isinstance(name, str) and name]
 
 
 def _text(path: Path, shown: str) -> str:
@@ -215,7 +248,7 @@ def compile_snapshot(snapshot: Snapshot) -> Settings:
     read: list[tuple[Layout, Decisions]] = []
     for layout_file in snapshot.layouts:
         try:
-            layout = parse_layout(layout_file.text, layout_file.path)
+            layout = parse_layout(layout_file.text, layout_file.path, snapshot.beside(layout_file))
             read.append((layout, validate(layout.settings, Decisions, LAYOUT_CONSEQUENCE)))
         except DocumentInvalid as invalid:
             faults += invalid.faults

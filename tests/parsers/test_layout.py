@@ -51,10 +51,13 @@ def test_settings_of_a_layout_are_kept_unread_with_their_lines(make_layout: Call
     ("parts", "expected"),
     [
         ({"separator": None}, "line 1, separator: the key 'separator' is missing"),
-        ({"separator": "';;'"}, "separator: expected one character, 'tab' or 'blanks', got ';;'.*single quotes: ';'"),
-        ({"separator": "''"}, "separator: expected one character, 'tab' or 'blanks', got nothing"),
+        (
+            {"separator": "';;'"},
+            "separator: expected one character, 'tab', 'blanks' or 'wide blanks', got ';;'.*single quotes: ';'",
+        ),
+        ({"separator": "''"}, "separator: expected one character, 'tab', 'blanks' or 'wide blanks', got nothing"),
         ({"sepparator": "';'"}, "sepparator: unknown key 'sepparator'. .*Did you mean 'separator'"),
-        ({"widths": "[12, 8]"}, "widths: unknown key 'widths'"),
+        ({"widths": "[12, 8]"}, "widths: separator says already where the columns end"),
         ({"claims": "{}"}, "claims: expected 'file', 'text' or both, got neither"),
         ({"encodings": "[utf-9]"}, r"encodings\[1\]: expected the name of an encoding, got 'utf-9'"),
         ({"encodings": "[]"}, "encodings: expected at least 1 entries, got a list"),
@@ -97,8 +100,8 @@ def test_settings_of_a_layout_are_kept_unread_with_their_lines(make_layout: Call
             "columns.signal: expected a column name or a list of them, got a list",
         ),
         (
-            {"columns": "{label: L, analyte: E, signal: [R1, {a: b}]}"},
-            "columns.signal: .* got keys and values. .*Write the name exactly",
+            {"columns": "{label: L, analyte: E, signal: [R1, {from: R2, a: b}]}"},
+            r"columns.signal\[2\].a: unknown key 'a'",
         ),
         (
             {"columns": "{label: L, analyte: {}, signal: R}"},

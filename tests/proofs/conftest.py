@@ -30,28 +30,12 @@ if TYPE_CHECKING:
     Floats = NDArray[np.float64]
 
 REFERENCE = Path(__file__).parents[1] / "reference"
-TEXTS = ("level", "stock", "batch", "analyst", "instrument", "duplicate_of", "origin", "comment")
-NUMBERS = (
-    "signal_sd",
-    "signal_rsd",
-    "readings",
-    "replicate",
-    "position",
-    "measured_at",
-    "predilution",
-    "reference_signal",
-)
+TEXTS = ("level", "stock", "batch", "analyst", "instrument", "comment", "duplicate_of", "origin")
+NUMBERS = ("signal_sd", "signal_rsd", "readings", "replicate", "position", "measured_at", "predilution")
 QUANTITIES = (
-    "added",
-    "nominal",
-    "concentration",
-    "reported_result",
-    "spike_volume",
-    "aliquot",
-    "made_up_to",
-    "mass",
-    "digest_volume",
-)
+    "added", "nominal", "spike_volume", "aliquot", "made_up_to", "mass", "digest_volume",
+    "concentration", "reported_result", "reference_signal",
+)  # fmt: skip
 VOLUMES = ("spike_volume", "aliquot", "made_up_to", "digest_volume")
 BLANK_METHOD: dict[str, Any] = {"report": "additions", "export_unit": "mg/L", "result_unit": "mg/L"}
 

@@ -31,20 +31,12 @@ TEXTS = (
     "origin",
     "comment",
 )
-NUMBERS = (
-    "signal_sd",
-    "signal_rsd",
-    "readings",
-    "replicate",
-    "position",
-    "measured_at",
-    "predilution",
-    "reference_signal",
-)
+NUMBERS = ("signal_sd", "signal_rsd", "readings", "replicate", "position", "measured_at", "predilution")
 QUANTITIES = (
-    "added", "nominal", "concentration", "reported_result", "spike_volume", "aliquot", "made_up_to",
-    "mass", "digest_volume",
+    "added", "nominal", "spike_volume", "aliquot", "made_up_to", "mass", "digest_volume",
+    "concentration", "reported_result", "reference_signal",
 )  # fmt: skip
+CONCENTRATIONS = ("added", "nominal", "concentration", "reported_result")
 REFERENCE = Path(__file__).parents[1] / "reference"
 
 
@@ -65,7 +57,7 @@ def readings_of(rows: list[dict[str, Any]], unit: str = "mg/L", volume: str = "m
     for name in NUMBERS:
         columns[name] = np.array([row.get(name, np.nan) for row in rows], dtype=float)
     for name in QUANTITIES:
-        default = unit if name in ("added", "nominal", "concentration", "reported_result") else volume
+        default = None if name == "reference_signal" else unit if name in CONCENTRATIONS else volume
         stated = [row.get(name, np.nan) for row in rows]
         pairs = [one if isinstance(one, tuple) else (one, default) for one in stated]
         values = np.array([value for value, _ in pairs], dtype=float)

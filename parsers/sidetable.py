@@ -1,0 +1,189 @@
+"""Side tables: what a bench sheet or a list of levels says of a label, a sample or a position.
+
+The text of a table comes from the caller; nothing here opens a file, and nothing looks at an export.
+"""
+
+from __future__ import annotations
+
+import csv
+from dataclasses import dataclass
+from typing import TYPE_CHECKING, Literal
+
+from pydantic import BaseModel, ConfigDict, model_validator
+
+from parsers import fields
+from parsers.source import Source  # noqa: TC001 (pydantic reads annotations)
+from parsers.spelling import fold, listed, suggestion
+
+if TYPE_CHECKING:
+    from collections.abc import Iterator, Mapping
+
+    from parsers.document import Loc
+    from parsers.readings import Texts
+
+#: Fields that cannot stand in a side table: they are measured.
+_MEASURED = ("signal", "signal_sd", "signal_rsd", "readings", "measured_at")
+#: Longest side table in characters.
+MOST_CHARACTERS = 5_000_000
+
+
+class Lookup(BaseModel):
+    """One entry of ``lookup``: what is looked up by which field, in a file or in values written in the layout.
+
+    Attributes
+    ----------
+    by
+        The field whose text (or number) is looked for.
+    file, key, separator, decimal
+        A CSV file, the header of its column to compare with (default: the first), and how it is written.
+    columns
+        Field to column of the file.
+    values
+        Instead of a file: for each key the fields and their values.
+    optional
+        A key may be absent from the table.
+    """
+
+    model_config = ConfigDict(extra="forbid", frozen=True)
+
+    by: Literal["label", "sample", "position", "level", "batch", "analyte"]
+    file: str = ""
+    key: str = ""
+    separator: Literal[",", ";", "tab", "|"] = ","
+    decimal: Literal[".", ","] = "."
+    columns: dict[str, Source] = {}
+    values: dict[str, dict[str, str]] = {}
+    optional: bool = False
+
+    @model_validator(mode="after")
+    def _one_form(self) -> Lookup:
+        if bool(self.file) == bool(self.values):
+            raise ValueError("expected either 'file' or 'values'\nKeep one of the two")
+        if self.file and not self.columns:
+            raise ValueError("expected 'columns' with the fields to look up, got none\nWrite columns: {added: Added}")
+        for field in self.fields:
+            if field not in fields.ALL or field in _MEASURED or (field == self.by and field != "label"):
+                hint = suggestion(field, fields.ALL).strip() or "Take it out"
+                raise ValueError(f"{field!r} is no field that can be looked up by {self.by}\n{hint}")
+        return self
+
+    @property
+    def fields(self) -> frozenset[str]:
+        """The fields that are looked up."""
+        return frozenset(self.columns).union(*self.values.values())
+
+
+@dataclass(frozen=True, slots=True)
+class SideTable:
+    """A side table, read: for each key the text of each field.
+
+    Attributes
+    ----------
+    lookup
+        What the layout says of it.
+    entries
+        Field to key to text; keys have folded blanks, those of positions are numbers.
+    known
+        Whether the table was there to be read.
+    """
+
+    lookup: Lookup
+    entries: dict[str, dict[str, str]]
+    known: bool = True
+
+    @classmethod
+    def of(
+        cls, lookup: Lookup, number: int, tables: Mapping[str, str] | None, faults: list[tuple[Loc, str, str]]
+    ) -> SideTable:
+        """Read a side table; what is wrong with it is added to the faults of the layout."""
+        if not lookup.file:
+            entries: dict[str, dict[str, str]] = {}
+            for key, said in lookup.values.items():
+                for field, text in said.items():
+                    entries.setdefault(field, {})[_key(key, lookup)] = text
+            return cls(lookup, entries)
+        if tables is None:
+            return cls(lookup, {field: {} for field in lookup.columns}, known=False)
+        place: Loc = ("lookup", number, "file")
+        if lookup.file not in tables:
+            faults.append((place, f"expected the side table {lookup.file!r}, got no such file", "Write it"))
+            return cls(lookup, {}, known=False)
+        found = list(_faults(lookup, tables[lookup.file]))
+        faults += [(place, what, todo) for what, todo in found]
+        return cls(lookup, {}, known=False) if found else cls(lookup, _entries(lookup, tables[lookup.file]))
+
+    def missing(self, keys: Texts) -> list[str]:
+        """Return the keys, in order, that the table does not have."""
+        known = frozenset().union(*self.entries.values()) if self.entries else frozenset()
+        return [key for key in keys.names if _key(key, self.lookup) not in known]
+
+    def texts(self, field: str, keys: Texts) -> list[str | None]:
+        """Return what the table says of a field for each distinct key."""
+        entries = self.entries.get(field, {})
+        return [entries.get(_key(key, self.lookup)) or None for key in keys.names]
+
+
+def _key(text: str, lookup: Lookup) -> str:
+    folded = fold(text)
+    if lookup.by != "position":
+        return folded
+    try:
+        return f"{float(folded):g}"
+    except ValueError:
+        return folded
+
+
+def _records(lookup: Lookup, text: str) -> list[tuple[int, list[str]]]:
+    separator = "\t" if lookup.separator == "tab" else lookup.separator
+    reader = csv.reader(text.removeprefix("\ufeff").splitlines(keepends=True), delimiter=separator, strict=True)
+    return [(reader.line_num, [fold(cell) for cell in record]) for record in reader if any(map(str.strip, record))]
+
+
+def _places(lookup: Lookup, header: list[str]) -> dict[str, int]:
+    return {
+        field: header.index(name)
+        for field, source in lookup.columns.items()
+        for name in map(fold, source.names)
+        if name in header
+    }
+
+
+def _faults(lookup: Lookup, text: str) -> Iterator[tuple[str, str]]:
+    """Yield what is wrong with a side table, and what to do."""
+    if len(text) > MOST_CHARACTERS:
+        yield f"{lookup.file}: expected at most {MOST_CHARACTERS} characters, got {len(text)}", "Shorten it"
+        return
+    try:
+        records = _records(lookup, text)
+    except csv.Error as error:
+        yield f"{lookup.file}: expected a CSV file, got one that breaks: {error}", "Save it as CSV again"
+        return
+    if len(records) < 2:
+        yield f"{lookup.file}: expected a header and rows, got {len(records)} lines", "Complete it"
+        return
+    header = records[0][1]
+    for name in [lookup.key, *(name for source in lookup.columns.values() for name in source.names)]:
+        if name and fold(name) not in header:
+            todo = suggestion(name, header).strip() or "Correct the name or the separator"
+            yield f"{lookup.file}: expected the column {name!r}, and the header holds {listed(header)}", todo
+    at = header.index(fold(lookup.key)) if fold(lookup.key) in header else 0
+    first: dict[str, int] = {}
+    for line, record in records[1:]:
+        if len(record) != len(header):
+            sentence = f"{lookup.file}, line {line}: expected {len(header)} fields as in the header, got {len(record)}"
+            yield sentence, "Correct the line"
+        elif record[at]:
+            before = first.setdefault(_key(record[at], lookup), line)
+            if before != line:
+                sentence = f"{lookup.file}, line {line}: {record[at]!r} stands here again, first in line {before}"
+                yield sentence, "Keep one of the lines"
+
+
+def _entries(lookup: Lookup, text: str) -> dict[str, dict[str, str]]:
+    records = _records(lookup, text)
+    header = records[0][1]
+    at = header.index(fold(lookup.key)) if lookup.key else 0
+    return {
+        field: {_key(record[at], lookup): record[place] for _, record in records[1:] if record[at]}
+        for field, place in _places(lookup, header).items()
+    }
