@@ -139,7 +139,8 @@ def _smallest_step(series: Series, vessels: Vessels) -> Floats:
     their own.
     """
     members, owner = series.members, series.segments.owner
-    volume = np.where(series.spiked, vessels.spike_volume[members], np.nan)
+    volume = vessels.spike_volume[members]
+    volume = np.where(series.spiked & np.isfinite(volume), volume, np.nan)
     smallest = _smallest(series, volume)
     order = np.lexsort((volume, owner))
     steps = np.diff(volume[order])

@@ -105,7 +105,8 @@ def _references(readings: Readings) -> Floats:
     """Return what the signal of each row is divided by: its internal standard's signal, 1 where there is none."""
     reference = readings.reference_signal.values
     with np.errstate(invalid="ignore"):
-        return np.where(np.isnan(reference), 1.0, np.where(reference > 0, reference, np.nan))
+        possible = (reference > 0) & np.isfinite(reference)
+        return np.where(np.isnan(reference), 1.0, np.where(possible, reference, np.nan))
 
 
 def _reference_faults(readings: Readings) -> Iterator[tuple[int, str]]:
@@ -116,7 +117,8 @@ def _reference_faults(readings: Readings) -> Iterator[tuple[int, str]]:
     analyte = readings.analyte.codes
     referred = np.bincount(analyte, weights=np.isfinite(reference), minlength=len(readings.analyte.names)) > 0
     marked = {fault.row for fault in readings.faults if fault.field == "reference_signal"}
-    for row in np.flatnonzero(referred[analyte] & ~(reference > 0)).tolist():
+    possible = (reference > 0) & np.isfinite(reference)
+    for row in np.flatnonzero(referred[analyte] & ~possible).tolist():
         if row not in marked:
             found = "nothing" if np.isnan(reference[row]) else f"{reference[row]:g}"
             yield (

@@ -304,7 +304,7 @@ def poisoned(rows, row, poison):
 @given(
     row=st.integers(0, 17),
     poison=st.sampled_from(POISONS),
-    report=st.sampled_from(["additions", "calibration"]),
+    report=st.sampled_from(["additions", "calibration", "automatic"]),
     blank=st.sampled_from(["none", "subtract", "preparation"]),
 )
 def test_one_poisoned_number_never_passes_and_never_spreads(outcomes, batch, row, poison, report, blank):
@@ -341,7 +341,7 @@ numbers = st.one_of(st.floats(-1, 3), st.sampled_from([0.0, np.nan, np.inf, -np.
     rows=st.lists(
         st.fixed_dictionaries(
             {
-                "role": st.sampled_from(["unspiked", "spiked", "standard", "blank", "check_standard"]),
+                "role": st.sampled_from(["unspiked", "spiked", "standard", "blank", "check_standard", "spiked_blank"]),
                 "sample": st.sampled_from(SAMPLES),
                 "signal": st.one_of(numbers, st.lists(numbers, min_size=2, max_size=3)),
             },
@@ -355,21 +355,37 @@ numbers = st.one_of(st.floats(-1, 3), st.sampled_from([0.0, np.nan, np.inf, -np.
                 "level": st.sampled_from(["A1", "A9"]),
                 "stock": st.sampled_from(["ZN-5", "ZN-7"]),
                 "replicate": st.sampled_from([1.0, 2.0]),
+                "concentration": numbers,
+                "reference_signal": numbers,
+                "duplicate_of": st.sampled_from(SAMPLES),
+                "channel": st.sampled_from(["213.8", "202.5"]),
+                "measured_at": st.floats(0, 1e5),
                 "fault": st.just("expected a number, got 'x'"),
             },
         ),
         max_size=14,
     ),
-    report=st.sampled_from(["additions", "calibration"]),
+    report=st.sampled_from(["additions", "calibration", "automatic"]),
     blank=st.sampled_from([None, "none", "subtract", "preparation"]),
     refers=st.sampled_from([None, "vessel", "aliquot", "nominal"]),
+    more=st.fixed_dictionaries(
+        {},
+        optional={
+            "reference": st.sampled_from(["per vessel", "diluted with the sample"]),
+            "concentration_refers_to": st.sampled_from(["vessel", "sample"]),
+            "undetected_native": st.just("as zero"),
+            "expected_levels": st.just(2),
+            "expected_spiked": st.just((1, 2)),
+            "fixed_factor": st.just(2.0),
+        },
+    ),
 )
-def test_random_exports_are_judged_whole(outcomes, rows, report, blank, refers):
+def test_random_exports_are_judged_whole(outcomes, rows, report, blank, refers, more):
     """Any export gives a verdict, sentences and a text for every series, and what does not pass has a next step."""
     bench = Bench(aliquot=Measure(10, "mL"), levels={"A1": Measure(1, "mL")})
     stocks = (Stock("ZN-5", {"Zn": Measure(5, "mg/L")}),)
 
-    out = outcomes(rows, report=report, blank=blank, added_refers_to=refers, bench=bench, stocks=stocks)
+    out = outcomes(rows, report=report, blank=blank, added_refers_to=refers, bench=bench, stocks=stocks, **more)
 
     samples = {row["sample"] for row in rows if row["role"] in ("unspiked", "spiked")}
     assert {out.case.sample(i) for i in range(len(out.case))} == samples

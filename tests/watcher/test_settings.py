@@ -388,7 +388,7 @@ def test_all_faults_of_all_files_come_at_once() -> None:
         "config.yaml, line 8, report",
         "config.yaml, line 9, blank",
         "flame.yaml, line 3, separator",
-        "flame.yaml, line 7, columns.signal",
+        "flame.yaml, line 7, columns.signal[3]",
         "layout-2.yaml, line 9, bench.aliquot",
     ]
     assert "No export can be evaluated with this layout." in found[-1]
