@@ -12,16 +12,21 @@ pytestmark = pytest.mark.proof
 
 TRIALS = 20_000
 STANDARDS = np.array([0.0, 2.0, 4.0, 6.0, 8.0, 10.0])
-#: An interval that is printed must hold the truth at least so often; 93 % at the worst point, where noise of 10 % meets
-#: an effect of -30 %, elsewhere 94.7 % and more.
-LEAST = 0.93
+#: An interval that is printed must hold the truth at least so often.
+LEAST = 0.94
+#: Where noise of 10 % meets an effect of -30 % it holds it in 93 %: results that chance reads near zero carry a matrix
+#: effect in proportion to themselves, which is too small for a true content of 3.
+CORNER, LEAST_IN_CORNER = (-0.3, 0.10), 0.925
 
 
 def test_the_automatic_choice_covers(trials, tabulate):
     """Over matrix effects of ±30 %, 3 and 4 solutions, noise 1 to 10 %: printed intervals hold the truth."""
     random = np.random.Generator(np.random.PCG64(20261201))
-    table = tabulate("Automatic choice", "N", "effect", "noise", "by additions", "printed", "covered")
-    covered = []
+    table = tabulate(
+        "Automatic choice",
+        "N", "effect", "noise", "by additions", "printed", "covered", "additions cover", "calibrations cover",
+    )  # fmt: skip
+    covered = {}
     for n in (3, 4):
         added = np.linspace(0, 4, n)
         for effect in (-0.3, -0.1, 0.0, 0.1, 0.3):
@@ -38,6 +43,11 @@ def test_the_automatic_choice_covers(trials, tabulate):
                 high = np.where(by_additions, case.additions.high, case.back.results.high)
                 printed = np.isfinite(low) & np.isfinite(high)
                 held = (low <= native) & (high >= native)
-                covered.append(held[printed].mean())
-                table.add(n, effect, noise, by_additions.mean(), printed.mean(), covered[-1])
-    assert min(covered) >= LEAST
+                covered[n, effect, noise] = held[printed].mean()
+                parts = [
+                    held[chosen].mean() if chosen.any() else np.nan
+                    for chosen in (printed & by_additions, printed & ~by_additions)
+                ]
+                table.add(n, effect, noise, by_additions.mean(), printed.mean(), covered[n, effect, noise], *parts)
+    for (n, effect, noise), share in covered.items():
+        assert share >= (LEAST_IN_CORNER if (effect, noise) == CORNER else LEAST), (n, effect, noise)

@@ -1,4 +1,4 @@
-"""Slope recovery with the standard on top, where a growing vessel and the calibration's intercept meet, by simulation."""
+"""Slope recovery with the standard on top, where vessel growth and the calibration's intercept meet, by simulation."""
 
 from __future__ import annotations
 
@@ -42,9 +42,9 @@ def simulate(trials, random, *, volumes, ratio, intercept, noise, blank=0.0, bla
 def test_uncertainty_of_the_slope_recovery_in_a_growing_vessel(trials, tabulate, ratio, intercept):
     """Over 50,000 trials u of 100 β/b is the SD of 100 β/b within 5 %, and its 95 % interval covers in 94.5 % or more.
 
-    Vessels grow by up to 30 %, so the calibration's intercept is taken off before signals are scaled: without matrix the
-    mean is 100 %, whatever the intercept, and with the intercept's own uncertainty inside u. In a matrix that changes
-    the slope only, the mean is that change.
+    Vessels grow by up to 30 %, so the calibration's intercept is taken off before signals are scaled: without matrix
+    the mean is 100 %, whatever the intercept, and with the intercept's own uncertainty inside u. In a matrix that
+    changes the slope only, the mean is that change.
     """
     random = np.random.default_rng([45, int(10 * ratio), int(10 * intercept) + 100])
     table = tabulate(

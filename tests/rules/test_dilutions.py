@@ -48,11 +48,17 @@ def test_the_shift_is_the_intercept_of_signal_on_dilution(outcomes, make_blanks,
 
 @given(shift=st.floats(-0.1, 0.1))
 def test_a_constant_added_to_all_signals_is_found(outcomes, shift):
-    """The additions' result moves with it by shift/β and cannot show it; the dilution test returns it."""
-    rows = diluted([1, 5], [0.2 + shift, 0.04 + shift]) + spiked([1, 2, 3], [0.3 + shift, 0.4 + shift, 0.5 + shift])
+    """The additions alone move by shift/β (method, 12.5) and cannot show it; the dilution test returns it.
 
-    out = outcomes(rows)
+    The sample holds 2 mg/L and β is 0.1 L/mg.
+    """
+    additions = spiked([1, 2, 3], [0.3 + shift, 0.4 + shift, 0.5 + shift])
 
+    alone = outcomes(diluted([1], [0.2 + shift]) + additions)
+    out = outcomes(diluted([1, 5], [0.2 + shift, 0.04 + shift]) + additions)
+
+    assert alone.case.additions.value[0] == pytest.approx(2 + shift / 0.1, rel=1e-9)
+    assert np.isnan(alone.case.dilutions.shift[0])
     assert out.case.dilutions.shift[0] == pytest.approx(shift, abs=1e-12)
 
 

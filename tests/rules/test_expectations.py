@@ -100,6 +100,21 @@ def test_brackets_follow_the_order_of_the_run(outcomes, make_standards, check, k
     assert check(first, "bracket").outcome[0] == 1
 
 
+def test_the_time_of_measurement_goes_before_the_position(outcomes, make_standards):
+    """Where positions and times disagree, the time says that the check standard was measured after the sample."""
+    rows = [*make_standards(NOMINAL, READ), checked(), checked(), ordinary(1)]
+    times, positions = [0.0, 1.0, 2.0, 3.0, 5.0, 4.0], range(6)
+    numbered = [
+        row | {"measured_at": t, "position": float(p)} for row, t, p in zip(rows, times, positions, strict=True)
+    ]
+
+    timed = outcomes(numbered)
+    placed = outcomes([{k: v for k, v in row.items() if k != "measured_at"} for row in numbered])
+
+    assert timed.verdict_of(0) is Verdict.NOT_SPIKED
+    assert placed.verdict_of(0) is Verdict.INCOMPLETE
+
+
 def test_a_bracket_may_be_switched_off(outcomes, make_standards):
     """Where the laboratory does not bracket, an open one is no matter."""
     from rules.limits import parse_check_limits  # noqa: PLC0415

@@ -6,7 +6,7 @@ import numpy as np
 import pytest
 
 from rules.case import Reported
-from rules.method import Bench, Measure
+from rules.method import Bench, Measure, Stock
 from watcher.record import result_by
 
 ADDED, READ = [0.0, 2.0, 4.0, 6.0], [1.9, 3.6, 5.1, 6.9]
@@ -72,11 +72,38 @@ BENCH = Bench(aliquot=Measure(10, "mL"), made_up_to=Measure(50, "mL"))
 def test_what_a_concentration_refers_to_is_declared(outcomes, refers, native):
     """A concentration of the vessel is divided by the dilution, one of the sample is the result."""
     out = outcomes(
-        rows(added_refers=None), report="calibration", bench=BENCH, added_refers_to="vessel",
+        rows(), report="calibration", bench=BENCH, added_refers_to="vessel",
         concentration_refers_to=refers,
     )  # fmt: skip
 
     assert out.reported(0).value[0] == pytest.approx(native)
+
+
+def test_a_native_that_is_diluted_by_its_addition_is_taken_off_diluted(outcomes):
+    """10 mL with 1 and 2 mL of 44 mg/L on top: R_j = 100 (x_j - φ x_0)/c_j with φ = 10/(10 + v), c = 44 v/(10 + v).
+
+    By hand: φ = 10/11 and 10/12, c = 4 and 7.3333 mg/L, x_0 = 2.2 mg/L, so R_1 = 100 (5.6 - 2.0)/4 = 90 % and
+    R_2 = 100 (9.1667 - 1.8333)/7.3333 = 100 %.
+    """
+    read, volumes = [2.2, 5.6, 55 / 6], [0.0, 1.0, 2.0]
+    given = [
+        {
+            "sample": "ROOF-7",
+            "role": "spiked" if v else "unspiked",
+            "signal": 1000 * x,
+            "concentration": x,
+            **({"spike_volume": v} if v else {}),
+        }
+        for v, x in zip(volumes, read, strict=True)
+    ]
+
+    out = outcomes(
+        given, report="calibration", bench=Bench(aliquot=Measure(10, "mL")),
+        stocks=(Stock("ZN-44", {"Zn": Measure(44, "mg/L")}),), concentration_refers_to="vessel",
+    )  # fmt: skip
+
+    assert out.case.faults == {}
+    assert out.case.recoveries.each[1:] == pytest.approx([90.0, 100.0])
 
 
 def test_what_a_concentration_refers_to_is_never_assumed(outcomes):

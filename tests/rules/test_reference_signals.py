@@ -44,6 +44,24 @@ def test_the_unit_of_the_reference_does_not_matter(outcomes, scale):
     assert outcomes(scaled).reported(0).value[0] == pytest.approx(outcomes(plain).reported(0).value[0], rel=1e-9)
 
 
+@given(scale=st.floats(1e-3, 1e3))
+def test_the_unit_of_the_reference_does_not_matter_to_a_calibration(outcomes, make_standards, scale):
+    """Scaling every reference signal, the standards' included, leaves the calibration's result and U."""
+    sample = rows([1.0, 1.1, 0.9, 1.0])
+    standards = make_standards([0, 5, 10], [0.01, 0.5, 1.02], reference_signal=50.0)
+
+    plain, scaled = (
+        outcomes(
+            [row | {"reference_signal": k * row["reference_signal"]} for row in [*standards, *sample]],
+            report="calibration",
+        ).reported(0)
+        for k in (1.0, scale)
+    )
+
+    assert scaled.value[0] == pytest.approx(plain.value[0], rel=1e-9)
+    assert scaled.expanded_uncertainty[0] == pytest.approx(plain.expanded_uncertainty[0], rel=1e-9)
+
+
 def test_each_reading_is_divided_before_averaging(outcomes):
     """Two replicate rows with their own references give the mean of ratios, not the ratio of means."""
     pairs = [(4.0, 2.0), (9.0, 3.0)]

@@ -75,6 +75,21 @@ def test_additions_in_amounts_give_a_result_in_masses(outcomes, make_additions, 
     )
 
 
+def test_nitrate_counts_its_conventional_molar_mass(outcomes, make_additions, check):
+    """14.007 + 3 x 15.999 = 62.004 g/mol serves additions of nitrate, and `inputs` says that N and O vary in nature."""
+    signals = [0.2, 0.31, 0.39, 0.5]
+    amounts = [0, (1.0, "mmol/L"), (2.0, "mmol/L"), (3.0, "mmol/L")]
+
+    by_amount = outcomes(make_additions(signals, amounts, analyte="NO3"))
+    by_mass = outcomes(make_additions(signals, [0, 62.004, 124.008, 186.012], analyte="NO3"))
+
+    assert by_amount.reported(0).value[0] == pytest.approx(by_mass.reported(0).value[0], rel=1e-9)
+    assert check(by_amount, "inputs").sentence(0) == (
+        "all cells readable, volumes and concentrations possible; NO3 counts 62.004 g/mol (standard atomic weights, "
+        "IUPAC 2021, conventional value for N, O)"
+    )
+
+
 @given(scale=st.floats(0.1, 10))
 def test_a_result_in_amounts_is_the_one_in_masses_over_the_molar_mass(outcomes, make_additions, scale):
     """The same export in mmol/L and in mg/L, stock and interval included."""

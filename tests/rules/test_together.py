@@ -38,7 +38,7 @@ def samples(random, count):
 
 
 def numbers(out, i):
-    """Every number of a series: results, recoveries of the series and of its additions, and what the checks measured."""
+    """Every number of a series: results, recoveries of the series and its additions, what the checks measured."""
     case, found = out.case, {}
     for name, results in (("additions", case.additions), ("calibration", case.back.results)):
         found |= {f"{name} {part}": getattr(results, part)[i] for part in RESULT}
