@@ -13,7 +13,7 @@ import numpy as np
 
 from rules import line, variance
 from rules.interval import BlankTerm, Covariance, Interval, extrapolation, normal_quantile, student_t
-from rules.result import Results, Share, combine, with_fixed_factor
+from rules.result import Results, Share, combine, effective_dof, with_fixed_factor
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
@@ -259,6 +259,7 @@ def evaluate(
         dof=fits.spread(fits.dof),
         detected=~(tested <= 0),
         less_than=fits.spread(interval.high) * factor * shown,
+        effective_dof=effective_dof(shares, u),
         budget=shares,
         reasons=_reasons(fits, interval.g),
     )

@@ -158,7 +158,8 @@ def measured(check: Check, case: Case, series: int) -> str:
     name = check.name.replace("_", " ")
     value = float(check.value[series])
     if check.name == "inputs" or not np.isfinite(value):
-        return f"{name}: {check.sentence(series)}"
+        said = check.sentence(series)
+        return said if said.startswith(f"{name} ") else f"{name}: {said}"
     if check.limits is None:
         return f"{name} {figure(value)} {check.unit}".rstrip() + f": {check.sentence(series)}"
     limits = check.limits[int(case.limit_classes.of_series[series])]

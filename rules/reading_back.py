@@ -13,7 +13,7 @@ import numpy as np
 
 from rules.budget import common_of_read_back
 from rules.interval import Covariance, Interval, normal_quantile, read_back, student_t
-from rules.result import Results, Share, combine, with_fixed_factor
+from rules.result import Results, Share, combine, effective_dof, with_fixed_factor
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
@@ -121,6 +121,7 @@ def evaluate(series: Series, vessels: Vessels, seen: Seen, key: Integers, method
         dof=of(lines.dof.astype(float)),
         detected=~(x <= limits.decision[key]),
         less_than=limits.lod[key] * scale,
+        effective_dof=effective_dof(shares, u),
         budget=shares,
         reasons=_doubts(calibrations, of_series, interval) | _reasons(key, has, p, above, calibrations, of_series),
     )
@@ -198,6 +199,7 @@ def with_matrix_effect(back: ReadBack, recoveries: Recoveries, chosen: NDArray[n
         low = results.value - np.sqrt((results.value - results.low) ** 2 + added**2)
         high = results.value + np.sqrt((results.high - results.value) ** 2 + added**2)
         changed = added > 0
+        budget = (*results.budget, Share("matrix_effect", u, recoveries.slope_dof))
         results = replace(
             results,
             low=np.where(changed, low, results.low),
@@ -205,6 +207,7 @@ def with_matrix_effect(back: ReadBack, recoveries: Recoveries, chosen: NDArray[n
             standard_uncertainty=total,
             expanded_uncertainty=widened,
             coverage_factor=np.where(changed, widened / total, results.coverage_factor),
-            budget=(*results.budget, Share("matrix_effect", u, recoveries.slope_dof)),
+            effective_dof=effective_dof(budget, total),
+            budget=budget,
         )
     return replace(back, results=results)

@@ -50,6 +50,8 @@ class Results:
         float64[m], degrees of freedom of the line's share.
     detected
         bool[m]: False where the line alone cannot exclude zero, or a read-back stays below its decision limit.
+    effective_dof
+        float64[m], Welch and Satterthwaite's degrees of freedom of u, for information.
     less_than
         float64[m], what a result that is not detected is less than: the upper end of its interval, or the limit of
         detection.
@@ -68,6 +70,7 @@ class Results:
     dof: Floats
     detected: NDArray[np.bool_]
     less_than: Floats
+    effective_dof: Floats
     budget: tuple[Share, ...] = ()
     reasons: dict[int, str] = field(default_factory=dict)
 

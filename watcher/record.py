@@ -18,7 +18,6 @@ from rules import plan
 from rules.case import Reported
 from rules.checks import Check, Outcome
 from rules.outcomes import result_text
-from rules.result import effective_dof
 
 if TYPE_CHECKING:
     from collections.abc import Iterable, Iterator
@@ -144,7 +143,7 @@ def _result(case: Case, results: Results, i: int, by: str) -> dict[str, Any]:
         "coverage_factor": numbers["coverage_factor"],
         "low": numbers["low"],
         "high": numbers["high"],
-        "effective_dof": None if faulty else number(effective_dof(results.budget, results.standard_uncertainty)[i]),
+        "effective_dof": None if faulty else number(results.effective_dof[i]),
         "by": by,
         "text": result_text(results, i, case, case.method.confidence),
     }

@@ -491,7 +491,7 @@ def test_more_confidence_widens_the_interval(outcomes, make_additions):
 def test_halves_may_differ_by_a_quarter(high, symmetric):
     """Around 2 from 1 on: halves of 1.00 and 1.33 still allow ±, 1.00 and 1.34 do not, a missing end never does."""
     one = np.ones(1)
-    results = Results(2 * one, one, high * one, one, one, one, one, one.astype(bool), one)
+    results = Results(2 * one, one, high * one, one, one, one, one, one.astype(bool), one, one)
 
     assert results.symmetric(0) is symmetric
 
