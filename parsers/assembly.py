@@ -96,6 +96,8 @@ class _Assembly:
         spike_volume, level = values.quantities("spike_volume"), values.texts("level")
         role = find_roles(values, added, spike_volume, level, nominal)
         sample = self.sample(role)
+        if values.layout.sample_case == "ignore":
+            sample = renamed(sample, [name.upper() for name in sample.names])
         analyte = self.analyte()
         signals = self.signals()
         statistics: dict[str, Any] = {name: self.statistic(name) for name in fields.STATISTICS}
@@ -125,6 +127,8 @@ class _Assembly:
         columns["signals"] = signals if everything else signals[flat]
         if isinstance(table, RowTable) and table.across:
             columns["line"] = np.array(list(map(self.line_of_signal, row.tolist(), entry.tolist())), dtype=np.int64)
+            read = set(columns["line"].tolist())
+            table.set_aside = [one for one in table.set_aside if one.reason != fates.ACROSS or one.line not in read]
         return Readings(
             **columns,
             faults=find_faults(values, present, role),

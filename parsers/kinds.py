@@ -67,7 +67,11 @@ def sort_rows(sheet: Sheet, frame: Frame, layout: Layout) -> None:
                 (sheet.sd if kind == "sd" else sheet.rsd)[above] = sheet.rows[row]
         else:
             sheet.set_aside.append(SetAside(line, _REASONS[kind], text))
-            above, left_out, last = None, True, "\0"
+            above, left_out = None, True
+            if kind == "excluded":
+                count += 1  # the numbers of the replicates behind it stay what they are
+            else:
+                last = "\0"
     for name in ("rows", "lines", "across"):
         column = getattr(sheet, name)
         setattr(sheet, name, [column[row] for row in kept])

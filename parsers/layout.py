@@ -250,6 +250,7 @@ class Layout(_Part):
     unfold: Unfold | None = None
     labels: tuple[LabelRule, ...] = ()
     unmatched: Literal["refuse", "set aside"] = "refuse"
+    sample_case: Literal["as written", "ignore"] = "as written"
     cells: Cells = Cells()
     bench: Any = None
     stocks: Any = None

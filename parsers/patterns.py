@@ -6,6 +6,7 @@ Nothing here knows what a pattern is for.
 from __future__ import annotations
 
 import re
+import warnings
 from typing import Annotated
 
 from pydantic import PlainValidator
@@ -28,13 +29,19 @@ def compiled(value: object) -> re.Pattern[str]:
         found = "nothing" if value == "" else "a list" if isinstance(value, list) else "keys and values"
         raise ValueError(f"expected a search pattern, got {found}\nWrite it in single quotes: '^Label;'")
     try:
-        return re.compile(value)
+        with warnings.catch_warnings():
+            warnings.simplefilter("error")  # what Python warns of today will mean something else one day
+            return re.compile(value)
     except re.error as error:
         place = "" if error.pos is None else f" at character {error.pos + 1}"
-        raise ValueError(
-            f"expected a search pattern, got {value!r}, which breaks{place}: {error.msg}\n"
-            "Put a backslash before a character that is meant as itself"
-        ) from error
+        reason = f"{place}: {error.msg}"
+        cause: Exception = error
+    except (Warning, OverflowError, RecursionError) as error:
+        reason, cause = f": {str(error).lower()}", error
+    raise ValueError(
+        f"expected a search pattern, got {value!r}, which breaks{reason}\n"
+        "Put a backslash before a character that is meant as itself"
+    ) from cause
 
 
 Pattern = Annotated[re.Pattern[str], PlainValidator(compiled)]

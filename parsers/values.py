@@ -220,7 +220,8 @@ class Values:
             elif one.group:
                 said = self.understood.said.get(one.group)
                 texts = Texts.absent(self.rows) if said is None else looked_up(said, self.label)
-                found.append(Told(_cut(texts, one, name), self.label_header(), one, in_table=False))
+                unit = Texts.constant(one.stated_unit, self.rows) if one.stated_unit else None
+                found.append(Told(_cut(texts, one, name), self.label_header(), one, in_table=False, unit=unit))
             elif mapped is None and one.heading:
                 found.append(self._told_heading(one.heading, one, name))
             elif mapped is not None:
@@ -378,7 +379,8 @@ class Values:
                 raise self.frame.lines.refusal(told.heading_at, cell.expected, cell.remedy, told.header)
             known[text] = (cell, glued or stated)
         absent = Cell(Kind.MISSING, math.nan, "", "expected a number, got an empty cell", "Complete the export")
-        numbers = converted(texts, lambda text: known[text][0] if text else absent)
+        asked = told.in_table and not source.optional
+        numbers = converted(texts, lambda text: known[text][0] if text else absent, missing=asked)
         return numbers, renamed(texts, [known[text][1] or None for text in texts.names])
 
     @staticmethod
