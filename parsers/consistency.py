@@ -44,6 +44,8 @@ def _form(layout: Layout) -> Iterator[Finding]:
     """Check how the table lies in the export."""
     if not layout.separator and not layout.widths:
         yield ("separator",), "the key 'separator' is missing", "Add it, or the widths of the columns"
+    if layout.table == "pairs" and layout.widths:
+        yield ("widths",), "lines of name and value are parted by a separator", "Write for instance separator: '='"
     if layout.separator and layout.widths:
         yield ("widths",), "separator says already where the columns end", "Keep one of the two"
     for number, line in enumerate(layout.repeat_right):

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import sys
+from pathlib import Path
 from typing import TYPE_CHECKING
 
 import pytest
@@ -14,6 +16,8 @@ if TYPE_CHECKING:
 
     from parsers.layout import Layout
     from parsers.readings import Readings
+
+sys.path.insert(0, str(Path(__file__).parent))  # `fuzzing` is a program of its own, and a module of its test
 
 BENCH = {
     "layout": "flame bench",

@@ -13,24 +13,31 @@ import time
 import traceback
 from dataclasses import dataclass
 from fnmatch import fnmatch
+from functools import cache
 from pathlib import Path
+from typing import TYPE_CHECKING
 
 from parsers.errors import DocumentInvalid, ExportRefused
 from parsers.layout import Layout, parse_layout
 from parsers.read import claims, is_finished, read
 
+if TYPE_CHECKING:
+    from parsers.readings import Readings
+
 EXPORTS = Path(__file__).parents[1] / "exports"
 #: Longest time for one of them, in seconds: a thousand times what it should take.
 DEADLINE = 10.0
 TOKENS = [
-    b"", b" ", b";", b",", b"\t", b'"', b"'", b"\r", b"\n", b"\r\n", b"\0", b"\xff\xfe", b"\xef\xbb\xbf", b"\x0c", b"\x1f",
-    b"1.234", b"1,234", b"007", b"1E5", b"NA", b"None", b"TRUE", b"nan", b"inf", b"-", b"1e999", b"<0.02", b">", b"OVR", b"=1+1",
-    b"[10]", b"[Data]", b"Label", b"Mean", b"\xb5", b"\xc2\xa0", b"\xe2\x80\xaf", b"\xed\xa0\x80", b"0" * 400, b"=" * 60, b"\xf0\x9f\x90\x9f",
+    b"", b" ", b";", b",", b"\t", b'"', b"'", b"\r", b"\n", b"\r\n", b"\0", b"\xff\xfe", b"\xef\xbb\xbf", b"\x0c",
+    b"\x1f", b"1.234", b"1,234", b"007", b"1E5", b"NA", b"None", b"TRUE", b"nan", b"inf", b"-", b"1e999", b"<0.02",
+    b">", b"OVR", b"=1+1", b"[10]", b"[Data]", b"Label", b"Mean", b"\xb5", b"\xc2\xa0", b"\xe2\x80\xaf",
+    b"\xed\xa0\x80", b"0" * 400, b"=" * 60, b"\xf0\x9f\x90\x9f",
 ]  # fmt: skip
 WORDS = [
-    "", " ", ":", ": ", "- ", "[", "]", "{", "}", "'", '"', "|", "*", "&a", "!x", "#", "\t", "none", "refuse", "columns", "from", "constant",
-    "heading", "blocks", "begin", "(?P<analyte>.)", "(", "[a-", "{99999999999}", "0", "-1", "1e9", "transposed", "grid", "pairs", "blanks",
-    "label", "sample", "signal", "unit", "in cell", "rows", "are: rsd", "ratio", "\u2028", "\x07",
+    "", " ", ":", ": ", "- ", "[", "]", "{", "}", "'", '"', "|", "*", "&a", "!x", "#", "\t", "none", "refuse",
+    "columns", "from", "constant", "heading", "blocks", "begin", "(?P<analyte>.)", "(", "[a-", "{99999999999}", "0",
+    "-1", "1e9", "transposed", "grid", "pairs", "blanks", "label", "sample", "signal", "unit", "in cell", "rows",
+    "are: rsd", "ratio", "\u2028", "\x07",
 ]  # fmt: skip
 
 
@@ -45,6 +52,7 @@ class Case:
     layout: Layout
 
 
+@cache
 def cases() -> list[Case]:
     """Read the invented exports."""
     found = []
@@ -136,16 +144,23 @@ def judge(layout: Layout, data: bytes, name: str) -> str:
     is_finished(layout, data)
     try:
         readings = read(data, layout, name)
-    except ExportRefused as refused:
-        assert name in str(refused)
-        assert refused.remedy
-        return "refused"
+    except ExportRefused as error:
+        refused = error
+    else:
+        _account(readings)
+        return "read"
+    assert name in str(refused)
+    assert refused.remedy
+    return "refused"
+
+
+def _account(readings: Readings) -> None:
+    """Look for each line among the readings and those set aside."""
     known = {*readings.line.tolist(), *(one.line for one in readings.set_aside)}
     lost = set(range(1, readings.lines + 1)) - known
     assert not lost, f"lines {sorted(lost)} are neither read nor set aside"
     assert known <= set(range(1, readings.lines + 1))
     assert len(readings)
-    return "read"
 
 
 def work(what: str, first: int, count: int) -> dict[str, int]:
@@ -179,10 +194,12 @@ def _judge_layout(document: str, case: Case) -> str:
     try:
         layout = parse_layout(document, "layout.yaml", case.tables)
     except DocumentInvalid as invalid:
-        assert invalid.faults
-        assert all(fault.sentence.endswith((".", "?")) and "layout.yaml" in str(fault) for fault in invalid.faults)
-        return "faults"
-    return judge(layout, case.export, case.name)
+        faults = invalid.faults
+    else:
+        return judge(layout, case.export, case.name)
+    assert faults
+    assert all(fault.sentence.endswith((".", "?")) and "layout.yaml" in str(fault) for fault in faults)
+    return "faults"
 
 
 def _too_long(*_: object) -> None:
