@@ -172,7 +172,8 @@ class _Assembly:
         raise self.values.frame.lines.refusal(
             first,
             f"expected every label to match a rule, got {', '.join(named)}{more}",
-            "Correct the labels, add rules to labels in the layout, or write unmatched: set aside",
+            "Correct the labels, add rules to labels in the layout, end the table above them with until, "
+            "or write unmatched: set aside",
             self.values.label_header(),
         )
 

@@ -160,7 +160,7 @@ def resolve(frame: Frame, layout: Layout) -> Plan:
         if mapped:
             choices[name] = mapped
     if missing:
-        raise _missing(frame, missing)
+        raise _missing(frame, missing, guessed=layout.header is None)
     taken = {at for found in choices.values() for one in found.values() for at in one.columns}
     entries = () if layout.unfold is None else _spread(frame, layout.unfold, taken)
     return Plan(choices, entries, _uses(frame.headers, choices, entries))
@@ -238,11 +238,14 @@ def _with_unit(frame: Frame, name: str, mapped: Mapped) -> Mapped:
     return replace(mapped, unit=fold(match.group(1)))
 
 
-def _missing(frame: Frame, missing: list[tuple[str, str]]) -> ExportRefused:
+def _missing(frame: Frame, missing: list[tuple[str, str]], *, guessed: bool = False) -> ExportRefused:
     wanted = ", ".join(f"{name!r} (for {field})" for name, field in missing)
     hints = {hint for name, _ in missing if (hint := suggestion(name, filter(None, frame.headers)).strip())}
     sentence = f"expected the columns {wanted}, and the header does not have them; it holds {listed(frame.headers)}"
     todo = " ".join([*sorted(hints), "Correct the names or the separator in the layout"])
+    if guessed:
+        line = frame.header_at + 1
+        todo += f", or write there which line is the header (header: '^…'): without it line {line} was taken"
     return frame.lines.refusal(frame.header_at, sentence, todo)
 
 

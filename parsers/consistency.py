@@ -5,6 +5,7 @@ Each check yields the place, what is wrong, and what to do. Nothing here looks a
 
 from __future__ import annotations
 
+import re
 from datetime import datetime
 from typing import TYPE_CHECKING, TypeAlias
 
@@ -161,6 +162,20 @@ def _source(layout: Layout, field: str, source: Source, place: Loc) -> Iterator[
         yield (*place, "unit"), "a unit of the export belongs to a column", "Write the unit itself"
     if source.map and field not in fields.TEXTS:
         yield (*place, "map"), f"{field!r} is no text, so words cannot be mapped", "Take it out"
+    yield from _numbers(field, source, place)
+    yield from _names(layout, field, source, place)
+    if field == "role":
+        yield from _role_words(source, place)
+    if field == "measured_at":
+        yield from _time(source, place)
+    elif source.format:
+        yield (*place, "format"), f"{field!r} is no time", "Take it out"
+    if source.constant is not None:
+        yield from _constant(field, source.constant, place)
+
+
+def _numbers(field: str, source: Source, place: Loc) -> Iterator[Finding]:
+    """Check what is said of how a number is written."""
     numeric = field in (*fields.NUMBERS, *fields.QUANTITIES, "predilution")
     if source.scale is not None and not numeric:
         yield (*place, "scale"), f"{field!r} is no number", "Take it out"
@@ -169,6 +184,10 @@ def _source(layout: Layout, field: str, source: Source, place: Loc) -> Iterator[
     if source.as_ == "ratio" and len(source.names) != 2:
         what = f"expected two columns for a ratio, got {len(source.names)}"
         yield place, what, "Write from: [volume taken, volume made up to]"
+
+
+def _names(layout: Layout, field: str, source: Source, place: Loc) -> Iterator[Finding]:
+    """Check the names of headings and groups that a source refers to."""
     if source.heading and source.heading not in layout.headings:
         hint = suggestion(source.heading, layout.headings).strip()
         yield (*place, "heading"), f"no heading is named {source.heading!r}", hint or "Add it under heading or blocks"
@@ -179,14 +198,6 @@ def _source(layout: Layout, field: str, source: Source, place: Loc) -> Iterator[
     if source.pattern is not None and source.pattern.groups > 1 and field not in source.pattern.groupindex:
         what = f"expected one group around what is meant, got {source.pattern.groups}"
         yield (*place, "pattern"), what, f"Name one of them: (?P<{field}>…)"
-    if field == "role":
-        yield from _role_words(source, place)
-    if field == "measured_at":
-        yield from _time(source, place)
-    elif source.format:
-        yield (*place, "format"), f"{field!r} is no time", "Take it out"
-    if source.constant is not None:
-        yield from _constant(field, source.constant, place)
 
 
 def _role_words(source: Source, place: Loc) -> Iterator[Finding]:
@@ -204,7 +215,7 @@ def _time(source: Source, place: Loc) -> Iterator[Finding]:
     for form in source.format:
         try:
             understood = datetime.strptime(_TRIAL.strftime(form), form)  # noqa: DTZ007 (exports write local time)
-        except ValueError:
+        except (ValueError, re.error):  # a code that stands twice breaks the pattern that Python makes of it
             understood = None
         if understood is None or understood.date() != _TRIAL.date():
             what = f"expected a form with day, month and year, got {form!r}"

@@ -18,11 +18,9 @@ from parsers.spelling import listed, suggestion
 if TYPE_CHECKING:
     from collections.abc import Iterator
 
+_FIRST = ("line", "label", "sample", "role", "analyte", "channel", "signal")
 #: Columns that an expected table may have, in the order in which they are written.
-COLUMNS = (
-    "line", "label", "sample", "role", "analyte", "channel", "signal",
-    *(name for name in fields.ALL if name not in ("label", "sample", "role", "analyte", "channel", "signal", "excluded")),
-)  # fmt: skip
+COLUMNS = (*_FIRST, *(name for name in fields.ALL if name not in (*_FIRST, "excluded")))
 
 
 def written(readings: Readings) -> list[dict[str, str]]:
@@ -75,12 +73,10 @@ def _same(one: str, other: str) -> bool:
 
 
 def _text(readings: Readings, name: str, row: int) -> str:
-    if name == "line":
-        return str(int(readings.line[row]))
     if name == "role":
         return Role(int(readings.role[row])).word
     if name == "signal":
-        return " ".join(_number(value) for value in readings.signals[row].tolist() if not math.isnan(value))
+        return " ".join(filter(None, map(_number, readings.signals[row].tolist())))
     column = getattr(readings, name)
     if isinstance(column, Texts):
         return column[row] or ""

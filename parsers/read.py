@@ -107,11 +107,11 @@ def read(data: bytes, layout: Layout, name: str) -> Readings:
 
 def _read_plain(lines: Lines, layout: Layout) -> Readings:
     frame = find_table(lines, layout)
+    singles = layout.singles()
+    plans = [resolve(frame, single) for single in singles]  # first, so that a wrong header is not said of a heading
     above = lines.head(frame.header_at)
     heading = read_name(lines, layout)
     heading |= read_heading(lines, layout.heading, enumerate(above), "above the table", None)
-    singles = layout.singles()
-    plans = [resolve(frame, single) for single in singles]
     block = read_block(frame, layout, plans[0]) if len(plans) == 1 else None
     table = block or read_rows(frame, layout)
     _refuse_empty(lines, frame, table)

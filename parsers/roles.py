@@ -87,7 +87,8 @@ def _note_strange(values: Values, rows: NDArray[np.bool_], said: Texts) -> None:
     for row in np.flatnonzero(rows).tolist():
         word = said[row] or ""
         expected = f"expected a role ({listed(ROLE_WORDS)}), got {shown(word)}"
-        todo = "Explain the word in the layout: columns.role.map"
+        document = values.layout.document
+        todo = f"Explain the word in {document.path}, line {document.line(('columns', 'role'))}: columns.role.map"
         cells[row] = Cell(Kind.UNREADABLE, np.nan, word, expected, todo)
     values.doubt("role", values.header_of("role"), cells)
 

@@ -72,14 +72,34 @@ def answer(text: str, error: yaml.MarkedYAMLError) -> tuple[int, str, str]:
         return mark.line + 1, "a tab stands where YAML wants blanks", "Indent with blanks"
     if "end of stream" in problem and error.context and "quoted" in error.context:
         return start.line + 1, "a quote is opened here and never closed", "Close it, or double it where it is meant"
-    value = _piece(line, mark.column)
+    return mark.line + 1, *(_indentation(lines, mark.line, problem) or _unreadable(line, mark.column, problem))
+
+
+def _unreadable(line: str, column: int, problem: str) -> tuple[str, str]:
+    value = _piece(line, column)
     if value and _SPECIAL.search(value):
-        return mark.line + 1, f"YAML does not read {value} as text", remedy(value)
+        return f"YAML does not read {value} as text", remedy(value)
     return (
-        mark.line + 1,
         f"this is no valid YAML ({problem})",
         "Look at the indentation, at brackets and quotes, and for a missing ': ' here or in the line before",
     )
+
+
+def _indentation(lines: list[str], at: int, problem: str) -> tuple[str, str] | None:
+    """Explain a key that stands further right, or further left, than those it belongs to; None where this is not it."""
+    if at >= len(lines) or not re.match(r" *[\w'\"-]+ *:(?: |$)", lines[at]):
+        return None
+    before = next((number for number in range(at - 1, -1, -1) if lines[number].strip()), None)
+    if before is None:
+        return None
+    here, above = (len(lines[number]) - len(lines[number].lstrip(" ")) for number in (at, before))
+    if "mapping values" in problem and here > above and re.search(r":\s+\S", lines[before]):
+        what = f"the key is indented by {here} blanks, the one above by {above}, which has a value already"
+        return what, f"Indent both alike, or take the value of line {before + 1} away if this key belongs to it"
+    if "expected <block end>" in problem or "could not find expected" in problem:
+        what = f"the key is indented by {here} blanks, which fits none of the keys above"
+        return what, "Indent keys that belong together alike"
+    return None
 
 
 def _double_quoted(line: str, column: int) -> str:

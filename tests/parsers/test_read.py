@@ -301,7 +301,7 @@ def test_a_role_column_with_words_and_codes(read_text: Callable[..., Readings]) 
         "blank",
     ]
     assert [(fault.line, fault.cell) for fault in readings.faults] == [(5, "Q")]
-    assert "Explain the word in the layout: columns.role.map" in faults(readings)[0]
+    assert "Explain the word in layouts/flame.yaml, line 5: columns.role.map" in faults(readings)[0]
 
 
 def test_a_label_rule_overrules_the_role_column(read_text: Callable[..., Readings]) -> None:
