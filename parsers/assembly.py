@@ -6,6 +6,7 @@ splits lines or converts cells.
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass, field, replace
 from typing import TYPE_CHECKING, Any
 
@@ -22,6 +23,8 @@ from parsers.table import RowTable
 from parsers.values import Odd, Values, filled
 
 if TYPE_CHECKING:
+    import re
+
     from numpy.typing import NDArray
 
     from parsers.columns import Entry, Plan
@@ -94,7 +97,8 @@ class _Assembly:
         self.unmatched()
         added, nominal = values.quantities("added"), values.quantities("nominal")
         spike_volume, level = values.quantities("spike_volume"), values.texts("level")
-        role = find_roles(values, added, spike_volume, level, nominal)
+        of_entries = self.nominals()
+        role = find_roles(values, added, spike_volume, level, self.any_nominal(nominal, of_entries))
         sample = self.sample(role)
         if values.layout.sample_case == "ignore":
             sample = renamed(sample, [name.upper() for name in sample.names])
@@ -121,6 +125,10 @@ class _Assembly:
         row, entry = np.nonzero(present)
         everything = bool(present.all()) and len(values.plan.entries) <= 1
         columns = {name: column if everything else _take(column, row) for name, column in per_row.items()}
+        if of_entries is not None:
+            del per_row["nominal"], columns["nominal"]
+            rows = np.repeat(np.arange(values.rows), len(values.plan.entries))
+            statistics["nominal"] = _first(of_entries, nominal.take(rows))
         per_reading = {"analyte": analyte[0], "channel": analyte[1], **statistics}
         flat = row * present.shape[1] + entry
         columns |= {name: column if everything else _take(column, flat) for name, column in per_reading.items()}
@@ -308,6 +316,37 @@ class _Assembly:
         units = [one.units[row] for row in range(values.rows) for one in found]
         return Quantities(np.stack([one.values for one in found], axis=1).ravel(), Texts.of(units))
 
+    def nominals(self) -> Quantities | None:
+        """Return the nominal concentration that a wide table says of each reading; None where it says none."""
+        values, unfold = self.values, self.values.layout.unfold
+        entries = values.plan.entries
+        if unfold is None or (unfold.nominal is None and not any("nominal" in entry.columns for entry in entries)):
+            return None
+        if unfold.nominal is None:
+            return self.quantity("nominal")
+        found = []
+        for entry in entries:
+            place = "concentration" if "concentration" in entry.columns else "signal"
+            texts = values.table.texts(entry.columns[place][0])
+            cells = [self.bracketed(unfold.nominal, text) for text in (*texts.names, "")]
+            units = self.unit_of(entry, place) if place == "concentration" else Texts.absent(values.rows)
+            found.append(Quantities(np.array(cells)[texts.codes], units))
+        units_of = [one.units[row] for row in range(values.rows) for one in found]
+        return Quantities(np.stack([one.values for one in found], axis=1).ravel(), Texts.of(units_of))
+
+    def bracketed(self, pattern: re.Pattern[str], text: str) -> float:
+        """Return the number that a pattern finds in a cell, NaN where it finds none."""
+        match = pattern.search(text)
+        return math.nan if match is None else self.values.layout.grammar.cell(match[1] or "").value
+
+    def any_nominal(self, of_rows: Quantities, of_entries: Quantities | None) -> Quantities:
+        """Return for each row whether any of its readings has a nominal concentration."""
+        if of_entries is None:
+            return of_rows
+        cube = of_entries.values.reshape(self.values.rows, -1)
+        any_of_row = np.where(np.isfinite(cube).any(axis=1), 1.0, np.nan)
+        return Quantities(np.where(np.isfinite(of_rows.values), of_rows.values, any_of_row), of_rows.units)
+
     def unit_of(self, entry: Entry, name: str) -> Texts:
         """Return the unit that the header of a wide table says."""
         unit = entry.units.get(name)
@@ -320,17 +359,28 @@ class _Assembly:
         """
         entries = max(len(self.values.plan.entries), 1)
         present = np.repeat(self.keep[:, np.newaxis], entries, axis=1)
-        samples = is_sample(role)
+        unfold = self.values.layout.unfold
+        samples = is_sample(role) & (unfold is None or not unfold.optional)
+        nominal = unfold.nominal if unfold is not None else None
         for odd in self.values.odd:
             if odd.field != "signal" or odd.entry is None:
                 continue
             for row, cell in odd.cells.items():
-                if cell.kind is Kind.MISSING and not samples[row] and self.keep[row]:
+                bracketed = nominal is not None and cell.kind is Kind.UNREADABLE and nominal.search(cell.text)
+                empty = cell.kind is Kind.MISSING or bracketed
+                if empty and not samples[row] and self.keep[row]:
                     present[row, odd.entry] = False
                     reason = f"no reading in column {odd.header!r}: the {Role(role[row]).word} does not hold it"
                     text = self.values.label[row] or ""
                     self.set_aside.append(SetAside(int(self.values.table.line[row]), reason, text))
         return present
+
+
+def _first(one: Quantities, other: Quantities) -> Quantities:
+    """Return the first of two columns where it has a number, else the second."""
+    known = np.isfinite(one.values)
+    units = filled(Texts(np.where(known, one.units.codes, -1).astype(np.int32), one.units.names), other.units)
+    return Quantities(np.where(known, one.values, other.values), units)
 
 
 def _take(column: Any, rows: NDArray[np.int64]) -> Any:

@@ -280,6 +280,9 @@ def _unfold(layout: Layout) -> Iterator[Finding]:
     given = list(unfold.fields.values())
     if given and "signal" not in given:
         yield ("unfold", "fields"), "no word means signal", "Add the word of the readings, as in fields: {Mean: signal}"
+    if unfold.nominal is not None and unfold.nominal.groups != 1:
+        what = f"expected one group in brackets around the nominal value, got {unfold.nominal.groups}"
+        yield ("unfold", "nominal"), what, r"Write for instance '^\[(.+)\]$'"
     if unfold.map and "analyte" not in groups:
         yield ("unfold", "map"), "the pattern has no group 'analyte', so no word is mapped", "Take map out"
     if {"signal_sd", "signal_rsd"} <= set(given):
@@ -293,6 +296,8 @@ def _labels(layout: Layout) -> Iterator[Finding]:
     elif layout.document.values.get("unmatched"):
         yield ("unmatched",), "no label rules stand in this layout", "Take it out, or add labels"
     said = {field for field, _ in layout.columns.given()} | layout.headings | _looked_up(layout)
+    if layout.unfold is not None and (layout.unfold.nominal or "nominal" in layout.unfold.fields.values()):
+        said.add("nominal")
     known = said & {"role", "added", "spike_volume", "level", "nominal"}
     if not layout.labels and not known:
         todo = "Add labels, or map role, added or spike_volume"

@@ -36,7 +36,7 @@ def written_csv(readings: Readings) -> str:
     return "".join(",".join(map(_quoted, line)) + "\n" for line in lines)
 
 
-def differences(readings: Readings, expected: str, name: str) -> Iterator[str]:
+def differences(readings: Readings, expected: str, name: str = "expected") -> Iterator[str]:
     """Yield where the readings are not those of an expected table.
 
     Parameters

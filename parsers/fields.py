@@ -31,7 +31,7 @@ FROM_LABEL = (
 JOINED_ON = ("label", "sample", "position", "level", "batch", "analyte")
 #: What a header of a wide table may say by its named groups, and what its columns may hold.
 UNFOLD_GROUPS = ("analyte", "channel", "field", "replicate", "unit")
-UNFOLD_FIELDS = ("signal", "signal_sd", "signal_rsd", "readings", *OF_READINGS)
+UNFOLD_FIELDS = ("signal", "signal_sd", "signal_rsd", "readings", "nominal", *OF_READINGS)
 #: Fields whose missing cell on a sample is a fault: a silent default would change its result.
 NEEDED_ON_SAMPLES = ("aliquot", "made_up_to", "mass", "digest_volume", "predilution")
 #: Statistics beside a signal: a cell that says nothing does not spoil the signal.

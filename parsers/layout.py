@@ -149,11 +149,14 @@ class Unfold(_Part):
     fields: dict[
         str,
         Literal[
-            "signal", "signal_sd", "signal_rsd", "readings", "concentration", "reported_result", "reference_signal"
+            "signal", "signal_sd", "signal_rsd", "readings", "concentration", "reported_result", "reference_signal",
+            "nominal",
         ],
     ] = {}  # fmt: skip
     except_: Pattern | None = Field(default=None, alias="except")
     map: dict[str, str] = {}
+    nominal: Pattern | None = None
+    optional: bool = False
 
 
 class Marks(_Part):

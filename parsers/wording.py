@@ -93,7 +93,7 @@ def explained(error: ErrorDetails, model: type[BaseModel]) -> tuple[str, str]:
     if wanted is None:
         return f"{error['msg']}, got {got(error['input'])}", ""
     hint = suggestion(error["input"], _words(wanted)).strip() if isinstance(error["input"], str) else ""
-    return f"expected {wanted}, got {got(error['input'])}", hint
+    return f"expected {wanted}, got {got(error['input'])}", hint or ("Write one of these" if _words(wanted) else "")
 
 
 def either(wanted: list[str], value: object) -> str:

@@ -7,7 +7,8 @@ from datetime import UTC, datetime
 from typing import TYPE_CHECKING, Any
 
 from parsers.errors import ExportRefused
-from parsers.read import claims
+from parsers.examples import differences
+from parsers.read import claims, read
 from rules.limits import DEFAULTS
 from rules.outcomes import Verdict
 from watcher.clock import SystemClock, moment, stamp
@@ -55,6 +56,10 @@ def check(config: Path) -> int:
     doubled = list(_claimed_twice(settings))
     if doubled:
         lines(console(error=True), doubled)
+        return NOT_DONE
+    unlike = list(_unlike_examples(settings))
+    if unlike:
+        lines(console(error=True), unlike)
         return NOT_DONE
     out = console()
     file = settings.file
@@ -113,6 +118,26 @@ def _claimed_twice(settings: Settings) -> Iterator[str]:
                         f"{name}: expected one layout to claim it, got {' and '.join(claiming)}. It would be refused. "
                         f"Narrow claims.file or claims.text of one of them."
                     )
+
+
+def _unlike_examples(settings: Settings) -> Iterator[str]:
+    """Yield where the examples of a layout, which lie beside it, are not read as they say."""
+    for layout, _ in settings.layouts:
+        folder = settings.path(layout.document.path).parent
+        for number, example in enumerate(layout.examples):
+            place = f"{layout.document.path}, line {layout.document.line(('examples', number))}, examples[{number + 1}]"
+            try:
+                data = (folder / example.export).read_bytes()
+                expected = (folder / example.expected).read_text("utf-8-sig")
+                found = differences(read(data, layout, example.export), expected, example.expected)
+                yield from (f"{place}: {one}" for one in found)
+            except OSError as error:
+                reason = (error.strerror or str(error)).lower()
+                yield f"{place}: {error.filename}: {reason}. The example proves nothing. Put it there, or take it out."
+            except UnicodeDecodeError:
+                yield f"{place}: expected UTF-8 text in {example.expected}. Save the file as UTF-8."
+            except ExportRefused as refused:
+                yield f"{place}: {refused}"
 
 
 def explain(config: Path, export: Path) -> int:
