@@ -12,6 +12,7 @@ from typing import TYPE_CHECKING, Literal
 from pydantic import BaseModel, ConfigDict, model_validator
 
 from parsers import fields
+from parsers.patterns import Pattern  # noqa: TC001 (pydantic reads annotations)
 from parsers.source import Source  # noqa: TC001 (pydantic reads annotations)
 from parsers.spelling import fold, listed, suggestion
 
@@ -20,6 +21,7 @@ if TYPE_CHECKING:
 
     from parsers.document import Loc
     from parsers.readings import Texts
+    from parsers.text import Lines
 
 #: Fields that cannot stand in a side table: they are measured.
 _MEASURED = ("signal", "signal_sd", "signal_rsd", "readings", "measured_at")
@@ -36,8 +38,11 @@ class Lookup(BaseModel):
         The field whose text (or number) is looked for.
     file, key, separator, decimal
         A CSV file, the header of its column to compare with (default: the first), and how it is written.
+    begin, end, table
+        Instead of a file: a part of the export itself, behind a line and before another one (or the end); its rows
+        under their header, or a plate with the columns ``well, row, column, value``.
     columns
-        Field to column of the file.
+        Field to column of the file or part.
     values
         Instead of a file: for each key the fields and their values.
     optional
@@ -49,23 +54,31 @@ class Lookup(BaseModel):
     by: Literal["label", "sample", "position", "level", "batch", "analyte"]
     file: str = ""
     key: str = ""
-    separator: Literal[",", ";", "tab", "|"] = ","
-    decimal: Literal[".", ","] = "."
+    separator: Literal[",", ";", "tab", "|"] | None = None
+    decimal: Literal[".", ","] | None = None
+    begin: Pattern | None = None
+    end: Pattern | None = None
+    table: Literal["rows", "grid"] = "rows"
     columns: dict[str, Source] = {}
     values: dict[str, dict[str, str]] = {}
     optional: bool = False
 
     @model_validator(mode="after")
     def _one_form(self) -> Lookup:
-        if bool(self.file) == bool(self.values):
-            raise ValueError("expected either 'file' or 'values'\nKeep one of the two")
-        if self.file and not self.columns:
+        if bool(self.file) + bool(self.values) + (self.begin is not None) != 1:
+            raise ValueError("expected either 'file', 'begin' or 'values'\nKeep one of them")
+        if not self.values and not self.columns:
             raise ValueError("expected 'columns' with the fields to look up, got none\nWrite columns: {added: Added}")
         for field in self.fields:
             if field not in fields.ALL or field in _MEASURED or (field == self.by and field != "label"):
                 hint = suggestion(field, fields.ALL).strip() or "Take it out"
                 raise ValueError(f"{field!r} is no field that can be looked up by {self.by}\n{hint}")
         return self
+
+    @property
+    def place(self) -> str:
+        """Where the table is, in words."""
+        return self.file or (f"the part behind {self.begin.pattern!r}" if self.begin is not None else "lookup")
 
     @property
     def fields(self) -> frozenset[str]:
@@ -96,6 +109,8 @@ class SideTable:
         cls, lookup: Lookup, number: int, tables: Mapping[str, str] | None, faults: list[tuple[Loc, str, str]]
     ) -> SideTable:
         """Read a side table; what is wrong with it is added to the faults of the layout."""
+        if lookup.begin is not None:
+            return cls(lookup, {})
         if not lookup.file:
             entries: dict[str, dict[str, str]] = {}
             for key, said in lookup.values.items():
@@ -112,15 +127,41 @@ class SideTable:
         faults += [(place, what, todo) for what, todo in found]
         return cls(lookup, {}, known=False) if found else cls(lookup, _entries(lookup, tables[lookup.file]))
 
-    def missing(self, keys: Texts) -> list[str]:
-        """Return the keys, in order, that the table does not have."""
-        known = frozenset().union(*self.entries.values()) if self.entries else frozenset()
-        return [key for key in keys.names if _key(key, self.lookup) not in known]
+    def of_export(self, lines: Lines, separator: str) -> SideTable:
+        """Return the table filled from its part of an export; one that lies elsewhere stays as it is.
+
+        Raises
+        ------
+        ExportRefused
+            If the part is not there, or something is wrong with it.
+        """
+        lookup = self.lookup
+        if lookup.begin is None:
+            return self
+        first = next((at for at, line in enumerate(lines.lines) if lookup.begin.search(line)), None)
+        if first is None:
+            sentence = f"expected a line that matches {lookup.begin.pattern!r} (lookup), got none"
+            raise lines.refusal(None, sentence, "Correct lookup in the layout, or export again")
+        last = len(lines)
+        if lookup.end is not None:
+            last = next((at for at in range(first + 1, last) if lookup.end.search(lines.lines[at])), last)
+        text = "\n".join(lines.lines[first + 1 : last])
+        written = replace_separator(lookup, separator)
+        for what, todo in _faults(written, text):
+            raise lines.refusal(first, what, todo)
+        return SideTable(lookup, _entries(written, text))
 
     def texts(self, field: str, keys: Texts) -> list[str | None]:
         """Return what the table says of a field for each distinct key."""
         entries = self.entries.get(field, {})
         return [entries.get(_key(key, self.lookup)) or None for key in keys.names]
+
+
+def replace_separator(lookup: Lookup, separator: str) -> Lookup:
+    """Return a lookup that is written with the separator of the export where it names none."""
+    word = {"\t": "tab"}.get(separator, separator)
+    known = lookup.separator is not None or word not in (",", ";", "tab", "|")
+    return lookup if known else lookup.model_copy(update={"separator": word})
 
 
 def _key(text: str, lookup: Lookup) -> str:
@@ -134,9 +175,19 @@ def _key(text: str, lookup: Lookup) -> str:
 
 
 def _records(lookup: Lookup, text: str) -> list[tuple[int, list[str]]]:
-    separator = "\t" if lookup.separator == "tab" else lookup.separator
+    separator = "\t" if lookup.separator == "tab" else lookup.separator or ","
     reader = csv.reader(text.removeprefix("\ufeff").splitlines(keepends=True), delimiter=separator, strict=True)
-    return [(reader.line_num, [fold(cell) for cell in record]) for record in reader if any(map(str.strip, record))]
+    records = [(reader.line_num, list(map(fold, record))) for record in reader if any(map(str.strip, record))]
+    if lookup.table == "rows" or not records:
+        return records
+    numbers = records[0][1]
+    wells = [
+        (line, [row[0] + number, row[0], number, cell])
+        for line, row in records[1:]
+        for number, cell in zip(numbers[1:], row[1:], strict=False)
+        if cell and number
+    ]
+    return [(records[0][0], ["well", "row", "column", "value"]), *wells]
 
 
 def _places(lookup: Lookup, header: list[str]) -> dict[str, int]:
@@ -151,31 +202,31 @@ def _places(lookup: Lookup, header: list[str]) -> dict[str, int]:
 def _faults(lookup: Lookup, text: str) -> Iterator[tuple[str, str]]:
     """Yield what is wrong with a side table, and what to do."""
     if len(text) > MOST_CHARACTERS:
-        yield f"{lookup.file}: expected at most {MOST_CHARACTERS} characters, got {len(text)}", "Shorten it"
+        yield f"{lookup.place}: expected at most {MOST_CHARACTERS} characters, got {len(text)}", "Shorten it"
         return
     try:
         records = _records(lookup, text)
     except csv.Error as error:
-        yield f"{lookup.file}: expected a CSV file, got one that breaks: {error}", "Save it as CSV again"
+        yield f"{lookup.place}: expected a CSV file, got one that breaks: {error}", "Save it as CSV again"
         return
     if len(records) < 2:
-        yield f"{lookup.file}: expected a header and rows, got {len(records)} lines", "Complete it"
+        yield f"{lookup.place}: expected a header and rows, got {len(records)} lines", "Complete it"
         return
     header = records[0][1]
     for name in [lookup.key, *(name for source in lookup.columns.values() for name in source.names)]:
         if name and fold(name) not in header:
             todo = suggestion(name, header).strip() or "Correct the name or the separator"
-            yield f"{lookup.file}: expected the column {name!r}, and the header holds {listed(header)}", todo
+            yield f"{lookup.place}: expected the column {name!r}, and the header holds {listed(header)}", todo
     at = header.index(fold(lookup.key)) if fold(lookup.key) in header else 0
     first: dict[str, int] = {}
     for line, record in records[1:]:
         if len(record) != len(header):
-            sentence = f"{lookup.file}, line {line}: expected {len(header)} fields as in the header, got {len(record)}"
+            sentence = f"{lookup.place}, line {line}: expected {len(header)} fields as in the header, got {len(record)}"
             yield sentence, "Correct the line"
         elif record[at]:
             before = first.setdefault(_key(record[at], lookup), line)
             if before != line:
-                sentence = f"{lookup.file}, line {line}: {record[at]!r} stands here again, first in line {before}"
+                sentence = f"{lookup.place}, line {line}: {record[at]!r} stands here again, first in line {before}"
                 yield sentence, "Keep one of the lines"
 
 

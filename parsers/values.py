@@ -90,6 +90,7 @@ class Values:
     disagreements: dict[tuple[str, str, str], Problem] = field(default_factory=dict)
     _known: dict[str, Floats] = field(default_factory=dict)
     _looking: list[str] = field(default_factory=list)
+    _sides: tuple[SideTable, ...] | None = None
 
     @property
     def rows(self) -> int:
@@ -113,7 +114,7 @@ class Values:
             or name in self.heading
             or name in self.plan.captured
             or name in self.understood.said
-            or any(name in side.lookup.fields for side in self.layout.side_tables)
+            or any(name in side.lookup.fields for side in self.sides())
         )
 
     def doubt(self, name: str, header: str, cells: dict[int, Cell]) -> None:
@@ -259,7 +260,7 @@ class Values:
     def _told_beside(self, name: str) -> list[Told]:
         """Return what side tables say."""
         found: list[Told] = []
-        for side in self.layout.side_tables:
+        for side in self.sides():
             lookup = side.lookup
             if name not in lookup.fields or lookup.by in self._looking:
                 continue
@@ -270,15 +271,23 @@ class Values:
             source = lookup.columns.get(name, UNSAID)
             texts = _cut(looked_up(Texts.of(side.texts(name, keys)), keys), source, name)
             unit = Texts.constant(source.stated_unit, self.rows) if source.stated_unit else None
-            grammar = replace(_LAYOUT_GRAMMAR, decimal=lookup.decimal)
-            header = f"{lookup.file or 'lookup'} by {lookup.by}"
+            decimal = lookup.decimal or (self.layout.decimal if lookup.begin is not None else ".")
+            grammar = replace(_LAYOUT_GRAMMAR, decimal=decimal)
+            header = f"{lookup.place} by {lookup.by}"
             in_table = not (lookup.optional or source.optional)
             found.append(Told(texts, header, source, in_table=in_table, unit=unit, grammar=grammar))
         return found
 
+    def sides(self) -> tuple[SideTable, ...]:
+        """Return the side tables, with those that lie in the export itself."""
+        if self._sides is None:
+            lines, separator = self.frame.lines, self.layout.separator
+            self._sides = tuple(side.of_export(lines, separator) for side in self.layout.side_tables)
+        return self._sides
+
     def meant_label(self) -> Texts:
         """Return the labels with those that a side table replaces by what they mean."""
-        for side in self.layout.side_tables:
+        for side in self.sides():
             if side.lookup.by == "label" and "label" in side.lookup.fields:
                 self._refuse_unread(side)
                 names = [
@@ -306,7 +315,7 @@ class Values:
         mapped = self.plan.mapped.get(name)
         if mapped is None or len(mapped.columns) != 1 or not (source is None or source.plain):
             return None
-        beside = any(name in side.lookup.fields for side in self.layout.side_tables)
+        beside = any(name in side.lookup.fields for side in self.sides())
         return None if beside or name in self.understood.said else mapped.columns[0]
 
     def _units(self, mapped: Mapped) -> Texts:

@@ -46,12 +46,10 @@ def test_an_error_in_line_47_says_everything() -> None:
 
     readings = _read(text, PLAIN + "header: '^Label'\nblocks: {begin: '^Block'}\n")
 
-    assert [str(fault) for fault in readings.faults] == [
-        (
-            "line 47, column 'R': expected a number with decimal point, got '4,25'. Its series is not evaluated. Correct "
-            "the export or set decimal or thousands in the layout."
-        )
-    ]
+    assert str(readings.faults[0]) == (
+        "line 47, column 'R': expected a number with decimal point, got '4,25'. Its series is not evaluated. Correct "
+        "the export or set decimal or thousands in the layout."
+    )
 
 
 def test_a_fault_in_line_47_of_a_layout_says_everything() -> None:
@@ -221,7 +219,7 @@ def test_fixed_columns_cut_no_number_in_two(line: str, expected: str) -> None:
             "columns:\n  - {label: Label, analyte: E, signal: R}\n  - {label: Label, analyte: E}\n",
             r"line 10, columns\[2\]: expected a source for 'signal', got none",
         ),
-        (f"{PLAIN}lookup: [{{by: label}}]\n", r"lookup\[1\]: expected either 'file' or 'values'"),
+        (f"{PLAIN}lookup: [{{by: label}}]\n", r"lookup\[1\]: expected either 'file', 'begin' or 'values'"),
         (
             f"{PLAIN}lookup: [{{by: label, values: {{A: {{signal: 1}}}}}}]\n",
             r"lookup\[1\]: 'signal' is no field that can be looked up by label",
