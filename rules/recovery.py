@@ -191,6 +191,8 @@ def _moves_with_intercept(fits: Fits, additions: Floats, dilution: Floats) -> Fl
     a, f = additions[fits.places], dilution[fits.places]
     with np.errstate(invalid="ignore", divide="ignore"):
         constant = fits.segments.max(f) <= fits.segments.min(f) * (1 + 1e-12)
+        if constant.all():
+            return np.zeros(len(fits.of_series))
         moved = line.fit(a, -1 / f, fits.weights, fits.segments).slope
     return np.nan_to_num(fits.spread(np.where(constant, 0.0, moved)))
 
