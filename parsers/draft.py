@@ -1,0 +1,395 @@
+"""START HERE for drafting: one or several example exports become a commented layout that works at once.
+
+    open_example     bytes → lines                          drafting.example
+    find_structure   lines → separator, header, rows        drafting.structure
+    find_columns     headers and cells → fields             drafting.mapping, drafting.wide
+    find_labels      labels → rules                         drafting.naming
+    find_marks       cells → decimal and thousands mark     drafting.numerals
+
+What is uncertain is marked ``# unsure:``, what only a person knows ``# FILL IN:``. Where two readings are possible the
+layout takes the one that ends in an error, never in a number that may be wrong. Pure: nothing here opens a file.
+"""
+
+from __future__ import annotations
+
+import re
+from dataclasses import dataclass
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+from parsers.drafting.claiming import claim
+from parsers.drafting.drawing import Drawing, scalar
+from parsers.drafting.errors import DraftRefused
+from parsers.drafting.example import USUAL, open_example
+from parsers.drafting.mapping import element_in, find_columns
+from parsers.drafting.naming import find_labels
+from parsers.drafting.numerals import find_marks, numberish
+from parsers.drafting.oddities import find_oddities
+from parsers.drafting.preamble import find_heading
+from parsers.drafting.structure import find_structure
+from parsers.drafting.vocabulary import measure, role_of
+from parsers.errors import DocumentInvalid
+from parsers.layout import Layout, parse_layout
+from parsers.spelling import fold, listed
+
+if TYPE_CHECKING:
+    from collections.abc import Iterable, Sequence
+
+    from parsers.drafting.mapping import Mapping
+    from parsers.drafting.naming import Labels
+    from parsers.drafting.numerals import Marks
+    from parsers.drafting.structure import Structure
+
+__all__ = ["Draft", "DraftRefused", "draft"]
+
+#: How a draft is named in faults; it never has any when it is handed out.
+DRAFTED = "the drafted layout"
+_FINISHED = re.compile(r"\b(?:end|ende|fin|complete|completed|finished)\b", re.IGNORECASE)
+#: Fields that a person reads in the layout beside the others, although the program does without them.
+_UNREAD = "concentration"
+
+
+@dataclass(frozen=True, slots=True)
+class Draft:
+    """A drafted layout.
+
+    Attributes
+    ----------
+    text
+        The YAML.
+    layout
+        The same, checked.
+    unsure, fill_in
+        What its comments say.
+    """
+
+    text: str
+    layout: Layout
+    unsure: tuple[str, ...]
+    fill_in: tuple[str, ...]
+
+
+def draft(examples: Sequence[tuple[str, bytes]]) -> Draft:
+    """Draft a layout from examples of one kind.
+
+    Parameters
+    ----------
+    examples
+        Name and bytes of each export; the first decides the form, all of them the labels, numbers and odd cells.
+
+    Raises
+    ------
+    DraftRefused
+        If their shape is beyond drafting, or they are not of one kind.
+    """
+    structures = [find_structure(open_example(name, data)) for name, data in examples]
+    first = structures[0]
+    for other in structures[1:]:
+        if (other.separator, other.headers) != (first.separator, first.headers):
+            sentence = f"its columns are not those of {first.example.name}. Draft each kind of export by itself."
+            raise DraftRefused(other.example.name, sentence, other.header_at + 1)
+    return _Draughtsman(structures).draw()
+
+
+class _Draughtsman:
+    """Writes the layout, key by key."""
+
+    def __init__(self, structures: Sequence[Structure]) -> None:
+        self.structures = structures
+        self.first = structures[0]
+        self.together = _joined(structures)
+        self.mapping: Mapping = find_columns(self.together)
+        self.marks: Marks = find_marks(self._numbers())
+        self.drawing = Drawing()
+
+    def draw(self) -> Draft:
+        """Write everything and check it.
+
+        Raises
+        ------
+        DraftRefused
+            If what was made out is no valid layout.
+        """
+        self._top()
+        self._lines()
+        self._values()
+        self._columns()
+        self._labels()
+        self._cells()
+        text = self.drawing.text
+        try:
+            layout = parse_layout(text, DRAFTED)
+        except DocumentInvalid as invalid:
+            sentence = f"its columns do not make a layout ({invalid.faults[0].sentence}) Write it by hand."
+            raise DraftRefused(self.first.example.name, sentence) from invalid
+        return Draft(text, layout, tuple(self.drawing.unsure), tuple(self.drawing.fill_in))
+
+    def _numbers(self) -> Iterable[str]:
+        """Return the cells of every column that is read as numbers."""
+        wide = self.mapping.wide.columns if self.mapping.wide else []
+        texts = ("label", "role", "analyte", "channel", "measured_at", "batch", "analyst", "instrument", "comment", "position",
+                 "predilution", "replicate")  # fmt: skip
+        named = [at for name, columns in self.mapping.columns.items() if name not in texts for at in columns]
+        return [cell for at in dict.fromkeys([*named, *wide]) for cell in self.together.column(at) if numberish(cell)]
+
+    def _top(self) -> None:
+        drawing, example = self.drawing, self.first.example
+        names = ", ".join(structure.example.name for structure in self.structures)
+        drawing.note(f"Drafted from {names}. Read it, and compare it with what `explain` makes of your exports.")
+        drawing.add(f"layout: {scalar(_title(example.name))}")
+        claims, doubt = claim(self.structures)
+        drawing.doubt(doubt)
+        drawing.add(f"claims: {claims}")
+        encodings = list(dict.fromkeys(one for structure in self.structures for one in structure.example.encodings))
+        drawing.doubt({structure.example.doubt for structure in self.structures})
+        if tuple(encodings) != USUAL:
+            drawing.add(f"encodings: [{', '.join(encodings)}]")
+
+    def _lines(self) -> None:
+        """Write how lines are told apart."""
+        drawing, first = self.drawing, self.first
+        word = first.separator
+        drawing.add(f"separator: {word if word in ('tab', 'blanks') else scalar(word)}")
+        if any(structure.header_at != 0 for structure in self.structures):
+            drawing.add(f"header: {scalar(_start_of(first, first.header_at))}")
+        skips = list(dict.fromkeys(skip for structure in self.structures for skip in _skips(structure)))
+        if skips:
+            drawing.add(f"skip: [{', '.join(map(scalar, skips))}]")
+        for structure in self.structures:
+            drawing.doubt(_odd_lines(structure))
+        until = next((found for structure in self.structures if (found := _until(structure))), "")
+        if until:
+            drawing.add(f"until: {scalar(until)}")
+        last = first.example.lines[-1] if first.example.lines else ""
+        if first.tail is not None and _FINISHED.search(last) and re.match(r"\W*[A-Za-z]", last):
+            drawing.doubt(
+                "this looks like the line that ends every complete export; an export without it is not evaluated"
+            )
+            drawing.add(f"finished: {scalar('^' + _escaped(last.strip()))}")
+
+    def _values(self) -> None:
+        self.drawing.doubt(self.marks.doubt)
+        if self.marks.decimal != ".":
+            self.drawing.add(f"decimal: '{self.marks.decimal}'")
+        if self.marks.thousands:
+            self.drawing.add("thousands: " + scalar(self.marks.thousands))
+
+    def _columns(self) -> None:
+        drawing, mapping = self.drawing, self.mapping
+        wide = mapping.wide
+        mapped = set(mapping.columns) | ({"analyte", "channel", "signal"} if wide else set())
+        heading = find_heading(self.first, mapped)
+        if heading:
+            drawing.add("heading:")
+            drawing.add(*(f"  {name}: {scalar(pattern)}" for name, pattern in heading.items()))
+        drawing.add("columns:")
+        lines = mapping.lines(self.together)
+        if "role" in lines:
+            self._unknown_types()
+        for name, value in lines.items():
+            drawing.doubt(mapping.doubts.get(name, ""), "  ")
+            drawing.add(f"  {name}: {value}")
+        if wide is None and "analyte" not in mapping.columns and "analyte" not in heading:
+            self._analyte()
+        for at in mapping.additions:
+            name = scalar(mapping.headers[at].written)
+            drawing.ask(
+                f"{name} may say what was added. Take one of these, with its unit; until then no sample has a role:",
+                "  ",
+            )
+            drawing.add(f"  # added: {{from: {name}, unit: … mg/L}}", f"  # spike_volume: {{from: {name}, unit: … mL}}")
+        left = [header.written for at, header in enumerate(mapping.headers) if self._is_left(at) and header.written]
+        for sentence in mapping.left:
+            drawing.doubt(sentence, "  ")
+        if left:
+            drawing.note(
+                f"not read: {', '.join(left[:20])}{f' and {len(left) - 20} more' if len(left) > 20 else ''}", "  "
+            )
+        if wide is not None:
+            drawing.doubt(wide.doubts)
+            drawing.add("unfold:", f"  pattern: {scalar(wide.pattern)}")
+            if wide.fields:
+                drawing.add(
+                    f"  fields: {{{', '.join(f'{scalar(word)}: {name}' for word, name in wide.fields.items())}}}"
+                )
+
+    def _is_left(self, at: int) -> bool:
+        read = {one for name, columns in self.mapping.columns.items() if name != _UNREAD for one in columns}
+        return at not in read and (self.mapping.wide is None or at not in self.mapping.wide.columns)
+
+    def _unknown_types(self) -> None:
+        at = self.mapping.at("role")
+        words = dict.fromkeys(self.together.column(at)) if at is not None else ()
+        unknown = [word for word in words if word and not role_of(word)]
+        if unknown:
+            self.drawing.doubt(
+                f"{listed(unknown)}: what does this mean? Its rows are errors until it stands in the map", "  "
+            )
+
+    def _analyte(self) -> None:
+        """Write the one analyte of the export, where something names it."""
+        above = self.first.example.lines[: self.first.header_at]
+        found = {element for text in [*self.first.headers, *above] if (element := element_in(text))}
+        if len(found) == 1:
+            element = found.pop()
+            self.drawing.doubt(f"{element} stands in the export, but not where it is said to be the analyte", "  ")
+            self.drawing.add(f"  analyte: {{constant: {element}}}")
+            return
+        self.drawing.ask("the analyte, such as Zn: nothing in the export names it", "  ")
+        self.drawing.add("  analyte: {constant: '?'}")
+
+    def _labels(self) -> None:
+        drawing, columns = self.drawing, self.mapping.columns
+        at = columns["label"][0]
+        cells = self.together.column(at)
+        additions = bool({"added", "spike_volume"} & columns.keys())
+        labels = find_labels(
+            cells,
+            self._types(cells),
+            self._signals(cells),
+            additions=additions,
+            nominals="nominal" in columns,
+            open_roles=bool(self.mapping.additions),
+        )
+        if labels.rules:
+            drawing.doubt(labels.doubts)
+            drawing.add("labels:", *(f"  - {rule}" for rule in labels.rules))
+        if labels.set_aside:
+            drawing.doubt(
+                f"{listed(labels.set_aside[:12])}: a sample, an addition, or neither? They give no reading until a rule "
+                f"takes them"
+            )
+            drawing.add("unmatched: set aside")
+        self._open_questions(labels, additions=additions, typed="spiked" in self._types(cells).values())
+
+    def _open_questions(self, labels: Labels, *, additions: bool, typed: bool) -> None:
+        drawing = self.drawing
+        for ask in labels.asks:
+            drawing.ask(ask)
+        if self.mapping.additions:
+            return
+        if not (labels.spiked or additions or typed):
+            drawing.doubt("no spiked vials were recognised, so every sample counts as unspiked")
+            return
+        if labels.levels:
+            levels = ", ".join(f"{scalar(level)}: … mL" for level in labels.levels[:12])
+            drawing.ask("what each level adds, and aliquot and vessel, here or in the settings:")
+            drawing.add("# bench: {aliquot: … mL, made_up_to: … mL, levels: {" + levels + "}}")
+        elif typed and not (additions or labels.spiked):
+            drawing.ask("what was added to the spiked vials: a column (columns.added or columns.spike_volume)")
+        else:
+            drawing.ask("aliquot and vessel, here or in the settings, where no column says them:")
+            drawing.add("# bench: {aliquot: … mL, made_up_to: … mL}")
+        if "added" not in self.mapping.columns:
+            drawing.ask("what the spike contains, here or in the settings:")
+            drawing.add("# stocks: [{name: …, contains: {…: … mg/L}}]")
+
+    def _types(self, cells: Sequence[str]) -> dict[str, str]:
+        at = self.mapping.at("role")
+        if at is None:
+            return {}
+        return {
+            fold(label): role_of(word)
+            for label, word in zip(cells, self.together.column(at), strict=True)
+            if role_of(word)
+        }
+
+    def _signals(self, cells: Sequence[str]) -> dict[str, float]:
+        """Return the mean signal of each label, of the first analyte."""
+        mapping = self.mapping
+        columns = mapping.wide.columns[:1] if mapping.wide else mapping.columns["signal"]
+        analyte = mapping.at("analyte")
+        of = self.together.column(analyte) if analyte is not None else [""] * len(cells)
+        found: dict[str, list[float]] = {}
+        for row, label in enumerate(cells):
+            values = [self.marks.grammar.value(self.together.rows[row][1][at]) for at in columns]
+            if of[row] == of[0]:
+                found.setdefault(fold(label), []).extend(value for value in values if value is not None)
+        return {label: float(np.mean(values)) for label, values in found.items() if values}
+
+    def _cells(self) -> None:
+        mapping = self.mapping
+        columns = mapping.wide.columns if mapping.wide else mapping.columns["signal"]
+        odd = find_oddities((cell for at in columns for cell in self.together.column(at)), self.marks.grammar)
+        self.drawing.doubt(odd.doubt())
+        if odd.line():
+            self.drawing.add(f"cells: {odd.line()}")
+
+
+def _joined(structures: Sequence[Structure]) -> Structure:
+    """Return the first structure with the rows of all of them."""
+    first = structures[0]
+    rows = [row for structure in structures for row in structure.rows]
+    return type(first)(
+        first.example, first.separator, first.header_at, first.headers, rows, first.units, first.units_at
+    )
+
+
+def _title(name: str) -> str:
+    stem = re.sub(r"[\W\d_]+", " ", name.rpartition(".")[0] or name).strip()
+    return f"{stem} exports" if stem else "exports"
+
+
+def _escaped(text: str) -> str:
+    r"""Escape a text for a pattern, readable: ``Rep\. 1`` and no backslash before a blank."""
+    return re.sub(r"\\([ \-#;,:=%&~'\"<>/@!])", r"\1", re.escape(text)).replace("\\\t", r"\t").replace("\t", r"\t")
+
+
+def _start_of(structure: Structure, at: int) -> str:
+    """Return a pattern of the beginning of a line that no other line has."""
+    line, character = structure.example.lines[at], structure.character
+    others = [text for number, text in enumerate(structure.example.lines) if number != at and text != line]
+    end = 0
+    for _ in range(line.count(character)):
+        end = line.find(character, end) + 1
+        if line[:end].strip(f"{character} ") and not any(text.startswith(line[:end]) for text in others):
+            return f"^{_escaped(line[:end])}"
+    return f"^{_escaped(line)}$"
+
+
+def _skips(structure: Structure) -> list[str]:
+    """Return patterns of the lines among the rows that are none, as far as they are surely none."""
+    found = []
+    if structure.units_at is not None:
+        found.append(f"^{_escaped(structure.example.lines[structure.units_at])}$")
+    separator = _escaped(structure.character)
+    for at, column in structure.statistics.items():
+        word = _escaped(structure.example.lines[at].split(structure.character)[column].strip())
+        before = f"(?:[^{separator}]*{separator}){{{column}}}" if column else ""
+        found.append(rf"^{before}\s*{word}\s*(?:{separator}|$)")
+    found += [_general(structure.example.lines[at]) for at in structure.stray if _is_text(structure, at)]
+    return list(dict.fromkeys(found))
+
+
+def _general(line: str) -> str:
+    return "^" + re.sub(r"\d+", lambda _: r"\d+", _escaped(line.rstrip())) + r"\s*$"
+
+
+def _is_text(structure: Structure, at: int) -> bool:
+    """Tell whether a line is words only, such as the head of a printed page, and no broken row."""
+    cells = [cell for cell in structure.example.lines[at].split(structure.character) if cell.strip()]
+    return len(cells) == 1
+
+
+def _odd_lines(structure: Structure) -> Iterable[str]:
+    wrong = [at + 1 for at in structure.stray if not _is_text(structure, at)]
+    if wrong:
+        yield (
+            f"line{'s' if len(wrong) > 1 else ''} {', '.join(map(str, wrong[:10]))} of {structure.example.name}: other "
+            f"fields than the {len(structure.headers)} of the header, so the export is refused. Leave them out with skip "
+            f"only if they are no readings"
+        )
+
+
+def _until(structure: Structure) -> str:
+    """Return a pattern of the first line behind the table, where one stands there."""
+    if structure.tail is None:
+        return ""
+    line = structure.example.lines[structure.tail]
+    before = structure.example.lines[: structure.tail]
+    word = re.match(r"\W*[A-Za-zÄÖÜäöü]+(?: [A-Za-z]+)*", line)
+    for text in ([word.group()] if word else []) + [line]:
+        if text.strip() and not any(other.startswith(text) for other in before):
+            return f"^{_escaped(text)}"
+    return ""

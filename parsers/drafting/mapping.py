@@ -1,0 +1,388 @@
+"""Which column holds which field: by its header's words, checked against what its cells hold.
+
+A column is never mapped by its place. Where two columns could be the signal, none is taken.
+"""
+
+from __future__ import annotations
+
+import re
+from dataclasses import dataclass, field
+
+from parsers.drafting.drawing import scalar
+from parsers.drafting.errors import DraftRefused
+from parsers.drafting.headers import Header, take_apart
+from parsers.drafting.moments import forms_of_date, forms_of_moment, forms_of_time
+from parsers.drafting.numerals import numberish
+from parsers.drafting.structure import Structure
+from parsers.drafting.vocabulary import ADDITION, ELEMENTS, field_of, measure, role_of
+from parsers.drafting.wide import Wide, find_wide
+from parsers.spelling import listed
+
+#: A column is one of numbers if at least so many of its filled cells are written like one.
+MOSTLY = 0.6
+_NUMBERED = re.compile(r"(?P<stem>.*?)[\s_.#-]*(?P<number>[0-9]{1,2})")
+_REPLICATE_STEMS = (
+    "r",
+    "rep",
+    "replicate",
+    "reading",
+    "repeat",
+    "abs",
+    "signal",
+    "intensity",
+    "wdh",
+    "int",
+    "absorbance",
+)
+#: Fields in the order in which a layout lists them.
+_ORDER = (
+    "position", "label", "role", "analyte", "channel", "signal", "signal_sd", "signal_rsd", "readings", "replicate",
+    "nominal", "added", "spike_volume", "level", "aliquot", "made_up_to", "mass", "digest_volume", "predilution",
+    "batch", "analyst", "instrument", "comment", "measured_at",
+)  # fmt: skip
+_NUMERIC = frozenset(
+    ("signal", "signal_sd", "signal_rsd", "readings", "replicate", "nominal", "added", "spike_volume", "aliquot",
+     "made_up_to", "mass", "digest_volume", "position", "concentration")
+)  # fmt: skip
+_MEASURES = {
+    "spike_volume": ("volume",), "aliquot": ("volume",), "made_up_to": ("volume",), "digest_volume": ("volume",),
+    "mass": ("mass",), "added": ("concentration", ""), "nominal": ("concentration", ""),
+    "concentration": ("concentration", ""),
+}  # fmt: skip
+
+
+@dataclass(slots=True)
+class Mapping:
+    """What the columns of an example are.
+
+    Attributes
+    ----------
+    headers
+        Every header taken apart.
+    columns
+        Field to indices of its columns.
+    formats
+        Forms of the time of measurement.
+    doubts
+        Field to what is uncertain about it.
+    wide
+        Columns that become rows, where the table is wide.
+    left
+        What is said about columns that are not read.
+    additions
+        Columns that may say what was added, and cannot be read as long as nobody says their unit.
+    """
+
+    headers: list[Header]
+    columns: dict[str, list[int]] = field(default_factory=dict)
+    formats: list[str] = field(default_factory=list)
+    doubts: dict[str, str] = field(default_factory=dict)
+    wide: Wide | None = None
+    left: list[str] = field(default_factory=list)
+    additions: list[int] = field(default_factory=list)
+
+    def at(self, field_name: str) -> int | None:
+        """Return the first column of a field."""
+        found = self.columns.get(field_name)
+        return found[0] if found else None
+
+    def lines(self, structure: Structure) -> dict[str, str]:
+        """Return the value that a layout gives each mapped field."""
+        return {name: self._value(name, structure) for name in _ORDER if name in self.columns}
+
+    def _value(self, name: str, structure: Structure) -> str:
+        names = [scalar(self.headers[at].written) for at in self.columns[name]]
+        several = f"[{', '.join(names)}]" if len(names) > 1 else names[0]
+        if name == "measured_at":
+            forms = ", ".join(f"'{form}'" for form in self.formats)
+            return f"{{from: {several}, format: {forms}}}"
+        if name == "role":
+            at = self.columns[name][0]
+            words = {word: role_of(word) for word in dict.fromkeys(structure.column(at)) if role_of(word)}
+            pairs = ", ".join(f"{scalar(word)}: {role}" for word, role in words.items())
+            return f"{{from: {several}, map: {{{pairs}}}}}"
+        unit = self.headers[self.columns[name][0]].unit
+        if unit and name in _MEASURES:
+            return f"{{from: {several}, unit: {scalar(unit)}}}"
+        gaps = len(names) > 1 and any("" in structure.column(at) for at in self.columns[name])
+        return f"{{from: {several}, optional: yes}}" if gaps else several
+
+
+def find_columns(structure: Structure) -> Mapping:
+    """Make out the columns.
+
+    Raises
+    ------
+    DraftRefused
+        If no column names the vials, or none or several could be the signal.
+    """
+    below = structure.units or [""] * len(structure.headers)
+    mapping = Mapping([take_apart(name, unit) for name, unit in zip(structure.headers, below, strict=True)])
+    finder = _Finder(structure, mapping)
+    finder.by_words()
+    finder.additions()
+    finder.label()
+    finder.times()
+    mapping.wide = (
+        find_wide(mapping.headers, finder.taken(), finder.is_numbers) if "analyte" not in mapping.columns else None
+    )
+    if mapping.wide is None:
+        finder.signal()
+    else:
+        for name in ("signal", "signal_sd", "signal_rsd", "readings", "channel"):
+            mapping.columns.pop(name, None)
+    finder.rising()
+    return mapping
+
+
+@dataclass(slots=True)
+class _Finder:
+    structure: Structure
+    mapping: Mapping
+
+    def taken(self) -> set[int]:
+        """Return the columns that have a field."""
+        return {at for columns in self.mapping.columns.values() for at in columns}
+
+    def is_numbers(self, at: int) -> bool:
+        """Tell whether a column holds numbers."""
+        filled = [cell for cell in self.structure.column(at) if cell]
+        return bool(filled) and sum(map(numberish, filled)) >= MOSTLY * len(filled)
+
+    def by_words(self) -> None:
+        """Map what headers name, where the cells agree; the first column of a field keeps it."""
+        names = [header.written for header in self.mapping.headers]
+        for at, header in enumerate(self.mapping.headers):
+            if not header.written or names.count(header.written) > 1:
+                continue
+            choices = [name for name in field_of(header.name) or field_of(header.written) if self._agrees(name, at)]
+            free = next((name for name in choices if name not in self.mapping.columns), None)
+            if free is not None:
+                self.mapping.columns[free] = [at]
+
+    def _agrees(self, name: str, at: int) -> bool:
+        """Tell whether a column's cells and unit can be a field."""
+        header = self.mapping.headers[at]
+        cells = [cell for cell in self.structure.column(at) if cell]
+        if name in _MEASURES and measure(header.unit) not in _MEASURES[name]:
+            return False
+        if name == "role":
+            return bool(cells) and sum(bool(role_of(cell)) for cell in cells) > len(cells) / 2
+        if name == "analyte":
+            return bool(cells) and not self.is_numbers(at)
+        if name == "label":
+            return bool(cells)
+        if name == "position":
+            return all(cell.isdigit() for cell in cells) and len(set(cells)) > 1
+        if name == "replicate":
+            return bool(cells) and all(cell.isdigit() for cell in cells)
+        if name in _NUMERIC:
+            return self.is_numbers(at) and not (name in ("signal",) and measure(header.unit) == "concentration")
+        return True
+
+    def additions(self) -> None:
+        """Map a column whose header speaks of an addition by its unit; without one it waits for a person."""
+        columns = self.mapping.columns
+        by_unit = {"volume": "spike_volume", "concentration": "added"}
+        for at, header in enumerate(self.mapping.headers):
+            speaks = ADDITION.search(header.written) is not None and not field_of(header.name)
+            unclear = at in columns.get("added", []) and not header.unit
+            if not (speaks and at not in self.taken() and self.is_numbers(at)) and not unclear:
+                continue
+            name = by_unit.get(measure(header.unit), "")
+            if name and name not in columns:
+                columns[name] = [at]
+            else:
+                columns.pop("added", None)
+                self.mapping.additions.append(at)
+
+    def rising(self) -> None:
+        """Find columns that begin at nothing and rise from row to row of one label: they may be additions."""
+        mapping = self.mapping
+        if {"added", "spike_volume"} & mapping.columns.keys():
+            return
+        labels = self.structure.column(mapping.columns["label"][0])
+        wide = mapping.wide.columns if mapping.wide else []
+        for at in range(len(mapping.headers)):
+            if at in self.taken() or at in wide or at in mapping.additions or not self.is_numbers(at):
+                continue
+            if self._rises(labels, self.structure.column(at)):
+                mapping.additions.append(at)
+
+    @staticmethod
+    def _rises(labels: list[str], cells: list[str]) -> bool:
+        by_label: dict[str, list[str]] = {}
+        for label, cell in zip(labels, cells, strict=True):
+            by_label.setdefault(label, []).append(cell)
+        return any(
+            len(set(said)) > 1 and not said[0].strip("0.,") and any(one.strip("0.,") for one in said[1:])
+            for said in by_label.values()
+        )
+
+    def label(self) -> None:
+        """Settle the column of labels.
+
+        Raises
+        ------
+        DraftRefused
+            If no column names the vials.
+        """
+        mapping = self.mapping
+        if "label" in mapping.columns:
+            return
+        free = [at for at in range(len(mapping.headers)) if at not in self.taken() and not self.is_numbers(at)]
+        texts = [at for at in free if any(self.structure.column(at)) and mapping.headers[at].written]
+        if len(texts) == 1:
+            mapping.columns["label"] = texts
+            mapping.doubts["label"] = f"{mapping.headers[texts[0]].written!r} is the only column of texts left"
+            return
+        blank = [at for at in free if any(self.structure.column(at)) and not mapping.headers[at].written]
+        if blank and not texts:
+            sentence = (
+                "the column that names the vials has no header, so no layout can name it. Give it one in the export."
+            )
+        else:
+            sentence = (
+                f"expected a column that names the vials, found none by its header ({listed(self.structure.headers)}). "
+                f"Write the layout by hand: columns.label."
+            )
+        raise DraftRefused(self.structure.example.name, sentence, self.structure.header_at + 1)
+
+    def times(self) -> None:
+        """Settle the time of measurement, or leave it out where day and month could be changed over."""
+        columns = self.mapping.columns
+        date, time, both = (columns.pop(name, [])[:1] for name in ("date", "time", "measured_at"))
+        alone = (*both, *date, *time)
+        for at in alone:
+            forms = forms_of_moment(self.structure.column(at))
+            if forms:
+                self._time([at], forms)
+                return
+        if date and time:
+            days, clock = forms_of_date(self.structure.column(date[0])), forms_of_time(self.structure.column(time[0]))
+            if days and clock:
+                self._time([date[0], time[0]], [f"{day} {clock[0]}" for day in days])
+                return
+        if alone:
+            names = listed(self.mapping.headers[at].written for at in alone)
+            self.mapping.left.append(f"{names}: no date and time in a form that is known; not read")
+
+    def _time(self, at: list[int], forms: list[str]) -> None:
+        if len(forms) == 1:
+            self.mapping.columns["measured_at"], self.mapping.formats = at, forms
+            return
+        written = [scalar(self.mapping.headers[one].written) for one in at]
+        source = f"[{', '.join(written)}]" if len(written) > 1 else written[0]
+        either = " or ".join(f"'{form}'" for form in forms)
+        self.mapping.left.append(
+            f"day and month may be changed over, so the time is not read. Add to columns, with the right form: "
+            f"measured_at: {{from: {source}, format: …}} ({either})"
+        )
+
+    def signal(self) -> None:
+        """Settle the columns of the signal.
+
+        Raises
+        ------
+        DraftRefused
+            If none or several could be it.
+        """
+        mapping = self.mapping
+        replicates = self._replicates()
+        if replicates:
+            mapping.columns["signal"] = replicates
+            for name in ("signal_sd", "signal_rsd", "readings"):
+                mapping.columns.pop(name, None)
+            return
+        if "signal" in mapping.columns:
+            self._other_signals()
+            self._statistics()
+            return
+        free = [
+            at for at in range(len(mapping.headers))
+            if at not in self.taken() and self.is_numbers(at) and mapping.headers[at].written
+        ]  # fmt: skip
+        numbers = free or mapping.columns.get("concentration", [])
+        if len(numbers) != 1:
+            found = listed(mapping.headers[at].written for at in numbers) if numbers else "none"
+            sentence = (
+                f"expected one column that can be the signal, found {found}. Write the layout by hand: columns.signal."
+            )
+            raise DraftRefused(self.structure.example.name, sentence, self.structure.header_at + 1)
+        header = mapping.headers[numbers[0]]
+        mapping.columns["signal"] = numbers
+        mapping.doubts["signal"] = (
+            f"{header.written!r} is the only column of numbers left. Is it what the instrument measured?"
+        )
+        if measure(header.unit) == "concentration" or "concentration" in field_of(header.name):
+            mapping.columns.pop("concentration", None)
+            mapping.doubts["signal"] = (
+                f"{header.written!r} is a concentration that the instrument computed itself; no other column can be the "
+                f"signal. Export the signal if the instrument can"
+            )
+        self._statistics()
+
+    def _replicates(self) -> list[int]:
+        """Return the columns of replicate readings: one stem, numbered from 1."""
+        stems: dict[str, dict[int, int]] = {}
+        for at, header in enumerate(self.mapping.headers):
+            match = _NUMBERED.fullmatch(header.name)
+            if match is not None and self.is_numbers(at) and match["stem"].casefold().strip() in _REPLICATE_STEMS:
+                stems.setdefault(match["stem"].casefold(), {})[int(match["number"])] = at
+            elif match is not None and self.is_numbers(at) and "signal" in field_of(match["stem"]):
+                stems.setdefault(match["stem"].casefold(), {})[int(match["number"])] = at
+        whole = [
+            found for found in stems.values() if len(found) > 1 and sorted(found) == list(range(1, len(found) + 1))
+        ]
+        if len(whole) != 1:
+            return []
+        return [whole[0][number] for number in sorted(whole[0])]
+
+    def _other_signals(self) -> None:
+        """Refuse where a second column could as well be the signal."""
+        mapping = self.mapping
+        first = mapping.columns["signal"][0]
+        others = [
+            at for at, header in enumerate(mapping.headers)
+            if at not in self.taken() and "signal" in field_of(header.name) and self._agrees("signal", at)
+        ]  # fmt: skip
+        averages = ("mean", "average")
+        named = [first, *others]
+        means = [at for at in named if any(word in mapping.headers[at].name.casefold() for word in averages)]
+        if len(means) == 1 and others:
+            mapping.columns["signal"] = means
+            mapping.doubts["signal"] = (
+                f"{listed(mapping.headers[at].written for at in named if at != means[0])} could be the signal as well"
+            )
+        elif others:
+            sentence = (
+                f"expected one column that can be the signal, found "
+                f"{listed(mapping.headers[at].written for at in named)}. Write the layout by hand: columns.signal."
+            )
+            raise DraftRefused(self.structure.example.name, sentence, self.structure.header_at + 1)
+
+    def _statistics(self) -> None:
+        """Keep one statistic beside the mean, and none whose cells are no numbers."""
+        columns = self.mapping.columns
+        for name in ("signal_sd", "signal_rsd", "readings"):
+            at = self.mapping.at(name)
+            if at is not None and not all(numberish(cell) for cell in self.structure.column(at) if cell):
+                del columns[name]
+                self.mapping.left.append(f"{self.mapping.headers[at].written!r} holds more than numbers; not read")
+        if "signal_sd" in columns:
+            columns.pop("signal_rsd", None)
+
+
+#: Words of the language, and letters that mean other things as well.
+_ALSO_WORDS = frozenset({"In", "As", "He", "Be", "I", "No", "At", "Am"})
+
+
+def element_in(text: str) -> str:
+    """Return the only element symbol of two letters that a text names as a word, else nothing.
+
+    >>> element_in("Zn 213.9 nm"), element_in("bench 2")
+    ('Zn', '')
+    """
+    found = {word for word in re.findall(r"(?<![A-Za-z])[A-Z][a-z]?(?![A-Za-z])", text) if word in ELEMENTS}
+    found = {word for word in found - _ALSO_WORDS if len(word) > 1}
+    return found.pop() if len(found) == 1 else ""
