@@ -28,7 +28,7 @@ from parsers.drafting.numerals import find_marks, numberish
 from parsers.drafting.oddities import find_oddities
 from parsers.drafting.preamble import find_heading
 from parsers.drafting.structure import find_structure
-from parsers.drafting.vocabulary import measure, role_of
+from parsers.drafting.vocabulary import role_of
 from parsers.errors import DocumentInvalid
 from parsers.layout import Layout, parse_layout
 from parsers.spelling import fold, listed
@@ -128,8 +128,8 @@ class _Draughtsman:
     def _numbers(self) -> Iterable[str]:
         """Return the cells of every column that is read as numbers."""
         wide = self.mapping.wide.columns if self.mapping.wide else []
-        texts = ("label", "role", "analyte", "channel", "measured_at", "batch", "analyst", "instrument", "comment", "position",
-                 "predilution", "replicate")  # fmt: skip
+        texts = ("label", "role", "analyte", "channel", "measured_at", "batch", "analyst", "instrument", "comment",
+                 "position", "predilution", "replicate")  # fmt: skip
         named = [at for name, columns in self.mapping.columns.items() if name not in texts for at in columns]
         return [cell for at in dict.fromkeys([*named, *wide]) for cell in self.together.column(at) if numberish(cell)]
 
@@ -257,8 +257,8 @@ class _Draughtsman:
             drawing.add("labels:", *(f"  - {rule}" for rule in labels.rules))
         if labels.set_aside:
             drawing.doubt(
-                f"{listed(labels.set_aside[:12])}: a sample, an addition, or neither? They give no reading until a rule "
-                f"takes them"
+                f"{listed(labels.set_aside[:12])}: a sample, an addition, or neither? They give no reading until a "
+                f"rule takes them"
             )
             drawing.add("unmatched: set aside")
         self._open_questions(labels, additions=additions, typed="spiked" in self._types(cells).values())
@@ -377,8 +377,8 @@ def _odd_lines(structure: Structure) -> Iterable[str]:
     if wrong:
         yield (
             f"line{'s' if len(wrong) > 1 else ''} {', '.join(map(str, wrong[:10]))} of {structure.example.name}: other "
-            f"fields than the {len(structure.headers)} of the header, so the export is refused. Leave them out with skip "
-            f"only if they are no readings"
+            f"fields than the {len(structure.headers)} of the header, so the export is refused. Leave them out with "
+            f"skip only if they are no readings"
         )
 
 

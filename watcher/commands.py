@@ -92,15 +92,33 @@ def check(config: Path) -> None:
 
 @main.command()
 @click.argument("export", type=_FILE)
+@click.option("--lines", "with_lines", is_flag=True, help="Show the fate of every line.")
+@click.option("--json", "as_json", is_flag=True, help="Print JSON instead of tables.")
 @_with_config
-def explain(export: Path, config: Path) -> None:
+def explain(export: Path, config: Path, *, with_lines: bool, as_json: bool) -> None:
     """Show how EXPORT is understood and what would come of it; write nothing.
 
     Exit codes as for once.
     """
     from watcher import inspection  # noqa: PLC0415
 
-    sys.exit(inspection.explain(config, export))
+    sys.exit(inspection.explain(config, export, with_lines=with_lines, as_json=as_json))
+
+
+@main.command()
+@click.argument("exports", metavar="EXPORT...", nargs=-1, required=True, type=_FILE)
+@click.option("--output", type=_FILE, help="Write the layout into this new file.")
+def draft(exports: tuple[Path, ...], output: Path | None) -> None:
+    """Draft a layout from one or several example exports of one kind.
+
+    What it is not sure of is marked "# unsure:", what only you know "# FILL IN:".
+    Behind the layout stands how the examples are read with it.
+
+    Exit 0: drafted. 2: the shape is beyond it, or the file is there already.
+    """
+    from watcher import drafting  # noqa: PLC0415
+
+    sys.exit(drafting.run(exports, output))
 
 
 @main.command()

@@ -1,111 +1,109 @@
-"""What `explain` shows of an export: how it was understood, what was computed, which mails would go. Writes nothing."""
+"""What `explain` knows of an export: how it was understood, what was computed, which mails would go. Writes nothing."""
 
 from __future__ import annotations
 
+from dataclasses import dataclass
+from functools import cached_property
 from typing import TYPE_CHECKING
 
-import numpy as np
-
-from parsers.readings import line_ranges
-from rules import plan
-from rules.figures import several
-from watcher import mail
-from watcher.scalars import duration
-from watcher.terminal import heading, lines, short, table, word
+from parsers.odd_cells import OddCell, odd_cells
+from parsers.readings import Readings, Role
+from rules.outcomes import Verdict
+from watcher.exit_codes import ALL_PASS, NOT_DONE, SAMPLE_FAILS
+from watcher.mail import Mail, mails
+from watcher.schema import MailPart
 
 if TYPE_CHECKING:
-    from rich.console import Console
-
-    from rules.outcomes import Outcomes
+    from parsers.layout import Layout
     from watcher.evaluation import Evaluated
-    from watcher.mail import Mail
-
-#: Most distinct labels and series that the summary spells out.
-MOST_ROWS = 200
+    from watcher.settings import Settings
 
 
-def explain(out: Console, evaluated: Evaluated, complete_after_seconds: float) -> None:
-    """Print the summary, the labels, the results and the mails of an export."""
-    _summary(out, evaluated)
-    _labels(out, evaluated.outcomes)
-    _cells(out, evaluated.outcomes)
-    _results(out, evaluated.outcomes)
-    letters = mail.mails(evaluated.outcomes, evaluated.export, evaluated.problems, complete_after_seconds, ())
-    _mails(out, letters)
+@dataclass(frozen=True, slots=True)
+class LineFate:
+    """What became of one line: ``read``, ``fault`` (read, with a cell that cannot be used) or ``set aside``."""
+
+    line: int
+    fate: str
+    why: str
 
 
-def _summary(out: Console, evaluated: Evaluated) -> None:
-    readings = evaluated.outcomes.case.readings
-    claims = evaluated.layout.claims
-    why = [f"file {claims.file}" if claims.file else "", f"text {claims.text.pattern}" if claims.text else ""]
-    used = [f"{use.header} → {', '.join(use.fields)}" for use in readings.columns if use.fields]
-    ignored = [use.header or "(no header)" for use in readings.columns if not use.fields]
-    heading(out, f"{evaluated.export.name}: read with layout '{evaluated.layout.layout}'")
-    read = len(np.unique(readings.line))
-    sentences = [
-        f"claimed by   {' and '.join(part for part in why if part)}",
-        f"lines        {readings.lines}: {read} with readings, {len(readings.set_aside)} set aside",
-        f"readings     {len(readings)} of {several(list(readings.analyte.names), most=12)}",
-        f"columns      {several(used, most=30)}",
-    ]
-    if ignored:
-        sentences.append(f"ignored      {several(ignored, most=30)}")
-    if readings.heading:
-        sentences.append(f"heading      {', '.join(f'{k} = {v}' for k, v in readings.heading.items())}")
-    lines(out, sentences)
-    reasons: dict[str, list[int]] = {}
-    for aside in readings.set_aside:
-        reasons.setdefault(aside.reason, []).append(aside.line)
-    if reasons:
-        heading(out, "Set aside")
-        table(out, ("lines", "why"), [(line_ranges(at), reason) for reason, at in reasons.items()])
-    if evaluated.problems:
-        heading(out, "Problems")
-        lines(out, evaluated.problems)
+@dataclass(frozen=True)
+class ReadingAccount:
+    """How one export was read, whether or not anything was computed of it."""
+
+    name: str
+    data: bytes
+    layout: Layout
+    readings: Readings
+    problems: tuple[str, ...]
+
+    @cached_property
+    def claimed_by(self) -> str:
+        """Why the layout claimed the export."""
+        claims = self.layout.claims
+        parts = [f"file {claims.file}" if claims.file else "", f"text {claims.text.pattern}" if claims.text else ""]
+        return " and ".join(part for part in parts if part)
+
+    @cached_property
+    def read_lines(self) -> frozenset[int]:
+        """The lines that gave readings."""
+        return frozenset(self.readings.line.tolist())
+
+    @cached_property
+    def fault_lines(self) -> frozenset[int]:
+        """Those of them with a cell that cannot be used, so that their series are not evaluated."""
+        return frozenset(fault.line for fault in self.readings.faults)
+
+    @cached_property
+    def odd_cells(self) -> list[OddCell]:
+        """Every distinct cell that is no number where one is expected."""
+        return odd_cells(self.data, self.layout, self.name, self.read_lines)
+
+    def line_fates(self) -> list[LineFate]:
+        """Return the fate of every line, in the order of the file."""
+        readings = self.readings
+        fates = {aside.line: LineFate(aside.line, "set aside", aside.reason) for aside in readings.set_aside}
+        said: dict[int, dict[str, None]] = {}
+        for row, line in enumerate(readings.line.tolist()):
+            what = f"{readings.sample[row]} {readings.analyte[row]}"
+            said.setdefault(line, {})[f"{what}, {Role(int(readings.role[row])).word}"] = None
+        for line, whats in said.items():
+            first, *more = whats
+            fates[line] = LineFate(line, "read", first + (f" and {len(more)} more readings" if more else ""))
+        for fault in readings.faults:
+            fates[fault.line] = LineFate(fault.line, "fault", f"column {fault.column!r}: {fault.sentence}")
+        return [fates[line] for line in sorted(fates)]
 
 
-def _labels(out: Console, outcomes: Outcomes) -> None:
-    uses = outcomes.case.readings.labels
-    heading(out, "Labels, and how they were understood")
-    rows = [(u.label, u.role, u.sample, u.level, str(u.rows), u.rule) for u in uses[:MOST_ROWS]]
-    table(out, ("label", "role", "sample", "level", "rows", "by"), rows, numbers=(4,))
-    if len(uses) > MOST_ROWS:
-        lines(out, [f"and {len(uses) - MOST_ROWS} more labels"])
+@dataclass(frozen=True)
+class Explanation:
+    """Everything that `explain` shows."""
+
+    account: ReadingAccount
+    evaluated: Evaluated
+    mails: list[tuple[Mail, tuple[str, ...]]]
+
+    @classmethod
+    def of(cls, settings: Settings, evaluated: Evaluated, data: bytes) -> Explanation:
+        """Gather what is known of an evaluated export; each mail stands with the addresses it would go to."""
+        outcomes = evaluated.outcomes
+        account = ReadingAccount(
+            evaluated.export.name, data, evaluated.layout, outcomes.case.readings, evaluated.problems
+        )
+        letters = mails(outcomes, evaluated.export, evaluated.problems, settings.file.complete_after, ())
+        return cls(account, evaluated, [(letter, _recipients(settings, letter)) for letter in letters])
+
+    @property
+    def code(self) -> int:
+        """The exit code, as `once` would end."""
+        if self.account.problems:
+            return NOT_DONE
+        outcomes = self.evaluated.outcomes
+        failing = any(outcomes.verdict_of(i) in (Verdict.FAIL, Verdict.INCOMPLETE) for i in range(len(outcomes.case)))
+        return SAMPLE_FAILS if failing else ALL_PASS
 
 
-def _cells(out: Console, outcomes: Outcomes) -> None:
-    faults = outcomes.case.readings.faults
-    if faults:
-        heading(out, "Cells that cannot be used")
-        lines(out, [str(fault) for fault in faults[:MOST_ROWS]])
-
-
-def _results(out: Console, outcomes: Outcomes) -> None:
-    heading(out, "Results")
-    results(out, outcomes)
-    notes = [(i, plan.next_step(outcomes, i)) for i in range(min(len(outcomes.case), MOST_ROWS)) if outcomes.reasons(i)]
-    for i, step in notes:
-        heading(out, f"{outcomes.case.name(i)}: {outcomes.verdict_of(i).word}")
-        lines(out, [f"why  {reason}" for reason in outcomes.reasons(i)])
-        if step:
-            lines(out, [f"do   {step}"])
-
-
-def results(out: Console, outcomes: Outcomes) -> None:
-    """Print one row for each series."""
-    case = outcomes.case
-    shown = range(min(len(case), MOST_ROWS))
-    rows = []
-    for i in shown:
-        name = case.name(i) + (f" (attempt {case.series.attempt[i]})" if case.series.attempt[i] > 1 else "")
-        rows.append((name, word(outcomes.verdict_of(i).word), short(outcomes.text(i))))
-    table(out, ("sample", "verdict", "result"), rows)
-    if len(case) > MOST_ROWS:
-        lines(out, [f"and {len(case) - MOST_ROWS} more series"])
-
-
-def _mails(out: Console, letters: list[Mail]) -> None:
-    heading(out, "Mails that would go" if letters else "No mail would go")
-    for letter in letters:
-        wait = f" (after {duration(letter.after_seconds)}, unless newer content comes)" if letter.after_seconds else ""
-        lines(out, [f"Subject: {letter.subject}{wait}", "", letter.body])
+def _recipients(settings: Settings, letter: Mail) -> tuple[str, ...]:
+    part = settings.file.mail
+    return part.to if isinstance(part, MailPart) and letter.kind in part.about else ()

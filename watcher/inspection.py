@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import json
 from dataclasses import dataclass
 from datetime import UTC, datetime
 from typing import TYPE_CHECKING, Any
@@ -10,11 +11,11 @@ from parsers.errors import ExportRefused
 from parsers.examples import differences
 from parsers.read import claims, read
 from rules.limits import DEFAULTS
-from rules.outcomes import Verdict
+from watcher import explanation_json, explanation_text
 from watcher.clock import SystemClock, moment, stamp
 from watcher.evaluation import Job, Unclaimed, evaluate_job, unclaimed_sentence
-from watcher.exit_codes import ALL_PASS, ATTENTION, NOT_DONE, NOT_RUNNING, SAMPLE_FAILS, WELL
-from watcher.explanation import explain as print_explanation
+from watcher.exit_codes import ALL_PASS, ATTENTION, NOT_DONE, NOT_RUNNING, WELL
+from watcher.explanation import Explanation
 from watcher.health import read_status
 from watcher.settings import Settings, SettingsInvalid, compile_snapshot, read_files
 from watcher.terminal import console, heading, lines, table
@@ -24,7 +25,6 @@ if TYPE_CHECKING:
     from pathlib import Path
 
     from rules.method import Bench
-    from rules.outcomes import Outcomes
 
 #: A heartbeat older than so many scans says that the service hangs.
 STALE_SCANS = 6
@@ -140,31 +140,41 @@ def _unlike_examples(settings: Settings) -> Iterator[str]:
                 yield f"{place}: {refused}"
 
 
-def explain(config: Path, export: Path) -> int:
-    """Show how an export is understood and what would come of it."""
+def explain(config: Path, export: Path, *, with_lines: bool = False, as_json: bool = False) -> int:
+    """Show how an export is understood and what would come of it; return the exit code, as of `once`."""
     settings = _settings(config)
     if settings is None:
         return NOT_DONE
-    err = console(error=True)
     try:
         data = export.read_bytes()
     except OSError as error:
-        lines(
-            err,
-            [f"{export}: {(error.strerror or str(error)).lower()}. Nothing to explain. Correct the path."],
-        )
-        return NOT_DONE
+        sentence = f"{export}: {(error.strerror or str(error)).lower()}. Nothing to explain. Correct the path."
+        return _unexplained(export.name, sentence, as_json=as_json)
     job = Job(_name(settings, export), data, 1, stamp(SystemClock().now()))
     try:
-        evaluated = evaluate_job(settings, job, final=True)
+        explanation = Explanation.of(settings, evaluate_job(settings, job, final=True), data)
     except Unclaimed:
-        lines(err, [f"{job.name}: {unclaimed_sentence(settings)}"])
-        return NOT_DONE
+        return _unexplained(job.name, f"{job.name}: {unclaimed_sentence(settings)}", as_json=as_json)
     except ExportRefused as refused:
-        lines(err, [f"refused: {refused}"])
-        return NOT_DONE
-    print_explanation(console(), evaluated, settings.file.complete_after)
-    return NOT_DONE if evaluated.problems else _code(evaluated.outcomes)
+        return _unexplained(job.name, f"refused: {refused}", refused, as_json=as_json)
+    if as_json:
+        _print_json(explanation_json.plain(explanation, with_lines=with_lines))
+    else:
+        explanation_text.explain(console(), explanation, with_lines=with_lines)
+    return explanation.code
+
+
+def _unexplained(name: str, sentence: str, refused: ExportRefused | None = None, *, as_json: bool) -> int:
+    """Say why an export cannot be explained."""
+    if as_json:
+        _print_json(explanation_json.refusal(name, sentence, refused))
+    else:
+        lines(console(error=True), [sentence])
+    return NOT_DONE
+
+
+def _print_json(value: dict[str, Any]) -> None:
+    print(json.dumps(value, ensure_ascii=False, indent=1, allow_nan=False))  # noqa: T201 - nothing may wrap it
 
 
 def _name(settings: Settings, export: Path) -> str:
@@ -174,11 +184,6 @@ def _name(settings: Settings, export: Path) -> str:
         if export.resolve().is_relative_to(root):
             return export.resolve().relative_to(root).as_posix()
     return export.name
-
-
-def _code(outcomes: Outcomes) -> int:
-    failing = any(outcomes.verdict_of(i) in (Verdict.FAIL, Verdict.INCOMPLETE) for i in range(len(outcomes.case)))
-    return SAMPLE_FAILS if failing else ALL_PASS
 
 
 def status(config: Path) -> int:

@@ -7,16 +7,19 @@ from __future__ import annotations
 
 import re
 from dataclasses import dataclass, field
+from typing import TYPE_CHECKING
 
 from parsers.drafting.drawing import scalar
 from parsers.drafting.errors import DraftRefused
 from parsers.drafting.headers import Header, take_apart
 from parsers.drafting.moments import forms_of_date, forms_of_moment, forms_of_time
 from parsers.drafting.numerals import numberish
-from parsers.drafting.structure import Structure
 from parsers.drafting.vocabulary import ADDITION, ELEMENTS, field_of, measure, role_of
 from parsers.drafting.wide import Wide, find_wide
 from parsers.spelling import listed
+
+if TYPE_CHECKING:
+    from parsers.drafting.structure import Structure
 
 #: A column is one of numbers if at least so many of its filled cells are written like one.
 MOSTLY = 0.6
@@ -166,19 +169,15 @@ class _Finder:
         cells = [cell for cell in self.structure.column(at) if cell]
         if name in _MEASURES and measure(header.unit) not in _MEASURES[name]:
             return False
-        if name == "role":
-            return bool(cells) and sum(bool(role_of(cell)) for cell in cells) > len(cells) / 2
-        if name == "analyte":
-            return bool(cells) and not self.is_numbers(at)
-        if name == "label":
-            return bool(cells)
-        if name == "position":
-            return all(cell.isdigit() for cell in cells) and len(set(cells)) > 1
-        if name == "replicate":
-            return bool(cells) and all(cell.isdigit() for cell in cells)
-        if name in _NUMERIC:
-            return self.is_numbers(at) and not (name in ("signal",) and measure(header.unit) == "concentration")
-        return True
+        counted = all(cell.isdigit() for cell in cells)
+        agrees = {
+            "role": sum(bool(role_of(cell)) for cell in cells) > len(cells) / 2,
+            "analyte": not self.is_numbers(at),
+            "position": counted and len(set(cells)) > 1,
+            "replicate": counted,
+            "signal": self.is_numbers(at) and measure(header.unit) != "concentration",
+        }
+        return bool(cells) and agrees.get(name, name not in _NUMERIC or self.is_numbers(at))
 
     def additions(self) -> None:
         """Map a column whose header speaks of an addition by its unit; without one it waits for a person."""
@@ -317,8 +316,8 @@ class _Finder:
         if measure(header.unit) == "concentration" or "concentration" in field_of(header.name):
             mapping.columns.pop("concentration", None)
             mapping.doubts["signal"] = (
-                f"{header.written!r} is a concentration that the instrument computed itself; no other column can be the "
-                f"signal. Export the signal if the instrument can"
+                f"{header.written!r} is a concentration that the instrument computed itself; no other column can be "
+                f"the signal. Export the signal if the instrument can"
             )
         self._statistics()
 
@@ -327,10 +326,11 @@ class _Finder:
         stems: dict[str, dict[int, int]] = {}
         for at, header in enumerate(self.mapping.headers):
             match = _NUMBERED.fullmatch(header.name)
-            if match is not None and self.is_numbers(at) and match["stem"].casefold().strip() in _REPLICATE_STEMS:
-                stems.setdefault(match["stem"].casefold(), {})[int(match["number"])] = at
-            elif match is not None and self.is_numbers(at) and "signal" in field_of(match["stem"]):
-                stems.setdefault(match["stem"].casefold(), {})[int(match["number"])] = at
+            if match is None or not self.is_numbers(at):
+                continue
+            stem = match["stem"].casefold().strip()
+            if stem in _REPLICATE_STEMS or "signal" in field_of(stem):
+                stems.setdefault(stem, {})[int(match["number"])] = at
         whole = [
             found for found in stems.values() if len(found) > 1 and sorted(found) == list(range(1, len(found) + 1))
         ]

@@ -97,7 +97,9 @@ def find_labels(
         Whether a column may say what was added that cannot be read yet: then no sample is called unspiked.
     """
     distinct = [label for label in dict.fromkeys(map(fold, labels)) if label]
-    return _Clusters(distinct, types, signals, additions=additions or open_roles, nominals=nominals, open_roles=open_roles).labels()
+    return _Clusters(
+        distinct, types, signals, additions=additions or open_roles, nominals=nominals, open_roles=open_roles
+    ).labels()
 
 
 @dataclass(slots=True)

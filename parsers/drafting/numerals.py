@@ -83,7 +83,7 @@ def _decided(proof: dict[str, int], open_to_both: dict[str, str], thousands: dic
         doubt = ""
         other = "," if seen[0] == "." else "."
         if other in open_to_both and group != other:
-            doubt = f"{open_to_both[other]!r} may mean two numbers, so it is an error. State thousands if it has such a mark"
+            doubt = f"{open_to_both[other]!r} may mean two numbers, so it is an error. State thousands if it parts them"
         return Marks(seen[0], group if group != seen[0] else "", doubt)
     if group in (".", ","):
         return Marks("," if group == "." else ".", group)

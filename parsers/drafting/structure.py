@@ -8,12 +8,15 @@ from __future__ import annotations
 import csv
 from dataclasses import dataclass, field
 from itertools import pairwise
+from typing import TYPE_CHECKING
 
 from parsers.drafting.errors import DraftRefused
-from parsers.drafting.example import Example
 from parsers.drafting.numerals import numberish
 from parsers.drafting.vocabulary import begins_with_statistic, is_mean, is_statistic, is_unit
 from parsers.spelling import fold, shown
+
+if TYPE_CHECKING:
+    from parsers.drafting.example import Example
 
 #: Separators by what a layout calls them, the surer ones first: a decimal comma makes commas look regular.
 SEPARATORS = {"tab": "\t", ";": ";", "|": "|", ",": ",", "blanks": " "}

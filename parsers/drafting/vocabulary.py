@@ -10,15 +10,17 @@ from typing import Literal
 
 #: Symbols of the elements.
 ELEMENTS = frozenset(
-    "H He Li Be B C N O F Ne Na Mg Al Si P S Cl Ar K Ca Sc Ti V Cr Mn Fe Co Ni Cu Zn Ga Ge As Se Br Kr Rb Sr Y Zr Nb "
-    "Mo Tc Ru Rh Pd Ag Cd In Sn Sb Te I Xe Cs Ba La Ce Pr Nd Sm Eu Gd Tb Dy Ho Er Tm Yb Lu Hf Ta W Re Os Ir Pt Au Hg "
-    "Tl Pb Bi Th U".split()
+    re.findall(
+        "[A-Z][a-z]?",
+        "HHeLiBeBCNOFNeNaMgAlSiPSClArKCaScTiVCrMnFeCoNiCuZnGaGeAsSeBrKrRbSrYZrNbMoTcRuRhPdAgCdInSnSbTeIXeCsBaLaCePrNdSm"
+        "EuGdTbDyHoErTmYbLuHfTaWReOsIrPtAuHgTlPbBiThU",
+    )
 )
 
 #: Header words by field, compared without case, blanks and marks.
 HEADERS: dict[str, str] = {
     "label": "label|sample label|sample|sample id|sample name|sampleid|id|name|vial|vessel|solution|solution label|"
-    "identifier|flask|tube|probe|probenname|bezeichnung|probenbezeichnung|echantillon|nom|muestra|monster|prov|sample no",
+    "identifier|flask|tube|probe|probenname|bezeichnung|probenbezeichnung|echantillon|nom|muestra|monster|sample no",
     "role": "type|sample type|solution type|kind|category|class|role|typ|probentyp|art|tipo",
     "analyte": "element|analyte|compound|ion|parameter|metal|component|elem|analyt|elemento|analyse|species",
     "channel": "wavelength|line|isotope|mass number|m/z|view|wellenlange|nm",
@@ -31,7 +33,7 @@ HEADERS: dict[str, str] = {
     "replicate": "replicate|rep|replicate no|injection|inj|repeat|wiederholung|wdh|rep no|reading no",
     "nominal": "nominal|nominal conc|std conc|standard conc|standard concentration|nominal concentration|target|"
     "expected|true value|sollwert|std value|certified",
-    "added": "added|addition|spike conc|spike concentration|conc added|added conc|spiked with|zugabe|ajout|addition conc",
+    "added": "added|addition|spike conc|spike concentration|conc added|added conc|spiked with|zugabe|ajout",
     "spike_volume": "std|spike|spike vol|spike volume|standard added|std added|std vol|standard volume|volume added|"
     "spike added|added volume|added|addition|vol std|standard|zugabe",
     "aliquot": "aliquot|sample volume|sample vol|aliquot volume|probenvolumen",
@@ -55,7 +57,7 @@ HEADERS: dict[str, str] = {
 #: Words of a type column by the role that they mean.
 ROLE_WORDS_SEEN: dict[str, str] = {
     "unspiked": "sample|unspiked|unknown|unk|unkn|smp|spl|probe|plain|native|unaltered|s",
-    "spiked": "spiked|spike|addition|std add|standard addition|matrix spike|spk|ms|gespikt|aufgestockt|add|spiked sample",
+    "spiked": "spiked|spike|addition|std add|standard addition|matrix spike|spk|ms|gespikt|aufgestockt|add",
     "standard": "standard|std|cal|calibration|calibrant|calibrator|kal|cal std|calibration standard|etalon",
     "blank": "blank|blk|reagent blank|calibration blank|blind|blindwert|blanc|bl|method blank|prep blank|cal blank",
     "check_standard": "check|qc|control|check standard|ccv|icv|verification|kontrolle|qcs|chk|quality control",

@@ -6,11 +6,15 @@ Nothing here reads a row.
 from __future__ import annotations
 
 import re
-from collections.abc import Callable, Sequence
 from dataclasses import dataclass
+from typing import TYPE_CHECKING
 
-from parsers.drafting.headers import Header
 from parsers.drafting.vocabulary import ELEMENTS, measure, plain
+
+if TYPE_CHECKING:
+    from collections.abc import Callable, Sequence
+
+    from parsers.drafting.headers import Header
 
 _SYMBOL = r"(?P<analyte>[A-Z][a-z]?)"
 #: How an element and its line or mass are written, the longer forms first.
@@ -25,8 +29,8 @@ _WRITTEN = (
     r"(?P<analyte>[A-Z][a-z]?)",
 )
 _FIELDS = {
-    "signal": ("mean", "average", "avg", "intensity", "signal", "counts", "cps", "abs", "absorbance", "area", "mittelwert",
-               "int", "mean cps", "mean intensity", "net intensity", "peak area"),
+    "signal": ("mean", "average", "avg", "intensity", "signal", "counts", "cps", "abs", "absorbance", "area",
+               "mittelwert", "int", "mean cps", "mean intensity", "net intensity", "peak area"),
     "signal_sd": ("sd", "std dev", "stdev", "stddev", "standard deviation", "st dev"),
     "signal_rsd": ("rsd", "%rsd", "rsd %", "cv", "%cv", "rsd(%)", "rsd (%)", "(%rsd)"),
     "concentration": ("conc", "concentration", "result", "konz"),
