@@ -13,7 +13,7 @@ layout takes the one that ends in an error, never in a number that may be wrong.
 from __future__ import annotations
 
 import re
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -27,8 +27,8 @@ from parsers.drafting.naming import find_labels
 from parsers.drafting.numerals import find_marks, numberish
 from parsers.drafting.oddities import find_oddities
 from parsers.drafting.preamble import find_heading
-from parsers.drafting.structure import find_structure
-from parsers.drafting.vocabulary import role_of
+from parsers.drafting.structure import find_structure, split
+from parsers.drafting.vocabulary import begins_with_statistic, role_of
 from parsers.errors import DocumentInvalid
 from parsers.layout import Layout, parse_layout
 from parsers.spelling import fold, listed
@@ -153,12 +153,30 @@ class _Draughtsman:
         drawing.add(f"separator: {word if word in ('tab', 'blanks') else scalar(word)}")
         if any(structure.header_at != 0 for structure in self.structures):
             drawing.add(f"header: {scalar(_start_of(first, first.header_at))}")
+        if first.header_lines > 1:
+            drawing.add(f"header_lines: {first.header_lines}")
+            if first.repeat_right:
+                drawing.add(f"repeat_right: [{', '.join(map(str, first.repeat_right))}]")
+        if first.block_key:
+            drawing.add(
+                f"blocks: {{begin: {scalar('^' + _escaped(first.block_key))}, heading: {{label: {_after(first)}}}}}"
+            )
+        filled = [scalar(first.headers[at]) for at in self.together.fill_down]
+        if filled:
+            drawing.add(f"fill_down: [{', '.join(filled)}]")
+        rules = list(dict.fromkeys(rule for structure in self.structures for rule in _row_rules(structure)))
+        if rules:
+            drawing.add("rows:", *(f"  - {rule}" for rule in rules))
         skips = list(dict.fromkeys(skip for structure in self.structures for skip in _skips(structure)))
         if skips:
             drawing.add(f"skip: [{', '.join(map(scalar, skips))}]")
         for structure in self.structures:
             drawing.doubt(_odd_lines(structure))
-        until = next((found for structure in self.structures if (found := _until(structure))), "")
+        until = (
+            ""
+            if first.block_key
+            else next((found for structure in self.structures if (found := _until(structure))), "")
+        )
         if until:
             drawing.add(f"until: {scalar(until)}")
         last = first.example.lines[-1] if first.example.lines else ""
@@ -241,8 +259,7 @@ class _Draughtsman:
 
     def _labels(self) -> None:
         drawing, columns = self.drawing, self.mapping.columns
-        at = columns["label"][0]
-        cells = self.together.column(at)
+        cells = self.together.block_names or self.together.column(columns["label"][0])
         additions = bool({"added", "spike_volume"} & columns.keys())
         labels = find_labels(
             cells,
@@ -321,9 +338,8 @@ def _joined(structures: Sequence[Structure]) -> Structure:
     """Return the first structure with the rows of all of them."""
     first = structures[0]
     rows = [row for structure in structures for row in structure.rows]
-    return type(first)(
-        first.example, first.separator, first.header_at, first.headers, rows, first.units, first.units_at
-    )
+    names = [name for structure in structures for name in structure.block_names]
+    return replace(first, rows=rows, block_names=names)
 
 
 def _title(name: str) -> str:
@@ -348,6 +364,28 @@ def _start_of(structure: Structure, at: int) -> str:
     return f"^{_escaped(line)}$"
 
 
+def _after(structure: Structure) -> str:
+    """Return a pattern of what stands behind the beginning of a block."""
+    return scalar(f"^{_escaped(structure.block_key)}\\s*([^;\\t,]+)")
+
+
+def _row_rules(structure: Structure) -> Iterable[str]:
+    """Return what the rows are that hold statistics of others, by the column that says so."""
+    said: dict[int, list[str]] = {}
+    for at, column in structure.statistics.items():
+        said.setdefault(column, []).append(split(structure.example.lines[at], structure.character)[column])
+    for column, words in said.items():
+        if _by_name(structure, column):
+            pattern = "|".join(map(_escaped, dict.fromkeys(words)))
+            yield f"{{where: {{{scalar(structure.headers[column])}: {scalar(f'^(?:{pattern})$')}}}, are: left out}}"
+
+
+def _by_name(structure: Structure, column: int) -> bool:
+    """Tell whether a column has a name of its own."""
+    name = structure.headers[column]
+    return bool(name) and structure.headers.count(name) == 1
+
+
 def _skips(structure: Structure) -> list[str]:
     """Return patterns of the lines among the rows that are none, as far as they are surely none."""
     found = []
@@ -355,6 +393,8 @@ def _skips(structure: Structure) -> list[str]:
         found.append(f"^{_escaped(structure.example.lines[structure.units_at])}$")
     separator = _escaped(structure.character)
     for at, column in structure.statistics.items():
+        if _by_name(structure, column):
+            continue  # told by rows
         word = _escaped(structure.example.lines[at].split(structure.character)[column].strip())
         before = f"(?:[^{separator}]*{separator}){{{column}}}" if column else ""
         found.append(rf"^{before}\s*{word}\s*(?:{separator}|$)")
@@ -363,11 +403,16 @@ def _skips(structure: Structure) -> list[str]:
 
 
 def _general(line: str) -> str:
+    if begins_with_statistic(line):
+        word = re.match(r"[\W\d]*[^\W\d]+", line)
+        return "^" + _escaped(word.group() if word else line) + r"\b"
     return "^" + re.sub(r"\d+", lambda _: r"\d+", _escaped(line.rstrip())) + r"\s*$"
 
 
 def _is_text(structure: Structure, at: int) -> bool:
-    """Tell whether a line is words only, such as the head of a printed page, and no broken row."""
+    """Tell whether a line is words only or a statistic, such as the head of a printed page, and no broken row."""
+    if begins_with_statistic(structure.example.lines[at]):
+        return True
     cells = [cell for cell in structure.example.lines[at].split(structure.character) if cell.strip()]
     return len(cells) == 1
 

@@ -10,9 +10,9 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from parsers.block import read_block
 from parsers.cells import Kind
 from parsers.columns import resolve
+from parsers.shaping import shape
 from parsers.spelling import fold
 from parsers.table import find_table, read_rows
 from parsers.text import decode
@@ -21,9 +21,10 @@ if TYPE_CHECKING:
     from collections.abc import Container, Iterator
 
     from parsers.layout import Layout
+    from parsers.table import Frame, Table
 
 TREATMENTS = {
-    Kind.NUMBER: "a number, its flag taken out",
+    Kind.NUMBER: "a number, what stands beside it left out",
     Kind.MISSING: "missing",
     Kind.BELOW: "below the instrument's range",
     Kind.ABOVE: "above the instrument's range",
@@ -63,13 +64,12 @@ def odd_cells(data: bytes, layout: Layout, name: str, lines: Container[int]) -> 
     lines
         The lines that gave readings; others are told by their own reason.
     """
-    frame = find_table(decode(data, layout.encodings, name), layout)
-    plan = resolve(frame, layout)
-    table = read_block(frame, layout, plan) or read_rows(frame, layout)
+    frame, table = _table(data, layout, name)
+    columns = sorted({at for single in layout.singles() for at in resolve(frame, single).number_columns})
     read = np.array([line in lines for line in table.line.tolist()], dtype=bool)
 
     def found() -> Iterator[OddCell]:
-        for column in sorted(plan.number_columns):
+        for column in columns:
             texts = table.texts(column)
             for code, text in enumerate((*texts.names, "")):
                 if layout.grammar.number.fullmatch(fold(text)):
@@ -80,3 +80,12 @@ def odd_cells(data: bytes, layout: Layout, name: str, lines: Container[int]) -> 
                     yield OddCell(text, frame.headers[column], TREATMENTS[layout.grammar.cell(text).kind], tuple(at))
 
     return list(found())
+
+
+def _table(data: bytes, layout: Layout, name: str) -> tuple[Frame, Table]:
+    lines = decode(data, layout.encodings, name)
+    if not layout.plain:
+        shaped = shape(lines, layout)
+        return shaped.frame, shaped.table
+    frame = find_table(lines, layout)
+    return frame, read_rows(frame, layout)

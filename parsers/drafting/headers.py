@@ -39,11 +39,15 @@ def take_apart(written: str, below: str = "") -> Header:
         What a row of units says under it.
     """
     unit = below.strip("()[] ")
+    parts = written.split(" | ")
+    last = parts[-1]
     if unit:
-        return Header(written, written, unit)
-    match = _WITH_UNIT.fullmatch(written)
+        return Header(written, last, unit)
+    if len(parts) > 1 and is_unit(last.strip("()[] ")):
+        return Header(written, parts[-2], last.strip("()[] "))
+    match = _WITH_UNIT.fullmatch(last)
     if match is not None:
         unit = next((text.strip() for key, text in match.groupdict().items() if key != "name" and text), "")
         if is_unit(unit):
             return Header(written, match["name"].strip(), unit)
-    return Header(written, written)
+    return Header(written, last)

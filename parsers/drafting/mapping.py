@@ -7,6 +7,7 @@ from __future__ import annotations
 
 import re
 from dataclasses import dataclass, field
+from itertools import pairwise
 from typing import TYPE_CHECKING
 
 from parsers.drafting.drawing import scalar
@@ -23,6 +24,7 @@ if TYPE_CHECKING:
 
 #: A column is one of numbers if at least so many of its filled cells are written like one.
 MOSTLY = 0.6
+_BRACKETED = re.compile(r"\[\s*[0-9][0-9.,]*\s*\]")
 _NUMBERED = re.compile(r"(?P<stem>.*?)[\s_.#-]*(?P<number>[0-9]{1,2})")
 _REPLICATE_STEMS = (
     "r",
@@ -43,6 +45,8 @@ _ORDER = (
     "nominal", "added", "spike_volume", "level", "aliquot", "made_up_to", "mass", "digest_volume", "predilution",
     "batch", "analyst", "instrument", "comment", "measured_at",
 )  # fmt: skip
+#: Fields of which a wide table has one for each analyte.
+_OF_READINGS = ("signal", "signal_sd", "signal_rsd", "readings", "channel", "concentration")
 _NUMERIC = frozenset(
     ("signal", "signal_sd", "signal_rsd", "readings", "replicate", "nominal", "added", "spike_volume", "aliquot",
      "made_up_to", "mass", "digest_volume", "position", "concentration")
@@ -74,6 +78,8 @@ class Mapping:
         What is said about columns that are not read.
     additions
         Columns that may say what was added, and cannot be read as long as nobody says their unit.
+    bracketed
+        Whether the nominals stand in brackets in a column that holds results otherwise.
     """
 
     headers: list[Header]
@@ -83,6 +89,7 @@ class Mapping:
     wide: Wide | None = None
     left: list[str] = field(default_factory=list)
     additions: list[int] = field(default_factory=list)
+    bracketed: bool = False
 
     def at(self, field_name: str) -> int | None:
         """Return the first column of a field."""
@@ -105,6 +112,8 @@ class Mapping:
             pairs = ", ".join(f"{scalar(word)}: {role}" for word, role in words.items())
             return f"{{from: {several}, map: {{{pairs}}}}}"
         unit = self.headers[self.columns[name][0]].unit
+        if name == "nominal" and self.bracketed:
+            return f"{{from: {several}, pattern: '^\\[(.+)\\]$'{f', unit: {scalar(unit)}' if unit else ''}}}"
         if unit and name in _MEASURES:
             return f"{{from: {several}, unit: {scalar(unit)}}}"
         gaps = len(names) > 1 and any("" in structure.column(at) for at in self.columns[name])
@@ -123,17 +132,16 @@ def find_columns(structure: Structure) -> Mapping:
     mapping = Mapping([take_apart(name, unit) for name, unit in zip(structure.headers, below, strict=True)])
     finder = _Finder(structure, mapping)
     finder.by_words()
+    finder.bracketed()
     finder.additions()
     finder.label()
     finder.times()
-    mapping.wide = (
-        find_wide(mapping.headers, finder.taken(), finder.is_numbers) if "analyte" not in mapping.columns else None
-    )
+    if "analyte" not in mapping.columns:
+        mapping.wide = find_wide(mapping.headers, finder.taken(besides=_OF_READINGS), finder.is_numbers)
     if mapping.wide is None:
         finder.signal()
-    else:
-        for name in ("signal", "signal_sd", "signal_rsd", "readings", "channel"):
-            mapping.columns.pop(name, None)
+    for name in _OF_READINGS if mapping.wide is not None else ():
+        mapping.columns.pop(name, None)
     finder.rising()
     return mapping
 
@@ -143,9 +151,9 @@ class _Finder:
     structure: Structure
     mapping: Mapping
 
-    def taken(self) -> set[int]:
-        """Return the columns that have a field."""
-        return {at for columns in self.mapping.columns.values() for at in columns}
+    def taken(self, besides: tuple[str, ...] = ()) -> set[int]:
+        """Return the columns that have a field, but for some fields."""
+        return {at for name, columns in self.mapping.columns.items() if name not in besides for at in columns}
 
     def is_numbers(self, at: int) -> bool:
         """Tell whether a column holds numbers."""
@@ -200,7 +208,7 @@ class _Finder:
         mapping = self.mapping
         if {"added", "spike_volume"} & mapping.columns.keys():
             return
-        labels = self.structure.column(mapping.columns["label"][0])
+        labels = self.structure.block_names or self.structure.column(mapping.columns["label"][0])
         wide = mapping.wide.columns if mapping.wide else []
         for at in range(len(mapping.headers)):
             if at in self.taken() or at in wide or at in mapping.additions or not self.is_numbers(at):
@@ -227,7 +235,11 @@ class _Finder:
             If no column names the vials.
         """
         mapping = self.mapping
+        if self.structure.block_key:
+            mapping.columns.pop("label", None)
+            return
         if "label" in mapping.columns:
+            self._fill_down(mapping.columns["label"][0])
             return
         free = [at for at in range(len(mapping.headers)) if at not in self.taken() and not self.is_numbers(at)]
         texts = [at for at in free if any(self.structure.column(at)) and mapping.headers[at].written]
@@ -246,6 +258,26 @@ class _Finder:
                 f"Write the layout by hand: columns.label."
             )
         raise DraftRefused(self.structure.example.name, sentence, self.structure.header_at + 1)
+
+    def _fill_down(self, at: int) -> None:
+        """Fill labels down where the first of every so many rows is named: anything less regular is a missing label."""
+        cells = self.structure.column(at)
+        named = [row for row, cell in enumerate(cells) if cell]
+        steps = {after - before for before, after in pairwise([*named, len(cells)])}
+        if named and named[0] == 0 and len(named) > 1 and len(steps) == 1 and steps != {1}:
+            self.structure.fill_down.append(at)
+            self.mapping.doubts["label"] = "only the first row of each vial is named; the name is filled down"
+
+    def bracketed(self) -> None:
+        """Take nominals out of a column in which they stand in brackets beside results."""
+        columns = self.mapping.columns
+        for at in range(len(self.mapping.headers)):
+            cells = [cell for cell in self.structure.column(at) if _BRACKETED.fullmatch(cell)]
+            free = at not in self.taken() or columns.get("concentration") == [at]
+            if len(cells) > 1 and free and "nominal" not in columns:
+                columns["nominal"] = [at]
+                columns.pop("concentration", None)
+                self.mapping.bracketed = True
 
     def times(self) -> None:
         """Settle the time of measurement, or leave it out where day and month could be changed over."""

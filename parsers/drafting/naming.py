@@ -38,7 +38,7 @@ _PREFIX = re.compile(r"(?P<word>[A-Za-z]+)(?P<sign>[\s_/\-]+)")
 _AMOUNT = re.compile(r"\d+(?:[.,]\d+)?\s*(?P<unit>[A-Za-zµμ/]+)")
 _CODE = re.compile(r"(?P<letters>[A-Za-z]{0,6})[ _-]?\d{1,2}")
 _CODES = frozenset({"a", "add", "s", "sp", "spiked", "addn", "spk", "spike", "l", "lev", "level", "m", "ms", "sa"})
-_RUN = re.compile(r"[A-Z]+|[A-Za-z]+|\d+|[^A-Za-z\d]+")
+_RUN = re.compile(r"[A-Za-z]+|\d+|[^A-Za-z\d]+")
 
 
 @dataclass(slots=True)

@@ -6,8 +6,8 @@ Made out by counting fields: rows of a table have as many as their header, and h
 from __future__ import annotations
 
 import csv
+import re
 from dataclasses import dataclass, field
-from itertools import pairwise
 from typing import TYPE_CHECKING
 
 from parsers.drafting.errors import DraftRefused
@@ -20,6 +20,11 @@ if TYPE_CHECKING:
 
 #: Separators by what a layout calls them, the surer ones first: a decimal comma makes commas look regular.
 SEPARATORS = {"tab": "\t", ";": ";", "|": "|", ",": ",", "blanks": " "}
+#: A line that names a vial by itself.
+_NAMING = re.compile(
+    r"(?P<key>(?:Sample(?: ID| [Nn]ame| [Ll]abel)?|Label|Vial|Solution|Vessel|Probe)\s*[:=])\s*"
+    r"(?P<name>[^;\t,]*[^;\t,\s])[;,\t\s]*$"
+)
 #: Fewest rows from which a shape is made out.
 FEWEST_ROWS = 2
 
@@ -35,9 +40,9 @@ class Structure:
     separator
         As a layout writes it.
     header_at
-        Index of the header line.
+        Index of the (first) header line.
     headers
-        Its names, blanks folded.
+        Its names, blanks folded; those of several header lines joined as the layout joins them.
     rows
         Index of each row and its trimmed cells.
     units
@@ -48,6 +53,13 @@ class Structure:
         Other lines among the rows that are none, by index.
     tail
         Index of the first line behind the table that is not blank, or None.
+    header_lines, repeat_right
+        How many lines the header has, and which of them (from 1) name several columns to their right.
+    block_key, block_names
+        The beginning of a line that names the vial of the rows below it, where there are such lines, and the name of
+        each row.
+    fill_down
+        Columns in which only the first of several rows of a vial is filled.
     """
 
     example: Example
@@ -60,10 +72,19 @@ class Structure:
     statistics: dict[int, int] = field(default_factory=dict)
     stray: list[int] = field(default_factory=list)
     tail: int | None = None
+    header_lines: int = 1
+    repeat_right: list[int] = field(default_factory=list)
+    block_key: str = ""
+    block_names: list[str] = field(default_factory=list)
+    fill_down: list[int] = field(default_factory=list)
 
     def column(self, at: int) -> list[str]:
-        """Return the cells of a column."""
-        return [cells[at] for _, cells in self.rows]
+        """Return the cells of a column, filled down where it is one that is."""
+        cells = [cells[at] for _, cells in self.rows]
+        if at in self.fill_down:
+            for row in range(1, len(cells)):
+                cells[row] = cells[row] or cells[row - 1]
+        return cells
 
     @property
     def character(self) -> str:
@@ -124,7 +145,8 @@ class _Trial:
 
     def structure(self) -> Structure:
         """Tell header, rows and the rest apart."""
-        header_at = self._header()
+        header = self._header()
+        header_at = header[-1]
         inside = self._inside(header_at)
         units_at = next((at for at in inside[:1] if self._holds_units(at)), None)
         again = [at for at in inside if self.example.lines[at] == self.example.lines[header_at]]
@@ -133,20 +155,39 @@ class _Trial:
         rows = [at for at in candidates if at not in statistics]
         if not rows:
             raise DraftRefused(self.example.name, "expected rows of readings, found statistics only.", header_at + 1)
-        last = max([*rows, *statistics])
-        known = {*rows, *again, *statistics, units_at}
+        key, starts = self._blocks(header_at, again)
+        last = len(self.example.lines) if key else max([*rows, *statistics])
+        known = {*rows, *again, *statistics, *starts, units_at}
         return Structure(
             example=self.example,
             separator=self.word,
-            header_at=header_at,
-            headers=[fold(name) for name in self.records[header_at]],
+            header_at=header[0],
+            headers=self._names(header),
             rows=[(at, self.records[at]) for at in rows],
             units=self.records[units_at] if units_at is not None else [],
             units_at=units_at,
             statistics=statistics,
             stray=[at for at in self.records if header_at < at < last and at not in known],
             tail=next((at for at in self.records if at > last), None),
+            header_lines=len(header),
+            block_key=key,
+            block_names=[starts[max(start for start in starts if start < at)] for at in rows] if key else [],
+            repeat_right=[number for number, at in enumerate(header[:-1], 1) if self._is_group(at, header[-1])],
         )
+
+    def _blocks(self, header_at: int, again: list[int]) -> tuple[str, dict[int, str]]:
+        """Return how a line begins that names the vial of the table below it, and each such line's vial."""
+        found: dict[str, dict[int, str]] = {}
+        for at in self.records:
+            match = _NAMING.match(self.example.lines[at])
+            if match is not None:
+                found.setdefault(match["key"], {})[at] = match["name"].strip()
+        for key, starts in found.items():
+            heads = sorted([header_at, *again])
+            fits = len(starts) == len(heads) > 1
+            if fits and all(start < head for start, head in zip(sorted(starts), heads, strict=True)):
+                return key, starts
+        return "", {}
 
     def _statistics(self, rows: list[int]) -> dict[int, int]:
         """Return the rows that hold a statistic of others, each with the column that says so."""
@@ -159,15 +200,17 @@ class _Trial:
                 found |= {at: column for at in said if at not in found}
         return found
 
-    def _header(self) -> int:
-        """Return the index of the header, the last line of names before the first row."""
+    def _header(self) -> list[int]:
+        """Return the header lines: the last line of names before the first row, and those above that complete it."""
         first = self.body[0]
         above = [at for at in self.records if at < first and len(self.records[at]) == self.width]
         if above and self._holds_units(above[-1]):
             above.pop()
         if above and not self._holds_numbers(above[-1]):
-            self._refuse_second_header(above)
-            return above[-1]
+            header = [above.pop()]
+            while above and above[-1] == header[0] - 1 and self._is_incomplete(header) and self._may_head(above[-1]):
+                header.insert(0, above.pop())
+            return header
         near = [at for at in self.records if at < first][-1:]
         got = f"{len(self.records[near[0]])} in {shown(self.example.lines[near[0]])}" if near else "none"
         sentence = (
@@ -177,16 +220,30 @@ class _Trial:
         )
         raise DraftRefused(self.example.name, sentence, first + 1)
 
-    def _refuse_second_header(self, above: list[int]) -> None:
-        """Refuse where the names of the columns stand on several lines: either alone would merge unlike columns."""
-        consecutive = [at for at, below in pairwise(above) if below == at + 1 and not self._holds_numbers(at)]
-        named = [name for name in self.records[above[-1]] if name]
-        if consecutive and consecutive[-1] == above[-1] - 1 and len(set(named)) < len(named):
-            sentence = (
-                "the names of the columns stand on several lines, and the last of them alone does not tell them apart. "
-                "Write the layout by hand, or export with one header line."
-            )
-            raise DraftRefused(self.example.name, sentence, consecutive[-1] + 1)
+    def _is_incomplete(self, header: list[int]) -> bool:
+        """Tell whether header lines leave columns without a name, or several with the same."""
+        names = self._names(header)
+        return "" in names or len(set(names)) < len(names)
+
+    def _may_head(self, at: int) -> bool:
+        """Tell whether a line can be one of names: several of them, and no numbers."""
+        filled = [cell for cell in self.records[at] if cell]
+        return len(filled) > 1 and not any(map(numberish, filled))
+
+    def _names(self, header: list[int]) -> list[str]:
+        """Return the names of the columns, of several header lines joined."""
+        rows = [[fold(cell) for cell in self.records[at]] for at in header]
+        for row, at in zip(rows[:-1], header[:-1], strict=True):
+            if self._is_group(at, header[-1]):
+                for place in range(1, len(row)):
+                    row[place] = row[place] or row[place - 1]
+        return [" | ".join(part for part in column if part) for column in zip(*rows, strict=True)]
+
+    def _is_group(self, at: int, below: int) -> bool:
+        """Tell whether the names of a header line hold for several columns to their right."""
+        upper, lower = self.records[at], self.records[below]
+        bare = [lower[place] for place in range(1, self.width) if not upper[place] and any(upper[:place])]
+        return bool(bare) and all(bare) and len(set(lower)) < len(lower)
 
     def _inside(self, header_at: int) -> list[int]:
         """Return the lines of as many fields as the header, up to the last one that holds numbers of a reading."""

@@ -28,6 +28,8 @@ _WRITTEN = (
     r"(?P<analyte>[A-Z][a-z]?)[ _-]?(?P<channel>\d{1,3}(?:\.\d+)?)",
     r"(?P<analyte>[A-Z][a-z]?)",
 )
+#: A numbered reading.
+_REPLICATE = re.compile(r"(?P<stem>R|Rep|rep|Replicate|Reading|reading|Run)[ .]?\s*\d{1,2}")
 _FIELDS = {
     "signal": ("mean", "average", "avg", "intensity", "signal", "counts", "cps", "abs", "absorbance", "area",
                "mittelwert", "int", "mean cps", "mean intensity", "net intensity", "peak area"),
@@ -88,6 +90,9 @@ def find_wide(headers: Sequence[Header], taken: set[int], is_numbers: Callable[[
         )
     if not signals:
         return None
+    replicates = [_REPLICATE.fullmatch(one.rest) for one in signals]
+    if signals and all(replicates):
+        return _of_replicates(headers, signals, doubts, [one.at for one in found])
     statistic = next((name for name in ("signal_sd", "signal_rsd") if any(one.field == name for one in found)), "")
     kept = [*signals, *(one for one in found if one.field == statistic)]
     by_unit = {one.unit for one in signals}
@@ -99,7 +104,7 @@ def find_wide(headers: Sequence[Header], taken: set[int], is_numbers: Callable[[
         if not statistic
         else {one.rest: "signal" if one.field != statistic else statistic for one in kept if one.rest}
     )
-    pattern = _pattern(kept, with_field=bool(fields))
+    pattern = _pattern(kept, [header.written for header in headers], with_field=bool(fields))
     if any(one.rest == "" for one in kept) and fields:
         return _unnamed_mean(headers, signals, doubts, left)
     matching = {at for at, header in enumerate(headers) if at not in taken and re.search(pattern, header.written)}
@@ -114,11 +119,28 @@ def _symbol(header: Header, found: _Found) -> str:
     return match["analyte"] if match else ""
 
 
+def _of_replicates(headers: Sequence[Header], signals: list[_Found], doubts: list[str], named: list[int]) -> Wide:
+    """Read numbered readings; statistics beside them say nothing new."""
+    stems = sorted({match["stem"] for one in signals if (match := _REPLICATE.fullmatch(one.rest))})
+    written = [header.written for header in headers]
+    start = _pattern([_Found(one.at, one.form, "", "signal", "") for one in signals], written, with_field=False)
+    gap = r"[\s|]*" if any(" | " in one for one in written) else r"\s*"
+    pattern = f"{start[:-1]}{gap}(?P<replicate>(?:{'|'.join(map(re.escape, stems))})\\s*\\d+)$"
+    at = [one.at for one in signals]
+    return Wide(pattern, {}, at, doubts, [written[one] for one in named if one not in at])
+
+
 def _unnamed_mean(headers: Sequence[Header], signals: list[_Found], doubts: list[str], left: list[str]) -> Wide:
     """Read the means alone where only their statistics have a word of their own."""
     at = [one.at for one in signals]
     others = [header.written for number, header in enumerate(headers) if _find(number, header) and number not in at]
-    return Wide(_pattern(signals, with_field=False), {}, at, doubts, sorted({*left, *others}))
+    return Wide(
+        _pattern(signals, [header.written for header in headers], with_field=False),
+        {},
+        at,
+        doubts,
+        sorted({*left, *others}),
+    )
 
 
 def _find(at: int, header: Header) -> _Found | None:
@@ -126,7 +148,7 @@ def _find(at: int, header: Header) -> _Found | None:
         match = pattern.fullmatch(header.written)
         if match is None or match["analyte"] not in ELEMENTS:
             continue
-        rest = match["rest"].strip()
+        rest = match["rest"].strip(" |")
         field = _meaning(rest, header)
         if field is not None:
             return _Found(at, form, rest, field, header.unit)
@@ -136,10 +158,15 @@ def _find(at: int, header: Header) -> _Found | None:
 def _meaning(rest: str, header: Header) -> str | None:
     """Return the field that the words behind the element name, None where they are not known."""
     word = plain(rest).strip("()[] ")
+    if _REPLICATE.fullmatch(rest):
+        return "signal"
     for field, words in _FIELDS.items():
         if word in words or plain(rest) in words:
             return field
     unit = rest.strip("()[], /")
+    parts = [part for part in rest.split(" | ") if measure(part.strip("()[] ")) != "other"]
+    if " | " in rest and len(parts) == 1:
+        return _meaning(parts[0], header)
     of = measure(unit) or (measure(header.unit) if header.unit and rest.endswith(header.unit) else "")
     if of == "concentration":
         return "concentration"
@@ -149,7 +176,7 @@ def _meaning(rest: str, header: Header) -> str | None:
     )
 
 
-def _pattern(found: Sequence[_Found], *, with_field: bool) -> str:
+def _pattern(found: Sequence[_Found], headers: Sequence[str], *, with_field: bool) -> str:
     """Write one pattern that matches the headers that are read."""
     forms = sorted({one.form for one in found})
     start = _WRITTEN[forms[0]] if len(forms) == 1 else ""
@@ -159,6 +186,7 @@ def _pattern(found: Sequence[_Found], *, with_field: bool) -> str:
         start = r"(?:(?P<channel>\d{1,3})\s?)?(?P<analyte>[A-Z][a-z]?)"
     rests = list(dict.fromkeys(one.rest for one in found))
     words = "|".join(re.escape(rest).replace(r"\ ", " ") for rest in rests)
+    gap = r"[\s|]*" if any(" | " in written for written in headers) else r"\s*"
     if with_field:
-        return rf"^{start}\s*(?P<field>{words})$"
-    return rf"^{start}\s*(?:{words})$" if any(rests) else f"^{start}$"
+        return rf"^{start}{gap}(?P<field>{words})$"
+    return rf"^{start}{gap}(?:{words})$" if any(rests) else f"^{start}$"

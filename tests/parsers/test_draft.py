@@ -1,0 +1,254 @@
+"""A drafted layout reads the common shapes at once, and never reads a reading wrong in silence."""
+
+from __future__ import annotations
+
+import math
+from collections import Counter
+from typing import TYPE_CHECKING
+
+import numpy as np
+import pytest
+from hypothesis import given, settings
+from hypothesis import strategies as st
+from shapes import FLASKS, RACK, SHAPES, Export, Reading, Vial, signal
+
+from parsers.draft import DraftRefused, draft
+from parsers.layout import parse_layout
+from parsers.read import ExportRefused, claims, read
+from parsers.readings import Readings, Role
+
+if TYPE_CHECKING:
+    from collections.abc import Callable
+
+#: Share of the readings that a draft must read right without a person's hand.
+ENOUGH = 0.8
+
+
+def compared(found: Readings, export: Export) -> Counter[str]:
+    """Count readings that are right, open (an error, or a part not said yet), wrong, and missing."""
+    wanted = {(one.line, one.analyte, one.channel): one for one in export.readings}
+    faulty = {fault.row for fault in found.faults}
+    counts: Counter[str] = Counter()
+    for row in range(len(found)):
+        analyte, channel = found.analyte[row], found.channel[row]
+        keys = [key for key in wanted if key[0] == int(found.line[row]) and (analyte in (key[1], "?"))]
+        key = next((key for key in keys if key[2] == channel), keys[0] if channel is None and len(keys) == 1 else None)
+        if key is None:
+            counts["wrong"] += row not in faulty
+            continue
+        counts[_judged(found, row, wanted.pop(key)) if row not in faulty else "open"] += 1
+    counts["missing"] = len(wanted)
+    return counts
+
+
+def _judged(found: Readings, row: int, wanted: Reading) -> str:
+    vial = wanted.vial
+    signals = found.signals[row]
+    same = tuple(signals[np.isfinite(signals)].tolist()) == wanted.signals
+    same &= Role(int(found.role[row])).word == vial.role
+    if vial.sample:
+        same &= found.sample[row] == vial.sample and (found.level[row] or "") == vial.level
+    said = [(found.nominal.values[row], vial.nominal)]
+    if vial.spike_ml is not None:
+        said += [(found.spike_volume.values[row], vial.spike_ml), (found.added.values[row], vial.spike_ml / 5)]
+    for got, meant in said:
+        if math.isfinite(got):
+            same &= meant is not None and math.isclose(got, meant, abs_tol=1e-12)
+    if not same:
+        return "wrong"
+    known = vial.nominal is None or math.isfinite(found.nominal.values[row])
+    return "right" if known and found.analyte[row] == wanted.analyte else "open"
+
+
+@pytest.mark.parametrize("shape", SHAPES, ids=lambda shape: shape.__name__)
+def test_a_draft_reads_a_common_shape_without_editing(shape: Callable[[], Export]) -> None:
+    """At least four readings in five are right with the layout as it was drafted, and none is wrong in silence."""
+    export = shape()
+
+    drafted = draft([(export.name, export.data)])
+
+    counts = compared(read(export.data, drafted.layout, export.name), export)
+    assert counts["wrong"] == 0, drafted.text
+    assert counts["right"] >= ENOUGH * len(export.readings), (counts, drafted.text)
+
+
+@pytest.mark.parametrize("shape", SHAPES, ids=lambda shape: shape.__name__)
+def test_a_draft_is_a_layout_that_claims_its_example(shape: Callable[[], Export]) -> None:
+    """The text that is handed out parses as it stands, and claims the export that it was drafted from."""
+    export = shape()
+
+    drafted = draft([(export.name, export.data)])
+
+    assert claims(parse_layout(drafted.text, "layouts/new.yaml"), export.name, export.data)
+    assert max(map(len, drafted.text.splitlines())) <= 120
+
+
+@st.composite
+def exports(draw: st.DrawFn) -> Export:
+    """Write exports with signs, words, digits and label styles that a draft may take for something else."""
+    separator = draw(st.sampled_from([";", ",", "\t"]))
+    decimal = draw(st.sampled_from([".", ","])) if separator != "," else "."
+    digits = draw(st.integers(0, 4))
+    scale = draw(st.sampled_from([1.0, 10.0, 1000.0, 20000.0]))
+    sign = draw(st.sampled_from([" +", "+", "/", "_", " ", " add ", "-"]))
+    level = draw(st.sampled_from(["A1", "1", "0.5", "SPK", "spike", "x", "S1", "dup", "B"]))
+    standard = draw(st.sampled_from(["STD ", "Cal", "S", "Standard "]))
+    numbers = draw(st.sampled_from([("0", "0.5", "1", "2"), ("1", "2", "3", "4"), ("0", "1", "2", "3")]))
+    by_column = draw(st.booleans())
+    header = draw(st.sampled_from(["Spike", "Std (mL)", "Added", "x", "Dose (mL)", "Vol", "Added (mg/L)"]))
+    typed = draw(st.booleans()) and not by_column
+    made = Export("XX-0001.csv")
+    if draw(st.booleans()):
+        made.write("Bench report", "Batch: 12", "")
+    names = ["Label", "Element", *([header] if by_column else []), *(["Type"] if typed else []), "Signal"]
+    made.write(separator.join(names))
+    vials: list[tuple[Vial, bool]] = []
+    for at, text in enumerate(numbers):
+        # mere numbers stand for other concentrations: their nominal must not be read from the label
+        certain = "." in "".join(numbers)
+        nominal = float(text) if certain else 10.0 * (at + 1) ** 2
+        vials.append((Vial(f"{standard}{text.replace('.', decimal)}", "standard", nominal=nominal, word="std"), False))
+    if by_column:
+        vials += [(vial, True) for vial in FLASKS]
+    else:
+        for name in ("SED-12", "BRN-3"):
+            mark = "spiked" if level not in ("dup", "B", "x") else "unknown"
+            vials.append((Vial(name, "unspiked", name), True))
+            vials.append((Vial(f"{name}{sign}{level}", mark, name, level), True))
+    for at, (vial, is_sample) in enumerate(vials):
+        value = round(signal(vial, at) * scale, digits)
+        written = f"{value:.{digits}f}".replace(".", decimal)
+        volume = vial.spike_ml if is_sample and vial.spike_ml is not None else None
+        cells = [vial.label, "Zn"]
+        if by_column:
+            cells.append("" if volume is None else f"{volume:g}".replace(".", decimal))
+        if typed:
+            cells.append("std" if not is_sample else "sample")
+        line = made.write(separator.join([*cells, written]))
+        made.readings.append(Reading(line, "Zn", None, vial, (value,)))
+    return made
+
+
+@settings(max_examples=300, deadline=None)
+@given(exports())
+def test_a_draft_never_reads_a_reading_wrong_in_silence(export: Export) -> None:
+    """Whatever a draft takes an export for, what it reads without an error is what a person reads; else it is open."""
+    try:
+        drafted = draft([(export.name, export.data)])
+        found = read(export.data, drafted.layout, export.name)
+    except (DraftRefused, ExportRefused):
+        return
+    wanted = {one.line: one for one in export.readings}
+    faulty = {fault.row for fault in found.faults}
+    for row in range(len(found)):
+        reading = wanted[int(found.line[row])]
+        if row in faulty:
+            continue
+        if reading.vial.role == "unknown":  # a duplicate by its own name is an honest reading
+            assert found.sample[row] == reading.vial.label, drafted.text
+            continue
+        verdict = _judged(found, row, reading)
+        if verdict == "wrong" and "# unsure: no spiked vials were recognised" in drafted.text:
+            assert reading.vial.role == "spiked", drafted.text
+            assert found.sample[row] != reading.vial.sample, drafted.text
+            continue
+        assert verdict != "wrong", (reading, drafted.text)
+
+
+def test_a_number_that_may_be_two_is_an_error() -> None:
+    """Where no cell decides between decimal mark and thousands, the draft reads none of them and says so."""
+    data = b"Label;Element;Signal\nSED-1;Zn;1.234\nSED-2;Zn;12.345\nBLK;Zn;3.001\n"
+
+    drafted = draft([("AM-1.csv", data)])
+
+    assert len(read(data, drafted.layout, "AM-1.csv").faults) == 3
+    assert any("may mean two numbers" in doubt for doubt in drafted.unsure)
+
+
+@pytest.mark.parametrize("sign", [".", ","])
+def test_one_cell_decides_the_decimal_mark(sign: str) -> None:
+    """A single number that can be read one way only decides for the whole column."""
+    rows = [f"SED-1;Zn;1{sign}234", f"SED-2;Zn;0{sign}34"]
+    data = "\n".join(["Label;Element;Signal", *rows, ""]).encode()
+
+    found = read(data, draft([("AM-1.csv", data)]).layout, "AM-1.csv")
+
+    assert found.signals[:, 0].tolist() == [1.234, 0.34]
+
+
+def test_day_and_month_that_may_be_changed_over_give_no_time() -> None:
+    """A date such as 03/04/2026 is left out with a comment; one day above 12 decides it."""
+    rows = ["Label,Element,Signal,Date,Time", "SED-1,Zn,0.1,03/04/2026,08:00:00", "SED-2,Zn,0.2,{},09:00:00", ""]
+    doubtful, sure = ("\n".join(rows).format(day).encode() for day in ("05/04/2026", "15/04/2026"))
+
+    first, second = (draft([("TM-1.csv", data)]) for data in (doubtful, sure))
+
+    assert first.layout.columns.measured_at is None
+    assert any("day and month" in doubt for doubt in first.unsure)
+    assert second.layout.columns.measured_at is not None
+    assert second.layout.columns.measured_at.format == ("%d/%m/%Y %H:%M:%S",)
+
+
+def test_several_examples_are_drafted_together() -> None:
+    """Labels and odd cells of all examples are explained, and the claim holds what their names have in common."""
+    first = b"Label,Element,Signal\nSED-1,Zn,0.1\nBLK 1,Zn,0.2\n"
+    second = b"Label,Element,Signal\nROOF_7,Zn,<0.02\nSED-3 +A1,Zn,0.2\n"
+
+    drafted = draft([("MU-01.csv", first), ("MU-02.csv", second)])
+
+    assert drafted.layout.claims.file == "MU-*.csv"
+    assert {rule.role for rule in drafted.layout.labels} == {"blank", "spiked", "unspiked"}
+    for data in (first, second):
+        assert len(read(data, drafted.layout, "MU")) == 2
+
+
+def test_examples_of_two_kinds_are_refused() -> None:
+    """Exports with unlike columns are named, and nothing is drafted."""
+    with pytest.raises(DraftRefused, match=r"B-2\.csv, line 1: its columns are not those of A-1\.csv"):
+        draft(
+            [("A-1.csv", b"Label,Element,Signal\nS-1,Zn,1\nS-2,Zn,2\n"), ("B-2.csv", b"Label;Signal\nS-1;1\nS-2;2\n")]
+        )
+
+
+@pytest.mark.parametrize(
+    ("data", "reason"),
+    [
+        (b"Dear colleague,\nthe run is done.\n", "expected a table with a separator, a header and rows of numbers"),
+        (b"", "empty file"),
+        (b"Label,Element,A,B\nS-1,Zn,1,2\nS-2,Zn,2,3\n", "expected one column that can be the signal, found 'A', 'B'"),
+        (b",Element,Signal\nS-1,Zn,1\nS-2,Zn,2\n", "the column that names the vials has no header"),
+        (b"SED-1,Zn,0,12\nSED-2,Zn,0,34\n", "expected a header of 4 names above the rows"),
+    ],
+)
+def test_a_shape_beyond_drafting_is_refused_with_its_reason(data: bytes, reason: str) -> None:
+    """Where a shape cannot be made out, no layout comes, but what was looked for and found."""
+    with pytest.raises(DraftRefused) as refused:
+        draft([("ODD-1.csv", data)])
+
+    assert reason in str(refused.value)
+    assert str(refused.value).endswith("No layout was drafted.")
+
+
+def test_what_only_a_person_knows_is_left_to_fill_in() -> None:
+    """The amounts of levels, the stock and an analyte that nothing names are marked, and the layout still parses."""
+    data = b"Label,Signal\nSED-1,0.1\nSED-1 +A1,0.2\nSED-1 +A2,0.3\n"
+
+    drafted = draft([("FI-1.csv", data)])
+
+    assert drafted.text.count("# FILL IN:") == len(drafted.fill_in) == 3
+    assert "levels: {A1: … mL, A2: … mL}" in drafted.text
+
+
+def test_a_spike_that_is_not_understood_is_no_sample() -> None:
+    """A label that may be a spiked sample or a name of its own gives no reading until a person decides."""
+    data = b"Label,Element,Signal\nSED-1,Zn,0.1\nSED-1 x,Zn,0.2\n"
+
+    drafted = draft([("SP-1.csv", data)])
+
+    assert [aside.line for aside in read(data, drafted.layout, "SP-1.csv").set_aside] == [1, 3]
+    assert any("'SED-1 x'" in doubt for doubt in drafted.unsure)
+
+
+def test_the_rack_has_every_kind_of_vial() -> None:
+    """The shapes hold every role that a draft must find, so that none is right by never being there."""
+    assert {vial.role for vial in RACK} == {"standard", "blank", "check_standard", "unspiked", "spiked"}
