@@ -38,6 +38,8 @@ _PREFIX = re.compile(r"(?P<word>[A-Za-z]+)(?P<sign>[\s_/\-]+)")
 _AMOUNT = re.compile(r"\d+(?:[.,]\d+)?\s*(?P<unit>[A-Za-zµμ/]+)")
 _CODE = re.compile(r"(?P<letters>[A-Za-z]{0,6})[ _-]?\d{1,2}")
 _CODES = frozenset({"a", "add", "s", "sp", "spiked", "addn", "spk", "spike", "l", "lev", "level", "m", "ms", "sa"})
+#: Labels that are standards as often as samples: a letter with a digit, a name with a decimal number, a mere number.
+_UNSURE = re.compile(r"[A-Za-z][ _-]?\d|.*\d[.,]\d.*|\d+")
 _RUN = re.compile(r"[A-Za-z]+|\d+|[^A-Za-z\d]+")
 
 
@@ -111,6 +113,7 @@ class _Clusters:
     nominals: bool
     open_roles: bool
     found: Labels = field(default_factory=Labels)
+    spiked_names: set[str] = field(default_factory=set)
 
     def labels(self) -> Labels:
         kinds = {label: self._kind(label) for label in self.distinct}
@@ -206,6 +209,10 @@ class _Clusters:
         among = set(labels)
         names = [label for label in labels if not self._is_spiked(label, among)]
         by_column = bool(self.types) or self.additions
+        if not self.types:
+            unsure = [name for name in names if _UNSURE.fullmatch(name) and name not in self.spiked_names]
+            names = [name for name in names if name not in unsure]
+            self.found.set_aside += unsure
         role = "" if by_column else ", role: unspiked"
         shapes = list(dict.fromkeys(_shape(name) for name in names))
         if by_column and not self.found.set_aside:
@@ -224,12 +231,16 @@ class _Clusters:
         if base:
             match = _SUFFIX.fullmatch(label[len(base) :])
             if match is not None:
-                return self._suffix(label, match["sign"], match["word"])
+                dealt_with = self._suffix(label, match["sign"], match["word"])
+                if dealt_with and label not in self.found.set_aside:
+                    self.spiked_names.add(base)
+                return dealt_with
         if plus is not None:
             return self._suffix(label, plus["sign"], plus["word"])
         prefix = _PREFIX.match(label)
         if prefix is not None and SPIKE_WORD.match(prefix["word"]):
             self._spiked(f"^(?P<level>{prefix['word']}){_literal(prefix['sign'])}(?P<sample>.+)$", prefix["word"])
+            self.spiked_names.add(label[prefix.end() :])
             return True
         owner = next((name for name in among if name != label and label.endswith(name) and _parted(label, name)), "")
         if owner:
@@ -239,7 +250,7 @@ class _Clusters:
 
     def _suffix(self, label: str, sign: str, word: str) -> bool:
         """Write the rule of a label's ending; tell whether the label is dealt with."""
-        if DUPLICATE_WORD.match(word):
+        if DUPLICATE_WORD.match(word) and "+" not in sign:
             return False
         amount = _AMOUNT.fullmatch(word)
         if amount is not None and measure(amount["unit"]) in ("volume", "concentration"):

@@ -104,6 +104,7 @@ def find_structure(example: Example) -> Structure:
     if not found:
         sentence = "expected a table with a separator, a header and rows of numbers, found none."
         raise DraftRefused(example.name, sentence)
+    found = [trial for trial in found if trial.word != "blanks"] or found  # every text has blanks
     most = max(len(trial.body) for trial in found)
     return next(trial for trial in found if len(trial.body) >= 0.9 * most).structure()
 
@@ -115,6 +116,11 @@ def split(line: str, separator: str) -> list[str]:
     if '"' in line:
         return [cell.strip() for cell in next(csv.reader([line], delimiter=separator), [])]
     return [cell.strip() for cell in line.split(separator)]
+
+
+def _valued(cell: str) -> bool:
+    """Tell whether a cell is a number, perhaps with a sign for its limit or a flag."""
+    return numberish(cell.strip("<>~*!† []"))
 
 
 @dataclass(slots=True)
@@ -134,7 +140,7 @@ class _Trial:
         records = {at: split(line, separator) for at, line in enumerate(example.lines) if line.strip()}
         numeric: dict[int, list[int]] = {}
         for at, cells in records.items():
-            if len(cells) > 1 and any(map(numberish, cells[1:])):
+            if len(cells) > 1 and any(map(_valued, cells[1:])):
                 numeric.setdefault(len(cells), []).append(at)
         if not numeric:
             return None
@@ -206,6 +212,8 @@ class _Trial:
         above = [at for at in self.records if at < first and len(self.records[at]) == self.width]
         if above and self._holds_units(above[-1]):
             above.pop()
+        while above and self._recurs(above[-1]):  # a row without any number
+            above.pop()
         if above and not self._holds_numbers(above[-1]):
             header = [above.pop()]
             while above and above[-1] == header[0] - 1 and self._is_incomplete(header) and self._may_head(above[-1]):
@@ -219,6 +227,13 @@ class _Trial:
             f"separator."
         )
         raise DraftRefused(self.example.name, sentence, first + 1)
+
+    def _recurs(self, at: int) -> bool:
+        """Tell whether a line is a row rather than names: one of its cells stands in the rows as well."""
+        return any(
+            cell and any(self.records[row][column] == cell for row in self.body)
+            for column, cell in enumerate(self.records[at])
+        )
 
     def _is_incomplete(self, header: list[int]) -> bool:
         """Tell whether header lines leave columns without a name, or several with the same."""

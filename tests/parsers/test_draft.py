@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import math
 from collections import Counter
+from dataclasses import replace
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -48,12 +49,15 @@ def _judged(found: Readings, row: int, wanted: Reading) -> str:
     same &= Role(int(found.role[row])).word == vial.role
     if vial.sample:
         same &= found.sample[row] == vial.sample and (found.level[row] or "") == vial.level
-    said = [(found.nominal.values[row], vial.nominal)]
-    if vial.spike_ml is not None:
-        said += [(found.spike_volume.values[row], vial.spike_ml), (found.added.values[row], vial.spike_ml / 5)]
-    for got, meant in said:
+    for quantity, meant, unit in (
+        (found.nominal, vial.nominal, None),
+        (found.spike_volume, vial.dose if vial.unit == "mL" else None, "mL"),
+        (found.added, vial.dose if vial.unit == "mg/L" else None, "mg/L"),
+    ):
+        got = quantity.values[row]
         if math.isfinite(got):
             same &= meant is not None and math.isclose(got, meant, abs_tol=1e-12)
+            same &= unit is None or quantity.units[row] == unit
     if not same:
         return "wrong"
     known = vial.nominal is None or math.isfinite(found.nominal.values[row])
@@ -109,16 +113,19 @@ def exports(draw: st.DrawFn) -> Export:
         nominal = float(text) if certain else 10.0 * (at + 1) ** 2
         vials.append((Vial(f"{standard}{text.replace('.', decimal)}", "standard", nominal=nominal, word="std"), False))
     if by_column:
-        vials += [(vial, True) for vial in FLASKS]
+        unit = header.partition("(")[2].strip(")")
+        vials += [(replace(vial, unit=unit), True) for vial in FLASKS]
     else:
         for name in ("SED-12", "BRN-3"):
-            mark = "spiked" if level not in ("dup", "B", "x") else "unknown"
+            mark = "spiked" if "+" in sign or level not in ("dup", "B", "x") else "unknown"  # a plus is an addition
             vials.append((Vial(name, "unspiked", name), True))
-            vials.append((Vial(f"{name}{sign}{level}", mark, name, level), True))
+            vials.append(
+                (Vial(f"{name}{sign}{level}", mark, name, f"{sign.strip()} {level}" if "add" in sign else level), True)
+            )
     for at, (vial, is_sample) in enumerate(vials):
         value = round(signal(vial, at) * scale, digits)
         written = f"{value:.{digits}f}".replace(".", decimal)
-        volume = vial.spike_ml if is_sample and vial.spike_ml is not None else None
+        volume = vial.dose if is_sample else None
         cells = [vial.label, "Zn"]
         if by_column:
             cells.append("" if volume is None else f"{volume:g}".replace(".", decimal))
@@ -192,14 +199,14 @@ def test_day_and_month_that_may_be_changed_over_give_no_time() -> None:
 def test_several_examples_are_drafted_together() -> None:
     """Labels and odd cells of all examples are explained, and the claim holds what their names have in common."""
     first = b"Label,Element,Signal\nSED-1,Zn,0.1\nBLK 1,Zn,0.2\n"
-    second = b"Label,Element,Signal\nROOF_7,Zn,<0.02\nSED-3 +A1,Zn,0.2\n"
+    second = b"Label,Element,Signal\nROOF_7,Zn,<0.02\nSED-3 +A1,Zn,0.2\nSED-3,Zn,0.1\n"
 
     drafted = draft([("MU-01.csv", first), ("MU-02.csv", second)])
 
     assert drafted.layout.claims.file == "MU-*.csv"
     assert {rule.role for rule in drafted.layout.labels} == {"blank", "spiked", "unspiked"}
     for data in (first, second):
-        assert len(read(data, drafted.layout, "MU")) == 2
+        assert len(read(data, drafted.layout, "MU")) == len(data.splitlines()) - 1
 
 
 def test_examples_of_two_kinds_are_refused() -> None:

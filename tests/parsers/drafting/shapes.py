@@ -22,7 +22,8 @@ class Vial:
     level: str = ""
     nominal: float | None = None
     word: str = "sample"
-    spike_ml: float | None = None
+    dose: float | None = None
+    unit: str = ""
 
 
 @dataclass(frozen=True)
@@ -72,7 +73,7 @@ RACK = (
     Vial("ROOF-7", "unspiked", "ROOF-7"),
 )
 FLASKS = tuple(
-    Vial(name, "spiked" if volume else "unspiked", name, spike_ml=volume)
+    Vial(name, "spiked" if volume else "unspiked", name, dose=volume, unit="mL")
     for name in ("RIV-17", "RIV-18")
     for volume in (0.0, 2.5, 5.0, 7.5)
 )
@@ -253,7 +254,7 @@ def volume_column() -> Export:
     made.write("Label,Element,Std (mL),Absorbance")
     for at, vial in enumerate(FLASKS):
         value = signal(vial, at)
-        line = made.write(f"{vial.label},Fe,{vial.spike_ml},{value}")
+        line = made.write(f"{vial.label},Fe,{vial.dose},{value}")
         made.readings.append(Reading(line, "Fe", None, vial, (value,)))
     return made
 
@@ -264,8 +265,8 @@ def units_row() -> Export:
     made.write("Label,Element,Added,Signal", ",,mg/L,cps")
     for at, vial in enumerate(FLASKS):
         value = signal(vial, at)
-        line = made.write(f"{vial.label},Fe,{(vial.spike_ml or 0) / 5},{value}")
-        made.readings.append(Reading(line, "Fe", None, vial, (value,)))
+        line = made.write(f"{vial.label},Fe,{vial.dose},{value}")
+        made.readings.append(Reading(line, "Fe", None, replace(vial, unit="mg/L"), (value,)))
     return made
 
 
