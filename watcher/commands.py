@@ -114,7 +114,8 @@ def draft(exports: tuple[Path, ...], output: Path | None) -> None:
     What it is not sure of is marked "# unsure:", what only you know "# FILL IN:".
     Behind the layout stands how the examples are read with it.
 
-    Exit 0: drafted. 2: the shape is beyond it, or the file is there already.
+    Exit 0: drafted, and the examples can be read. 2: the shape is beyond it, an
+    example is refused, or the file is there already.
     """
     from watcher import drafting  # noqa: PLC0415
 

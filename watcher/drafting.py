@@ -19,7 +19,7 @@ if TYPE_CHECKING:
     from collections.abc import Iterable
     from pathlib import Path
 
-#: Width of the account where it stands behind the layout as comments.
+#: What makes the account a part of the layout that is not read.
 _COMMENT = "# "
 
 
@@ -48,8 +48,12 @@ def run(exports: tuple[Path, ...], output: Path | None) -> int:
         return NOT_DONE
     if output is None:
         print(drafted.text, end="")  # noqa: T201 - it may be redirected into a file: nothing may wrap it
-        print("\n".join(_commented(drafted, examples)))  # noqa: T201
-        return ALL_PASS
+        text = io.StringIO()
+        plain = Console(file=text, width=COLUMNS - len(_COMMENT), highlight=False, emoji=False, markup=False)
+        lines(plain, ["", _open(drafted)])
+        code = _account(plain, drafted, examples)
+        print("\n".join(f"{_COMMENT}{line}".rstrip() for line in text.getvalue().splitlines()))  # noqa: T201
+        return code
     try:
         with output.open("x", encoding="utf-8") as file:
             file.write(drafted.text)
@@ -61,8 +65,7 @@ def run(exports: tuple[Path, ...], output: Path | None) -> int:
         return NOT_DONE
     out = console()
     lines(out, [f"Wrote {output}. {_open(drafted)}"])
-    _account(out, drafted, examples)
-    return ALL_PASS
+    return _account(out, drafted, examples)
 
 
 def _open(drafted: Draft) -> str:
@@ -73,24 +76,17 @@ def _open(drafted: Draft) -> str:
     return f"Read it: {unsure} marked '# unsure:', {fill_in} marked '# FILL IN:'."
 
 
-def _commented(drafted: Draft, examples: Iterable[tuple[str, bytes]]) -> Iterable[str]:
-    """Yield the account of the examples as comments of the layout."""
-    text = io.StringIO()
-    plain = Console(file=text, width=COLUMNS - len(_COMMENT), highlight=False, emoji=False, markup=False)
-    lines(plain, ["", _open(drafted)])
-    _account(plain, drafted, examples)
-    for line in text.getvalue().splitlines():
-        yield f"{_COMMENT}{line}".rstrip()
-
-
-def _account(out: Console, drafted: Draft, examples: Iterable[tuple[str, bytes]]) -> None:
-    """Print what `explain` makes of the examples with the layout."""
+def _account(out: Console, drafted: Draft, examples: Iterable[tuple[str, bytes]]) -> int:
+    """Print what `explain` makes of the examples with the layout; return the exit code."""
+    code = ALL_PASS
     for name, data in examples:
         try:
             readings = read(data, drafted.layout, name)
         except ExportRefused as refused:
             heading(out, f"{name}: refused with this layout as it stands")
             lines(out, [str(refused)])
+            code = NOT_DONE
             continue
         problems = tuple(map(str, readings.problems))
         explanation_text.read(out, ReadingAccount(name, data, drafted.layout, readings, problems), with_lines=False)
+    return code

@@ -11,7 +11,7 @@ from parsers.readings import Role, line_ranges
 from rules import plan
 from rules.figures import several
 from watcher.scalars import duration
-from watcher.terminal import COLUMNS, heading, lines, short, table, word
+from watcher.terminal import heading, lines, short, table, word
 
 if TYPE_CHECKING:
     from collections.abc import Iterable, Sequence
@@ -50,7 +50,10 @@ def read(out: Console, account: ReadingAccount, *, with_lines: bool) -> None:
 
 def _summary(out: Console, account: ReadingAccount) -> None:
     readings = account.readings
-    used = [f"{use.header} → {', '.join(use.fields)}" for use in readings.columns if use.fields]
+    used: dict[str, list[str]] = {}
+    for use in readings.columns:
+        if use.fields:
+            used.setdefault(", ".join(use.fields), []).append(use.header)
     ignored = [use.header or "(no header)" for use in readings.columns if not use.fields]
     heading(out, f"{account.name}: read with layout '{account.layout.layout}'")
     read_lines, faulty = len(account.read_lines), len(account.fault_lines)
@@ -58,7 +61,8 @@ def _summary(out: Console, account: ReadingAccount) -> None:
     _keyed(out, "claimed by", account.claimed_by)
     _keyed(out, "lines", f"{readings.lines}: {read_lines} read{cannot}, {len(readings.set_aside)} set aside")
     _keyed(out, "readings", f"{len(readings)} of {several(list(readings.analyte.names), most=12)}")
-    _keyed(out, "columns", several(used, most=30))
+    for number, (fields, headers) in enumerate(used.items()):
+        _keyed(out, "" if number else "columns", f"{fields} ← {several(headers, most=12)}")
     _keyed(out, "ignored", several(ignored, most=30) if ignored else "none")
     if readings.heading:
         _keyed(out, "heading", ", ".join(f"{key} = {value}" for key, value in readings.heading.items()))
@@ -69,7 +73,7 @@ def _summary(out: Console, account: ReadingAccount) -> None:
 
 def _keyed(out: Console, key: str, text: str) -> None:
     """Print a key and its text, the further lines of which stand below the first."""
-    wrapped = textwrap.wrap(text, COLUMNS - _KEY, break_on_hyphens=False) or [""]
+    wrapped = textwrap.wrap(text, out.width - _KEY, break_on_hyphens=False) or [""]
     lines(out, [f"{key:<{_KEY}}{wrapped[0]}", *(f"{'':<{_KEY}}{line}" for line in wrapped[1:])])
 
 
@@ -141,13 +145,13 @@ def _results(out: Console, outcomes: Outcomes) -> None:
     for i, step in notes:
         heading(out, f"{outcomes.case.name(i)}: {outcomes.verdict_of(i).word}")
         sentences = [("why", reason) for reason in outcomes.reasons(i)] + ([("do", step)] if step else [])
-        lines(out, _hanging(sentences))
+        lines(out, _hanging(out, sentences))
 
 
-def _hanging(sentences: Iterable[tuple[str, str]]) -> Iterable[str]:
+def _hanging(out: Console, sentences: Iterable[tuple[str, str]]) -> Iterable[str]:
     for key, text in sentences:
         yield from textwrap.wrap(
-            text, COLUMNS, initial_indent=f"{key:<5}", subsequent_indent=" " * 5, break_on_hyphens=False
+            text, out.width, initial_indent=f"{key:<5}", subsequent_indent=" " * 5, break_on_hyphens=False
         )
 
 
