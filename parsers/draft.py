@@ -40,6 +40,7 @@ if TYPE_CHECKING:
     from parsers.drafting.naming import Labels
     from parsers.drafting.numerals import Marks
     from parsers.drafting.structure import Structure
+    from parsers.labels import LabelRule
 
 __all__ = ["Draft", "DraftRefused", "draft"]
 
@@ -102,6 +103,8 @@ class _Draughtsman:
         self.mapping: Mapping = find_columns(self.together)
         self.marks: Marks = find_marks(self._numbers())
         self.drawing = Drawing()
+        self.set_aside: list[str] = []
+        self.left_out: list[str] = []
 
     def draw(self) -> Draft:
         """Write everything and check it.
@@ -111,19 +114,26 @@ class _Draughtsman:
         DraftRefused
             If what was made out is no valid layout.
         """
+        layout = self._drawn()
+        self.left_out = [label for label in self.set_aside if any(_matches(rule, label) for rule in layout.labels)]
+        if self.left_out:  # a rule of other labels would take them
+            layout = self._drawn()
+        return Draft(self.drawing.text, layout, tuple(self.drawing.unsure), tuple(self.drawing.fill_in))
+
+    def _drawn(self) -> Layout:
+        """Write every key; return the layout."""
+        self.drawing = Drawing()
         self._top()
         self._lines()
         self._values()
         self._columns()
         self._labels()
         self._cells()
-        text = self.drawing.text
         try:
-            layout = parse_layout(text, DRAFTED)
+            return parse_layout(self.drawing.text, DRAFTED)
         except DocumentInvalid as invalid:
             sentence = f"its columns do not make a layout ({invalid.faults[0].sentence}) Write it by hand."
             raise DraftRefused(self.first.example.name, sentence) from invalid
-        return Draft(text, layout, tuple(self.drawing.unsure), tuple(self.drawing.fill_in))
 
     def _numbers(self) -> Iterable[str]:
         """Return the cells of every column that is read as numbers."""
@@ -165,6 +175,13 @@ class _Draughtsman:
         if filled:
             drawing.add(f"fill_down: [{', '.join(filled)}]")
         rules = list(dict.fromkeys(rule for structure in self.structures for rule in _row_rules(structure)))
+        for at, words in self.mapping.excluded.items():
+            name = first.headers[at]
+            drawing.doubt(f"{listed(words)} in {name!r} is taken for: this reading does not count")
+            pattern = "|".join(map(_escaped, words))
+            rules.append(f"{{where: {{{scalar(name)}: {scalar(f'^(?:{pattern})$')}}}, are: excluded}}")
+        if self.left_out:
+            rules.append(self._left_out_rule())
         if rules:
             drawing.add("rows:", *(f"  - {rule}" for rule in rules))
         skips = list(dict.fromkeys(skip for structure in self.structures for skip in _skips(structure)))
@@ -185,6 +202,23 @@ class _Draughtsman:
                 "this looks like the line that ends every complete export; an export without it is not evaluated"
             )
             drawing.add(f"finished: {scalar('^' + _escaped(last.strip()))}")
+
+    def _left_out_rule(self) -> str:
+        """Return the rule of rows whose labels are in doubt, although a rule of labels would take them.
+
+        Raises
+        ------
+        DraftRefused
+            If no column holds the labels, so that no such rule can be written.
+        """
+        at = self.mapping.at("label")
+        if at is None or not _by_name(self.first, at):
+            sentence = (
+                f"{listed(self.left_out[:4])}: it cannot be told what these labels mean. Write the layout by hand."
+            )
+            raise DraftRefused(self.first.example.name, sentence)
+        pattern = "|".join(map(_escaped, self.left_out))
+        return f"{{where: {{{scalar(self.first.headers[at])}: {scalar(f'^(?:{pattern})$')}}}, are: left out}}"
 
     def _values(self) -> None:
         self.drawing.doubt(self.marks.doubt)
@@ -213,9 +247,12 @@ class _Draughtsman:
         for at in mapping.additions:
             name = scalar(mapping.headers[at].written)
             drawing.ask(
-                f"{name} may say what was added. Take one of these, with its unit; until then no sample has a role:",
+                f"{name} may say what was added or which vials are spiked. Until one of these is taken, no sample has a role:",
                 "  ",
             )
+            if not all(map(numberish, filter(None, self.together.column(at)))):
+                drawing.add(f"  # role: {{from: {name}, map: {{…: spiked, …: unspiked}}}}")
+                continue
             drawing.add(f"  # added: {{from: {name}, unit: … mg/L}}", f"  # spike_volume: {{from: {name}, unit: … mL}}")
         left = [header.written for at, header in enumerate(mapping.headers) if self._is_left(at) and header.written]
         for sentence in mapping.left:
@@ -269,6 +306,7 @@ class _Draughtsman:
             nominals="nominal" in columns,
             open_roles=bool(self.mapping.additions),
         )
+        self.set_aside = labels.set_aside
         if labels.rules:
             drawing.doubt(labels.doubts)
             drawing.add("labels:", *(f"  - {rule}" for rule in labels.rules))
@@ -332,6 +370,10 @@ class _Draughtsman:
         self.drawing.doubt(odd.doubt())
         if odd.line():
             self.drawing.add(f"cells: {odd.line()}")
+
+
+def _matches(rule: LabelRule, label: str) -> bool:
+    return bool(rule.regex.fullmatch(label) if rule.like is not None else rule.regex.search(label))
 
 
 def _joined(structures: Sequence[Structure]) -> Structure:

@@ -15,7 +15,7 @@ from parsers.drafting.errors import DraftRefused
 from parsers.drafting.headers import Header, take_apart
 from parsers.drafting.moments import forms_of_date, forms_of_moment, forms_of_time
 from parsers.drafting.numerals import numberish
-from parsers.drafting.vocabulary import ADDITION, ELEMENTS, field_of, measure, role_of
+from parsers.drafting.vocabulary import ADDITION, ELEMENTS, EXCLUDED, NO, USED, field_of, measure, plain, role_of
 from parsers.drafting.wide import Wide, find_wide
 from parsers.spelling import listed
 
@@ -78,6 +78,8 @@ class Mapping:
         What is said about columns that are not read.
     additions
         Columns that may say what was added, and cannot be read as long as nobody says their unit.
+    excluded
+        Columns that say which readings do not count, with the words that say so.
     bracketed
         Whether the nominals stand in brackets in a column that holds results otherwise.
     """
@@ -90,6 +92,7 @@ class Mapping:
     left: list[str] = field(default_factory=list)
     additions: list[int] = field(default_factory=list)
     bracketed: bool = False
+    excluded: dict[int, list[str]] = field(default_factory=dict)
 
     def at(self, field_name: str) -> int | None:
         """Return the first column of a field."""
@@ -142,6 +145,7 @@ def find_columns(structure: Structure) -> Mapping:
         finder.signal()
     for name in _OF_READINGS if mapping.wide is not None else ():
         mapping.columns.pop(name, None)
+    finder.excluded()
     finder.rising()
     return mapping
 
@@ -193,6 +197,8 @@ class _Finder:
         by_unit = {"volume": "spike_volume", "concentration": "added"}
         for at, header in enumerate(self.mapping.headers):
             speaks = ADDITION.search(header.written) is not None and not field_of(header.name)
+            if speaks and at not in self.taken() and not self.is_numbers(at) and any(self.structure.column(at)):
+                self.mapping.additions.append(at)
             unclear = at in columns.get("added", []) and not header.unit
             if not (speaks and at not in self.taken() and self.is_numbers(at)) and not unclear:
                 continue
@@ -211,10 +217,25 @@ class _Finder:
         labels = self.structure.block_names or self.structure.column(mapping.columns["label"][0])
         wide = mapping.wide.columns if mapping.wide else []
         for at in range(len(mapping.headers)):
-            if at in self.taken() or at in wide or at in mapping.additions or not self.is_numbers(at):
+            if at in self.taken() or at in wide or at in mapping.additions or self.counts(at):
                 continue
-            if self._rises(labels, self.structure.column(at)):
+            cells = self.structure.column(at)
+            if (self.is_numbers(at) and self._rises(labels, cells)) or self._is_code(labels, cells):
                 mapping.additions.append(at)
+
+    def counts(self, at: int) -> bool:
+        """Tell whether a column says which readings count."""
+        name = self.mapping.headers[at].name
+        return EXCLUDED.fullmatch(name) is not None or (USED.fullmatch(name) is not None and not self.is_numbers(at))
+
+    @staticmethod
+    def _is_code(labels: list[str], cells: list[str]) -> bool:
+        """Tell whether a few words or numbers tell rows of one label apart."""
+        few = len(set(cells)) <= max(3, len(cells) // 3) and all(len(cell) <= 12 and "." not in cell for cell in cells)
+        said: dict[str, set[str]] = {}
+        for label, cell in zip(labels, cells, strict=True):
+            said.setdefault(label, set()).add(cell)
+        return few and any(len(words) > 1 for words in said.values())
 
     @staticmethod
     def _rises(labels: list[str], cells: list[str]) -> bool:
@@ -278,6 +299,16 @@ class _Finder:
                 columns["nominal"] = [at]
                 columns.pop("concentration", None)
                 self.mapping.bracketed = True
+
+    def excluded(self) -> None:
+        """Find the words that say that a reading does not count."""
+        for at in range(len(self.mapping.headers)):
+            if at in self.taken() or not self.counts(at):
+                continue
+            by_no = USED.fullmatch(self.mapping.headers[at].name) is not None
+            words = {cell for cell in self.structure.column(at) if cell and (plain(cell) in NO) == by_no}
+            if words:
+                self.mapping.excluded[at] = sorted(words)
 
     def times(self) -> None:
         """Settle the time of measurement, or leave it out where day and month could be changed over."""

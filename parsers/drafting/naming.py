@@ -16,6 +16,7 @@ from parsers.drafting.drawing import scalar
 from parsers.drafting.vocabulary import (
     BLANK_LABEL,
     CHECK_LABEL,
+    DOUBTFUL_LABEL,
     DUPLICATE_WORD,
     SERVICE_LABEL,
     SPIKE_WORD,
@@ -34,6 +35,7 @@ NEAR = 0.2
 _NUMBERED = re.compile(r"(?P<stem>.*?[^\d.,])(?P<number>\d+(?:[.,]\d+)?)(?P<unit>\s*[A-Za-zµμ%/]+)?")
 _PLUS = re.compile(r"(?P<sample>.+?)(?P<sign>\s*\+\s*)(?P<word>\S.*)")
 _SUFFIX = re.compile(r"(?P<sign>[\s_/+\-.]+)(?P<word>.+)")
+_LAST = re.compile(r"(?P<sample>.+?)(?P<sign>[\s_/-]+)(?P<word>[A-Za-z]+)")
 _PREFIX = re.compile(r"(?P<word>[A-Za-z]+)(?P<sign>[\s_/\-]+)")
 _AMOUNT = re.compile(r"\d+(?:[.,]\d+)?\s*(?P<unit>[A-Za-zµμ/]+)")
 _CODE = re.compile(r"(?P<letters>[A-Za-z]{0,6})[ _-]?\d{1,2}")
@@ -133,7 +135,7 @@ class _Clusters:
         typed = self.types.get(label)
         if typed:
             return "sample" if typed in ("unspiked", "spiked") else typed
-        if SERVICE_LABEL.search(label):
+        if SERVICE_LABEL.search(label) or (DOUBTFUL_LABEL.search(label) and not BLANK_LABEL.search(label)):
             return "service"
         for kind, pattern in (("blank", BLANK_LABEL), ("check_standard", CHECK_LABEL), ("standard", STANDARD_LABEL)):
             if pattern.search(label):
@@ -237,6 +239,9 @@ class _Clusters:
                 return dealt_with
         if plus is not None:
             return self._suffix(label, plus["sign"], plus["word"])
+        last = _LAST.fullmatch(label)
+        if last is not None and SPIKE_WORD.match(last["word"]):
+            return self._suffix(label, last["sign"], last["word"])
         prefix = _PREFIX.match(label)
         if prefix is not None and SPIKE_WORD.match(prefix["word"]):
             self._spiked(f"^(?P<level>{prefix['word']}){_literal(prefix['sign'])}(?P<sample>.+)$", prefix["word"])

@@ -14,6 +14,7 @@ from parsers.drafting.errors import DraftRefused
 from parsers.drafting.numerals import numberish
 from parsers.drafting.vocabulary import begins_with_statistic, is_mean, is_statistic, is_unit
 from parsers.spelling import fold, shown
+from parsers.splitting import MOST_LINES_IN_CELL
 
 if TYPE_CHECKING:
     from parsers.drafting.example import Example
@@ -25,6 +26,8 @@ _NAMING = re.compile(
     r"(?P<key>(?:Sample(?: ID| [Nn]ame| [Ll]abel)?|Label|Vial|Solution|Vessel|Probe)\s*[:=])\s*"
     r"(?P<name>[^;\t,]*[^;\t,\s])[;,\t\s]*$"
 )
+#: A line that begins another section.
+_SECTION = re.compile(r"\s*\[[^\[\]]+\][;,\t\s]*")
 #: Fewest rows from which a shape is made out.
 FEWEST_ROWS = 2
 
@@ -123,6 +126,29 @@ def _valued(cell: str) -> bool:
     return numberish(cell.strip("<>~*!† []"))
 
 
+def _records(lines: list[str], separator: str) -> dict[int, list[str]]:
+    """Split lines; a cell in quotes may go on over several of them, which are one record then."""
+    records: dict[int, list[str]] = {}
+    at = 0
+    while at < len(lines):
+        behind = at + 1
+        if separator != " " and lines[at].count('"') % 2:
+            closed = (
+                end for end in range(behind, min(at + MOST_LINES_IN_CELL, len(lines))) if lines[end].count('"') % 2
+            )
+            behind = next(closed, at) + 1
+        if any(line.strip() for line in lines[at:behind]):
+            feed = (f"{line}\n" for line in lines[at:behind])
+            whole = behind > at + 1
+            records[at] = (
+                [cell.strip() for cell in next(csv.reader(feed, delimiter=separator))]
+                if whole
+                else split(lines[at], separator)
+            )
+        at = behind
+    return records
+
+
 @dataclass(slots=True)
 class _Trial:
     """An example split by one separator."""
@@ -137,7 +163,7 @@ class _Trial:
     def of(cls, example: Example, word: str) -> _Trial | None:
         """Split the lines; None where no two lines look like rows of one table."""
         separator = SEPARATORS[word]
-        records = {at: split(line, separator) for at, line in enumerate(example.lines) if line.strip()}
+        records = _records(example.lines, separator)
         numeric: dict[int, list[int]] = {}
         for at, cells in records.items():
             if len(cells) > 1 and any(map(_valued, cells[1:])):
@@ -262,11 +288,28 @@ class _Trial:
 
     def _inside(self, header_at: int) -> list[int]:
         """Return the lines of as many fields as the header, up to the last one that holds numbers of a reading."""
-        inside = [at for at, cells in self.records.items() if at > header_at and len(cells) == self.width]
+        inside = []
+        for at, cells in self.records.items():
+            if at > header_at and _SECTION.fullmatch(self.example.lines[at]):
+                break
+            if at > header_at and len(cells) == self.width:
+                inside.append(at)
+        self._refuse_other_order(header_at, inside)
         rows = set(self.body)
         while inside and (inside[-1] not in rows or any(map(begins_with_statistic, self.records[inside[-1]][:2]))):
             inside.pop()
         return inside
+
+    def _refuse_other_order(self, header_at: int, inside: list[int]) -> None:
+        """Refuse a second table whose columns stand in another order: its cells would be read as others."""
+        header = self.records[header_at]
+        for at in inside:
+            if sorted(self.records[at]) == sorted(header) and self.records[at] != header:
+                sentence = (
+                    "another header stands here, with its columns in another order. Write the layout by hand, with "
+                    "blocks, or export each part by itself."
+                )
+                raise DraftRefused(self.example.name, sentence, at + 1)
 
     def _holds_numbers(self, at: int) -> bool:
         cells = [cell for cell in self.records[at] if cell]

@@ -63,6 +63,11 @@ ROLE_WORDS_SEEN: dict[str, str] = {
     "check_standard": "check|qc|control|check standard|ccv|icv|verification|kontrolle|qcs|chk|quality control",
 }
 
+#: Headers of columns that say which readings do not count, and their words that mean so.
+EXCLUDED = re.compile(r"(?:excluded?|excl|rejected|reject|rjct|discarded|omit(?:ted)?|outlier)", re.IGNORECASE)
+USED = re.compile(r"(?:used?|included?|valid|accepted|counts)", re.IGNORECASE)
+NO = frozenset({"no", "n", "0", "false", "nein", "non"})
+
 BLANK_LABEL = re.compile(r"(?:\b|_)(?:blank|blk|blind|blindwert|leerwert|blanc|blanco)(?:\b|_|(?=\d))", re.IGNORECASE)
 CHECK_LABEL = re.compile(r"^(?:chk|check|qc|ccv|icv|qcs|control|kontrolle|verification)(?:\b|_|(?=\d))", re.IGNORECASE)
 STANDARD_LABEL = re.compile(r"^(?:std|standard|cal|calibration|calib|kal|etalon|calstd)(?:\b|_|(?=\d))", re.IGNORECASE)
@@ -70,12 +75,17 @@ STANDARD_LABEL = re.compile(r"^(?:std|standard|cal|calibration|calib|kal|etalon|
 SERVICE_LABEL = re.compile(
     r"\b(?:rinse|wash|drift|tune|tuning|dummy|test|conditioning|flush|prime|spul\w*)\b", re.IGNORECASE
 )
+#: Words of another role in the midst of a label, and dilutions: a person must say what they mean.
+DOUBTFUL_LABEL = re.compile(
+    r"[\s_-](?:std|standard|cal|qc|check|blank|blk)\b|\b(?:x\s?\d+|\d+\s?x|\d+\s?[:+]\s?\d+|dil\w*|df\s?\d+)\b",
+    re.IGNORECASE,
+)
 SPIKE_WORD = re.compile(r"^(?:spk|spike|spiked|ms|lsp|fsp|add|addition|gespikt|aufgestockt)$", re.IGNORECASE)
 DUPLICATE_WORD = re.compile(r"^(?:dup|duplicate|doppel)$", re.IGNORECASE)
 
 _STATISTICS = re.compile(
-    r"(?:averages?|means?|sum|total|sd|std ?dev|stdev|rsd|%rsd|rsd ?%|cv|%cv|min|max|minimum|maximum|median|mittelwert|"
-    r"average|standard deviation)\W*",
+    r"(?:averages?|means?|summe|sum|total|mittel|mittelwert|sd|std ?dev|stdev|rsd|%rsd|rsd ?%|cv|%cv|min|max|minimum|"
+    r"maximum|median|standard deviation)\W*",
     re.IGNORECASE,
 )
 #: Unit of a concentration or content.
@@ -91,7 +101,7 @@ ADDITION = re.compile(
     r"\b(?:std|standard|spike|spiked|spikes|added|add|addition|additions|zugabe|aufstockung|ajout)\b", re.IGNORECASE
 )
 _STATISTIC_LINE = re.compile(
-    r"(?:averages?|means?|sum|total|sd|std ?dev|stdev|%?rsd|%?cv|median|mittelwert)\b", re.IGNORECASE
+    r"(?:averages?|means?|summe|sum|total|sd|std ?dev|stdev|%?rsd|%?cv|median|mittel|mittelwert)\b", re.IGNORECASE
 )
 
 Measure = Literal["concentration", "volume", "mass", "other", ""]
