@@ -22,13 +22,14 @@ from parsers.drafting.claiming import claim
 from parsers.drafting.drawing import Drawing, scalar
 from parsers.drafting.errors import DraftRefused
 from parsers.drafting.example import USUAL, open_example
+from parsers.drafting.headers import take_apart
 from parsers.drafting.mapping import element_in, find_columns
 from parsers.drafting.naming import find_labels
 from parsers.drafting.numerals import find_marks, numberish
 from parsers.drafting.oddities import find_oddities
 from parsers.drafting.preamble import find_heading
 from parsers.drafting.structure import find_structure, split
-from parsers.drafting.vocabulary import begins_with_statistic, role_of
+from parsers.drafting.vocabulary import begins_with_statistic, measure, role_of
 from parsers.errors import DocumentInvalid
 from parsers.layout import Layout, parse_layout
 from parsers.spelling import fold, listed
@@ -174,14 +175,7 @@ class _Draughtsman:
         filled = [scalar(first.headers[at]) for at in self.together.fill_down]
         if filled:
             drawing.add(f"fill_down: [{', '.join(filled)}]")
-        rules = list(dict.fromkeys(rule for structure in self.structures for rule in _row_rules(structure)))
-        for at, words in self.mapping.excluded.items():
-            name = first.headers[at]
-            drawing.doubt(f"{listed(words)} in {name!r} is taken for: this reading does not count")
-            pattern = "|".join(map(_escaped, words))
-            rules.append(f"{{where: {{{scalar(name)}: {scalar(f'^(?:{pattern})$')}}}, are: excluded}}")
-        if self.left_out:
-            rules.append(self._left_out_rule())
+        rules = self._rows()
         if rules:
             drawing.add("rows:", *(f"  - {rule}" for rule in rules))
         skips = list(dict.fromkeys(skip for structure in self.structures for skip in _skips(structure)))
@@ -202,6 +196,18 @@ class _Draughtsman:
                 "this looks like the line that ends every complete export; an export without it is not evaluated"
             )
             drawing.add(f"finished: {scalar('^' + _escaped(last.strip()))}")
+
+    def _rows(self) -> list[str]:
+        """Return the rules of rows that are no readings."""
+        rules = list(dict.fromkeys(rule for structure in self.structures for rule in _row_rules(structure)))
+        for at, words in self.mapping.excluded.items():
+            name = self.first.headers[at]
+            self.drawing.doubt(f"{listed(words)} in {name!r} is taken for: this reading does not count")
+            pattern = "|".join(map(_escaped, words))
+            rules.append(f"{{where: {{{scalar(name)}: {scalar(f'^(?:{pattern})$')}}}, are: excluded}}")
+        if self.left_out:
+            rules.append(self._left_out_rule())
+        return rules
 
     def _left_out_rule(self) -> str:
         """Return the rule of rows whose labels are in doubt, although a rule of labels would take them.
@@ -247,7 +253,8 @@ class _Draughtsman:
         for at in mapping.additions:
             name = scalar(mapping.headers[at].written)
             drawing.ask(
-                f"{name} may say what was added or which vials are spiked. Until one of these is taken, no sample has a role:",
+                f"{name} may say what was added or which vials are spiked. "
+                f"Until one of these is taken, no sample has a role:",
                 "  ",
             )
             if not all(map(numberish, filter(None, self.together.column(at)))):
@@ -255,6 +262,13 @@ class _Draughtsman:
                 continue
             drawing.add(f"  # added: {{from: {name}, unit: … mg/L}}", f"  # spike_volume: {{from: {name}, unit: … mL}}")
         left = [header.written for at, header in enumerate(mapping.headers) if self._is_left(at) and header.written]
+        amounts = [name for name in left if measure(take_apart(name).unit) in ("volume", "mass")]
+        if amounts:
+            drawing.doubt(
+                f"{listed(amounts)}: amounts that are not read. Map them (aliquot, made_up_to, mass, digest_volume) if "
+                f"results depend on them",
+                "  ",
+            )
         for sentence in mapping.left:
             drawing.doubt(sentence, "  ")
         if left:

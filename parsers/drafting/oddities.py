@@ -24,6 +24,8 @@ _MISSING = frozenset(
 _BELOW = frozenset({"bql", "bdl", "blq", "nd", "n.d.", "lod", "<lod", "<loq", "not detected", "< lod", "< loq"})
 _ABOVE = frozenset({"ovr", "over", "overrange", "over range", "sat", "saturated", "ovf", "overflow", "out of range"})
 _HASHES = re.compile(r"#{3,}|\*{3,}|\+{3,}")
+#: A flat number that instruments write where a signal is off their scale.
+_NINES = re.compile(r"9{3,}[.,]9+|9{4,}")
 _FLAG = re.compile(r"[*!†‡]")
 
 
@@ -52,6 +54,9 @@ class Oddities:
 
     def doubt(self) -> str:
         """Return what is said of cells that nothing explains."""
+        nines = [cell for cell in self.above if _NINES.fullmatch(cell)]
+        if nines:
+            return f"{listed(nines)} is taken for a signal beyond the instrument's range, not for a number"
         if not self.unknown:
             return ""
         return (
@@ -64,6 +69,9 @@ def find_oddities(cells: Iterable[str], grammar: Grammar) -> Oddities:
     """Sort the distinct cells of columns of numbers that are none."""
     found = Oddities()
     for cell in dict.fromkeys(map(fold, cells)):
+        if _NINES.fullmatch(cell):
+            found.above.append(cell)
+            continue
         if not cell or grammar.value(cell) is not None or numberish(cell):  # marks in doubt are told elsewhere
             continue
         word = cell.casefold()

@@ -37,7 +37,7 @@ HEADERS: dict[str, str] = {
     "spike_volume": "std|spike|spike vol|spike volume|standard added|std added|std vol|standard volume|volume added|"
     "spike added|added volume|added|addition|vol std|standard|zugabe",
     "aliquot": "aliquot|sample volume|sample vol|aliquot volume|probenvolumen",
-    "made_up_to": "made up to|final volume|final vol|made up|total volume|endvolumen",
+    "made_up_to": "made up to|final|final volume|final vol|made up|total volume|endvolumen",
     "mass": "mass|weight|sample mass|sample weight|portion|einwaage|weighed",
     "digest_volume": "digest volume|digest vol|digested to",
     "predilution": "dilution|dilution factor|df|predilution|dil|dil factor|verdunnung",

@@ -133,8 +133,9 @@ def _agrees(name: str, wanted: str, got: str) -> bool:
         return [float(one) for one in wanted.split()] == [float(one) for one in got.split()]
     if name == "role":
         return got == wanted
-    said, meant = got.split(), wanted.split()  # a number, perhaps with the unit that the settings know
-    return not said or (bool(meant) and float(said[0]) == float(meant[0]) and said[1:] in ([], meant[1:], ["mg/l"]))
+    said, meant = got.split(), wanted.split() or (["1"] if name == "predilution" else [])
+    same_unit = said[1:] in ([], meant[1:]) or said[1] in ("mg/l", "ppm")  # as the header has it
+    return not said or (bool(meant) and float(said[0]) == float(meant[0]) and same_unit)
 
 
 @st.composite
