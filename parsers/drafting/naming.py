@@ -228,7 +228,8 @@ class _Clusters:
 
     def _is_spiked(self, label: str, among: set[str]) -> bool:
         """Write the rule of a label that is another one with an addition; tell whether it is dealt with."""
-        base = max((name for name in among if _continues(label, name)), key=len, default="")
+        parted = [at for at in range(1, len(label)) if not label[at].isalnum()]
+        base = next((label[:at] for at in reversed(parted) if label[:at] in among), "")
         plus = _PLUS.fullmatch(label)
         if base:
             match = _SUFFIX.fullmatch(label[len(base) :])
@@ -247,7 +248,7 @@ class _Clusters:
             self._spiked(f"^(?P<level>{prefix['word']}){_literal(prefix['sign'])}(?P<sample>.+)$", prefix["word"])
             self.spiked_names.add(label[prefix.end() :])
             return True
-        owner = next((name for name in among if name != label and label.endswith(name) and _parted(label, name)), "")
+        owner = next((label[at + 1 :] for at in parted if label[at + 1 :] in among), "")
         if owner:
             self.found.set_aside.append(label)
             return True
@@ -302,14 +303,6 @@ def _gap(sign: str) -> str:
     before = " " if sign[:1].isspace() else ""
     after = " " if len(sign) > 1 and sign[-1:].isspace() and sign.strip() else ""
     return f"{before}{sign.strip()}{after}"
-
-
-def _continues(label: str, name: str) -> bool:
-    return len(label) > len(name) and label.startswith(name) and not label[len(name)].isalnum()
-
-
-def _parted(label: str, name: str) -> bool:
-    return not label[-len(name) - 1].isalnum()
 
 
 def _graded(numbers: Sequence[str]) -> bool:

@@ -209,6 +209,33 @@ def test_a_draft_never_reads_a_reading_wrong_in_silence(export: Export) -> None:
         assert verdict != "wrong", (reading, drafted.text)
 
 
+@settings(max_examples=400, deadline=None)
+@given(st.sampled_from(SHAPES), st.data())
+def test_a_damaged_example_ends_in_a_layout_or_a_reason(shape: Callable[[], Export], data: st.DataObject) -> None:
+    """Whatever bytes are lost, doubled or put in, drafting ends in a layout that parses or says why there is none."""
+    damaged = bytearray(shape().data)
+    for _ in range(data.draw(st.integers(1, 6))):
+        at = data.draw(st.integers(0, len(damaged) - 1))
+        size = data.draw(st.integers(1, 60))
+        match data.draw(st.sampled_from(["lose", "double", "put in"])):
+            case "lose":
+                del damaged[at : at + size]
+            case "double":
+                damaged[at:at] = damaged[at : at + size]
+            case _:
+                damaged[at:at] = data.draw(
+                    st.sampled_from([b'"', b";", b",", b"\n", b"\0", b"[x]", b"{", b"\xe9", b"'", b": #"])
+                )
+        if not damaged:
+            break
+    text = reason = ""
+    try:
+        text = draft([("DM-0001.csv", bytes(damaged))]).text
+    except DraftRefused as refused:
+        reason = str(refused)
+    assert reason.startswith("DM-0001.csv") or parse_layout(text, "layouts/new.yaml")
+
+
 def test_a_number_that_may_be_two_is_an_error() -> None:
     """Where no cell decides between decimal mark and thousands, the draft reads none of them and says so."""
     data = b"Label;Element;Signal\nSED-1;Zn;1.234\nSED-2;Zn;12.345\nBLK;Zn;3.001\n"
