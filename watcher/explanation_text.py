@@ -89,7 +89,7 @@ def _set_aside(out: Console, account: ReadingAccount) -> None:
 def _labels(out: Console, account: ReadingAccount) -> None:
     uses = account.readings.labels
     heading(out, "Labels, and how they were understood")
-    rows = [(u.label, u.role, u.sample, u.level, str(u.rows), u.rule) for u in uses[:MOST_ROWS]]
+    rows = [(u.label, u.role or "set aside", u.sample, u.level, str(u.rows), u.rule) for u in uses[:MOST_ROWS]]
     _table_of_used(out, ("label", "role", "sample", "level", "rows", "by"), rows, numbers=(4,))
     _and_more(out, len(uses), "labels")
 

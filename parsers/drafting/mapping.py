@@ -135,6 +135,7 @@ def find_columns(structure: Structure) -> Mapping:
     mapping = Mapping([take_apart(name, unit) for name, unit in zip(structure.headers, below, strict=True)])
     finder = _Finder(structure, mapping)
     finder.by_words()
+    finder.symbols()
     finder.bracketed()
     finder.additions()
     finder.label()
@@ -174,6 +175,17 @@ class _Finder:
             free = next((name for name in choices if name not in self.mapping.columns), None)
             if free is not None:
                 self.mapping.columns[free] = [at]
+
+    def symbols(self) -> None:
+        """Map a column that holds symbols of elements alone, whatever its header says."""
+        if "analyte" in self.mapping.columns:
+            return
+        for at, header in enumerate(self.mapping.headers):
+            cells = {cell for cell in self.structure.column(at) if cell}
+            if header.written and at not in self.taken() and cells and cells <= ELEMENTS:
+                self.mapping.columns["analyte"] = [at]
+                self.mapping.doubts["analyte"] = f"{header.written!r} holds symbols of elements"
+                return
 
     def _agrees(self, name: str, at: int) -> bool:
         """Tell whether a column's cells and unit can be a field."""

@@ -320,6 +320,35 @@ def test_what_only_a_person_knows_is_left_to_fill_in() -> None:
     assert "levels: {A1: … mL, A2: … mL}" in drafted.text
 
 
+def test_symbols_of_elements_are_the_analyte_under_any_header() -> None:
+    """Elements in a column of an unknown name are never merged to one analyte."""
+    data = b"Label,Metall,Signal\nSED-1,Zn,0.1\nSED-1,Cd,0.2\n"
+
+    found = read(data, draft([("SY-1.csv", data)]).layout, "SY-1.csv")
+
+    assert [found.analyte[row] for row in range(len(found))] == ["Zn", "Cd"]
+
+
+def test_rows_of_one_label_that_a_word_tells_apart_have_no_role() -> None:
+    """Where an unknown column may say which of the equal labels is spiked, none of them is called unspiked."""
+    data = b"Label,Element,Kode,Signal\nSED-1,Zn,u,0.1\nSED-1,Zn,a,0.2\nSED-2,Zn,u,0.1\nSED-2,Zn,a,0.2\n"
+
+    drafted = draft([("KO-1.csv", data)])
+
+    assert len(read(data, drafted.layout, "KO-1.csv").faults) == 4
+    assert any("Kode may say" in ask for ask in drafted.fill_in)
+
+
+def test_readings_that_do_not_count_are_left_out() -> None:
+    """A column that says which readings are used is honoured, with a comment."""
+    data = b"Label,Element,Signal,Used\nSED-1,Zn,0.1,yes\nSED-1,Zn,0.9,no\nSED-2,Zn,0.1,yes\n"
+
+    drafted = draft([("US-1.csv", data)])
+
+    assert read(data, drafted.layout, "US-1.csv").line.tolist() == [2, 4]
+    assert any("does not count" in doubt for doubt in drafted.unsure)
+
+
 def test_a_spike_that_is_not_understood_is_no_sample() -> None:
     """A label that may be a spiked sample or a name of its own gives no reading until a person decides."""
     data = b"Label,Element,Signal\nSED-1,Zn,0.1\nSED-1 x,Zn,0.2\n"
