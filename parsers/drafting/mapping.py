@@ -303,14 +303,22 @@ class _Finder:
 
     def bracketed(self) -> None:
         """Take nominals out of a column in which they stand in brackets beside results."""
-        columns = self.mapping.columns
-        for at in range(len(self.mapping.headers)):
-            cells = [cell for cell in self.structure.column(at) if _BRACKETED.fullmatch(cell)]
-            free = at not in self.taken() or columns.get("concentration") == [at]
-            if len(cells) > 1 and free and "nominal" not in columns:
-                columns["nominal"] = [at]
-                columns.pop("concentration", None)
-                self.mapping.bracketed = True
+        columns, headers = self.mapping.columns, self.mapping.headers
+        found = [
+            at for at in range(len(headers))
+            if any(_BRACKETED.fullmatch(cell) for cell in self.structure.column(at))
+        ]  # fmt: skip
+        if len(found) > 1 or (found and "analyte" not in columns and element_in(headers[found[0]].written)):
+            names = listed(headers[at].written for at in found)
+            self.mapping.left.append(f"{names}: nominals in brackets of several analytes; not read (unfold.nominal)")
+        elif (
+            found
+            and "nominal" not in columns
+            and (found[0] not in self.taken() or columns.get("concentration") == found)
+        ):
+            columns["nominal"] = found
+            columns.pop("concentration", None)
+            self.mapping.bracketed = True
 
     def excluded(self) -> None:
         """Find the words that say that a reading does not count."""
