@@ -320,10 +320,12 @@ class _Assembly:
         """Return the nominal concentration that a wide table says of each reading; None where it says none."""
         values, unfold = self.values, self.values.layout.unfold
         entries = values.plan.entries
-        if unfold is None or (unfold.nominal is None and not any("nominal" in entry.columns for entry in entries)):
+        if unfold is None:
             return None
-        if unfold.nominal is None:
+        if unfold.nominal is None and any("nominal" in entry.columns for entry in entries):
             return self.quantity("nominal")
+        if unfold.nominal is None:
+            return self.nominals_beside()
         found = []
         for entry in entries:
             place = "concentration" if "concentration" in entry.columns else "signal"
@@ -333,6 +335,16 @@ class _Assembly:
             found.append(Quantities(np.array(cells)[texts.codes], units))
         units_of = [one.units[row] for row in range(values.rows) for one in found]
         return Quantities(np.stack([one.values for one in found], axis=1).ravel(), Texts.of(units_of))
+
+    def nominals_beside(self) -> Quantities | None:
+        """Return the nominal concentrations that side tables say of each analyte of a wide table."""
+        values, entries = self.values, self.values.plan.entries
+        sides = [side.lookup for side in values.sides() if "nominal" in side.lookup.fields]
+        if not any("analyte" in lookup.by for lookup in sides) or any(entry.analyte is None for entry in entries):
+            return None
+        found = [values.quantity_beside("nominal", entry.analyte or "") for entry in entries]
+        units = [one.units[row] for row in range(values.rows) for one in found]
+        return Quantities(np.stack([one.values for one in found], axis=1).ravel(), Texts.of(units))
 
     def bracketed(self, pattern: re.Pattern[str], text: str) -> float:
         """Return the number that a pattern finds in a cell, NaN where it finds none."""

@@ -35,6 +35,8 @@ OUTSIDE = "outside the blocks"
 HEADING = "heading of a block"
 ACROSS = "read across"
 EXCLUDED = "excluded by the export"
+#: Lines above and below a table.
+OUTSIDE_TABLE = (BEFORE, UNTIL, AFTER)
 
 
 def judge(frame: Frame, layout: Layout) -> Callable[[int, str], str | None]:

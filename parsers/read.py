@@ -18,6 +18,7 @@ from dataclasses import replace
 from fnmatch import fnmatchcase
 from typing import TYPE_CHECKING
 
+from parsers import fates
 from parsers.assembly import assemble
 from parsers.block import read_block
 from parsers.columns import resolve
@@ -109,12 +110,11 @@ def _read_plain(lines: Lines, layout: Layout) -> Readings:
     frame = find_table(lines, layout)
     singles = layout.singles()
     plans = [resolve(frame, single) for single in singles]  # first, so that a wrong header is not said of a heading
-    above = lines.head(frame.header_at)
-    heading = read_name(lines, layout)
-    heading |= read_heading(lines, layout.heading, enumerate(above), "above the table", None)
     block = read_block(frame, layout, plans[0]) if len(plans) == 1 else None
     table = block or read_rows(frame, layout)
     _refuse_empty(lines, frame, table)
+    around = sorted((one.line - 1, one.text) for one in table.set_aside if one.reason in fates.OUTSIDE_TABLE)
+    heading = read_name(lines, layout) | read_heading(lines, layout.heading, around, "outside the table", None)
     return joined([assemble(frame, one, plan, table, heading) for one, plan in zip(singles, plans, strict=True)])
 
 

@@ -7,9 +7,9 @@ from __future__ import annotations
 
 import csv
 from dataclasses import dataclass
-from typing import TYPE_CHECKING, Literal
+from typing import TYPE_CHECKING, Annotated, Any, Literal
 
-from pydantic import BaseModel, ConfigDict, model_validator
+from pydantic import BaseModel, BeforeValidator, ConfigDict, Field, model_validator
 
 from parsers import fields
 from parsers.patterns import Pattern  # noqa: TC001 (pydantic reads annotations)
@@ -29,13 +29,21 @@ _MEASURED = ("signal", "signal_sd", "signal_rsd", "readings", "measured_at")
 MOST_CHARACTERS = 5_000_000
 
 
+#: Stands between the parts of a key that several fields make.
+PARTED = " | "
+
+
+def _listed(value: Any) -> Any:
+    return [value] if isinstance(value, str) else value
+
+
 class Lookup(BaseModel):
     """One entry of ``lookup``: what is looked up by which field, in a file or in values written in the layout.
 
     Attributes
     ----------
     by
-        The field whose text (or number) is looked for.
+        The field whose text (or number) is looked for; of several, their texts joined by `` | ``.
     file, key, separator, decimal
         A CSV file, the header of its column to compare with (default: the first), and how it is written.
     begin, end, table
@@ -51,9 +59,11 @@ class Lookup(BaseModel):
 
     model_config = ConfigDict(extra="forbid", frozen=True)
 
-    by: Literal["label", "sample", "position", "level", "batch", "analyte"]
+    by: Annotated[
+        tuple[Literal["label", "sample", "position", "level", "batch", "analyte"], ...], BeforeValidator(_listed)
+    ] = Field(min_length=1)
     file: str = ""
-    key: str = ""
+    key: Annotated[tuple[str, ...], BeforeValidator(_listed)] = ()
     separator: Literal[",", ";", "tab", "|"] | None = None
     decimal: Literal[".", ","] | None = None
     begin: Pattern | None = None
@@ -69,10 +79,16 @@ class Lookup(BaseModel):
             raise ValueError("expected either 'file', 'begin' or 'values'\nKeep one of them")
         if not self.values and not self.columns:
             raise ValueError("expected 'columns' with the fields to look up, got none\nWrite columns: {added: Added}")
+        if self.key and len(self.key) != len(self.by):
+            raise ValueError(
+                f"expected a column for each of {listed(self.by)} in 'key', got {len(self.key)}\nName each"
+            )
+        if len(self.by) > 1 and self.file and not self.key:
+            raise ValueError("expected 'key' with the columns to compare with, got none\nWrite key: [Level, Element]")
         for field in self.fields:
-            if field not in fields.ALL or field in _MEASURED or (field == self.by and field != "label"):
+            if field not in fields.ALL or field in _MEASURED or (field in self.by and self.by != ("label",)):
                 hint = suggestion(field, fields.ALL).strip() or "Take it out"
-                raise ValueError(f"{field!r} is no field that can be looked up by {self.by}\n{hint}")
+                raise ValueError(f"{field!r} is no field that can be looked up by {' and '.join(self.by)}\n{hint}")
         return self
 
     @property
@@ -165,13 +181,25 @@ def replace_separator(lookup: Lookup, separator: str) -> Lookup:
 
 
 def _key(text: str, lookup: Lookup) -> str:
+    """Return the form in which keys are compared: blanks folded, positions as numbers."""
     folded = fold(text)
-    if lookup.by != "position":
+    if "position" not in lookup.by:
         return folded
+    parts = folded.split(PARTED)
+    at = lookup.by.index("position")
     try:
-        return f"{float(folded):g}"
-    except ValueError:
+        parts[at] = f"{float(parts[at]):g}"
+    except (ValueError, IndexError):
         return folded
+    return PARTED.join(parts)
+
+
+def _key_columns(lookup: Lookup, header: list[str]) -> list[int]:
+    return [header.index(fold(name)) for name in lookup.key if fold(name) in header] or [0]
+
+
+def _key_of(lookup: Lookup, record: list[str], places: list[int]) -> str:
+    return _key(PARTED.join(record[at] for at in places), lookup) if all(record[at] for at in places) else ""
 
 
 def _records(lookup: Lookup, text: str) -> list[tuple[int, list[str]]]:
@@ -213,28 +241,26 @@ def _faults(lookup: Lookup, text: str) -> Iterator[tuple[str, str]]:
         yield f"{lookup.place}: expected a header and rows, got {len(records)} lines", "Complete it"
         return
     header = records[0][1]
-    for name in [lookup.key, *(name for source in lookup.columns.values() for name in source.names)]:
+    for name in [*lookup.key, *(name for source in lookup.columns.values() for name in source.names)]:
         if name and fold(name) not in header:
             todo = suggestion(name, header).strip() or "Correct the name or the separator"
             yield f"{lookup.place}: expected the column {name!r}, and the header holds {listed(header)}", todo
-    at = header.index(fold(lookup.key)) if fold(lookup.key) in header else 0
+    places = _key_columns(lookup, header)
     first: dict[str, int] = {}
     for line, record in records[1:]:
         if len(record) != len(header):
             sentence = f"{lookup.place}, line {line}: expected {len(header)} fields as in the header, got {len(record)}"
             yield sentence, "Correct the line"
-        elif record[at]:
-            before = first.setdefault(_key(record[at], lookup), line)
+        elif key := _key_of(lookup, record, places):
+            before = first.setdefault(key, line)
             if before != line:
-                sentence = f"{lookup.place}, line {line}: {record[at]!r} stands here again, first in line {before}"
+                sentence = f"{lookup.place}, line {line}: {key!r} stands here again, first in line {before}"
                 yield sentence, "Keep one of the lines"
 
 
 def _entries(lookup: Lookup, text: str) -> dict[str, dict[str, str]]:
     records = _records(lookup, text)
     header = records[0][1]
-    at = header.index(fold(lookup.key)) if lookup.key else 0
-    return {
-        field: {_key(record[at], lookup): record[place] for _, record in records[1:] if record[at]}
-        for field, place in _places(lookup, header).items()
-    }
+    at = _key_columns(lookup, header)
+    keyed = [(key, record) for _, record in records[1:] if (key := _key_of(lookup, record, at))]
+    return {field: {key: record[place] for key, record in keyed} for field, place in _places(lookup, header).items()}

@@ -18,7 +18,8 @@ import pandas as pd
 from parsers import fields
 from parsers.cells import Cell, Grammar, Kind, Numbers, converted
 from parsers.readings import Problem, Quantities, Texts
-from parsers.source import IN_CELL, UNSAID
+from parsers.sidetable import PARTED
+from parsers.source import IN_CELL, MAYBE, UNSAID
 from parsers.spelling import fold, folded, looked_up, renamed, shown
 
 if TYPE_CHECKING:
@@ -262,18 +263,20 @@ class Values:
         found: list[Told] = []
         for side in self.sides():
             lookup = side.lookup
-            if name not in lookup.fields or lookup.by in self._looking:
+            if name not in lookup.fields or set(lookup.by) & set(self._looking):
                 continue
+            if self.plan.entries and "analyte" in lookup.by and not self.has_source("analyte"):
+                continue  # each reading of the row has an analyte of its own: see `quantity_beside`
             self._refuse_unread(side)
-            self._looking.append(lookup.by)
+            self._looking += lookup.by
             keys = self._keys(lookup.by)
-            self._looking.pop()
+            del self._looking[-len(lookup.by) :]
             source = lookup.columns.get(name, UNSAID)
             texts = _cut(looked_up(Texts.of(side.texts(name, keys)), keys), source, name)
             unit = Texts.constant(source.stated_unit, self.rows) if source.stated_unit else None
             decimal = lookup.decimal or (self.layout.decimal if lookup.begin is not None else ".")
             grammar = replace(_LAYOUT_GRAMMAR, decimal=decimal)
-            header = f"{lookup.place} by {lookup.by}"
+            header = f"{lookup.place} by {' and '.join(lookup.by)}"
             in_table = not (lookup.optional or source.optional)
             found.append(Told(texts, header, source, in_table=in_table, unit=unit, grammar=grammar))
         return found
@@ -288,7 +291,7 @@ class Values:
     def meant_label(self) -> Texts:
         """Return the labels with those that a side table replaces by what they mean."""
         for side in self.sides():
-            if side.lookup.by == "label" and "label" in side.lookup.fields:
+            if side.lookup.by == ("label",) and "label" in side.lookup.fields:
                 self._refuse_unread(side)
                 names = [
                     meant or name for meant, name in zip(side.texts("label", self.label), self.label.names, strict=True)
@@ -301,7 +304,40 @@ class Values:
             sentence = f"expected the side table {side.lookup.file!r} (lookup), which was not read"
             raise self.frame.lines.refusal(None, sentence, "Put it beside the layout")
 
-    def _keys(self, by: str) -> Texts:
+    def quantity_beside(self, name: str, analyte: str) -> Quantities:
+        """Return what side tables say of a quantity of one analyte of a wide table."""
+        values, units = np.full(self.rows, np.nan), Texts.absent(self.rows)
+        for side in self.sides():
+            lookup = side.lookup
+            if name not in lookup.fields or "analyte" not in lookup.by:
+                continue
+            self._refuse_unread(side)
+            keys = self._keys(lookup.by, analyte)
+            source = lookup.columns.get(name, UNSAID)
+            unit = Texts.constant(source.stated_unit, self.rows) if source.stated_unit else None
+            texts = _cut(looked_up(Texts.of(side.texts(name, keys)), keys), source, name)
+            grammar = replace(_LAYOUT_GRAMMAR, decimal=lookup.decimal or ".")
+            told = Told(texts, f"{lookup.place}", MAYBE, in_table=False, unit=unit, grammar=grammar)
+            numbers, stated = self._converted(name, told, _quantity)
+            if numbers.odd:
+                self.odd.append(Odd(name, told.header, None, numbers.odd, optional=True, in_table=False))
+            take = np.isnan(values) & np.isfinite(numbers.values)
+            values = np.where(take, numbers.values, values)
+            units = filled(units, Texts(np.where(take, stated.codes, -1).astype(np.int32), stated.names))
+        return Quantities(values, units)
+
+    def _keys(self, by: Sequence[str], analyte: str | None = None) -> Texts:
+        """Return what each row is looked up by; a row that lacks a part of it has no key."""
+        parts = [
+            Texts.constant(analyte, self.rows) if one == "analyte" and analyte is not None else self._key_of(one)
+            for one in by
+        ]
+        if len(parts) == 1:
+            return parts[0]
+        rows = [[part[row] for part in parts] for row in range(self.rows)]
+        return Texts.of([None if None in row else PARTED.join(filter(None, row)) for row in rows])
+
+    def _key_of(self, by: str) -> Texts:
         if by == "label":
             return self.label
         if by != "position":

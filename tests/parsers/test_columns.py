@@ -188,7 +188,7 @@ def test_headings_feed_fields_or_are_kept(read_text: Callable[..., Readings]) ->
 @pytest.mark.parametrize(
     ("preamble", "heading", "expected"),
     [
-        ("x", r"{batch: '^Batch: (.+)$'}", "expected the heading batch ('^Batch: (.+)$') above the table, got none"),
+        ("x", r"{batch: '^Batch: (.+)$'}", "expected the heading batch ('^Batch: (.+)$') outside the table, got none"),
         ("Batch:  ", r"{batch: '^Batch:(.*)$'}", "expected the heading batch"),
         (
             "Dilution: 1 to 9",
