@@ -163,7 +163,7 @@ class SideTable:
             last = next((at for at in range(first + 1, last) if lookup.end.search(lines.lines[at])), last)
         text = "\n".join(lines.lines[first + 1 : last])
         written = replace_separator(lookup, separator)
-        for what, todo in _faults(written, text):
+        for what, todo in _faults(written, text, first + 1):
             raise lines.refusal(first, what, todo)
         return SideTable(lookup, _entries(written, text))
 
@@ -227,8 +227,8 @@ def _places(lookup: Lookup, header: list[str]) -> dict[str, int]:
     }
 
 
-def _faults(lookup: Lookup, text: str) -> Iterator[tuple[str, str]]:
-    """Yield what is wrong with a side table, and what to do."""
+def _faults(lookup: Lookup, text: str, above: int = 0) -> Iterator[tuple[str, str]]:
+    """Yield what is wrong with a side table, and what to do; so many lines stand above it."""
     if len(text) > MOST_CHARACTERS:
         yield f"{lookup.place}: expected at most {MOST_CHARACTERS} characters, got {len(text)}", "Shorten it"
         return
@@ -247,7 +247,7 @@ def _faults(lookup: Lookup, text: str) -> Iterator[tuple[str, str]]:
             yield f"{lookup.place}: expected the column {name!r}, and the header holds {listed(header)}", todo
     places = _key_columns(lookup, header)
     first: dict[str, int] = {}
-    for line, record in records[1:]:
+    for line, record in ((number + above, record) for number, record in records[1:]):
         if len(record) != len(header):
             sentence = f"{lookup.place}, line {line}: expected {len(header)} fields as in the header, got {len(record)}"
             yield sentence, "Correct the line"

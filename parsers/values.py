@@ -241,7 +241,10 @@ class Values:
             texts = _joined(texts, self.table.texts(column))
         if source.heading:
             texts = _joined(self._heading_texts(source.heading), texts)
-        return Told(_cut(texts, source, name), header, source, **more)  # type: ignore[arg-type]
+        said = _cut(texts, source, name)
+        if name == "signal" and self.layout.columns.signal is source:
+            said = filled(said, texts)  # what the pattern does not find is shown as it stands, and is no empty cell
+        return Told(said, header, source, **more)  # type: ignore[arg-type]
 
     def _told_heading(self, heading: str, source: Source, name: str) -> Told:
         column = self.plan.captured.get(heading)

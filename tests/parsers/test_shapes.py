@@ -288,6 +288,45 @@ def test_a_glued_unit_must_be_the_stated_one() -> None:
     assert [fault.sentence.split(". ")[0] for fault in readings.faults] == ["expected a number in mL, got '5 µL'"]
 
 
+def test_a_signal_that_its_pattern_does_not_find_is_shown_as_it_stands() -> None:
+    """A cell that is no reading of the described form is a fault with its text, and never counts as empty."""
+    more = "columns: {label: Label, analyte: {constant: Zn}, signal: {from: R, pattern: '^([0-9.]+) cps$'}}\n"
+
+    readings = _read("Label;R\nA;1.5 cps\nB;[12.3]\n", more)
+
+    assert readings.signals[0].tolist() == [1.5]
+    assert [(fault.line, fault.column, fault.cell) for fault in readings.faults] == [(3, "R", "[12.3]")]
+
+
+def test_parts_of_an_export_that_are_wrong_refuse_it() -> None:
+    """A part that a lookup needs is refused with the place where it begins."""
+    more = (
+        PLAIN + "blocks: {begin: '^Data'}\nlookup: [{by: label, begin: '^Names', end: '^Data', columns: {batch: B}}]\n"
+    )
+
+    assert _values(_read("Names\nN;B\nA;7\nData\nLabel;R\nA;1\n", more), "batch") == [("7",)]
+    with pytest.raises(ExportRefused, match=r"expected a line that matches '\^Names' \(lookup\), got none"):
+        _read("Data\nLabel;R\nA;1\n", more)
+    with pytest.raises(
+        ExportRefused, match=r"line 1: the part behind '\^Names', line 4: 'A' stands here again, first in line 3"
+    ):
+        _read("Names\nN;B\nA;7\nA;8\nData\nLabel;R\nA;1\n", more)
+
+
+def test_several_fields_make_one_key() -> None:
+    """A table by level and analyte says another nominal concentration of each; a part that is missing has no key."""
+    values = "{'L1 | Zn': {nominal: 10 mg/L}, 'L1 | Cu': {nominal: 2 mg/L}}"
+    more = (
+        "columns: {label: Label, analyte: E, "
+        "level: [{from: Lev, optional: yes}, {group: level}], signal: R}\n"
+        f"lookup: [{{by: [level, analyte], optional: yes, values: {values}}}]\n"
+    )
+
+    readings = _read("Label;E;Lev;R\nS;Zn;L1;1\nS;Cu;L1;2\nB;Cu;;3\n", more)
+
+    assert _values(readings, "nominal") == [("10 mg/L",), ("2 mg/L",), ("",)]
+
+
 def test_a_word_that_says_neither_yes_nor_no_excludes_nothing() -> None:
     """An unknown word in a flag column is a fault of its row."""
     more = "columns: {label: Label, analyte: {constant: Zn}, signal: R, excluded: Out}\n"
