@@ -20,7 +20,8 @@ from parsers.readings import Problem, Quantities, Readings, Role, SetAside, Text
 from parsers.roles import find_roles, is_sample
 from parsers.spelling import folded, renamed, shown
 from parsers.table import RowTable
-from parsers.values import Odd, Values, filled
+from parsers.told import filled
+from parsers.values import Odd, Values
 
 if TYPE_CHECKING:
     import re

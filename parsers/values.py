@@ -8,22 +8,22 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass, field, replace
-from datetime import UTC, datetime
 from functools import partial
 from typing import TYPE_CHECKING
 
 import numpy as np
-import pandas as pd
 
 from parsers import fields
 from parsers.cells import Cell, Grammar, Kind, Numbers, converted
+from parsers.conversion import in_unit, predilution, quantity, rescaled
 from parsers.readings import Problem, Quantities, Texts
 from parsers.sidetable import PARTED
 from parsers.source import IN_CELL, MAYBE, UNSAID
-from parsers.spelling import fold, folded, looked_up, renamed, shown
+from parsers.spelling import folded, looked_up, renamed, shown
+from parsers.times import read_time, times_at_once
+from parsers.told import PAIR, Told, cut, filled, joined, paired
 
 if TYPE_CHECKING:
-    import re
     from collections.abc import Callable, Sequence
 
     from parsers.columns import Mapped, Plan
@@ -35,16 +35,10 @@ if TYPE_CHECKING:
     from parsers.source import Source
     from parsers.table import Frame, Table
 
-#: From so many distinct times on they are read all at once.
-MANY_TIMES = 500
-#: … if they lie in here.
-PLAUSIBLE = (pd.Timestamp(1900, 1, 1), pd.Timestamp(2200, 1, 1))
 #: How constants of a layout are written, whatever marks its exports use.
 _LAYOUT_GRAMMAR = Grammar()
 #: Most disagreements between sources that are listed.
 MOST_DISAGREEMENTS = 100
-#: Stands between a text and its unit.
-_PAIR = "\x1f"
 
 
 @dataclass(frozen=True, slots=True)
@@ -154,7 +148,7 @@ class Values:
         at = self._plain_column(name)
         mapped = self.plan.mapped.get(name)
         if at is None or mapped is None or mapped.source.unit == IN_CELL:
-            return self._chain(name, _quantity)
+            return self._chain(name, quantity)
         return self.quantity_column(name, at, mapped.source, self._units(mapped), None)
 
     def quantity_column(
@@ -165,8 +159,8 @@ class Values:
         values, odd = numbers.values, {}
         glued: dict[int, str] = {}
         for row, cell in numbers.odd.items():
-            found, unit = _quantity(cell.text, self.layout.grammar) if cell.kind is Kind.UNREADABLE else (cell, "")
-            found = _in_unit(found, unit, units[row])
+            found, unit = quantity(cell.text, self.layout.grammar) if cell.kind is Kind.UNREADABLE else (cell, "")
+            found = in_unit(found, unit, units[row])
             if found.kind is Kind.NUMBER:
                 values[row] = found.value
                 glued[row] = unit
@@ -181,7 +175,7 @@ class Values:
 
     def predilution(self) -> Floats:
         """Return the factor from aliquot to sample."""
-        return self._chain("predilution", lambda text, grammar: (_predilution(text, grammar), "")).values
+        return self._chain("predilution", lambda text, grammar: (predilution(text, grammar), "")).values
 
     def times(self) -> Floats:
         """Return the time of measurement in seconds since 1970-01-01 of the local time that was written."""
@@ -190,8 +184,8 @@ class Values:
         doubts: dict[int, tuple[Told, Cell]] = {}
         for told in found:
             forms, grammar = told.source.format, self.layout.grammar
-            known = _times_at_once(told.texts.names, forms)
-            convert = partial(_time, forms=forms, grammar=grammar)
+            known = times_at_once(told.texts.names, forms)
+            convert = partial(read_time, forms=forms, grammar=grammar)
             numbers = converted(told.texts, convert, known.get, missing=False)
             self._doubt_unless_known(doubts, told, numbers.odd, values)
             values = np.where(np.isnan(values), numbers.values, values)
@@ -223,7 +217,7 @@ class Values:
                 said = self.understood.said.get(one.group)
                 texts = Texts.absent(self.rows) if said is None else looked_up(said, self.label)
                 unit = Texts.constant(one.stated_unit, self.rows) if one.stated_unit else None
-                found.append(Told(_cut(texts, one, name), self.label_header(), one, in_table=False, unit=unit))
+                found.append(Told(cut(texts, one, name), self.label_header(), one, in_table=False, unit=unit))
             elif mapped is None and one.heading:
                 found.append(self._told_heading(one.heading, one, name))
             elif mapped is not None:
@@ -238,10 +232,10 @@ class Values:
             ratio = self._ratio(texts, self.table.texts(mapped.columns[1]))
             return Told(ratio, header, source, grammar=_LAYOUT_GRAMMAR, **more)  # type: ignore[arg-type]
         for column in mapped.columns[1:]:
-            texts = _joined(texts, self.table.texts(column))
+            texts = joined(texts, self.table.texts(column))
         if source.heading:
-            texts = _joined(self._heading_texts(source.heading), texts)
-        said = _cut(texts, source, name)
+            texts = joined(self._heading_texts(source.heading), texts)
+        said = cut(texts, source, name)
         if name == "signal" and self.layout.columns.signal is source:
             said = filled(said, texts)  # what the pattern does not find is shown as it stands, and is no empty cell
         return Told(said, header, source, **more)  # type: ignore[arg-type]
@@ -251,7 +245,7 @@ class Values:
         header = f"heading {heading}"
         at = self.heading[heading].at if heading in self.heading else None
         unit = Texts.constant(source.stated_unit, self.rows) if source.stated_unit else None
-        texts = _cut(self._heading_texts(heading), source, name)
+        texts = cut(self._heading_texts(heading), source, name)
         return Told(texts, header, source, in_table=column is not None, unit=unit, heading_at=at)
 
     def _heading_texts(self, heading: str) -> Texts:
@@ -275,7 +269,7 @@ class Values:
             keys = self._keys(lookup.by)
             del self._looking[-len(lookup.by) :]
             source = lookup.columns.get(name, UNSAID)
-            texts = _cut(looked_up(Texts.of(side.texts(name, keys)), keys), source, name)
+            texts = cut(looked_up(Texts.of(side.texts(name, keys)), keys), source, name)
             unit = Texts.constant(source.stated_unit, self.rows) if source.stated_unit else None
             decimal = lookup.decimal or (self.layout.decimal if lookup.begin is not None else ".")
             grammar = replace(_LAYOUT_GRAMMAR, decimal=decimal)
@@ -318,10 +312,10 @@ class Values:
             keys = self._keys(lookup.by, analyte)
             source = lookup.columns.get(name, UNSAID)
             unit = Texts.constant(source.stated_unit, self.rows) if source.stated_unit else None
-            texts = _cut(looked_up(Texts.of(side.texts(name, keys)), keys), source, name)
+            texts = cut(looked_up(Texts.of(side.texts(name, keys)), keys), source, name)
             grammar = replace(_LAYOUT_GRAMMAR, decimal=lookup.decimal or ".")
             told = Told(texts, f"{lookup.place}", MAYBE, in_table=False, unit=unit, grammar=grammar)
-            numbers, stated = self._converted(name, told, _quantity)
+            numbers, stated = self._converted(name, told, quantity)
             if numbers.odd:
                 self.odd.append(Odd(name, told.header, None, numbers.odd, optional=True, in_table=False))
             take = np.isnan(values) & np.isfinite(numbers.values)
@@ -412,17 +406,17 @@ class Values:
         texts = told.texts
         if told.unit is not None and told.unit.names:
             # text and unit decide together whether a unit that is glued to the number is the right one
-            texts = _paired(texts, told.unit)
+            texts = paired(texts, told.unit)
         known: dict[str, tuple[Cell, str]] = {}
         for text in texts.names:
-            written, _, stated = text.partition(_PAIR)
+            written, _, stated = text.partition(PAIR)
             cell, glued = convert(written, grammar)
-            cell = _in_unit(cell, glued, stated)
+            cell = in_unit(cell, glued, stated)
             if volume and cell.kind is Kind.NUMBER and not (glued or stated):
                 expected = f"expected a volume with its unit, got {shown(written)}"
                 cell = Cell(Kind.UNREADABLE, math.nan, written, expected, "Write for instance 5 mL")
             if cell.kind is Kind.NUMBER:
-                cell = _rescaled(cell, source)
+                cell = rescaled(cell, source)
             elif told.heading_at is not None:
                 raise self.frame.lines.refusal(told.heading_at, cell.expected, cell.remedy, told.header)
             known[text] = (cell, glued or stated)
@@ -476,156 +470,3 @@ class Values:
             )
             line = self.table.line_of(row, None)
             self.disagreements.setdefault((name, one[1], other[1]), Problem(line, one[0], sentence))
-
-
-@dataclass(frozen=True, slots=True)
-class Told:
-    """What one source says of a field.
-
-    Attributes
-    ----------
-    texts
-        One text a row, already cut out and mapped.
-    header
-        Where it stands, in words.
-    source
-        What the layout says of it.
-    in_table
-        Whether a missing value can be a fault: it has a place of its own.
-    unit
-        The unit of each row where it is stated apart, or None.
-    grammar
-        How its numbers are written; None where as in the export.
-    column
-        Index of its column, or None.
-    heading_at
-        Index of the line of a value that holds for all rows, or None.
-    """
-
-    texts: Texts
-    header: str
-    source: Source
-    in_table: bool
-    unit: Texts | None = None
-    grammar: Grammar | None = None
-    column: int | None = None
-    heading_at: int | None = None
-
-
-def filled(texts: Texts, other: Texts) -> Texts:
-    """Return a column with its gaps filled from another one."""
-    gaps = texts.codes < 0
-    if not gaps.any():
-        return texts
-    together = Texts.of([*texts.names, *other.names])
-    codes = np.where(gaps & (other.codes >= 0), other.codes + np.int32(len(texts.names)), texts.codes)
-    return looked_up(together, Texts(codes.astype(np.int32), (*texts.names, *other.names)))
-
-
-def _cut(texts: Texts, source: Source, name: str) -> Texts:
-    """Take out of each text what the source means, and put in the words that are meant."""
-    pattern = source.pattern
-    if pattern is None and not source.map:
-        return texts
-    names: list[str | None] = list(folded(texts.names))
-    if pattern is not None:
-        names = [_matched(pattern, text, name) for text in names]
-    words = {fold(code): word for code, word in source.map.items()}
-    mapped = renamed(texts, [(words.get(text, text) or None) if text is not None else None for text in names])
-    if "" in words:  # an empty cell may be explained as well
-        mapped = filled(mapped, Texts(np.where(texts.codes < 0, np.int32(0), np.int32(-1)), (words[""],)))
-    return mapped
-
-
-def _matched(pattern: re.Pattern[str], text: str | None, name: str) -> str | None:
-    match = pattern.search(text or "")
-    if match is None:
-        return None
-    said = match[name] if name in pattern.groupindex else match[1] if pattern.groups else match[0]
-    return fold(said or "") or None
-
-
-def _paired(texts: Texts, units: Texts) -> Texts:
-    """Write the unit of each row behind its text."""
-    pairs = texts.codes.astype(np.int64) * (len(units.names) + 1) + units.codes
-    distinct, first, codes = np.unique(pairs, return_index=True, return_inverse=True)
-    names = [None if texts[row] is None else f"{texts[row]}{_PAIR}{units[row] or ''}" for row in first.tolist()]
-    joined = Texts.of(names)
-    return Texts(joined.codes[codes.reshape(-1)], joined.names) if len(distinct) else texts
-
-
-def _in_unit(cell: Cell, glued: str, stated: str | None) -> Cell:
-    """Refuse a number whose glued unit is not the one that is stated."""
-    if cell.kind is not Kind.NUMBER or not glued or not stated or glued == stated:
-        return cell
-    expected = f"expected a number in {stated}, got {shown(cell.text)}"
-    return Cell(Kind.UNREADABLE, math.nan, cell.text, expected, "Correct the export, or write unit: in cell")
-
-
-def _rescaled(cell: Cell, source: Source) -> Cell:
-    """Turn what the export writes into what is meant."""
-    value = cell.value * (1 if source.scale is None else source.scale)
-    if source.as_ == "inverse":
-        value = 1 / value
-    return replace(cell, value=value) if value != cell.value else cell
-
-
-def _joined(left: Texts, right: Texts) -> Texts:
-    """Join two columns with a blank, each distinct pair once; a half alone is kept as it is."""
-    pairs = left.codes.astype(np.int64) * (len(right.names) + 1) + right.codes
-    distinct, codes = np.unique(pairs, return_inverse=True)
-    first = np.empty(len(distinct), dtype=np.int64)
-    first[codes[::-1]] = np.arange(len(codes) - 1, -1, -1)
-    names = [" ".join(part for part in (left[row], right[row]) if part) or None for row in first.tolist()]
-    joined = Texts.of(names)
-    return Texts(joined.codes[codes], joined.names)
-
-
-def _quantity(text: str, grammar: Grammar) -> tuple[Cell, str]:
-    """Understand a number with a glued unit."""
-    plain = grammar.cell(text)
-    if plain.kind is not Kind.UNREADABLE:
-        return plain, ""
-    found = grammar.quantity(text)
-    if found is None:
-        return Cell(Kind.UNREADABLE, math.nan, text, plain.expected, plain.remedy), ""
-    return Cell(Kind.NUMBER, found[0], text), found[1]
-
-
-def _predilution(text: str, grammar: Grammar) -> Cell:
-    factor = grammar.predilution(text)
-    if factor is not None:
-        return Cell(Kind.NUMBER, factor, text)
-    plain = grammar.cell(text)
-    if plain.kind is Kind.MISSING:
-        return plain
-    expected = f"expected a predilution such as 10, 1 in 10 or 1+9, got {shown(text)}"
-    return Cell(Kind.UNREADABLE, math.nan, text, expected, "Correct the export")
-
-
-def _times_at_once(names: Sequence[str], forms: Sequence[str]) -> dict[str, float]:
-    """Read many times of the one declared form quickly; what is not among the answer is read one by one."""
-    # zones, and fractions of a second (of which pandas reads more digits), are read one by one
-    if len(forms) != 1 or len(names) < MANY_TIMES or any(code in forms[0].lower() for code in ("%z", "%f")):
-        return {}
-    found = pd.to_datetime(pd.Series(folded(names), dtype="object"), format=forms[0], errors="coerce", exact=True)
-    seconds = (found.to_numpy(dtype="datetime64[us]").astype(np.int64) / 1e6).tolist()
-    # pandas knows a year 0, which nobody measured in: what lies far off is read one by one as well
-    fine = (found.notna() & found.between(*PLAUSIBLE)).tolist()
-    return {name: at for name, at, good in zip(names, seconds, fine, strict=True) if good}
-
-
-def _time(text: str, forms: Sequence[str], grammar: Grammar) -> Cell:
-    folded = fold(text)
-    for form in forms:
-        try:
-            moment = datetime.strptime(folded, form)  # noqa: DTZ007 (exports write local time)
-        except ValueError:
-            continue
-        # The wall clock is counted as if it were UTC, so that no zone of this computer slips in.
-        return Cell(Kind.NUMBER, moment.replace(tzinfo=UTC).timestamp(), text)
-    if folded in grammar.missing:
-        return Cell(Kind.MISSING, math.nan, text)
-    written = " or ".join(repr(form) for form in forms)
-    expected = f"expected a time in the form {written}, got {shown(text)}"
-    return Cell(Kind.UNREADABLE, math.nan, text, expected, "Correct the export, or the format in the layout")

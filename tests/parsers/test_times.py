@@ -8,7 +8,7 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
-from parsers import values
+from parsers import times
 from parsers.cells import Grammar, Kind
 
 FORMS = ("%d.%m.%Y %H:%M:%S", "%Y-%m-%d %H:%M", "%m/%d/%Y %I:%M %p", "%Y-%m-%dT%H:%M:%S.%f", "%d-%m-%y", "%Y%m%d")
@@ -17,7 +17,7 @@ FORMS = ("%d.%m.%Y %H:%M:%S", "%Y-%m-%d %H:%M", "%m/%d/%Y %I:%M %p", "%Y-%m-%dT%
 @pytest.fixture(autouse=True)
 def _few(monkeypatch: pytest.MonkeyPatch) -> None:
     """Let the quick way begin with the first time."""
-    monkeypatch.setattr(values, "MANY_TIMES", 1)
+    monkeypatch.setattr(times, "MANY_TIMES", 1)
 
 
 def _moments() -> st.SearchStrategy[datetime]:
@@ -41,10 +41,10 @@ def test_all_at_once_equals_one_by_one(moments: list[datetime], form: str, place
     texts = [moment.strftime(form) for moment in moments]
     texts.append(_spoilt(texts[0], place, character))
 
-    found = values._times_at_once(texts, (form,))
+    found = times.times_at_once(texts, (form,))
 
     for text, at in found.items():
-        cell = values._time(text, (form,), Grammar())
+        cell = times.read_time(text, (form,), Grammar())
         assert cell.kind is Kind.NUMBER, text
         assert cell.value == pytest.approx(at, abs=1e-6), text
 
@@ -54,11 +54,11 @@ def test_ordinary_times_are_read_at_once() -> None:
     begin = datetime(2026, 12, 1, 8, 41, tzinfo=UTC)
     texts = [(begin + timedelta(minutes=3 * n)).strftime(FORMS[0]) for n in range(10)]
 
-    found = values._times_at_once(texts, FORMS[:1])
+    found = times.times_at_once(texts, FORMS[:1])
 
     assert list(found.values()) == [begin.timestamp() + 180 * n for n in range(10)]
 
 
 def test_times_with_a_zone_are_read_one_by_one() -> None:
     """A zone in the format is the slow way's business."""
-    assert values._times_at_once(["2026-12-01 08:41 +0100"], ("%Y-%m-%d %H:%M %z",)) == {}
+    assert times.times_at_once(["2026-12-01 08:41 +0100"], ("%Y-%m-%d %H:%M %z",)) == {}
