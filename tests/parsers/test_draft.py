@@ -27,7 +27,15 @@ if TYPE_CHECKING:
 EXPORTS = Path(__file__).parents[1] / "exports"
 CASES = sorted(path for kind in ("cookbook", "quirks") for path in (EXPORTS / kind).glob("*/expected.csv"))
 #: Files that stand beside an export and are none.
-BESIDE_AN_EXPORT = ("README.md", "expected.csv", "layout.yaml", "bench-sheet.csv", "wells.csv", "bench.csv")
+BESIDE_AN_EXPORT = (
+    "levels.csv",
+    "README.md",
+    "expected.csv",
+    "layout.yaml",
+    "bench-sheet.csv",
+    "wells.csv",
+    "bench.csv",
+)
 #: What must never be wrong.
 JUDGED = ("line", "role", "signal", "nominal", "added", "spike_volume", "predilution")
 #: Share of the readings that a draft must read right without a person's hand.
