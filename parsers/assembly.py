@@ -114,10 +114,7 @@ class _Assembly:
             "mass": values.quantities("mass"), "digest_volume": values.quantities("digest_volume"),
             "replicate": values.numbers("replicate"), "position": values.numbers("position"),
             "measured_at": values.times(), "predilution": values.predilution(),
-            **{
-                name: values.texts(name)
-                for name in ("stock", "batch", "analyst", "instrument", "comment", "duplicate_of")
-            },
+            **{name: values.texts(name) for name in ("stock", "batch", "analyst", "instrument", "duplicate_of")},
             "origin": Texts.absent(len(table.line)),
         }  # fmt: skip
         present = self.present(role)
@@ -130,7 +127,7 @@ class _Assembly:
             del per_row["nominal"], columns["nominal"]
             rows = np.repeat(np.arange(values.rows), len(values.plan.entries))
             statistics["nominal"] = _first(of_entries, nominal.take(rows))
-        per_reading = {"analyte": analyte[0], "channel": analyte[1], **statistics}
+        per_reading = {"analyte": analyte[0], "channel": analyte[1], "comment": self.comment(), **statistics}
         flat = row * present.shape[1] + entry
         columns |= {name: column if everything else _take(column, flat) for name, column in per_reading.items()}
         columns["signals"] = signals if everything else signals[flat]
@@ -148,6 +145,23 @@ class _Assembly:
             heading={name: found.value for name, found in values.heading.items()},
             lines=len(values.frame.lines),
         )
+
+    def comment(self) -> Texts:
+        """Return the comment of each reading, with the flags that stood beside its signal, before rows are left out."""
+        values, entries, pattern = self.values, self.values.plan.entries, self.values.layout.cells.flags
+        of_rows = values.texts("comment")
+        comment = Texts(np.repeat(of_rows.codes, max(len(entries), 1)), of_rows.names)
+        mapped = values.plan.mapped.get("signal")
+        signals = [entry.columns["signal"] for entry in entries] or [mapped.columns if mapped is not None else ()]
+        if pattern is None or not pattern.search(values.frame.lines.text):
+            return comment
+        of_entries = [[_flags(values.table.texts(at), pattern) for at in columns] for columns in signals]
+        rows = [
+            " ".join(filter(None, [of_rows[row], *(flags[row] for flags in of_entry)])) or None
+            for row in range(values.rows)
+            for of_entry in of_entries
+        ]
+        return Texts.of(rows)
 
     def leave_out(self, rows: NDArray[np.bool_], reason: str) -> None:
         """Set rows aside; one that says something and belongs to no sample or analyte is a problem as well."""
@@ -387,6 +401,13 @@ class _Assembly:
                     text = self.values.label[row] or ""
                     self.set_aside.append(SetAside(int(self.values.table.line[row]), reason, text))
         return present
+
+
+def _flags(texts: Texts, pattern: re.Pattern[str]) -> Texts:
+    """Return what a pattern finds in each text."""
+    return renamed(
+        texts, [" ".join(match[0].strip() for match in pattern.finditer(name)) or None for name in texts.names]
+    )
 
 
 def _first(one: Quantities, other: Quantities) -> Quantities:
