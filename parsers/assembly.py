@@ -18,7 +18,7 @@ from parsers.judgement import find_faults, label_uses
 from parsers.labels import understand
 from parsers.readings import Problem, Quantities, Readings, Role, SetAside, Texts, line_ranges
 from parsers.roles import find_roles, is_sample
-from parsers.spelling import folded, renamed, shown
+from parsers.spelling import fold, folded, renamed, shown
 from parsers.table import RowTable
 from parsers.told import filled
 from parsers.values import Odd, Values
@@ -136,7 +136,7 @@ class _Assembly:
             read = set(columns["line"].tolist())
             table.set_aside = [one for one in table.set_aside if one.reason != fates.ACROSS or one.line not in read]
         return Readings(
-            **columns,
+            **{name: self.in_unit_words(column) for name, column in columns.items()},
             faults=find_faults(values, present, role),
             set_aside=tuple(sorted([*table.set_aside, *self.set_aside], key=lambda aside: aside.line)),
             problems=tuple(sorted([*self.problems, *values.disagreements.values()], key=lambda problem: problem.line)),
@@ -144,6 +144,16 @@ class _Assembly:
             columns=values.plan.uses,
             heading={name: found.value for name, found in values.heading.items()},
             lines=len(values.frame.lines),
+        )
+
+    def in_unit_words(self, column: Any) -> Any:
+        """Return a quantity with the units that its words mean; any other column as it is."""
+        words = self.values.layout.unit_words
+        if not words or not isinstance(column, Quantities):
+            return column
+        meant = {fold(word): unit for word, unit in words.items()}
+        return replace(
+            column, units=renamed(column.units, [meant.get(fold(name), name) for name in column.units.names])
         )
 
     def comment(self) -> Texts:

@@ -242,6 +242,7 @@ class Layout(_Part):
     fill_down: Annotated[tuple[str, ...], BeforeValidator(_one_or_more)] = ()
     rows: tuple[RowRule, ...] = ()
     lookup: tuple[Lookup, ...] = ()
+    unit_words: dict[str, str] = {}
     examples: tuple[Example, ...] = ()
     until: Pattern | None = None
     finished: Pattern | None = None
