@@ -9,6 +9,7 @@ from typing import TYPE_CHECKING
 
 import pytest
 
+from parsers.errors import ExportRefused
 from parsers.examples import differences, written_csv
 from parsers.layout import parse_layout
 from parsers.read import claims, read
@@ -119,6 +120,22 @@ QUIRKS = [
     ("sodium, and zeros before a label", "volumes", rb"(?s),Na,.*007,"),
 ]  # fmt: skip
 
+#: (ability, the case that needs it, what of its layout says so)
+ABILITIES = [
+    ("decode", "utf16-without-mark", "encodings: [utf-16-le]"),
+    ("segment", "nested-blocks", "  blocks:\n    begin:"),
+    ("find the table", "transposed", "table: transposed"),
+    ("columns", "unnamed-columns", "occurrence: 3"),
+    ("spread", "wide-header-lines", "unfold:"),
+    ("rows", "replicate-rows", "are: excluded"),
+    ("numbers", "sections", "marks: [{where: '^<', decimal: '.'}]"),
+    ("special values", "sections", "below: "),
+    ("labels", "names", "{sample} x{predilution} SPK"),
+    ("sources with precedence", "names", "predilution: [{group: predilution}, {from: Dil"),
+    ("units", "appended-batches", "unit: {header: "),
+    ("times", "standards", "format: ['%d.%m.%Y %H:%M', "),
+]
+
 
 def _export(folder: Path, layout: Layout) -> Path:
     return next(path for path in sorted(folder.iterdir()) if fnmatch(path.name, layout.claims.file))
@@ -170,6 +187,40 @@ def test_the_quirk_has_a_case(quirk: str, case: str, evidence: bytes) -> None:
     folder = next(path for path in CASES if path.name == case)
 
     assert re.search(evidence, _export(folder, _layout(folder)).read_bytes())
+
+
+@pytest.mark.parametrize(("ability", "case", "evidence"), ABILITIES, ids=[ability for ability, _, _ in ABILITIES])
+def test_the_ability_has_a_case(ability: str, case: str, evidence: str) -> None:
+    """The layout of the case, which is read as expected, needs the ability."""
+    folder = next(path for path in CASES if path.name == case)
+
+    assert evidence in (folder / "layout.yaml").read_text("utf-8")
+
+
+@pytest.mark.parametrize("folder", CASES, ids=lambda folder: folder.name)
+def test_the_reading_explains_itself(folder: Path) -> None:
+    """Every column is listed with its use, every distinct label with its rows, and every fault with its cell."""
+    readings = _read(folder)
+
+    assert any(use.fields for use in readings.columns)
+    assert {use.label for use in readings.labels} >= {readings.label.names[code] for code in readings.label.codes}
+    text = _export(folder, _layout(folder)).read_bytes().decode(_layout(folder).encodings[0])
+    assert all(fault.cell in text and fault.sentence for fault in readings.faults)
+
+
+@pytest.mark.parametrize("case", ["thousands-comma", "wide-header-lines", "sections", "transposed", "appended-batches"])
+def test_guards_refuse_a_longer_row(case: str) -> None:
+    """A row with a field too many refuses the export, whatever its shape, with its line."""
+    folder = next(path for path in CASES if path.name == case)
+    layout = _layout(folder)
+    path = _export(folder, layout)
+    encoding = "utf-16" if case == "appended-batches" else layout.encodings[0]
+    lines = path.read_bytes().decode(encoding).split("\n")
+    at = max(number for number, line in enumerate(lines) if re.match(r"SED|RIV|BRN|Cu |900", line))
+    lines[at] += f"{layout.separator}9{layout.separator}9{layout.separator}9"
+
+    with pytest.raises(ExportRefused, match=rf"line {at + 1}: expected \d+ fields as in the header, got \d+"):
+        read("\n".join(lines).encode(encoding), layout, path.name)
 
 
 @pytest.mark.parametrize("folder", [path for path in CASES if path.parent.name == "cookbook"], ids=lambda p: p.name)
