@@ -405,6 +405,9 @@ class _Assembly:
             for row, cell in odd.cells.items():
                 bracketed = nominal is not None and cell.kind is Kind.UNREADABLE and nominal.search(cell.text)
                 empty = cell.kind is Kind.MISSING or bracketed
+                if empty and not self.values.table.holds(row, odd.column):
+                    present[row, odd.entry] = False  # another batch, which did not measure this analyte
+                    continue
                 if empty and not samples[row] and self.keep[row]:
                     present[row, odd.entry] = False
                     reason = f"no reading in column {odd.header!r}: the {Role(role[row]).word} does not hold it"

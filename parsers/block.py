@@ -111,6 +111,10 @@ class BlockTable:
         """Return the line on which a cell of a row stands."""
         return int(self.line[row])
 
+    def holds(self, row: int, column: int | None) -> bool:  # noqa: ARG002 (there is one block)
+        """Tell whether the block of a row has a column at all."""
+        return True
+
     def read(self, separator: str, plan: Plan, grammar: Grammar) -> None:
         """Convert the columns of a plan, all at once where each number column holds plain numbers only.
 

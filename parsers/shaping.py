@@ -141,6 +141,7 @@ def _together(
     rows: list[list[str]] = []
     across: list[Sequence[int] | None] = []
     numbers: list[int] = []
+    lacking: list[frozenset[int]] = []
     for sheet, places, heading in sheets:
         in_place = places == list(range(width))
         said = [heading[name].value if name in heading else "" for name in names]
@@ -153,13 +154,21 @@ def _together(
                 row.append(str(sheet.replicate[at] or ""))
             rows.append(row + said)
         numbers += sheet.lines
+        lacking += [frozenset(range(width)) - set(places)] * len(sheet.rows)
         across += [None if one is None else _lines_of(one, places, width) for one in sheet.across]
     headers = [*frame.headers]
     for name in beside:
         headers += [f"{header} ({name} row)" for header in frame.headers]
     headers += ["replicate"] if counted is not None else []
     headers += [f"heading {name}" for name in names]
-    table = RowTable(tuple(headers), np.asarray(numbers, dtype=np.int64), aside, rows, across if any(across) else ())
+    table = RowTable(
+        tuple(headers),
+        np.asarray(numbers, dtype=np.int64),
+        aside,
+        rows,
+        across if any(across) else (),
+        lacking if any(lacking) else (),
+    )
     return Shaped(frame, table, everywhere, captured, beside, counted)
 
 

@@ -54,6 +54,10 @@ class Table(Protocol):
         """Return the line on which a cell of a row stands."""
         ...
 
+    def holds(self, row: int, column: int | None) -> bool:
+        """Tell whether the block of a row has a column at all."""
+        ...
+
 
 @dataclass(frozen=True, slots=True)
 class Frame:
@@ -222,6 +226,8 @@ class RowTable:
         The cells.
     across
         For each row whose cells stand on lines of their own, the line of each; empty where every row is one line.
+    lacking
+        For each row the columns that its block does not have; empty where all blocks have the same.
     """
 
     headers: tuple[str, ...]
@@ -229,6 +235,7 @@ class RowTable:
     set_aside: list[SetAside]
     rows: Sequence[Sequence[str]]
     across: Sequence[Sequence[int] | None] = ()
+    lacking: Sequence[frozenset[int]] = ()
 
     def texts(self, column: int) -> Texts:
         """Return a column as trimmed texts; an empty cell has none."""
@@ -244,6 +251,10 @@ class RowTable:
         if lines is None or column is None or column >= len(lines):
             return int(self.line[row])
         return lines[column]
+
+    def holds(self, row: int, column: int | None) -> bool:
+        """Tell whether the block of a row has a column at all."""
+        return not self.lacking or column not in self.lacking[row]
 
 
 def read_rows(frame: Frame, layout: Layout) -> RowTable:

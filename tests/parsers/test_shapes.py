@@ -313,6 +313,21 @@ def test_parts_of_an_export_that_are_wrong_refuse_it() -> None:
         _read("Names\nN;B\nA;7\nA;8\nData\nLabel;R\nA;1\n", more)
 
 
+def test_batches_with_other_analytes_miss_nothing() -> None:
+    """A wide table whose block does not have a column has no reading there, and no fault; an empty cell is one."""
+    more = (
+        "columns: {label: Label}\nunfold: {pattern: '^(?P<analyte>Zn|Cd|Cu)$'}\n"
+        "header: '^Label'\nblocks: {begin: '^Label'}\n"
+    )
+
+    readings = _read("Label;Zn;Cd\nA;1;2\nLabel;Cu;Zn\nB;3;4\nC;;5\n", more)
+
+    assert _values(readings, "label", "analyte", "signal") == [
+        ("A", "Zn", "1"), ("A", "Cd", "2"), ("B", "Zn", "4"), ("B", "Cu", "3"), ("C", "Zn", "5"), ("C", "Cu", ""),
+    ]  # fmt: skip
+    assert [(fault.line, fault.column) for fault in readings.faults] == [(5, "Cu")]
+
+
 def test_several_fields_make_one_key() -> None:
     """A table by level and analyte says another nominal concentration of each; a part that is missing has no key."""
     values = "{'L1 | Zn': {nominal: 10 mg/L}, 'L1 | Cu': {nominal: 2 mg/L}}"
