@@ -136,6 +136,7 @@ class Assessment:
             "bytes": export.size,
             "revision": export.revision,
             "accepted_at": export.accepted_at,
+            "seal": self._ledger.acceptance(export.id).plain(),
             "settings_number": self._adopted.number,
             "settings_sha256": self._adopted.sha256,
             "staging": str(self._staging),

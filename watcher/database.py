@@ -6,6 +6,7 @@ or settings: the tables are those of `watcher.ledger_schema`.
 
 from __future__ import annotations
 
+import contextlib
 import sqlite3
 import threading
 from contextlib import contextmanager
@@ -14,6 +15,7 @@ from typing import TYPE_CHECKING, Any
 
 from watcher.errors import WatcherError
 from watcher.kill_points import at
+from watcher.ledger_entries import seal_all
 from watcher.ledger_schema import STEPS, TABLES, VERSION
 
 if TYPE_CHECKING:
@@ -22,6 +24,8 @@ if TYPE_CHECKING:
 
 #: How long to wait for a ledger that somebody else holds, at the start.
 OPEN_SECONDS = 0.5
+#: The first version whose entries are chained.
+SEALED_SINCE = 3
 #: Pragma, value to set, value that must be read back. The lock comes first: it decides how WAL works.
 PRAGMAS = (
     ("locking_mode", "EXCLUSIVE", "exclusive"),
@@ -121,7 +125,11 @@ class Database:
         """Bring an older ledger up to this version, all steps or none."""
         steps = "".join(STEPS[each] for each in range(version, VERSION))
         try:
-            self._connection.executescript(f"BEGIN IMMEDIATE;{steps}PRAGMA user_version = {VERSION};COMMIT;")
+            self._connection.executescript(f"BEGIN IMMEDIATE;{steps}")
+            if version < SEALED_SINCE:
+                seal_all(self._connection)
+            self._connection.execute(f"PRAGMA user_version = {VERSION}")
+            self._connection.execute("COMMIT")
         except sqlite3.DatabaseError:
             if self._connection.in_transaction:
                 self._connection.execute("ROLLBACK")
@@ -162,6 +170,11 @@ class Database:
         """Read all rows of a query, outside any transaction."""
         with self._lock:
             return self._connection.execute(query, values).fetchall()
+
+    def backup(self, path: Path) -> None:
+        """Write a whole copy of the ledger as it stands to another file, by the library's own backup."""
+        with self._lock, contextlib.closing(sqlite3.connect(path)) as copy:
+            self._connection.backup(copy)
 
     def close(self) -> None:
         """Close the file; what was committed stays."""

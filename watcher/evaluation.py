@@ -43,6 +43,7 @@ class Job:
     data: bytes
     revision: int
     accepted_at: str
+    seal: Mapping[str, object] | None = None
 
     @property
     def sha256(self) -> str:
@@ -140,6 +141,7 @@ def evaluate_job(
         layout=layout.layout,
         settings=settings.sha256,
         program=VERSION,
+        seal=job.seal,
     )
     return Evaluated(export, layout, outcomes, tuple(problems))
 
@@ -282,7 +284,8 @@ class Worker:
 
 
 def _job(plain: Mapping[str, Any]) -> Job:
-    return Job(plain["name"], Path(plain["copy"]).read_bytes(), plain["revision"], plain["accepted_at"])
+    data = Path(plain["copy"]).read_bytes()
+    return Job(plain["name"], data, plain["revision"], plain["accepted_at"], plain.get("seal"))
 
 
 def _answer(  # noqa: PLR0913 - the reply has these parts

@@ -15,10 +15,17 @@ from typing import TYPE_CHECKING, Self
 
 from watcher.clock import SystemClock, moment, stamp
 from watcher.database import Database, LedgerUnusable
-from watcher.ledger_entries import append_entry
+from watcher.ledger_entries import Seal, append_entry, broken_at
 from watcher.ledger_rows import AdoptedSettings, ExportRow, RefusedExport, SeriesRow
 from watcher.outgoing import Outgoing
-from watcher.queueing import WITHDRAWABLE, queue_files, queue_mail, withdraw_incomplete
+from watcher.queueing import (
+    WITHDRAWABLE,
+    enter_mails,
+    mail_facts,
+    queue_files,
+    queue_mail,
+    withdraw_incomplete,
+)
 
 if TYPE_CHECKING:
     import sqlite3
@@ -160,6 +167,21 @@ class Ledger:
         """Return an export as it stands."""
         return _export(self._database.rows(f"{_EXPORTS} WHERE e.id = ?", (export_id,))[0])
 
+    def acceptance(self, export_id: int) -> Seal:
+        """Return number and seal of the entry that records the acceptance of an export."""
+        query = "SELECT number, seal FROM entries WHERE export_id = ? AND kind = 'accept'"
+        return Seal(*self._database.rows(query, (export_id,))[0])
+
+    def broken_at(self) -> int | None:
+        """Return the number of the first entry that is not what it was when it was sealed; None where all are."""
+        return broken_at(
+            self._database.rows("SELECT number, kind, export_id, at, body, seal FROM entries ORDER BY number")
+        )
+
+    def backup(self, path: Path) -> None:
+        """Write a whole copy of the ledger as it stands to another file."""
+        self._database.backup(path)
+
     def series_of(self, export_id: int) -> list[SeriesRow]:
         """Return the index of an export's series."""
         query = "SELECT sample, analyte, channel, attempt, verdict, result, unit FROM series WHERE export_id = ?"
@@ -261,14 +283,11 @@ class Ledger:
             if fate.state == "done" and export.lent is None and span_seconds:
                 _reopen_borrowers(txn, export, fate.layout, span_seconds)
             withdrawn = withdraw_incomplete(txn, export.name)
-            queued = [mail.message_id for mail in fate.mails if queue_mail(txn, export.id, mail, now)]
-            return append_entry(
-                txn,
-                fate.state,
-                export.id,
-                now,
-                _facts(export, fate) | {"mails": queued, "withdrawn": withdrawn},
-            )
+            queued = [mail for mail in fate.mails if queue_mail(txn, export.id, mail, now)]
+            facts = _facts(export, fate) | mail_facts(queued) | {"withdrawn": withdrawn}
+            entry = append_entry(txn, fate.state, export.id, now, facts)
+            enter_mails(txn, queued, entry)
+            return entry
 
     def failed_attempt(
         self, export: ExportRow, settings_number: int, reason: str, last_mail: QueuedMail | None
@@ -307,10 +326,10 @@ class Ledger:
                     export.id,
                 ),
             )
-            if refused and last_mail is not None:
-                queue_mail(txn, export.id, last_mail, now)
-            facts = {"attempts": attempts, "reason": reason, "refused": refused}
-            append_entry(txn, "attempt failed", export.id, now, facts)
+            last = [last_mail] if refused and last_mail is not None else []
+            queued = [mail for mail in last if queue_mail(txn, export.id, mail, now)]
+            facts = {"attempts": attempts, "reason": reason, "refused": refused} | mail_facts(queued)
+            enter_mails(txn, queued, append_entry(txn, "attempt failed", export.id, now, facts))
         return self.export(export.id)
 
     # -- mails that belong to no export, and what was mailed ------------------------------------------------------
@@ -321,7 +340,8 @@ class Ledger:
         with self._database.transaction("report") as txn:
             queued = queue_mail(txn, None, mail, now)
             if queued:
-                append_entry(txn, "report", None, now, {"keys": list(mail.keys), "mail": mail.message_id})
+                facts = {"keys": list(mail.keys)} | mail_facts([mail])
+                enter_mails(txn, [mail], append_entry(txn, "report", None, now, facts))
             return queued
 
     def mailed(self, key: str) -> bool:

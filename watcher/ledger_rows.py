@@ -12,6 +12,8 @@ if TYPE_CHECKING:
     from collections.abc import Mapping
     from pathlib import Path
 
+    from watcher.ledger_entries import Seal
+
 
 @dataclass(frozen=True, slots=True)
 class AdoptedSettings:
@@ -162,6 +164,8 @@ class DueMail:
         When it should have gone out.
     attempts
         The most attempts made for any of the recipients.
+    seal
+        Number and seal of the entry that queued it.
     """
 
     id: int
@@ -173,6 +177,7 @@ class DueMail:
     recipients: tuple[str, ...]
     possible_repeat: bool
     attempts: int
+    seal: Seal | None = None
 
 
 @dataclass(frozen=True, slots=True)

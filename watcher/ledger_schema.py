@@ -1,13 +1,13 @@
-"""The tables of the ledger, version 2, and the steps from every earlier version.
+"""The tables of the ledger, version 3, and the steps from every earlier version.
 
 Times are texts, ISO 8601 in UTC with microseconds. Nothing is ever deleted from `entries`, `exports`, `mails` or
-`settings`; `alerts` loses a key only together with a mail that was withdrawn before anyone had it. `seal` is kept
-for a chain of hashes over the entries and stays empty for now.
+`settings`; `alerts` loses a key only together with a mail that was withdrawn before anyone had it. `seal` chains the
+entries by hash.
 """
 
 from __future__ import annotations
 
-VERSION = 2
+VERSION = 3
 
 #: Version to the statements that make the next one of it.
 STEPS = {
@@ -16,6 +16,31 @@ ALTER TABLE exports ADD COLUMN last_revision INTEGER;
 ALTER TABLE exports ADD COLUMN lent TEXT;
 ALTER TABLE exports ADD COLUMN wants INTEGER NOT NULL DEFAULT 0;
 UPDATE exports SET last_revision = revision, lent = '[]' WHERE state = 'done';
+""",
+    # The entries of earlier ledgers are chained as well, by `watcher.ledger_entries.seal_all`.
+    2: """
+ALTER TABLE exports ADD COLUMN family TEXT NOT NULL DEFAULT '';
+ALTER TABLE mails ADD COLUMN entry INTEGER REFERENCES entries (number);
+CREATE TABLE failures (
+    id INTEGER PRIMARY KEY,
+    export_id INTEGER NOT NULL REFERENCES exports (id),
+    name TEXT NOT NULL,
+    sample TEXT NOT NULL,
+    analyte TEXT NOT NULL,
+    channel TEXT NOT NULL,
+    attempt INTEGER NOT NULL,
+    verdict TEXT NOT NULL,
+    opened_at TEXT NOT NULL,
+    closed_at TEXT,
+    closed_by TEXT
+) STRICT;
+CREATE INDEX failures_open ON failures (sample, analyte, channel) WHERE closed_at IS NULL;
+CREATE INDEX failures_by_name ON failures (name);
+CREATE INDEX exports_by_content ON exports (sha256, id);
+CREATE TABLE requests (
+    id TEXT PRIMARY KEY,
+    done_at TEXT NOT NULL
+) STRICT;
 """,
 }
 
@@ -48,6 +73,7 @@ CREATE TABLE exports (
     last_revision INTEGER,
     lent TEXT,
     wants INTEGER NOT NULL DEFAULT 0,
+    family TEXT NOT NULL DEFAULT '',
     UNIQUE (name, sha256)
 ) STRICT;
 CREATE INDEX exports_by_state ON exports (state, settings_number, id);
@@ -88,7 +114,8 @@ CREATE TABLE mails (
     subject TEXT NOT NULL,
     body TEXT NOT NULL,
     created_at TEXT NOT NULL,
-    due_at TEXT NOT NULL
+    due_at TEXT NOT NULL,
+    entry INTEGER REFERENCES entries (number)
 ) STRICT;
 CREATE INDEX mails_by_export ON mails (export_id, kind);
 
@@ -123,4 +150,25 @@ CREATE TABLE entries (
     seal TEXT
 ) STRICT;
 CREATE INDEX entries_by_export ON entries (export_id);
+
+CREATE TABLE failures (
+    id INTEGER PRIMARY KEY,
+    export_id INTEGER NOT NULL REFERENCES exports (id),
+    name TEXT NOT NULL,
+    sample TEXT NOT NULL,
+    analyte TEXT NOT NULL,
+    channel TEXT NOT NULL,
+    attempt INTEGER NOT NULL,
+    verdict TEXT NOT NULL,
+    opened_at TEXT NOT NULL,
+    closed_at TEXT,
+    closed_by TEXT
+) STRICT;
+CREATE INDEX failures_open ON failures (sample, analyte, channel) WHERE closed_at IS NULL;
+CREATE INDEX failures_by_name ON failures (name);
+CREATE INDEX exports_by_content ON exports (sha256, id);
+CREATE TABLE requests (
+    id TEXT PRIMARY KEY,
+    done_at TEXT NOT NULL
+) STRICT;
 """

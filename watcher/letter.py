@@ -69,7 +69,7 @@ def compose(due: DueMail, sender: str, recipients: Sequence[str], now: datetime)
     message["Date"] = email.utils.format_datetime(now)
     message["Message-ID"] = due.message_id
     message["Auto-Submitted"] = "auto-generated"
-    message.set_content("".join(_remarks(due, now)) + _body(due.body))
+    message.set_content("".join(_remarks(due, now)) + _body(due.body) + _seal(due))
     return message.as_bytes()
 
 
@@ -80,6 +80,11 @@ def _remarks(due: DueMail, now: datetime) -> list[str]:
     if now - moment(due.first_due_at) > LATE_AFTER:
         remarks.append(f"late: this mail was due at {due.first_due_at} and could not be sent until now.\n")
     return [*remarks, "\n"] if remarks else []
+
+
+def _seal(due: DueMail) -> str:
+    """Say which entry of the ledger queued the mail: a mailbox is a witness that nobody at the bench can alter."""
+    return "" if due.seal is None else f"\nLedger entry {due.seal.number}, seal {due.seal.seal}\n"
 
 
 def _body(text: str) -> str:

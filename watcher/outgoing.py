@@ -15,7 +15,7 @@ from pathlib import Path
 from typing import TYPE_CHECKING
 
 from watcher.clock import moment, stamp
-from watcher.ledger_entries import append_entry
+from watcher.ledger_entries import Seal, append_entry
 from watcher.ledger_rows import DueFile, DueMail, UndeliveredFile, UndeliveredMail
 
 if TYPE_CHECKING:
@@ -114,8 +114,9 @@ class Outgoing:
     def due_mails(self, now: datetime) -> list[DueMail]:
         """Mails for which an attempt is due, oldest first; one with recipients of both sorts comes twice."""
         rows = self._database.rows(
-            "SELECT mail_id, message_id, subject, body, created_at, mails.due_at AS first_due_at, address, state, "
-            "recipients.attempts AS attempts FROM recipients JOIN mails ON mails.id = mail_id "
+            "SELECT mail_id, message_id, subject, mails.body, created_at, mails.due_at AS first_due_at, address, state, "
+            "recipients.attempts AS attempts, entry, seal FROM recipients JOIN mails ON mails.id = mail_id "
+            "LEFT JOIN entries ON entries.number = mails.entry "
             f"WHERE state IN ('waiting', 'unknown') AND {_DUE.format('recipients')} ORDER BY mail_id, address",
             _due_values(now),
         )
@@ -133,6 +134,7 @@ class Outgoing:
                 recipients=tuple(row["address"] for row in found),
                 possible_repeat=repeat,
                 attempts=max(row["attempts"] for row in found),
+                seal=None if found[0]["seal"] is None else Seal(found[0]["entry"], found[0]["seal"]),
             )
             for (mail_id, repeat), found in together.items()
         ]

@@ -6,6 +6,7 @@ to the queue afterwards is told by `watcher.outgoing`.
 
 from __future__ import annotations
 
+import hashlib
 from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
@@ -85,6 +86,21 @@ def queue_mail(txn: sqlite3.Connection, export_id: int | None, mail: QueuedMail,
         [(key, export_id, mail_id, stamp(now)) for key in dict.fromkeys(mail.keys) if key not in known],
     )
     return True
+
+
+def mail_facts(mails: Iterable[QueuedMail]) -> dict[str, object]:
+    """Return what an entry says of the mails that it queues: their identities, and hashes of what they say."""
+    listed = list(mails)
+    texts = [f"{mail.subject}\n{mail.body}".encode("utf-8", "surrogatepass") for mail in listed]
+    return {
+        "mails": [mail.message_id for mail in listed],
+        "mail_sha256": [hashlib.sha256(text).hexdigest() for text in texts],
+    }
+
+
+def enter_mails(txn: sqlite3.Connection, mails: Iterable[QueuedMail], entry: int) -> None:
+    """Note for each mail the entry that queued it, whose number and seal the mail will bear."""
+    txn.executemany("UPDATE mails SET entry = ? WHERE message_id = ?", [(entry, mail.message_id) for mail in mails])
 
 
 #: Mails about incomplete samples of an export name of which nobody has had an attempt under way or behind it.

@@ -20,7 +20,7 @@ from rules.checks import Check, Outcome
 from rules.outcomes import result_text
 
 if TYPE_CHECKING:
-    from collections.abc import Iterable, Iterator
+    from collections.abc import Iterable, Iterator, Mapping
 
     from rules.case import Case
     from rules.outcomes import Outcomes
@@ -41,6 +41,7 @@ class Export:
     layout: str
     settings: str
     program: str
+    seal: Mapping[str, object] | None = None
 
     def plain(self) -> dict[str, Any]:
         """Return it as it stands in the record."""
@@ -88,7 +89,7 @@ def record_parts(outcomes: Outcomes, export: Export, problems: tuple[str, ...]) 
     yield "others", lent(outcomes)
     yield "set_aside", ({"line": a.line, "reason": a.reason, "text": a.text} for a in case.readings.set_aside)
     yield "problems", problems
-    yield "seal", None
+    yield "seal", export.seal
 
 
 def _series(outcomes: Outcomes, i: int) -> dict[str, Any]:

@@ -9,6 +9,7 @@ import pytest
 
 from watcher.database import PRAGMAS, Database, LedgerUnusable
 from watcher.ledger import Ledger
+from watcher.ledger_entries import broken_at
 from watcher.ledger_schema import STEPS, VERSION
 
 
@@ -75,6 +76,8 @@ def test_an_older_ledger_becomes_one_of_this_version(tmp_path: Path, version: in
             "INSERT INTO exports (name, sha256, bytes, revision, state, accepted_at) VALUES "
             "('FL-1.csv', 'ab', 3, 2, 'done', '2026-03-02T08:00:00.000000Z')"
         )
+        old.execute("INSERT INTO entries (kind, at, body) VALUES ('adopt', '2026-03-02', '{\"number\":1}')")
+        old.execute("INSERT INTO entries (kind, export_id, at, body) VALUES ('accept', 1, '2026-03-02', '{}')")
         old.execute(f"PRAGMA user_version = {version}")
     old.close()
 
@@ -88,6 +91,9 @@ def test_an_older_ledger_becomes_one_of_this_version(tmp_path: Path, version: in
     assert columns(migrated) == columns(new)
     (row,) = migrated.rows("SELECT name, revision, last_revision, lent, wants FROM exports")
     assert tuple(row) == ("FL-1.csv", 2, 2, "[]", 0)
+    entries = migrated.rows("SELECT number, kind, export_id, at, body, seal FROM entries ORDER BY number")
+    assert [row["body"] for row in entries] == ['{"number":1}', "{}"]
+    assert broken_at(entries) is None
     migrated.close()
     again = Database(path)
     assert again.rows("PRAGMA user_version")[0][0] == VERSION

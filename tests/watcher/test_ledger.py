@@ -2,12 +2,14 @@
 
 from __future__ import annotations
 
+import hashlib
 import json
 from typing import TYPE_CHECKING, Any
 
 import pytest
 
 from watcher.ledger_rows import SeriesRow, StagedFile
+from watcher.letter import compose
 from watcher.queueing import TargetTaken
 
 if TYPE_CHECKING:
@@ -28,8 +30,7 @@ def _pending(ledger: Ledger, settings: int = 1, after: float = 7200.0) -> list[t
 
 
 def _entries(ledger: Ledger) -> list[tuple[str, dict[str, Any]]]:
-    rows = ledger._database.rows("SELECT kind, body, seal FROM entries ORDER BY number")
-    assert all(row["seal"] is None for row in rows)
+    rows = ledger._database.rows("SELECT kind, body FROM entries ORDER BY number")
     return [(row["kind"], json.loads(row["body"])) for row in rows]
 
 
@@ -189,3 +190,54 @@ def test_counts_and_refusals_show_how_things_stand(ledger: Ledger, done: Any) ->
     assert ledger.counts() == {"done": 1, "refused": 2, "unclaimed": 1}
     assert [(each.name, each.problem) for each in ledger.refused()] == [("C.csv", None), ("A.csv", "line 3")]
     assert [each.name for each in ledger.unclaimed()] == ["C.csv"]
+
+
+def test_each_entry_is_chained_to_the_one_before(ledger: Ledger) -> None:
+    """The seal is the SHA-256 of the seal before and the entry's own facts, so anyone can compute it again."""
+    before = "0" * 64
+    _accept(ledger)
+    rows = ledger._database.rows("SELECT number, kind, export_id, at, body, seal FROM entries ORDER BY number")
+    for row in rows:
+        text = json.dumps([before, *tuple(row)[:5]], ensure_ascii=False, separators=(",", ":"))
+        assert row["seal"] == hashlib.sha256(text.encode()).hexdigest()
+        before = row["seal"]
+    assert len(rows) == 2
+    assert ledger.broken_at() is None
+
+
+@pytest.mark.parametrize(
+    ("alteration", "found"),
+    [
+        ("UPDATE entries SET body = replace(body, '60', '61') WHERE number = 3", 3),
+        ("UPDATE entries SET at = '2026-11-30T07:30:00.000000Z' WHERE number = 2", 2),
+        ("DELETE FROM entries WHERE number = 3", 3),
+        ("UPDATE entries SET export_id = 1 WHERE number = 4", 4),
+        ("UPDATE entries SET seal = upper(seal) WHERE number = 1", 1),
+    ],
+)
+def test_an_altered_entry_is_found(ledger: Ledger, alteration: str, found: int) -> None:
+    """Whatever is changed or removed in the running record, the first place that does not fit is named."""
+    for content in (1, 2, 3):
+        _accept(ledger, content=content)
+
+    with ledger._database.transaction("accept") as txn:
+        txn.execute(alteration)
+
+    assert ledger.broken_at() == found
+
+
+def test_a_mail_bears_number_and_seal_of_the_entry_that_queued_it(ledger: Ledger, done: Any, make_mail: Any) -> None:
+    """The mailbox can bear witness: what queued a mail stands in it, and the entry holds the hash of its text."""
+    mail = make_mail("fail", "k")
+    number = ledger.finish(_accept(ledger), done(mails=(mail,)))
+
+    (due,) = ledger.outgoing.due_mails(ledger._clock.now())
+
+    (row,) = ledger._database.rows("SELECT body, seal FROM entries WHERE number = ?", (number,))
+    assert due.seal is not None
+    assert (due.seal.number, due.seal.seal) == (number, row["seal"])
+    text = f"{mail.subject}\n{mail.body}"
+    assert json.loads(row["body"])["mail_sha256"] == [hashlib.sha256(text.encode()).hexdigest()]
+    assert f"Ledger entry {number}, seal {row['seal']}".encode() in b"".join(
+        compose(due, "bench@example", ["lead@example"], ledger._clock.now()).split(b"=\r\n")
+    )
