@@ -34,6 +34,10 @@ class Addressing:
         self._settings = settings
         self._clock = clock
 
+    def renew(self, settings: MailSettings | None) -> None:
+        """Address by these settings from now on."""
+        self._settings = settings
+
     def address(self, wanted: WantedMail, *, at_once: bool = False) -> QueuedMail | None:
         """Address a mail; None where nobody wants it.
 
@@ -44,7 +48,7 @@ class Addressing:
         at_once
             Whether a mail that should wait is due now.
         """
-        if self._settings is None or wanted.kind not in self._settings.about:
+        if self._settings is None or wanted.kind not in (*self._settings.about, "alive"):
             return None
         wait = timedelta(seconds=0 if at_once else wanted.after_seconds)
         return QueuedMail(

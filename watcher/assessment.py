@@ -15,13 +15,14 @@ import structlog
 
 from watcher import notices
 from watcher.clock import moment
+from watcher.failures import closed_by
 from watcher.ledger_rows import Fate
 from watcher.queueing import TargetTaken
 from watcher.replies import Reply, ReplyBroken, read_reply
 from watcher.worker import WorkerFailed
 
 if TYPE_CHECKING:
-    from collections.abc import Mapping
+    from collections.abc import Iterator, Mapping
     from pathlib import Path
 
     from watcher.addressing import Addressing
@@ -84,6 +85,11 @@ class Assessment:
         self._troubles = troubles
         self._clock = clock
 
+    def renew(self, settings: ServiceSettings, adopted: AdoptedSettings) -> None:
+        """Evaluate under these settings from now on."""
+        self._adopted = adopted
+        self._complete_after = timedelta(seconds=settings.complete_after_seconds)
+
     def prepare(self) -> None:
         """Make the folder of result files and remove what an evaluation left that was cut short."""
         self._staging.mkdir(parents=True, exist_ok=True)
@@ -107,6 +113,8 @@ class Assessment:
         WorkerUnfit, WorkerStopped
             Nothing was recorded; the export stays as it is.
         """
+        if export.state == "accepted" and (original := self._ledger.duplicate_of(export)) is not None:
+            return Assessed(self._ledger.recognise(export, original))
         copy = self._copies.path_of(export.sha256)
         if not copy.is_file():
             return self._refuse(export, f"its copy {copy} is missing. Put it back, or export it again changed")
@@ -144,6 +152,7 @@ class Assessment:
             "alerted": sorted(self._ledger.alerted_keys(export.name)),
             "others": [self._other(each) for each in self._ledger.neighbours(export, self._span_seconds)],
             "lent": export.lent,
+            "previous": self._previous(export),
         }
 
     def _other(self, export: ExportRow) -> dict[str, Any]:
@@ -154,11 +163,19 @@ class Assessment:
             "accepted_at": export.accepted_at,
         }
 
+    def _previous(self, export: ExportRow) -> dict[str, Any] | None:
+        found = self._ledger.previous(export)
+        if found is None:
+            return None
+        previous, family = found
+        return {"copy": str(self._copies.path_of(previous.sha256)), "revision": previous.revision, "family": family}
+
     def _finish(self, export: ExportRow, reply: Reply, *, at_once: bool) -> Assessed:
         if reply.fate == "unchanged":
             counts = self._ledger.unchanged(export, wants=reply.wants)
             return Assessed(self._ledger.export(export.id), counts)
-        mails = (self._addressing.address(wanted, at_once=at_once) for wanted in reply.mails)
+        wanted_mails = [*reply.mails, *(self._clearing(export, reply) if reply.fate == "done" else ())]
+        mails = (self._addressing.address(wanted, at_once=at_once) for wanted in wanted_mails)
         fate = Fate(
             state=reply.fate,
             settings_number=self._adopted.number,
@@ -170,6 +187,7 @@ class Assessment:
             problem=reply.problem,
             lent=reply.lent,
             wants=reply.wants,
+            family=reply.family,
         )
         try:
             self._ledger.finish(export, fate, self._span_seconds)
@@ -177,6 +195,14 @@ class Assessment:
             return self._refuse(export, str(error))
         _log.info("export evaluated", export=export.name, fate=fate.state, counts=fate.counts, problem=fate.problem)
         return Assessed(self._ledger.export(export.id), reply.counts)
+
+    def _clearing(self, export: ExportRow, reply: Reply) -> Iterator[WantedMail]:
+        """Say what is settled now: a refusal, or failures that were mailed."""
+        if export.state in ("refused", "unclaimed"):
+            yield notices.evaluated_after_all(export)
+        mailed = [each for each in self._ledger.open_failures() if each.verdict == "fail"]
+        if closed := closed_by(mailed, export, reply.series):
+            yield notices.cleared(export, closed)
 
     def _refuse(self, export: ExportRow, reason: str) -> Assessed:
         return self._finish(export, _refused(reason, notices.refused(export, reason)), at_once=True)

@@ -164,6 +164,88 @@ def demo(folder: Path) -> None:
     sys.exit(demonstration.run(folder))
 
 
+def _signed(command: Callable[..., None]) -> Callable[..., None]:
+    return click.option("--by", required=True, help="Your name, for the record.")(command)
+
+
+@main.command()
+@_signed
+@click.option("--why", required=True, help="The reason, for the record.")
+@_with_config
+def adopt(config: Path, by: str, why: str) -> None:
+    """Put the settings as they are in the files in force.
+
+    Needed where the settings say adoption: signed. Exit 0: done or handed to the
+    running service. 2: not done.
+    """
+    from watcher import records_commands  # noqa: PLC0415
+
+    sys.exit(records_commands.ask(config, "adopt", "", by, why))
+
+
+@main.command()
+@click.argument("export")
+@_signed
+@click.option("--why", required=True, help="The reason, for the record.")
+@_with_config
+def again(export: str, config: Path, by: str, why: str) -> None:
+    """Evaluate EXPORT anew under the settings in force.
+
+    Exit 0: done or handed to the running service. 2: not done.
+    """
+    from watcher import records_commands  # noqa: PLC0415
+
+    sys.exit(records_commands.ask(config, "again", export, by, why))
+
+
+@main.command()
+@click.argument("result")
+@click.argument("words")
+@_signed
+@_with_config
+def note(result: str, words: str, config: Path, by: str) -> None:
+    """Record what was done about RESULT and close its open failures.
+
+    RESULT is the export's name. Exit 0: done or handed to the running service.
+    2: not done.
+    """
+    from watcher import records_commands  # noqa: PLC0415
+
+    sys.exit(records_commands.ask(config, "note", result, by, words))
+
+
+@main.command()
+@click.argument("result", required=False)
+@click.option("--all", "everything", is_flag=True, help="Check the whole ledger, all copies and result files.")
+@_with_config
+def audit(result: str | None, config: Path, *, everything: bool) -> None:
+    """Tell the whole story of RESULT, or check --all for alterations.
+
+    Needs the service stopped. Exit 0: as recorded. 1: altered or missing.
+    """
+    from watcher import records_commands  # noqa: PLC0415
+
+    if (result is None) != everything:
+        raise click.UsageError("State a result or --all, one of them.")
+    sys.exit(records_commands.audit(config, result))
+
+
+@main.command()
+@click.argument("result", required=False)
+@click.option("--last", type=click.IntRange(min=1), help="The results that were done last.")
+@_with_config
+def replay(result: str | None, last: int | None, config: Path) -> None:
+    """Compute RESULT again from its copy and the settings of then.
+
+    Needs the service stopped. Exit 0: the same to 1e-9. 1: not.
+    """
+    from watcher import records_commands  # noqa: PLC0415
+
+    if (result is None) == (last is None):
+        raise click.UsageError("State a result or --last N, one of them.")
+    sys.exit(records_commands.replay(config, result, last or 1))
+
+
 def _give_up(error: WatcherError) -> NoReturn:
     click.echo(str(error), err=True)
     sys.exit(NOT_DONE)

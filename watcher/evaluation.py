@@ -9,7 +9,7 @@ from __future__ import annotations
 import calendar
 import hashlib
 import json
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from functools import partial
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
@@ -20,7 +20,9 @@ from rules.evaluate import evaluate
 from rules.spanning import Other, lacks
 from watcher import VERSION, mail, results
 from watcher.clock import moment
+from watcher.difference import difference
 from watcher.disk import Disk
+from watcher.growth import compare
 from watcher.names import target
 from watcher.record import Export, lent, number
 from watcher.scalars import duration
@@ -228,6 +230,11 @@ class Worker:
         match request["do"]:
             case "read settings":
                 return self._read_settings(Path(request["config"]))
+            case "look at settings":
+                return self._look_at_settings(Path(request["config"]), request["adopted"])
+            case "plain settings":
+                snapshot = Snapshot.of_plain(request["snapshot"])
+                return compile_snapshot(replace(snapshot, folder=request["folder"])).service()
             case "adopt":
                 self._settings = compile_snapshot(Snapshot.of_plain(request["snapshot"]))
                 return {"ok": True}
@@ -243,6 +250,23 @@ class Worker:
         except SettingsInvalid as invalid:
             return {"faults": [str(fault) for fault in invalid.faults], "body": None, "service": None}
         return {"faults": [], "body": settings.snapshot.body, "service": settings.service()}
+
+    def _look_at_settings(self, config: Path, adopted: dict[str, Any] | None) -> dict[str, Any]:
+        """Read and validate files that changed; what is worked with stays as it is until it is adopted."""
+        try:
+            settings = compile_snapshot(read_files(config))
+        except SettingsInvalid as invalid:
+            return {"faults": [str(fault) for fault in invalid.faults], "body": None, "service": None}
+        snapshot = settings.snapshot
+        body = json.loads(snapshot.body)
+        paths = [each["path"] for each in (body["config"], *body["layouts"], *body.get("tables", ()))]
+        return {
+            "faults": [],
+            "body": snapshot.body,
+            "service": settings.service(),
+            "files": [str(Path(snapshot.folder, path)) for path in paths],
+            "difference": [] if adopted is None else difference(adopted, body),
+        }
 
     def _evaluate(self, request: dict[str, Any]) -> dict[str, Any]:
         if self._settings is None:
@@ -267,9 +291,12 @@ class Worker:
         wants = lacks(outcomes.case)
         if request["lent"] == loans:
             return answer("unchanged", lent=loans, wants=wants)
-        letters = mail.mails(
-            outcomes, evaluated.export, evaluated.problems, self._settings.file.complete_after, request["alerted"]
-        )
+        evaluated, family = _in_view_of(request.get("previous"), evaluated, job)
+        mark = f"|{family}" if family else ""
+        known = [key.removesuffix(mark) for key in request["alerted"] if key.endswith(mark)]
+        letters = mail.mails(outcomes, evaluated.export, evaluated.problems, self._settings.file.complete_after, known)
+        # Contents that have nothing to do with each other must not silence each other's alerts.
+        letters = [replace(letter, keys=tuple(f"{key}{mark}" for key in letter.keys)) for letter in letters]
         return answer(
             "done",
             layout=evaluated.layout.layout,
@@ -280,12 +307,29 @@ class Worker:
             problems=list(evaluated.problems),
             lent=loans,
             wants=wants,
+            family=family,
         )
 
 
 def _job(plain: Mapping[str, Any]) -> Job:
     data = Path(plain["copy"]).read_bytes()
     return Job(plain["name"], data, plain["revision"], plain["accepted_at"], plain.get("seal"))
+
+
+def _in_view_of(previous: Mapping[str, Any] | None, evaluated: Evaluated, job: Job) -> tuple[Evaluated, str]:
+    """Compare with the content before; returns what is to be reported, and the family of the content."""
+    if previous is None:
+        return evaluated, ""
+    try:
+        old = Path(previous["copy"]).read_bytes()
+    except FileNotFoundError:  # nothing to compare with; that a copy is gone is found by `audit`
+        return evaluated, previous["family"]
+    growth = compare(old, job.data, evaluated.layout, job.name)
+    if growth.unrelated:
+        return evaluated, job.sha256[:16]
+    problem = growth.problem(job.name, previous["revision"])
+    problems = evaluated.problems if problem is None else (*evaluated.problems, problem)
+    return replace(evaluated, problems=problems), previous["family"]
 
 
 def _answer(  # noqa: PLR0913 - the reply has these parts
@@ -301,6 +345,7 @@ def _answer(  # noqa: PLR0913 - the reply has these parts
     problems: list[str] | None = None,
     lent: str = "[]",
     wants: bool = False,
+    family: str = "",
 ) -> dict[str, Any]:
     return {
         "fate": fate,
@@ -314,6 +359,7 @@ def _answer(  # noqa: PLR0913 - the reply has these parts
         "problems": problems or [],
         "lent": lent,
         "wants": wants,
+        "family": family,
     }
 
 

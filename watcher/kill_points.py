@@ -33,6 +33,8 @@ TRANSACTIONS = (
     "undelivered",
     "sending",
     "outcome",
+    "recognise",
+    "request",
 )
 KILL_POINTS = (
     *(f"{step}-{moment}" for step in FILE_STEPS for moment in ("begins", "written", "replaced", "durable")),

@@ -13,6 +13,7 @@ import json
 from datetime import timedelta
 from typing import TYPE_CHECKING, Self
 
+from watcher import failures
 from watcher.clock import SystemClock, moment, stamp
 from watcher.database import Database, LedgerUnusable
 from watcher.ledger_entries import Seal, append_entry, broken_at
@@ -26,6 +27,7 @@ from watcher.queueing import (
     queue_mail,
     withdraw_incomplete,
 )
+from watcher.requests import RequestRefused
 
 if TYPE_CHECKING:
     import sqlite3
@@ -33,6 +35,7 @@ if TYPE_CHECKING:
 
     from watcher.clock import Clock
     from watcher.ledger_rows import Fate, QueuedMail
+    from watcher.requests import Request
 
 #: The ledger's file in the records folder.
 LEDGER_NAME = "ledger.sqlite"
@@ -125,7 +128,13 @@ class Ledger:
                 "INSERT INTO settings VALUES (?, ?, ?, ?, ?, ?, ?)",
                 (number, sha256, body, stamp(now), account, reason, difference),
             )
-            facts = {"number": number, "sha256": sha256, "account": account, "reason": reason}
+            facts = {
+                "number": number,
+                "sha256": sha256,
+                "account": account,
+                "reason": reason,
+                "difference": difference,
+            }
             append_entry(txn, "adopt", None, now, facts)
             return number
 
@@ -263,13 +272,15 @@ class Ledger:
         with self._database.transaction("finish") as txn:
             txn.execute(
                 "UPDATE exports SET state = ?, revision = ?, last_revision = coalesce(?, last_revision), lent = ?, "
-                "wants = ?, settings_number = ?, layout = ?, finished_at = ?, problem = ?, counts = ? WHERE id = ?",
+                "wants = ?, family = ?, settings_number = ?, layout = ?, finished_at = ?, problem = ?, counts = ? "
+                "WHERE id = ?",
                 (
                     fate.state,
                     export.revision if fate.state == "done" else None,
                     export.revision if fate.state == "done" else None,
                     fate.lent if fate.state == "done" else export.lent,
                     fate.wants,
+                    fate.family,
                     fate.settings_number,
                     fate.layout,
                     stamp(now),
@@ -279,12 +290,14 @@ class Ledger:
                 ),
             )
             _index_series(txn, export.id, fate)
+            closed = failures.record(txn, export, fate.series, now) if fate.state == "done" else []
             queue_files(txn, export.id, fate.files, now)
             if fate.state == "done" and export.lent is None and span_seconds:
                 _reopen_borrowers(txn, export, fate.layout, span_seconds)
             withdrawn = withdraw_incomplete(txn, export.name)
             queued = [mail for mail in fate.mails if queue_mail(txn, export.id, mail, now)]
             facts = _facts(export, fate) | mail_facts(queued) | {"withdrawn": withdrawn}
+            facts["closed"] = [f"{each.name}: {each.title}, attempt {each.attempt}" for each in closed]
             entry = append_entry(txn, fate.state, export.id, now, facts)
             enter_mails(txn, queued, entry)
             return entry
@@ -331,6 +344,90 @@ class Ledger:
             facts = {"attempts": attempts, "reason": reason, "refused": refused} | mail_facts(queued)
             enter_mails(txn, queued, append_entry(txn, "attempt failed", export.id, now, facts))
         return self.export(export.id)
+
+    def duplicate_of(self, export: ExportRow) -> ExportRow | None:
+        """Return the export with the same content under another name that is done already, or None."""
+        rows = self._database.rows(
+            f"{_EXPORTS} WHERE e.sha256 = ? AND e.name <> ? AND e.id < ? AND e.state = 'done' ORDER BY e.id LIMIT 1",
+            (export.sha256, export.name, export.id),
+        )
+        return _export(rows[0]) if rows else None
+
+    def recognise(self, export: ExportRow, original: ExportRow) -> ExportRow:
+        """Record that an export has the content of another one: no results, no mails, nothing lost."""
+        now = self._clock.now()
+        sentence = f"the same content as {original.name}, taken in at {original.accepted_at}; its results hold"
+        with self._database.transaction("recognise") as txn:
+            txn.execute(
+                "UPDATE exports SET state = 'superseded', finished_at = ?, problem = ? WHERE id = ?",
+                (stamp(now), sentence, export.id),
+            )
+            append_entry(txn, "duplicate", export.id, now, {"of": original.name, "sha256": export.sha256})
+        return self.export(export.id)
+
+    def previous(self, export: ExportRow) -> tuple[ExportRow, str] | None:
+        """Return the newest content of the same name that is done and older, with its family; or None."""
+        rows = self._database.rows(
+            f"{_EXPORTS} WHERE e.name = ? AND e.id < ? AND e.state = 'done' ORDER BY e.id DESC LIMIT 1",
+            (export.name, export.id),
+        )
+        if not rows:
+            return None
+        found = _export(rows[0])
+        (family,) = self._database.rows("SELECT family FROM exports WHERE id = ?", (found.id,))[0]
+        return found, family
+
+    def open_failures(self) -> list[failures.Failure]:
+        """Return the failures that are open, oldest first."""
+        return failures.open_failures(self._database.rows(failures.OPEN))
+
+    def last_accepted_at(self) -> str | None:
+        """When an export was taken in last."""
+        rows = self._database.rows("SELECT accepted_at FROM exports ORDER BY id DESC LIMIT 1")
+        return str(rows[0][0]) if rows else None
+
+    def accepted_since(self, moment: str) -> dict[str, int]:
+        """State to number of exports that were taken in since a moment."""
+        query = "SELECT state, count(*) FROM exports WHERE accepted_at >= ? GROUP BY state"
+        return dict(map(tuple, self._database.rows(query, (moment,))))
+
+    def do(self, request: Request) -> bool:
+        """Do a person's request about an export, once; returns False where it was done before.
+
+        Raises
+        ------
+        RequestRefused
+            There is no such export, or it is not finished.
+        """
+        now = self._clock.now()
+        with self._database.transaction("request") as txn:
+            if not txn.execute(
+                "INSERT INTO requests VALUES (?, ?) ON CONFLICT DO NOTHING", (request.id, stamp(now))
+            ).rowcount:
+                return False
+            export = txn.execute(
+                "SELECT id, state FROM exports WHERE name = ? ORDER BY id DESC LIMIT 1", (request.export,)
+            ).fetchone()
+            if export is None:
+                raise RequestRefused(
+                    f"Expected the name of an export, got '{request.export}', which never came in. Nothing was "
+                    "recorded. Names are paths under the exports folder; `status` and result files show them."
+                )
+            facts: dict[str, object] = {"request": request.id, "by": request.by, "why": request.why}
+            if request.kind == "note":
+                facts["closed"] = failures.close_by_note(txn, request.export, request.by, now)
+            elif export["state"] in ("accepted", "superseded"):
+                raise RequestRefused(
+                    f"Export {request.export} is {export['state']}, not finished. Nothing was recorded. "
+                    "Wait for its results, or name the export whose content it repeats."
+                )
+            else:
+                txn.execute(
+                    "UPDATE exports SET state = 'accepted', attempts = 0, revision = NULL WHERE id = ?",
+                    (export["id"],),
+                )
+            append_entry(txn, request.kind, export["id"], now, facts)
+            return True
 
     # -- mails that belong to no export, and what was mailed ------------------------------------------------------
 

@@ -126,6 +126,8 @@ class Fate:
         Verdict to number of series.
     lent, wants
         What other exports lend, as JSON text; whether something is missing that another one may lend.
+    family
+        Empty, or what tells contents apart that came under one name and have nothing to do with each other.
     """
 
     state: str
@@ -138,6 +140,7 @@ class Fate:
     problem: str | None = None
     lent: str = "[]"
     wants: bool = False
+    family: str = ""
 
 
 @dataclass(frozen=True, slots=True)

@@ -12,6 +12,7 @@ from watcher.replies import WantedMail
 if TYPE_CHECKING:
     from collections.abc import Sequence
 
+    from watcher.failures import Failure
     from watcher.folder import Trouble
     from watcher.ledger_rows import ExportRow
 
@@ -59,6 +60,47 @@ def unclaimed(exports: Sequence[ExportRow], keys: tuple[str, ...]) -> WantedMail
         "Write a layout for them, or keep such files out of the exports folder.\n\n" + _listed(lines),
         keys,
     )
+
+
+def evaluated_after_all(export: ExportRow) -> WantedMail:
+    """Tell that an export which was refused has its results now."""
+    return WantedMail(
+        "cleared",
+        f"CLEARED PROBLEM {export.name}: evaluated now",
+        f"{export.name} was refused before ({export.problem or 'no layout claimed it'}) and is evaluated now that the "
+        "settings were changed. Its results are in the results folder; nothing more is to be done about the refusal.\n",
+        (f"evaluated:{export.name}:{export.sha256}",),
+        0.0,
+    )
+
+
+def cleared(export: ExportRow, closed: Sequence[Failure]) -> WantedMail:
+    """Tell which open failures an export settles."""
+    more = f" and {len(closed) - 1} more" if len(closed) > 1 else ""
+    lines = [f"{each.title}: failed in {each.name}, attempt {each.attempt}, since {each.opened_at}" for each in closed]
+    return WantedMail(
+        "cleared",
+        f"CLEARED {closed[0].title}{more}",
+        f"{export.name}, revision {export.revision}, settles what was mailed before:\n{_listed(lines)}"
+        "What was held back for these alone may go on.\n",
+        tuple(f"cleared:{each.id}" for each in closed),
+        0.0,
+    )
+
+
+def alive(day: str, counts: dict[str, int], failures: Sequence[Failure], troubles: Sequence[str]) -> WantedMail:
+    """Tell once a day that the service runs, what came in, and what is open."""
+    came = ", ".join(f"{count} {state}" for state, count in sorted(counts.items())) or "nothing"
+    lines = [f"{each.title}: {each.verdict} in {each.name}, since {each.opened_at}" for each in failures]
+    parts = [f"The service runs. In the last 24 hours came in: {came}.\n"]
+    parts.append(f"Open failures: {len(failures)}\n{_listed(lines)}" if failures else "No failure is open.\n")
+    if failures:
+        parts.append('Close one with: spikewarden note EXPORT --by NAME "what was done"\n')
+    if troubles:
+        parts.append(f"What is wrong now:\n{_listed(troubles)}")
+    parts.append("If this mail does not come on a day when it should, see whether the computer is switched on.\n")
+    open_ones = f"{len(failures)} open" if failures else "nothing open"
+    return WantedMail("alive", f"ALIVE {day}: {came}; {open_ones}", "\n".join(parts), (f"alive:{day}",), 0.0)
 
 
 def refused(export: ExportRow, reason: str) -> WantedMail:

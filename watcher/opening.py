@@ -6,23 +6,27 @@ The same for `watch` and `once`. Stays light: what reads YAML and numbers lives 
 from __future__ import annotations
 
 import getpass
+import json
 import logging
 from contextlib import contextmanager
 from dataclasses import dataclass
+from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from watcher import VERSION
+from watcher.adoption import Adoption
+from watcher.clock import SystemClock
 from watcher.errors import WatcherError
 from watcher.instance import Instance
 from watcher.ledger import Ledger
 from watcher.log import set_up_log
+from watcher.places import findings, refuse_network
 from watcher.service import Service
 from watcher.service_settings import ServiceSettings
 from watcher.worker import Worker
 
 if TYPE_CHECKING:
     from collections.abc import Iterator
-    from pathlib import Path
 
 
 @dataclass(eq=False)
@@ -60,11 +64,18 @@ def open_laboratory(config: Path, reason: str) -> Iterator[Laboratory]:
     try:
         answer = _read_settings(worker, config)
         settings = ServiceSettings.from_plain(answer["service"])
+        refuse_network(settings.records)
         with Instance(settings.records), Ledger(settings.records) as ledger:
             handler = set_up_log(settings.records)
             try:
-                ledger.adopt_settings(answer["body"], account(), reason)
-                yield Laboratory(settings, ledger, Service(settings, ledger, worker, version=VERSION))
+                settings = _in_force(worker, ledger, config, answer, settings, reason)
+                files = tuple(Path(each) for each in answer["files"])
+                adoption = Adoption(
+                    config.absolute(), files, worker=worker, ledger=ledger, clock=SystemClock(), account=account()
+                )
+                service = Service(settings, ledger, worker, version=VERSION, adoption=adoption)
+                service.note(findings(settings, ledger))
+                yield Laboratory(settings, ledger, service)
             finally:
                 logging.getLogger().removeHandler(handler)
                 handler.close()
@@ -73,7 +84,7 @@ def open_laboratory(config: Path, reason: str) -> Iterator[Laboratory]:
 
 
 def _read_settings(worker: Worker, config: Path) -> dict[str, Any]:
-    answer = worker.ask({"do": "read settings", "config": str(config.absolute())})
+    answer = worker.ask({"do": "look at settings", "config": str(config.absolute()), "adopted": None})
     if answer.get("fate") == "bug":
         raise SettingsRefused(
             (f"{config}: {answer['error']}. This is a defect of the program.\n{answer['traceback']}",)
@@ -81,6 +92,24 @@ def _read_settings(worker: Worker, config: Path) -> dict[str, Any]:
     if answer["faults"]:
         raise SettingsRefused(tuple(answer["faults"]))
     return answer
+
+
+def _in_force(
+    worker: Worker, ledger: Ledger, config: Path, answer: dict[str, Any], settings: ServiceSettings, reason: str
+) -> ServiceSettings:
+    """Adopt what the files say, unless the settings in force want a signature for it; return what is in force."""
+    current = ledger.current_settings()
+    if current is None or current.body == answer["body"]:
+        ledger.adopt_settings(answer["body"], account(), reason)
+        return settings
+    before = json.loads(current.body)
+    old = worker.ask({"do": "plain settings", "snapshot": before, "folder": str(config.absolute().parent)})
+    if "laboratory" in old and old["adoption"] == "signed":
+        return ServiceSettings.from_plain(old)
+    again = worker.ask({"do": "look at settings", "config": str(config.absolute()), "adopted": before})
+    difference = again.get("difference") or ["not known: the files were changed at this moment"]
+    ledger.adopt_settings(answer["body"], account(), reason, "\n".join(difference))
+    return settings
 
 
 def account() -> str:

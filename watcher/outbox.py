@@ -7,7 +7,6 @@ next is due or somebody rings. `once` does a single round of the same without th
 from __future__ import annotations
 
 import contextlib
-import threading
 from dataclasses import replace
 from typing import TYPE_CHECKING, Protocol
 
@@ -20,7 +19,7 @@ from watcher.disk import sweep
 from watcher.errors import WatcherError
 from watcher.kill_points import at
 from watcher.letter import compose
-from watcher.wake import Wake
+from watcher.rounds import Rounds
 
 if TYPE_CHECKING:
     from collections.abc import Callable
@@ -38,8 +37,6 @@ FILE_BACKOFF = Backoff(5.0, 300.0)
 MAIL_BACKOFF = Backoff(10.0, 900.0)
 #: The longest sleep, whatever the ledger says: a clock that was set back must not stop deliveries.
 LONGEST_SLEEP = 60.0
-#: After a round that failed as a whole.
-FAULT_PAUSE = 10.0
 
 _log = structlog.get_logger("spikewarden.outbox")
 
@@ -84,6 +81,12 @@ class Files:
         self._clock = clock
         self._backoff = backoff
         self._closed = False
+
+    def renew(self, results: Path) -> None:
+        """Deliver to this results folder from now on."""
+        if results != self._results:
+            self._results = results
+            self.prepare()
 
     def prepare(self) -> None:
         """Make the results folder before the first delivery ever; remove what a killed run left in it."""
@@ -146,6 +149,10 @@ class Mails:
         self._backoff = backoff
         self._closed = False
 
+    def renew(self, post: Post | None) -> None:
+        """Send by this way from now on; an attempt under way is not broken off."""
+        self._post = post
+
     def deliver_due(self) -> int:
         """Try every due mail once."""
         if self._post is None:
@@ -190,20 +197,8 @@ class Mails:
         return replace(outcome, due_at=again) if outcome.state in ("waiting", "unknown") else outcome
 
 
-class OutboxThread:
-    """Runs a deliverer until told to stop.
-
-    Parameters
-    ----------
-    name
-        For the log.
-    deliverer
-        What to run.
-    survive
-        Runs a round and deals with whatever stops it (a full disk under the ledger, a defect).
-    clock
-        For `last_round`.
-    """
+class OutboxThread(Rounds):
+    """Runs a deliverer until told to stop; see `Rounds`."""
 
     def __init__(
         self,
@@ -212,42 +207,11 @@ class OutboxThread:
         survive: Callable[[str, Callable[[], float]], float | None],
         clock: Clock,
     ) -> None:
-        self._deliverer = deliverer
-        self._name = name
-        self._survive = survive
-        self._clock = clock
-        self._wake = Wake()
-        self._stopping = False
-        self._thread = threading.Thread(target=self._run, name=name, daemon=True)
-        self.last_round_at: str | None = None
+        def turn() -> float:
+            deliverer.deliver_due()
+            return deliverer.seconds_to_next()
 
-    def start(self) -> None:
-        """Begin."""
-        self._thread.start()
-
-    def ring(self) -> None:
-        """Something was queued."""
-        self._wake.ring()
-
-    def stop(self, seconds: float) -> bool:
-        """Break off and wait for the end at most so long; returns whether it ended."""
-        self._stopping = True
-        self._deliverer.close()
-        self._wake.ring()
-        if self._thread.is_alive():
-            self._thread.join(seconds)
-        return not self._thread.is_alive()
-
-    def _run(self) -> None:
-        while not self._stopping:
-            seconds = self._survive(self._name, self._round)
-            if not self._stopping:
-                self._wake.wait(FAULT_PAUSE if seconds is None else seconds)
-
-    def _round(self) -> float:
-        self._deliverer.deliver_due()
-        self.last_round_at = stamp(self._clock.now())
-        return self._deliverer.seconds_to_next()
+        super().__init__(name, turn, deliverer.close, survive, clock)
 
 
 def _seconds_to_next(outgoing: Outgoing, what: str, clock: Clock) -> float:

@@ -114,8 +114,8 @@ class Outgoing:
     def due_mails(self, now: datetime) -> list[DueMail]:
         """Mails for which an attempt is due, oldest first; one with recipients of both sorts comes twice."""
         rows = self._database.rows(
-            "SELECT mail_id, message_id, subject, mails.body, created_at, mails.due_at AS first_due_at, address, state, "
-            "recipients.attempts AS attempts, entry, seal FROM recipients JOIN mails ON mails.id = mail_id "
+            "SELECT mail_id, message_id, subject, mails.body, created_at, mails.due_at AS first_due_at, address, "
+            "state, recipients.attempts AS attempts, entry, seal FROM recipients JOIN mails ON mails.id = mail_id "
             "LEFT JOIN entries ON entries.number = mails.entry "
             f"WHERE state IN ('waiting', 'unknown') AND {_DUE.format('recipients')} ORDER BY mail_id, address",
             _due_values(now),

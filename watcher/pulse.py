@@ -7,6 +7,7 @@ ledger of any size. The file itself is described in `watcher.health`.
 from __future__ import annotations
 
 import os
+import threading
 from dataclasses import replace
 from typing import TYPE_CHECKING
 
@@ -20,7 +21,7 @@ if TYPE_CHECKING:
     from watcher.intake import Taken
     from watcher.ledger import Ledger
     from watcher.ledger_rows import UndeliveredMail
-    from watcher.outbox import OutboxThread
+    from watcher.rounds import Rounds
     from watcher.service_settings import ServiceSettings
     from watcher.troubles import Troubles
 
@@ -57,7 +58,8 @@ class Pulse:
         self._ledger = ledger
         self._troubles = troubles
         self._clock = clock
-        self._mailing: OutboxThread | None = None
+        self._mailing: Rounds | None = None
+        self._lock = threading.Lock()
         self._read: tuple[int, float] | None = None
         self._written = clock.monotonic()
         now = stamp(clock.now())
@@ -71,24 +73,38 @@ class Pulse:
             settings_number=settings_number,
         )
 
-    def follow(self, mailing: OutboxThread) -> None:
+    def follow(self, mailing: Rounds) -> None:
         """Tell when this thread last came by."""
         self._mailing = mailing
+
+    def renew(self, settings: ServiceSettings, settings_number: int) -> None:
+        """Other settings are in force."""
+        with self._lock:
+            self._last = replace(self._last, laboratory=settings.laboratory, settings_number=settings_number)
 
     def looked(self, taken: Taken) -> None:
         """The folders were looked through."""
         last = taken.exports[-1].name if taken.exports else self._last.last_export
-        self._last = replace(self._last, last_scan_at=stamp(self._clock.now()), last_export=last)
+        with self._lock:
+            self._last = replace(self._last, last_scan_at=stamp(self._clock.now()), last_export=last)
 
     def evaluates(self, name: str | None) -> None:
         """An export is being evaluated, or none any more; shown at once where nothing was written for a while."""
-        self._last = replace(self._last, evaluating=name)
+        with self._lock:
+            self._last = replace(self._last, evaluating=name)
+            self._show_evaluation(name)
+
+    def _show_evaluation(self, name: str | None) -> None:
         if name is not None and self._clock.monotonic() - self._written >= SHOW_SECONDS:
             self._write(running=True)
 
     def beat(self, *, running: bool) -> None:
         """Write the heartbeat; while nothing but the time changes, only now and then."""
         problems = self._troubles.sentences()
+        with self._lock:
+            self._beat(problems, running=running)
+
+    def _beat(self, problems: list[str], *, running: bool) -> None:
         news = self._reread() or problems != self._last.problems or running != self._last.running
         if news or self._clock.monotonic() - self._written >= BEAT_SECONDS:
             self._last = replace(self._last, problems=problems)

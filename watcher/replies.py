@@ -55,6 +55,8 @@ class Reply:
         What other exports lend, as JSON text.
     wants
         Whether something is missing that another export may lend.
+    family
+        Empty, or what tells apart contents of one name that have nothing to do with each other.
     error, traceback
         Of a defect, where `fate` is ``bug``.
     """
@@ -68,6 +70,7 @@ class Reply:
     problem: str | None = None
     lent: str = "[]"
     wants: bool = False
+    family: str = ""
     error: str | None = None
     traceback: str | None = None
 
@@ -103,6 +106,7 @@ def read_reply(message: Mapping[str, Any], staging: Path) -> Reply:
         problem=_get(message, "problem", str, optional=True) or "\n".join(problems) or None,
         lent=_get(message, "lent", str, default="[]"),
         wants=_get(message, "wants", bool, default=False),
+        family=_get(message, "family", str, default=""),
     )
 
 

@@ -23,7 +23,7 @@ from pydantic import (
 from parsers.wording import got
 from rules.limits import CheckLimits, parse_check_limits
 from rules.method import Measure
-from watcher import scalars
+from watcher import scalars, week
 
 if TYPE_CHECKING:
     from collections.abc import Callable
@@ -151,6 +151,7 @@ class Folders(Part):
     exports: Annotated[tuple[str, ...], BeforeValidator(_list_of_texts)] = Field(min_length=1)
     results: str = Field(min_length=1)
     records: str = "records"
+    backup: str | None = None
 
 
 class StockPart(Part):
@@ -243,6 +244,23 @@ class ExpectPart(Part):
     levels: Annotated[int | None, _read(scalars.whole_number)] = None
 
 
+def _week(read: Callable[[str], object]) -> Callable[[str], str]:
+    """Check a text about days and times; the service reads it again where it is needed."""
+
+    def convert(text: str) -> str:
+        read(text)
+        return text
+
+    return convert
+
+
+class SilencePart(Part):
+    """When it is told that no export arrives."""
+
+    after: Seconds = Field(gt=0)
+    on: Annotated[str, _read(_week(week.hours))] = "Mon-Sun 00:00-24:00"
+
+
 class WatchingPart(Part):
     """How the folders are watched."""
 
@@ -250,6 +268,7 @@ class WatchingPart(Part):
     scan: Seconds = Field(default=10.0, gt=0)
     subfolders: YesNo = False
     events: YesNo = True
+    silence: SilencePart | None = None
 
 
 class MailPart(Part):
@@ -263,7 +282,13 @@ class MailPart(Part):
     user: str | None = None
     password_file: str | None = None
     ca_file: str | None = None
-    about: tuple[Literal["fail", "incomplete", "problem"], ...] = ("fail", "incomplete", "problem")
+    about: tuple[Literal["fail", "incomplete", "problem", "cleared"], ...] = (
+        "fail",
+        "incomplete",
+        "problem",
+        "cleared",
+    )
+    daily: Annotated[str | None, _read(_week(week.daily))] = None
     password: None = None
 
     @field_validator("from_", "to")
@@ -376,4 +401,5 @@ class SettingsFile(Decisions):
     calibration_within: Annotated[float, _read(scalars.span)] = 0.0
     complete_after: Seconds = 7200.0
     watching: WatchingPart = WatchingPart()
+    adoption: Literal["automatic", "signed"] = "automatic"
     csv: CsvPart = CsvPart()

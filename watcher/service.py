@@ -10,9 +10,11 @@ from __future__ import annotations
 import json
 import os
 import signal
+import sqlite3
 import threading
 from contextlib import contextmanager
 from dataclasses import dataclass
+from datetime import timedelta
 from typing import TYPE_CHECKING
 
 import structlog
@@ -20,7 +22,9 @@ import structlog
 from watcher import notices
 from watcher.addressing import Addressing
 from watcher.assessment import Assessed, Assessment
-from watcher.clock import SystemClock
+from watcher.attention import Attention
+from watcher.backup import Backup
+from watcher.clock import SystemClock, moment, stamp
 from watcher.copies import Copies
 from watcher.cut_short import CutShort
 from watcher.disk import Disk
@@ -28,19 +32,26 @@ from watcher.errors import WatcherError
 from watcher.events import Events
 from watcher.folder import Trouble
 from watcher.intake import Intake, Taken
+from watcher.manager import Manager
 from watcher.outbox import Files, Mails, OutboxThread
 from watcher.post import Post
 from watcher.pulse import Pulse
+from watcher.requests import RequestRefused, waiting
+from watcher.rounds import Rounds
 from watcher.troubles import Troubles
 from watcher.wake import Wake
-from watcher.worker import WorkerStopped, WorkerUnfit
+from watcher.week import daily, hours
+from watcher.worker import WorkerFailed, WorkerStopped, WorkerUnfit
 
 if TYPE_CHECKING:
-    from collections.abc import Iterator
+    from collections.abc import Iterable, Iterator
+    from pathlib import Path
 
+    from watcher.adoption import Adoption
     from watcher.clock import Clock
     from watcher.ledger import Ledger
     from watcher.ledger_rows import ExportRow, UndeliveredFile, UndeliveredMail
+    from watcher.requests import Request
     from watcher.service_settings import ServiceSettings
     from watcher.worker import Worker
 
@@ -48,6 +59,8 @@ if TYPE_CHECKING:
 STOP_SECONDS = 1.5
 #: The shortest time between two looks, however many events ring.
 LOOK_GAP_SECONDS = 0.2
+#: The longest time until a person's request is done, or a changed file of the settings noticed.
+ASKED_SECONDS = 2.0
 
 _log = structlog.get_logger("spikewarden.service")
 
@@ -85,6 +98,11 @@ class OnceReport:
     stopped: bool
 
 
+def _looking(settings: ServiceSettings) -> tuple[object, ...]:
+    """What the way of looking through the folders depends on."""
+    return settings.exports, settings.settle_seconds, settings.subfolders
+
+
 class Service:
     """The service over one records folder.
 
@@ -98,6 +116,8 @@ class Service:
         Computes; given its settings here.
     version
         The program's, for the heartbeat.
+    adoption
+        Looks after the files of the settings; None: what was adopted stays.
     disk, clock
         The world; for tests.
 
@@ -114,6 +134,7 @@ class Service:
         worker: Worker,
         *,
         version: str = "unknown",
+        adoption: Adoption | None = None,
         disk: Disk | None = None,
         clock: Clock | None = None,
     ) -> None:
@@ -127,6 +148,8 @@ class Service:
         self._worker = worker
         self._clock = clock
         self._stopping = False
+        self._adoption = adoption
+        self._disk = disk
         self._wake = Wake()
         self._halt = Wake()
         worker.on_start = [{"do": "adopt", "snapshot": json.loads(adopted.body)}]
@@ -153,7 +176,13 @@ class Service:
         self._mails = Mails(ledger.outgoing, Post(settings.mail) if settings.mail else None, clock)
         self._pulse = Pulse(settings, ledger, self._troubles, clock, version=version, settings_number=adopted.number)
         self._cut_short = CutShort(settings.records)
-        self._threads: list[OutboxThread] = []
+        self._attention = Attention(disk, clock)
+        self._backup = Backup(ledger, settings.records, disk, clock)
+        self._manager = Manager(clock)
+        self._began_at = clock.now()
+        self._looks = 0
+        self._threads: list[Rounds] = []
+        self._evaluating: Rounds | None = None
         self._rung_for = ledger.changes
 
     # -- the three that say it all -----------------------------------------------------------------------------
@@ -163,13 +192,15 @@ class Service:
         with self._stopped_by_signals(), self._open(), self._delivering(), self._listening() as events:
             while not self._stopping:
                 events.renew()
-                seconds = self._troubles.survive("taking in and evaluating", self._round)
+                seconds = self._troubles.survive("taking in", self._round)
                 self._troubles.survive("reporting", self._tell)
+                self._show_life()
                 self._rest(self._settings.scan_seconds if seconds is None else seconds)
 
     def once(self) -> OnceReport:
         """Take in what is there now, evaluate it, try each delivery that is due once, and end."""
         with self._stopped_by_signals(), self._open():
+            self._do_requests()
             self._take_in()
             self._halt.wait(self._settings.settle_seconds + 0.01)
             taken = self._take_in()
@@ -181,17 +212,30 @@ class Service:
             return self._report(taken, assessed)
 
     def _round(self) -> float:
-        """Look, take in, evaluate for a while; returns how long to wait before the next round."""
+        """Look and take in; returns how long to wait before the next look. Evaluating has a thread of its own."""
         taken = self._take_in()
-        more = self._evaluate_for_a_while()
-        self._worker.retire_if_idle()
-        if more:
-            return 0.0
+        self._looks += 1
+        if taken.exports and self._evaluating is not None:
+            self._evaluating.ring()
         if taken.settles_at is not None:
             return max(taken.settles_at - self._clock.monotonic(), 0.0) + 0.005
         return self._settings.scan_seconds
 
+    def _evaluation_round(self) -> float:
+        """Adopt what changed, do what people asked for, evaluate for a while; how long to wait then."""
+        self._look_after_settings()
+        self._do_requests()
+        more = self._evaluate_for_a_while()
+        self._worker.retire_if_idle()
+        if self._settings.backup is not None:
+            self._back_up(self._settings.backup)
+        return 0.0 if more else min(self._settings.scan_seconds, ASKED_SECONDS)
+
     # -- stopping ----------------------------------------------------------------------------------------------
+
+    def note(self, found: Iterable[Trouble]) -> None:
+        """Say what was found at the start and is to be told."""
+        self._troubles.set("start", found)
 
     def stop(self) -> None:
         """End soon; safe to call from a signal handler and from any thread. Accepted exports stay accepted."""
@@ -228,6 +272,70 @@ class Service:
                 assessed[export.id] = found
         return assessed
 
+    def _look_after_settings(self) -> None:
+        if self._adoption is not None and self._adoption.changed():
+            self._adopt(self._adoption)
+
+    def _adopt(self, adoption: Adoption, request: Request | None = None) -> None:
+        """Read the files of the settings and work with what may be adopted of them from now on."""
+        try:
+            found = adoption.adopt(self._settings, request.by if request else None, request.why if request else "")
+        except WorkerStopped:
+            return
+        except (WorkerUnfit, WorkerFailed) as error:
+            self._troubles.set("settings", [Trouble("settings-unread", f"The settings cannot be read. {error}")])
+            return
+        self._troubles.set("settings", found.troubles)
+        if found.settings is not None:
+            self._work_with(found.settings)
+
+    def _work_with(self, settings: ServiceSettings) -> None:
+        """Work with newly adopted settings; what is under way ends under the old ones."""
+        adopted = self._ledger.current_settings()
+        if adopted is None:  # they were recorded a moment ago
+            raise ServiceUnready
+        if _looking(settings) != _looking(self._settings):
+            self._intake = Intake(settings, self._ledger, self._copies, self._clock)
+        self._settings, self._adopted = settings, adopted
+        self._worker.on_start = [{"do": "adopt", "snapshot": json.loads(adopted.body)}]
+        self._worker.restart()
+        self._addressing.renew(settings.mail)
+        self._assessment.renew(settings, adopted)
+        self._files.renew(settings.results)
+        self._mails.renew(Post(settings.mail) if settings.mail else None)
+        self._pulse.renew(settings, adopted.number)
+        self._ring_deliverers()
+        self._wake.ring()
+
+    def _do_requests(self) -> None:
+        """Do what people asked for through files in the records; each is removed once the ledger holds it."""
+        refused: list[Trouble] = []
+        for path, request in waiting(self._settings.records):
+            if request is None:
+                refused.append(Trouble(f"odd:request:{path.name}", f"{path} is no request of ours. Remove it."))
+                continue
+            try:
+                if request.kind != "adopt":
+                    self._ledger.do(request)
+                elif self._adoption is not None:
+                    self._adopt(self._adoption, request)
+            except RequestRefused as error:
+                _log.warning("request refused", by=request.by, reason=str(error))
+            path.unlink(missing_ok=True)
+        self._troubles.set("requests", refused)
+
+    def _back_up(self, folder: Path) -> None:
+        try:
+            self._backup.keep(folder)
+        except (OSError, sqlite3.Error) as error:
+            sentence = (
+                f"The backup in {folder} cannot be written ({error}). Everything else goes on. "
+                "See whether it is connected, may be written and has space; it is tried again by itself."
+            )
+            self._troubles.set("backup", [Trouble(f"backup:{folder}", sentence)])
+        else:
+            self._troubles.set("backup", [])
+
     def _pending(self) -> list[ExportRow]:
         complete_after_seconds = self._settings.complete_after_seconds
         exports = self._ledger.pending(self._adopted.number, complete_after_seconds=complete_after_seconds)
@@ -254,7 +362,10 @@ class Service:
 
     def _tell(self) -> None:
         """Mail what is new about troubles and unclaimed exports; write the heartbeat."""
+        self._troubles.set("silence", self._silence())
+        self._troubles.set("mail", self._mail_is_broken())
         self._troubles.report_new()
+        self._say_alive()
         self._digest_unclaimed()
         self._ring_deliverers()
         self._pulse.beat(running=True)
@@ -265,6 +376,57 @@ class Service:
             self._rung_for = self._ledger.changes
             for thread in self._threads:
                 thread.ring()
+
+    def _silence(self) -> list[Trouble]:
+        """Tell when nothing arrived for longer than the laboratory expects."""
+        settings = self._settings
+        if not settings.silence_seconds:
+            return []
+        last = self._ledger.last_accepted_at()
+        since = self._began_at if last is None else moment(last)
+        quiet = hours(settings.silence_hours).within(since, self._clock.now())
+        if quiet.total_seconds() <= settings.silence_seconds:
+            return []
+        came = "none came yet" if last is None else f"the last one came at {last}"
+        return [
+            Trouble(
+                f"silence:{last}",
+                f"No export arrived for {quiet.total_seconds() / 3600:.1f} h of {settings.silence_hours}: {came}. "
+                "See whether the instrument's program still exports into the folder, and whether the share is there.",
+            )
+        ]
+
+    def _mail_is_broken(self) -> list[Trouble]:
+        """Keep ATTENTION.txt in the results folder while mails do not go out; it reaches people when mail does not."""
+        mail = self._settings.mail
+        if mail is None:
+            return []
+        try:
+            sentence = self._attention.show(
+                self._settings.results, f"{mail.server}:{mail.port}", self._ledger.outgoing.undelivered_mails()
+            )
+        except OSError as error:
+            sentence = f"Mails do not go out, and {self._settings.results} cannot be written either ({error})."
+        return [] if sentence is None else [Trouble("mail", sentence)]
+
+    def _say_alive(self) -> None:
+        """Mail once a day that the service runs, and what is open."""
+        mail, now = self._settings.mail, self._clock.now()
+        if mail is None or mail.daily is None or not daily(mail.daily).has_come(now):
+            return
+        day = f"{now.astimezone():%Y-%m-%d}"
+        if self._ledger.mailed(f"alive:{day}"):
+            return
+        counts = self._ledger.accepted_since(stamp(now - timedelta(hours=24)))
+        wanted = notices.alive(day, counts, self._ledger.open_failures(), self._troubles.sentences())
+        if (queued := self._addressing.address(wanted)) is not None:
+            self._ledger.report(queued)
+
+    def _show_life(self) -> None:
+        """Tell the service manager, if the folders were looked through and the mailing thread came by since."""
+        if self._threads and self._manager.due():
+            self._threads[1].ring()
+            self._manager.alive(self._looks, self._threads[1].count)
 
     def _digest_unclaimed(self) -> None:
         """Mail once a day which exports no layout claims, all those that no such mail named yet."""
@@ -279,6 +441,8 @@ class Service:
 
     def _rest(self, seconds: float) -> None:
         """Wait for a ring; many rings in a row do not make many looks."""
+        if self._manager.interval_seconds is not None:
+            seconds = min(seconds, self._manager.interval_seconds / 4)
         if self._stopping or not self._wake.wait(seconds):
             return
         self._halt.wait(min(LOOK_GAP_SECONDS, self._settings.settle_seconds))
@@ -318,12 +482,18 @@ class Service:
             OutboxThread("delivering result files", self._files, self._troubles.survive, self._clock),
             OutboxThread("mailing", self._mails, self._troubles.survive, self._clock),
         ]
+        self._evaluating = Rounds(
+            "evaluating", self._evaluation_round, self._worker.interrupt, self._troubles.survive, self._clock
+        )
+        self._threads.append(self._evaluating)
         self._pulse.follow(self._threads[1])
+        self._manager.ready()
         for thread in self._threads:
             thread.start()
         try:
             yield
         finally:
+            self._manager.stopping()
             for thread in self._threads:
                 thread.stop(STOP_SECONDS)
 

@@ -17,6 +17,8 @@ if TYPE_CHECKING:
 
 #: Kinds of mail that may be asked for.
 MAIL_KINDS = ("fail", "incomplete", "problem", "cleared")
+#: How changed settings come into force.
+ADOPTIONS = ("automatic", "signed")
 #: How the conversation with the mail server is protected.
 SECURITIES = ("starttls", "tls", "none")
 
@@ -63,7 +65,7 @@ class MailSettings:
     about
         The kinds of mail that are wanted.
     daily
-        When a daily mail is sent; not used by this part.
+        When a mail is sent that says the service is alive, such as ``07:30 Mon-Fri``; None: never.
     """
 
     server: str
@@ -115,6 +117,13 @@ class ServiceSettings:
         After how long without change an export counts as complete.
     span_seconds
         How far exports may lie apart that lend each other something; 0 where each stands alone.
+    adoption
+        Whether changed settings are adopted by themselves or only with a person's name.
+    silence_seconds, silence_hours
+        After how long without a new export that is told, counted in these hours such as ``Mon-Fri 07:00-19:00``;
+        0: never.
+    backup
+        Where ledger and copies are backed up daily; None: nowhere.
     mail
         None: no mail is sent.
     """
@@ -134,6 +143,10 @@ class ServiceSettings:
     reserve_bytes: int = 200 * MEBIBYTE
     complete_after_seconds: float = 7200.0
     span_seconds: float = 0.0
+    adoption: str = "automatic"
+    silence_seconds: float = 0.0
+    silence_hours: str = "Mon-Sun 00:00-24:00"
+    backup: Path | None = None
     mail: MailSettings | None = None
 
     @classmethod
@@ -152,6 +165,7 @@ class ServiceSettings:
         known = _typed(cls, plain, "")
         known["mail"] = None if mail is None else MailSettings.from_plain(mail)
         settings = cls(**known)  # type: ignore[arg-type]
+        _one_of("adoption", settings.adoption, ADOPTIONS)
         settings._check_folders()
         return settings
 
@@ -162,6 +176,7 @@ class ServiceSettings:
             *(("exports", folder) for folder in self.exports),
             ("results", self.results),
             ("records", self.records),
+            *((("backup", self.backup),) if self.backup is not None else ()),
         ):
             if not folder.is_absolute():
                 raise ServiceSettingsBroken(key, "an absolute path", str(folder))

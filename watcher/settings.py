@@ -131,6 +131,7 @@ class Settings:
                 "sender": file.mail.from_,
                 "to": list(file.mail.to),
                 "about": list(file.mail.about),
+                "daily": file.mail.daily,
                 "user": file.mail.user,
                 "password_file": str(self.path(file.mail.password_file)) if file.mail.password_file else None,
                 "ca_file": str(self.path(file.mail.ca_file)) if file.mail.ca_file else None,
@@ -146,6 +147,10 @@ class Settings:
             "events": file.watching.events,
             "complete_after_seconds": file.complete_after,
             "span_seconds": max(file.pair_within, file.calibration_within),
+            "adoption": file.adoption,
+            "silence_seconds": file.watching.silence.after if file.watching.silence else 0.0,
+            "silence_hours": file.watching.silence.on if file.watching.silence else "Mon-Sun 00:00-24:00",
+            "backup": str(self.path(file.folders.backup)) if file.folders.backup else None,
             "mail": mail,
         }
 

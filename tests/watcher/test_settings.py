@@ -261,7 +261,7 @@ def test_a_layout_decides_again_for_its_exports() -> None:
         (
             "mail: none",
             f"{MAIL}, about: [fial]}}",
-            "mail.about[1]: expected one of 'fail', 'incomplete', 'problem', got 'fial'.",
+            "mail.about[1]: expected one of 'fail', 'incomplete', 'problem', 'cleared', got 'fial'.",
         ),
         ("mail: none", "mail: {server: m, from: a@b, to: []}", "mail.to: expected at least 1 entries, got a list."),
         ("exports: ./exports", "exports: []", "folders.exports: expected at least 1 entries, got a list."),
