@@ -59,6 +59,8 @@ def _failing(failing: Iterable[Assessed], ledger: Ledger) -> Iterable[tuple[str 
 
 def _undone(report: OnceReport) -> Iterable[str]:
     for each in report.assessed:
+        if each.export.state == "superseded":
+            continue  # another export's content: nothing is left to do
         if each.export.state != "done":
             problem = each.export.problem or "its last line is not there yet"
             prefix = "" if problem.startswith(each.export.name) else f"{each.export.name}: "

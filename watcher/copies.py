@@ -17,6 +17,7 @@ from typing import TYPE_CHECKING
 
 from watcher.disk import TemporaryFile, sweep
 from watcher.errors import WatcherError
+from watcher.folder import signature_of
 from watcher.kill_points import at
 
 if TYPE_CHECKING:
@@ -153,7 +154,7 @@ class Copies:
             after = os.fstat(descriptor)
         finally:
             os.close(descriptor)
-        if (after.st_size, after.st_mtime_ns, after.st_ino) != candidate.signature:
+        if signature_of(after) != candidate.signature:
             raise CopyPostponed(candidate.name, "it is still being written", expected=True)
         return digest.hexdigest()
 

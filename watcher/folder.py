@@ -27,6 +27,10 @@ IGNORED = (
 EXPORT_ENDINGS = frozenset({".csv", ".txt", ".tsv", ".asc", ".prn", ".dat", ".log", ".rep"})
 
 
+#: See `signature_of`.
+Signature = tuple[int, int, int, int]
+
+
 @dataclass(frozen=True, slots=True)
 class Candidate:
     """A file that may be taken in: it was seen twice, unchanged.
@@ -38,12 +42,12 @@ class Candidate:
     name
         Path under the exports folder, with ``/``: the name of the export.
     signature
-        Size in bytes, modification time in ns, identity (inode).
+        What tells whether it was changed; see `signature_of`.
     """
 
     path: Path
     name: str
-    signature: tuple[int, int, int]
+    signature: Signature
 
     @property
     def size(self) -> int:
@@ -94,7 +98,7 @@ class _Seen:
 
     __slots__ = ("signature", "since", "taken")
 
-    def __init__(self, signature: tuple[int, int, int], since: float) -> None:
+    def __init__(self, signature: Signature, since: float) -> None:
         self.signature = signature
         self.since = since
         self.taken = False
@@ -170,7 +174,7 @@ class Folder:
         if known is not None and known.signature == candidate.signature:
             known.taken = True
 
-    def _files(self, troubles: list[Trouble]) -> Iterator[tuple[str, str, tuple[int, int, int]]]:
+    def _files(self, troubles: list[Trouble]) -> Iterator[tuple[str, str, Signature]]:
         """Yield name, path and signature of every regular file; note what is none."""
         open_folders = [(os.fspath(self.root), self._prefix)]
         while open_folders:
@@ -182,11 +186,12 @@ class Folder:
                     if known is None and is_ignored(entry.name):
                         continue
                     try:
-                        found = entry.stat(follow_symlinks=False)
+                        # Windows' own list of a folder holds no identities.
+                        found = os.lstat(entry.path) if os.name == "nt" else entry.stat(follow_symlinks=False)
                     except FileNotFoundError:
                         continue  # gone since the folder was listed
                     if stat.S_ISREG(found.st_mode) and (known is not None or _is_text(name)):
-                        yield name, entry.path, (found.st_size, found.st_mtime_ns, found.st_ino)
+                        yield name, entry.path, signature_of(found)
                     elif stat.S_ISDIR(found.st_mode) and self._subfolders and _is_text(name):
                         open_folders.append((entry.path, f"{name}/"))
                     else:
@@ -216,6 +221,15 @@ class Folder:
             "taken in from it until it is there again, which is noticed by itself. See whether the share is "
             "connected and the service's account may read it.",
         )
+
+
+def signature_of(found: os.stat_result) -> Signature:
+    """Return what tells whether a file was changed: size, modification time, identity, time of the last change.
+
+    The last one cannot be put back by the program that writes, except on Windows, where it is the time of creation:
+    there a replacement of the same size and time is noticed at the next start.
+    """
+    return found.st_size, found.st_mtime_ns, found.st_ino, 0 if os.name == "nt" else found.st_ctime_ns
 
 
 def is_ignored(file_name: str) -> bool:

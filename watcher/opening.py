@@ -69,6 +69,8 @@ def open_laboratory(config: Path, reason: str) -> Iterator[Laboratory]:
             handler = set_up_log(settings.records)
             try:
                 settings = _in_force(worker, ledger, config, answer, settings, reason)
+                if (current := ledger.current_settings()) is not None:
+                    worker.ask({"do": "adopt", "snapshot": json.loads(current.body)})
                 files = tuple(Path(each) for each in answer["files"])
                 adoption = Adoption(
                     config.absolute(), files, worker=worker, ledger=ledger, clock=SystemClock(), account=account()

@@ -81,6 +81,7 @@ class Pulse:
         """Other settings are in force."""
         with self._lock:
             self._last = replace(self._last, laboratory=settings.laboratory, settings_number=settings_number)
+            self._read = None  # shown at the next beat
 
     def looked(self, taken: Taken) -> None:
         """The folders were looked through."""
