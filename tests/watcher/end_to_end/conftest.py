@@ -2,10 +2,12 @@
 
 from __future__ import annotations
 
+import contextlib
 import csv
 import io
 import json
 import os
+import queue
 import socket
 import subprocess
 import sys
@@ -236,3 +238,15 @@ def unused_port() -> int:
     with socket.socket() as probe:
         probe.bind(("127.0.0.1", 0))
         return int(probe.getsockname()[1])
+
+
+@pytest.fixture
+def pause() -> Callable[[float], None]:
+    """Wait between two looks at something that takes minutes."""
+    nothing = queue.SimpleQueue[None]()
+
+    def wait(seconds: float) -> None:
+        with contextlib.suppress(queue.Empty):
+            nothing.get(timeout=seconds)
+
+    return wait
