@@ -61,7 +61,7 @@ class Pulse:
         self._mailing: Rounds | None = None
         self._lock = threading.Lock()
         self._read: tuple[int, float] | None = None
-        self._written = clock.monotonic()
+        self._written = self._evaluating_since = clock.monotonic()
         now = stamp(clock.now())
         self._last = Heartbeat(
             running=True,
@@ -93,6 +93,7 @@ class Pulse:
         """An export is being evaluated, or none any more; shown at once where nothing was written for a while."""
         with self._lock:
             self._last = replace(self._last, evaluating=name)
+            self._evaluating_since = self._clock.monotonic()
             self._show_evaluation(name)
 
     def _show_evaluation(self, name: str | None) -> None:
@@ -107,6 +108,9 @@ class Pulse:
 
     def _beat(self, problems: list[str], *, running: bool) -> None:
         news = self._reread() or problems != self._last.problems or running != self._last.running
+        # an evaluation that takes its time is shown, one that is over in a moment is not worth a write
+        long_ago = self._clock.monotonic() - SHOW_SECONDS
+        news |= self._last.evaluating is not None and self._written < self._evaluating_since <= long_ago
         if news or self._clock.monotonic() - self._written >= BEAT_SECONDS:
             self._last = replace(self._last, problems=problems)
             self._write(running=running)

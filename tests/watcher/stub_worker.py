@@ -12,6 +12,7 @@ from pathlib import Path
 from typing import Any
 
 from watcher.disk import Disk
+from watcher.names import safe_name
 from watcher.worker_loop import serve
 
 
@@ -49,7 +50,7 @@ def _wait(text: str, request: dict[str, Any]) -> dict[str, Any] | None:
 def _evaluate(text: str, request: dict[str, Any]) -> dict[str, Any]:
     rows = [line.split(",") for line in text.splitlines() if "," in line]
     name, revision = request["name"], request["revision"]
-    stem = f"{name.replace('/', '_')}.r{revision}"
+    stem = f"{safe_name(name)}.r{revision}"
     record = {
         "name": name,
         "revision": revision,

@@ -10,9 +10,14 @@ import signal
 import subprocess
 import threading
 import time
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 import pytest
+
+from watcher.ledger import Ledger
+
+if TYPE_CHECKING:
+    from pathlib import Path
 
 
 @pytest.fixture(params=["events", "looking only"])
@@ -408,23 +413,28 @@ def test_a_kill_from_inside_the_servers_answer_repeats_with_the_same_identity(be
     assert ["possible repeat: " in text for text in texts] == [False, True]
 
 
+#: How often the service is killed; scale it down where a machine is slow.
+RANDOM_KILLS = 300
+KILLED_EXPORTS = 40
+
+
 @pytest.mark.proof
-@pytest.mark.parametrize("events", ["0", "1"])
-def test_kills_at_random_moments_end_in_the_same_state(
-    bench: Any, mail_server: Any, events: str, eventually: Any
-) -> None:
-    """Killed forty times at random moments while exports land, the service ends with all of them done and mailed."""
+def test_kills_at_random_moments_end_in_the_same_state(bench: Any, mail_server: Any, tmp_path: Path) -> None:
+    """Killed three hundred times at random moments while exports land, the service ends as if it never had been.
+
+    Result files have the bytes of an uninterrupted run over the same exports; every failing sample was mailed, and
+    what was mailed twice bears the same identity and says that it may be a repeat.
+    """
     draw = random.Random(17)
     bench.mail_to(mail_server)
-    bench.environment["SPIKEWARDEN_NO_EVENTS"] = events
-    names = []
-    for number in range(40):
-        name = f"FL-{number}.csv"
-        names.append(name)
-        process = bench.start()
-        bench.export(name, f"SED-{number},fail", "BRN-3,pass")
+    names = [f"FL-{number}.csv" for number in range(KILLED_EXPORTS)]
+    for kill in range(RANDOM_KILLS):
+        process = bench.start(SPIKEWARDEN_NO_EVENTS=str(kill % 2 or ""))
+        number, rest = divmod(kill * KILLED_EXPORTS, RANDOM_KILLS)
+        if rest < KILLED_EXPORTS:
+            bench.export(names[number], f"SED-{number},fail", "BRN-3,pass")
         try:
-            process.communicate(timeout=draw.uniform(0.2, 0.9))
+            process.communicate(timeout=draw.uniform(0.15, 0.7))
         except subprocess.TimeoutExpired:  # the timeout is the moment of the kill
             process.kill()
             process.communicate(timeout=20)
@@ -432,16 +442,84 @@ def test_kills_at_random_moments_end_in_the_same_state(
     report = bench.once()
 
     assert report["undelivered_mails"] == report["undelivered_files"] == []
-    assert bench.counts() == {"done": 40}
-    assert sorted(bench.result_files()) == sorted(
-        f"2026-12/{name}.r1.{ending}" for name in names for ending in ("csv", "json")
-    )
+    assert bench.counts() == {"done": KILLED_EXPORTS}
+    with Ledger(bench.records) as ledger:
+        assert ledger.broken_at() is None
+    (tmp_path / "quiet").mkdir()
+    quiet = type(bench)(tmp_path / "quiet")
+    for number, name in enumerate(names):
+        quiet.export(name, f"SED-{number},fail", "BRN-3,pass")
+    quiet.once()
+    assert bench.result_files() == quiet.result_files()
     by_subject: dict[str, list[str]] = {}
     for _, text in mail_server.mailbox.received:
         by_subject.setdefault(re.search("Subject: (.*)\r", text)[1], []).append(text)
-    assert sorted(by_subject) == sorted(f"FAIL SED-{number} Zn" for number in range(40))
+    assert sorted(by_subject) == sorted(f"FAIL SED-{number} Zn" for number in range(KILLED_EXPORTS))
     for texts in by_subject.values():
+        assert len({re.search("Message-ID: (.*)\r", text)[1] for text in texts}) == 1
         assert all("possible repeat: " in text for text in texts[1:])
+
+
+def test_looking_goes_on_during_an_evaluation(bench: Any, mail_server: Any, eventually: Any) -> None:
+    """While one evaluation hangs, exports are taken in, the heartbeat is written and mails go out."""
+    bench.mail_to(mail_server)
+    bench.export("FL-0.csv", "RIV-17,fail")
+    bench.once()
+    bench.settings["deadline_seconds"] = 60.0
+    bench.export("FL-1.csv", "hang")
+    bench.start()
+    eventually(lambda: bench.status().get("evaluating") == "FL-1.csv", "the evaluation is under way")
+    before = bench.status()["last_scan_at"]
+
+    bench.export("FL-2.csv", "SED-12,pass")
+    os.mkfifo(bench.exports / "A.csv")
+
+    eventually(lambda: bench.counts().get("accepted") == 2, "the second export is taken in meanwhile")
+    eventually(lambda: bench.status()["last_scan_at"] > before, "the heartbeat goes on")
+    eventually(lambda: "PROBLEM A.csv" in mail_server.mailbox.received[-1][1], "the trouble is mailed meanwhile")
+    assert bench.status()["evaluating"] == "FL-1.csv"
+
+
+def test_other_settings_resend_nothing(bench: Any, mail_server: Any) -> None:
+    """After every setting was changed, what was mailed and finished stays mailed and finished."""
+    bench.mail_to(mail_server)
+    bench.export("FL-1.csv", "RIV-17,fail")
+    bench.once()
+    bench.settings |= {"laboratory": "Another", "settle_seconds": 0.06, "scan_seconds": 0.3, "adoption": "signed"}
+    bench.settings["mail"] |= {"sender": "other@example", "to": ["other@example"]}
+
+    report = bench.once('{"laboratory": "Another"}')
+
+    assert report["assessed"] == []
+    assert len(mail_server.mailbox.received) == 1
+
+
+def test_a_silence_is_told_once(bench: Any, mail_server: Any, eventually: Any) -> None:
+    """Where nothing arrives for longer than the laboratory expects, one mail says so and what to look at."""
+    bench.mail_to(mail_server)
+    bench.settings |= {"silence_seconds": 0.3}
+    bench.start()
+
+    eventually(lambda: mail_server.mailbox.received, "the silence is mailed")
+    eventually(lambda: bench.status()["problems"], "and shown")
+    assert "No export arrived for" in mail_server.mailbox.received[0][1]
+    assert bench.status()["problems"][0].startswith("No export arrived for 0.0 h of Mon-Sun 00:00-24:00: none came yet")
+
+
+def test_the_daily_mail_lists_open_failures(bench: Any, mail_server: Any) -> None:
+    """The service says once a day that it runs, what came in and which failures are open."""
+    bench.mail_to(mail_server)
+    bench.export("FL-1.csv", "RIV-17,fail")
+    bench.once()
+    bench.settings["mail"]["daily"] = "00:00"
+    bench.once()
+    bench.once()
+
+    texts = [text for _, text in mail_server.mailbox.received]
+    assert len(texts) == 2
+    assert "Subject: ALIVE 20" in texts[1]
+    assert "Open failures: 1" in texts[1]
+    assert "- RIV-17 Zn: fail in FL-1.csv, since 20" in texts[1]
 
 
 @pytest.mark.proof
