@@ -423,7 +423,7 @@ class Ledger:
                 )
             else:
                 txn.execute(
-                    "UPDATE exports SET state = 'accepted', attempts = 0, revision = NULL WHERE id = ?",
+                    "UPDATE exports SET state = 'accepted', attempts = 0, revision = NULL, lent = NULL WHERE id = ?",
                     (export["id"],),
                 )
             append_entry(txn, request.kind, export["id"], now, facts)
