@@ -27,6 +27,9 @@ IGNORED = (
 EXPORT_ENDINGS = frozenset({".csv", ".txt", ".tsv", ".asc", ".prn", ".dat", ".log", ".rep"})
 
 
+#: So many files that are gone are remembered before they are forgotten.
+FORGOTTEN = 1000
+
 #: See `signature_of`.
 Signature = tuple[int, int, int, int]
 
@@ -96,12 +99,11 @@ class Look:
 class _Seen:
     """One file over several looks."""
 
-    __slots__ = ("signature", "since", "taken")
+    __slots__ = ("signature", "since")
 
     def __init__(self, signature: Signature, since: float) -> None:
         self.signature = signature
         self.since = since
-        self.taken = False
 
 
 class Folder:
@@ -125,6 +127,8 @@ class Folder:
         self._settle_seconds = settle_seconds
         self._subfolders = subfolders
         self._seen: dict[str, _Seen] = {}
+        #: Hashes of name and signature of what was taken in: 64 bits for each of perhaps a hundred thousand files.
+        self._taken: set[int] = set()
 
     def look(self, now: float) -> Look:
         """Look through the whole folder.
@@ -150,8 +154,6 @@ class Folder:
                 if known is None or known.signature != signature:
                     known = _Seen(signature, now)
                 seen[name] = known
-                if known.taken:
-                    continue
                 if now > known.since and now - known.since >= self._settle_seconds:
                     settled.append(Candidate(Path(path), name, signature))
                 else:
@@ -172,30 +174,36 @@ class Folder:
         """Skip this file from now on, unless its signature changes."""
         known = self._seen.get(candidate.name)
         if known is not None and known.signature == candidate.signature:
-            known.taken = True
+            self._taken.add(hash((candidate.name, candidate.signature)))
+            del self._seen[candidate.name]
 
     def _files(self, troubles: list[Trouble]) -> Iterator[tuple[str, str, Signature]]:
-        """Yield name, path and signature of every regular file; note what is none."""
+        """Yield name, path and signature of every regular file that was not taken in; note what is none."""
+        present: list[int] = []
         open_folders = [(os.fspath(self.root), self._prefix)]
         while open_folders:
             folder, prefix = open_folders.pop()
             with os.scandir(folder) as entries:
                 for entry in entries:
                     name = prefix + entry.name
-                    known = self._seen.get(name)
-                    if known is None and is_ignored(entry.name):
-                        continue
                     try:
                         # Windows' own list of a folder holds no identities.
                         found = os.lstat(entry.path) if os.name == "nt" else entry.stat(follow_symlinks=False)
                     except FileNotFoundError:
                         continue  # gone since the folder was listed
-                    if stat.S_ISREG(found.st_mode) and (known is not None or _is_text(name)):
-                        yield name, entry.path, signature_of(found)
+                    signature = signature_of(found)
+                    if (mark := hash((name, signature))) in self._taken:
+                        present.append(mark)
+                    elif is_ignored(entry.name):
+                        continue
+                    elif stat.S_ISREG(found.st_mode) and _is_text(name):
+                        yield name, entry.path, signature
                     elif stat.S_ISDIR(found.st_mode) and self._subfolders and _is_text(name):
                         open_folders.append((entry.path, f"{name}/"))
                     else:
                         troubles.extend(self._odd(name, found.st_mode))
+        if len(self._taken) > 2 * len(present) + FORGOTTEN:
+            self._taken = set(present)
 
     def _odd(self, name: str, mode: int) -> Iterator[Trouble]:
         if not _is_text(name):

@@ -42,8 +42,8 @@ def eventually() -> Callable[[Callable[[], Any], str], Any]:
     """Wait until a condition holds and return its value; fail with a sentence at the deadline."""
     pause = queue.SimpleQueue[None]()
 
-    def wait(condition: Callable[[], Any], sentence: str) -> Any:
-        until = time.monotonic() + DEADLINE_SECONDS
+    def wait(condition: Callable[[], Any], sentence: str, seconds: float = DEADLINE_SECONDS) -> Any:
+        until = time.monotonic() + seconds
         while time.monotonic() < until:
             if value := condition():
                 return value
@@ -51,7 +51,7 @@ def eventually() -> Callable[[Callable[[], Any], str], Any]:
                 pause.get(timeout=0.01)
             except queue.Empty:
                 continue
-        pytest.fail(f"did not happen within {DEADLINE_SECONDS:g} s: {sentence}")
+        pytest.fail(f"did not happen within {seconds:g} s: {sentence}")
 
     return wait
 
