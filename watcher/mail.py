@@ -130,7 +130,7 @@ def refusal(name: str, sentence: str, remedy: str, sha256: str) -> Mail:
     body = _body(
         f"PROBLEM {name} was not evaluated",
         [
-            ("DO", [remedy, "A changed export is taken in by itself, a changed layout after a restart."]),
+            ("DO", [remedy, "A changed export and a mended layout are taken in by themselves."]),
             ("HOLD", [f"Everything measured in {name}: it has no results. Other exports are not affected."]),
             ("WHY", [sentence]),
             ("RECORD", [f"export {name}, sha256 {sha256[:12]}"]),
