@@ -28,6 +28,7 @@ if TYPE_CHECKING:
     from watcher.addressing import Addressing
     from watcher.clock import Clock
     from watcher.copies import Copies
+    from watcher.disk import Disk
     from watcher.ledger import Ledger
     from watcher.ledger_rows import AdoptedSettings, ExportRow
     from watcher.replies import WantedMail
@@ -58,7 +59,7 @@ class Assessment:
         Folders and times.
     adopted
         The settings in force.
-    worker, ledger, copies, addressing, troubles, clock
+    worker, ledger, copies, addressing, troubles, clock, disk
         The parts it works with.
     """
 
@@ -73,6 +74,7 @@ class Assessment:
         addressing: Addressing,
         troubles: Troubles,
         clock: Clock,
+        disk: Disk,
     ) -> None:
         self._adopted = adopted
         self._staging = settings.records / STAGING_NAME
@@ -84,6 +86,7 @@ class Assessment:
         self._addressing = addressing
         self._troubles = troubles
         self._clock = clock
+        self._disk = disk
 
     def renew(self, settings: ServiceSettings, adopted: AdoptedSettings) -> None:
         """Evaluate under these settings from now on."""
@@ -93,6 +96,8 @@ class Assessment:
     def prepare(self) -> None:
         """Make the folder of result files and remove what an evaluation left that was cut short."""
         self._staging.mkdir(parents=True, exist_ok=True)
+        # Without its name on disk, a power cut would take the folder and every staged file with it.
+        self._disk.sync_folder(self._staging.parent)
         wanted = self._ledger.outgoing.staged_files()
         for path in self._staging.iterdir():
             if path not in wanted:

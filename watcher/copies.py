@@ -101,6 +101,7 @@ class Copies:
         """Make the folder and remove what a killed run left half written."""
         self._folder.mkdir(parents=True, exist_ok=True)
         self._disk.sync_folder(self._folder.parent)
+        self._disk.sync_folder(self._folder.parent.parent)
         sweep(self._folder)
 
     def path_of(self, sha256: str) -> Path:

@@ -17,6 +17,7 @@ from watcher.instance import is_held
 if TYPE_CHECKING:
     from pathlib import Path
 
+    from watcher.failures import Failure
     from watcher.ledger_rows import RefusedExport
 
 STATUS_NAME = "status.json"
@@ -51,6 +52,8 @@ class Heartbeat:
         Exports without results, with their reasons, newest first.
     undelivered_mails, refused_mails, undelivered_files
         What waits to leave, and mails a server refused for good.
+    open_failures
+        Samples that failed and of which nothing better is known yet, oldest first.
     problems
         What is wrong now, in sentences: folders, worker, disk, mail.
     """
@@ -71,6 +74,7 @@ class Heartbeat:
     undelivered_mails: Undelivered = Undelivered(0, None, None)
     refused_mails: Undelivered = Undelivered(0, None, None)
     undelivered_files: Undelivered = Undelivered(0, None, None)
+    open_failures: list[Failure] = field(default_factory=list)
     problems: list[str] = field(default_factory=list)
 
 

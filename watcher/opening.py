@@ -18,7 +18,7 @@ from watcher.adoption import Adoption
 from watcher.clock import SystemClock
 from watcher.errors import WatcherError
 from watcher.instance import Instance
-from watcher.ledger import Ledger
+from watcher.ledger import LEDGER_NAME, Ledger
 from watcher.log import set_up_log
 from watcher.places import findings, refuse_network
 from watcher.service import Service
@@ -62,7 +62,14 @@ def open_laboratory(config: Path, reason: str) -> Iterator[Laboratory]:
     """
     worker = Worker()
     try:
-        answer = _read_settings(worker, config)
+        try:
+            answer = _read_settings(worker, config)
+        except SettingsRefused:
+            # An unattended computer that was switched off and on again goes on with what was adopted.
+            last = _last_adopted(worker, config) if reason == "watch" else None
+            if last is None:
+                raise
+            answer = last
         settings = ServiceSettings.from_plain(answer["service"])
         refuse_network(settings.records)
         with Instance(settings.records), Ledger(settings.records) as ledger:
@@ -94,6 +101,20 @@ def _read_settings(worker: Worker, config: Path) -> dict[str, Any]:
     if answer["faults"]:
         raise SettingsRefused(tuple(answer["faults"]))
     return answer
+
+
+def _last_adopted(worker: Worker, config: Path) -> dict[str, Any] | None:
+    """Return what was adopted last, where the files are faulty; only records beside the configuration are found."""
+    records = config.absolute().parent / "records"
+    if not (records / LEDGER_NAME).exists():
+        return None
+    with Instance(records), Ledger(records) as ledger:
+        current = ledger.current_settings()
+    if current is None:
+        return None
+    snapshot, folder = json.loads(current.body), str(config.absolute().parent)
+    plain = worker.ask({"do": "plain settings", "snapshot": snapshot, "folder": folder})
+    return {"body": current.body, "service": plain, "files": [str(config.absolute())]}
 
 
 def _in_force(

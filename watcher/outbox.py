@@ -93,6 +93,7 @@ class Files:
         with contextlib.suppress(OSError):  # each delivery says what is wrong; mails must not wait for it
             if not self._outgoing.any_file_delivered():
                 self._results.mkdir(parents=True, exist_ok=True)
+                self._disk.sync_folder(self._results.parent)
             for folder in (self._results, *(each for each in self._results.iterdir() if each.is_dir())):
                 sweep(folder)
 

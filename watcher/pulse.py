@@ -27,6 +27,8 @@ if TYPE_CHECKING:
 
 #: Figures that change with time alone are read again after so many seconds.
 REREAD_SECONDS = 60.0
+#: Open failures that are listed; the daily mail counts them all.
+MOST_FAILURES = 200
 #: How often an idle service shows that it lives.
 BEAT_SECONDS = 30.0
 #: How old the heartbeat may be when an evaluation begins that may take minutes.
@@ -138,6 +140,7 @@ class Pulse:
             self._last,
             counts=self._ledger.counts(),
             refused=self._ledger.refused(),
+            open_failures=self._ledger.open_failures()[:MOST_FAILURES],
             undelivered_mails=_undelivered([each for each in mails if each.state != "refused"]),
             refused_mails=_undelivered([each for each in mails if each.state == "refused"]),
             undelivered_files=Undelivered(

@@ -171,6 +171,7 @@ class Service:
             addressing=self._addressing,
             troubles=self._troubles,
             clock=clock,
+            disk=disk,
         )
         self._files = Files(ledger.outgoing, settings.results, disk, clock)
         self._mails = Mails(ledger.outgoing, Post(settings.mail) if settings.mail else None, clock)

@@ -269,3 +269,18 @@ def test_a_replacement_of_the_same_size_and_time_is_noticed(mailed: Any, eventua
     _stop(service)
 
     assert path.stat().st_size == before.st_size
+
+
+def test_a_restart_over_faulty_files_goes_on_with_what_was_adopted(mailed: Any, subjects: Any, eventually: Any) -> None:
+    """Switched off and on while somebody's change is faulty, the service works on, and mails the fault once."""
+    assert mailed.run("once").returncode == 0
+    mailed.change("config.yaml", "75 to 125 %", "75 to 12x %")
+    mailed.export("FL-1.csv", *mailed.additions("SED-12"))
+
+    service = mailed.start("watch")
+
+    eventually(mailed.records, "the export is evaluated under the adopted settings")
+    eventually(subjects, "the fault is mailed")
+    _stop(service)
+    assert subjects()[0].startswith("PROBLEM The settings were changed and have faults")
+    assert mailed.run("once").returncode == 2
