@@ -10,6 +10,8 @@ from __future__ import annotations
 
 import os
 import stat
+from array import array
+from bisect import bisect_left, insort
 from dataclasses import dataclass
 from fnmatch import fnmatch
 from pathlib import Path
@@ -127,8 +129,9 @@ class Folder:
         self._settle_seconds = settle_seconds
         self._subfolders = subfolders
         self._seen: dict[str, _Seen] = {}
-        #: Hashes of name and signature of what was taken in: 64 bits for each of perhaps a hundred thousand files.
-        self._taken: set[int] = set()
+        #: Hashes of name and signature of what was taken in, sorted: 8 bytes for each of perhaps 100,000 files.
+        self._taken = array("Q")
+        self._present = 0
 
     def look(self, now: float) -> Look:
         """Look through the whole folder.
@@ -174,12 +177,13 @@ class Folder:
         """Skip this file from now on, unless its signature changes."""
         known = self._seen.get(candidate.name)
         if known is not None and known.signature == candidate.signature:
-            self._taken.add(hash((candidate.name, candidate.signature)))
+            insort(self._taken, _mark(candidate.name, candidate.signature))
             del self._seen[candidate.name]
 
     def _files(self, troubles: list[Trouble]) -> Iterator[tuple[str, str, Signature]]:
         """Yield name, path and signature of every regular file that was not taken in; note what is none."""
-        present: list[int] = []
+        present, self._present = self._present, 0
+        still_there = array("Q") if len(self._taken) > 2 * present + FORGOTTEN else None
         open_folders = [(os.fspath(self.root), self._prefix)]
         while open_folders:
             folder, prefix = open_folders.pop()
@@ -192,8 +196,10 @@ class Folder:
                     except FileNotFoundError:
                         continue  # gone since the folder was listed
                     signature = signature_of(found)
-                    if (mark := hash((name, signature))) in self._taken:
-                        present.append(mark)
+                    if self._was_taken(mark := _mark(name, signature)):
+                        self._present += 1
+                        if still_there is not None:
+                            still_there.append(mark)
                     elif is_ignored(entry.name):
                         continue
                     elif stat.S_ISREG(found.st_mode) and _is_text(name):
@@ -202,8 +208,12 @@ class Folder:
                         open_folders.append((entry.path, f"{name}/"))
                     else:
                         troubles.extend(self._odd(name, found.st_mode))
-        if len(self._taken) > 2 * len(present) + FORGOTTEN:
-            self._taken = set(present)
+        if still_there is not None:
+            self._taken = array("Q", sorted(still_there))
+
+    def _was_taken(self, mark: int) -> bool:
+        place = bisect_left(self._taken, mark)
+        return place < len(self._taken) and self._taken[place] == mark
 
     def _odd(self, name: str, mode: int) -> Iterator[Trouble]:
         if not _is_text(name):
@@ -238,6 +248,10 @@ def signature_of(found: os.stat_result) -> Signature:
     there a replacement of the same size and time is noticed at the next start.
     """
     return found.st_size, found.st_mtime_ns, found.st_ino, 0 if os.name == "nt" else found.st_ctime_ns
+
+
+def _mark(name: str, signature: Signature) -> int:
+    return hash((name, signature)) & 0xFFFF_FFFF_FFFF_FFFF
 
 
 def is_ignored(file_name: str) -> bool:

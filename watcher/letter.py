@@ -63,7 +63,7 @@ def compose(due: DueMail, sender: str, recipients: Sequence[str], now: datetime)
         For ``Date``.
     """
     message = EmailMessage(policy=_POLICY)
-    message["Subject"] = clean(due.subject, SUBJECT_LIMIT)
+    message["Subject"] = clean(f"LATE {due.subject}" if _is_late(due, now) else due.subject, SUBJECT_LIMIT)
     message["From"] = clean(sender)
     message["To"] = ", ".join(clean(address) for address in recipients)
     message["Date"] = email.utils.format_datetime(now)
@@ -73,11 +73,15 @@ def compose(due: DueMail, sender: str, recipients: Sequence[str], now: datetime)
     return message.as_bytes()
 
 
+def _is_late(due: DueMail, now: datetime) -> bool:
+    return now - moment(due.first_due_at) > LATE_AFTER
+
+
 def _remarks(due: DueMail, now: datetime) -> list[str]:
     remarks = []
     if due.possible_repeat:
         remarks.append("possible repeat: it is not known whether an earlier attempt to send this mail reached you.\n")
-    if now - moment(due.first_due_at) > LATE_AFTER:
+    if _is_late(due, now):
         remarks.append(f"late: this mail was due at {due.first_due_at} and could not be sent until now.\n")
     return [*remarks, "\n"] if remarks else []
 

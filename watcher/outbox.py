@@ -81,6 +81,8 @@ class Files:
         self._clock = clock
         self._backoff = backoff
         self._closed = False
+        #: The results folder was made and its name was not forced to disk yet.
+        self._nameless = False
 
     def renew(self, results: Path) -> None:
         """Deliver to this results folder from now on."""
@@ -93,7 +95,7 @@ class Files:
         with contextlib.suppress(OSError):  # each delivery says what is wrong; mails must not wait for it
             if not self._outgoing.any_file_delivered():
                 self._results.mkdir(parents=True, exist_ok=True)
-                self._disk.sync_folder(self._results.parent)
+                self._nameless = True
             for folder in (self._results, *(each for each in self._results.iterdir() if each.is_dir())):
                 sweep(folder)
 
@@ -116,6 +118,10 @@ class Files:
 
     def _deliver(self, due: DueFile) -> None:
         try:
+            if self._nameless:
+                # Before anything counts as delivered: a power cut would take the folder with all that lies in it.
+                self._disk.sync_folder(self._results.parent)
+                self._nameless = False
             deliver(due, self._results, self._disk)
         except (OSError, WatcherError) as error:
             again = self._clock.now() + self._backoff.after(due.attempts + 1)

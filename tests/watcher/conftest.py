@@ -284,6 +284,8 @@ def sign_in_as() -> Callable[[str, str], Callable[..., AuthResult]]:
 class _Bench:
     """A place with exports, results and records, and the real service over it with the stub worker."""
 
+    stub_worker = STUB_WORKER
+
     def __init__(self, folder: Path) -> None:
         self.exports = folder / "exports"
         self.results = folder / "results"

@@ -209,3 +209,19 @@ def test_nothing_settles_within_the_settling_time_of_a_change(tmp_path_factory: 
         elif folder.look(now).settled:
             assert written is not None
             assert now - written >= 2.0
+
+
+def test_what_is_gone_is_forgotten_and_what_is_there_is_not(root: Path) -> None:
+    """Of thousands of files that were taken in and removed no memory is kept; those still there are not taken again."""
+    folder = Folder(root, settle_seconds=1.0)
+    for number in range(1500):
+        (root / f"FL-{number}.csv").write_text("12.5")
+    folder.look(100.0)
+    for candidate in folder.look(102.0).settled:
+        folder.taken(candidate)
+    assert len(folder._taken) == 1500
+    for number in range(1400):
+        (root / f"FL-{number}.csv").unlink()
+
+    assert [folder.look(second).settled for second in (103.0, 104.0, 105.0)] == [(), (), ()]
+    assert len(folder._taken) == 100
