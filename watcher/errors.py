@@ -17,6 +17,8 @@ The tree, for whoever must know what to catch::
     ├── WorkerStopped           worker             the service itself is stopping: costs nothing
     ├── ReplyBroken             replies            the worker's answer has the wrong form
     ├── PasswordUnreadable      password           no password to sign in to the mail server with
+    ├── RequestRefused          requests           what a person asked for cannot be done
+    ├── RecordsOnNetwork        places             the records would lie on another computer
     ├── InstanceHeld            instance           another service holds the records folder
     ├── PublishedUnusable       verification       the published examples that ship with the program are damaged
     └── ServiceUnready          service            nothing was adopted yet

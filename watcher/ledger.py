@@ -406,7 +406,9 @@ class Ledger:
             ).rowcount:
                 return False
             export = txn.execute(
-                "SELECT id, state FROM exports WHERE name = ? ORDER BY id DESC LIMIT 1", (request.export,)
+                "SELECT id, name, state FROM exports WHERE name = :name OR id IN (SELECT export_id FROM files "
+                "WHERE target = :name) ORDER BY id DESC LIMIT 1",
+                {"name": request.export},
             ).fetchone()
             if export is None:
                 raise RequestRefused(
@@ -415,7 +417,7 @@ class Ledger:
                 )
             facts: dict[str, object] = {"request": request.id, "by": request.by, "why": request.why}
             if request.kind == "note":
-                facts["closed"] = failures.close_by_note(txn, request.export, request.by, now)
+                facts["closed"] = failures.close_by_note(txn, export["name"], request.by, now)
             elif export["state"] in ("accepted", "superseded"):
                 raise RequestRefused(
                     f"Export {request.export} is {export['state']}, not finished. Nothing was recorded. "
