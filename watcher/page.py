@@ -20,10 +20,12 @@ if TYPE_CHECKING:
 
 #: A verdict's sign, so that colour is never the only one.
 SIGNS = {"pass": "✓", "warn": "!", "fail": "✗", "incomplete": "…", "not spiked": "–"}
-#: Up to so many series, those that pass have plots as well.
+#: Up to so many series, those that pass have tables and plots as well.
 PLOTS_FOR_ALL = 24
-#: Up to so many series that do not pass have plots; more would make the page too large to open on a phone.
-MOST_PLOTS = 200
+#: So many series have plots at most; more would make the page too large to open on a phone.
+MOST_PLOTS = 12
+#: So many series have their tables at most; those further on are named with what failed, the record has the rest.
+MOST_DETAILED = 80
 
 
 def page(record: dict[str, Any]) -> str:
@@ -35,14 +37,18 @@ def page(record: dict[str, Any]) -> str:
         The JSON record of an export, as read from its result file (``"format": 1``).
     """
     entries = [_entry(place, series) for place, series in enumerate(record["series"])]
-    _draw(entries, record)
     failing = [entry for entry in entries if entry["series"]["verdict"] != "pass"]
+    passing = [entry for entry in entries if entry["series"]["verdict"] == "pass"]
+    detailed = failing + (passing if len(entries) <= PLOTS_FOR_ALL else [])
+    for entry in detailed[:MOST_DETAILED]:
+        entry["detailed"] = True
+    _draw(detailed[:MOST_PLOTS], record)
     return _template().render(
         record=record,
         export=record["export"],
         entries=entries,
         failing=failing,
-        passing=[entry for entry in entries if entry["series"]["verdict"] == "pass"],
+        passing=passing,
         actions=_actions(failing),
         counts=_counts(entries),
         grid=_grid(entries),
@@ -82,6 +88,7 @@ def _entry(place: int, series: dict[str, Any]) -> dict[str, Any]:
         "sign": SIGNS.get(series["verdict"], "?"),
         "kind": series["verdict"].replace(" ", "-"),
         "raised": [c for c in series["checks"] if c["outcome"] not in ("pass", "not evaluated")],
+        "detailed": False,
         "line_plot": None,
         "recovery_plot": None,
     }
@@ -89,12 +96,8 @@ def _entry(place: int, series: dict[str, Any]) -> dict[str, Any]:
 
 def _draw(entries: list[dict[str, Any]], record: dict[str, Any]) -> None:
     slopes = {(c["analyte"], c["channel"]): c["slope"] for c in record["calibrations"]}
-    left = MOST_PLOTS
     for entry in entries:
         series = entry["series"]
-        if left == 0 or (series["verdict"] == "pass" and len(entries) > PLOTS_FOR_ALL):
-            continue
-        left -= 1
         entry["line_plot"] = plots.additions_plot(series, slopes.get((series["analyte"], series["channel"])))
         entry["recovery_plot"] = plots.recoveries_plot(series)
 

@@ -18,7 +18,7 @@ from scipy import stats
 INK, LINE, SHADE = "#1c2430", "#1f4e8c", "#c9d3df"
 #: Points that a drawn line or band has.
 STEPS = 60
-_STYLE = {"svg.hashsalt": "spikewarden", "svg.fonttype": "path", "font.size": 9.0, "axes.edgecolor": INK}
+_STYLE: Any = {"svg.hashsalt": "spikewarden", "svg.fonttype": "path", "font.size": 9.0, "axes.edgecolor": INK}
 
 
 def additions_plot(series: dict[str, Any], calibration_slope: float | None) -> str | None:

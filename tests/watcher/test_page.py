@@ -120,3 +120,14 @@ def test_the_band_is_that_of_the_fitted_line() -> None:
     assert half is not None
     t_of_two_degrees = 4.302652729911275  # published tables, 97.5 %
     assert half[0] / fit["slope"] / t_of_two_degrees == pytest.approx(fit["u_line"], rel=1e-9)
+
+
+def test_a_large_failing_export_stays_small_and_names_every_series() -> None:
+    """Thousands of series that fail stay under 5 MB, and each is still named and linked."""
+    shown = record()
+    series = shown["series"][0] | {"verdict": "fail"}
+    shown["series"] = [series | {"sample": f"SED-{i // 70}", "analyte": f"E{i % 70}"} for i in range(4200)]
+    text = page(shown)
+    assert len(text.encode()) < 5_000_000
+    anchors = re.findall(r'<article id="(s\d+)"', text)
+    assert len(anchors) == len(set(anchors)) == 4200
