@@ -131,3 +131,12 @@ def test_a_large_failing_export_stays_small_and_names_every_series() -> None:
     assert len(text.encode()) < 5_000_000
     anchors = re.findall(r'<article id="(s\d+)"', text)
     assert len(anchors) == len(set(anchors)) == 4200
+
+
+def test_the_banner_is_not_at_ease_while_the_export_has_problems() -> None:
+    """An export with a problem never says that all checks held, though every series passes."""
+    shown = record()
+    shown["series"] = [shown["series"][0] | {"verdict": "pass"}]
+    assert "The stated checks held" in page(shown)
+    shown["problems"] = ["line 9: expected a sample ID, got nothing"]
+    assert "The stated checks held" not in page(shown)
