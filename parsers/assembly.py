@@ -399,6 +399,7 @@ class _Assembly:
         unfold = self.values.layout.unfold
         samples = is_sample(role) & (unfold is None or not unfold.optional)
         nominal = unfold.nominal if unfold is not None else None
+        self._leave_out_clean_blanks(role, present)
         for odd in self.values.odd:
             if odd.field != "signal" or odd.entry is None:
                 continue
@@ -414,6 +415,23 @@ class _Assembly:
                     text = self.values.label[row] or ""
                     self.set_aside.append(SetAside(int(self.values.table.line[row]), reason, text))
         return present
+
+    def _leave_out_clean_blanks(self, role: NDArray[np.int8], present: NDArray[np.bool_]) -> None:
+        """Set blanks aside in which the instrument found nothing: that is what a blank is for, and no fault."""
+        below: dict[tuple[int, int | None], int] = {}
+        for odd in self.values.odd:
+            if odd.field == "signal":
+                for row, cell in odd.cells.items():
+                    if cell.kind is Kind.BELOW and role[row] == Role.BLANK and self.keep[row]:
+                        below[row, odd.entry] = below.get((row, odd.entry), 0) + 1
+        mapped = self.values.plan.mapped.get("signal")
+        replicates = len(mapped.columns) if mapped is not None else 1
+        for (row, entry), count in below.items():
+            if entry is None and count < replicates:
+                continue  # some replicates are numbers: what the others hid stays a fault
+            present[row, slice(None) if entry is None else entry] = False
+            reason = "blank below the instrument's range: nothing was found"
+            self.set_aside.append(SetAside(int(self.values.table.line[row]), reason, self.values.label[row] or ""))
 
 
 def _flags(texts: Texts, pattern: re.Pattern[str]) -> Texts:

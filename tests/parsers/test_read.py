@@ -13,6 +13,7 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from parsers.errors import ExportRefused
+from parsers.layout import parse_layout
 from parsers.read import claims, is_finished, read
 from parsers.readings import Readings, Role, Texts
 
@@ -537,3 +538,38 @@ def test_every_line_is_read_or_set_aside(
     assert all(entry.reason for entry in readings.set_aside)
     assert wide or (not read_lines & set(aside) and len(set(aside)) == len(aside))
     assert {problem.line for problem in readings.problems} <= set(aside)
+
+
+CENSORED = """\
+layout: censored
+claims: {file: '*'}
+separator: ';'
+columns: {label: Label, analyte: {constant: Zn}, signal: %s}
+labels:
+  - {like: 'BLK*', role: blank}
+  - {like: '{sample}', role: unspiked}
+cells: {below: '^<'}
+"""
+
+
+def test_a_blank_in_which_nothing_was_found_is_no_fault():
+    """A blank below the instrument's range is set aside with its reason; a sample below it fails its series as ever."""
+    layout = parse_layout(CENSORED % "R1", "censored.yaml")
+
+    found = read(b"Label;R1\nBLK 1;<0.02\nBLK 2;0.03\nSED-12;<0.02\n", layout, "X-1.csv")
+
+    assert [(aside.line, aside.reason) for aside in found.set_aside if aside.line > 1] == [
+        (2, "blank below the instrument's range: nothing was found")
+    ]
+    assert [fault.line for fault in found.faults] == [4]
+    assert found.line.tolist() == [3, 4]
+
+
+def test_a_blank_of_which_one_replicate_was_lost_stays_a_fault():
+    """Where a replicate of a blank is a number and another is below the range, the blank is not thrown away."""
+    layout = parse_layout(CENSORED % "[R1, R2]", "censored.yaml")
+
+    found = read(b"Label;R1;R2\nBLK 1;<0.02;0.5\nBLK 2;<0.02;<0.02\nSED-12;1;1\n", layout, "X-1.csv")
+
+    assert [fault.line for fault in found.faults] == [2]
+    assert found.line.tolist() == [2, 4]
