@@ -40,6 +40,15 @@ class Disk:
     def __init__(self, pause: Callable[[float], None] = time.sleep) -> None:
         self._pause = pause
 
+    def open(self, folder: Path) -> tuple[int, Path]:
+        """Open a new file without its name yet, in the folder that it belongs to."""
+        descriptor, name = tempfile.mkstemp(dir=folder, prefix=TEMPORARY_PREFIX, suffix=TEMPORARY_SUFFIX)
+        return descriptor, Path(name)
+
+    def write(self, descriptor: int, piece: memoryview) -> int:
+        """Append what the system takes at once; returns how much that was."""
+        return os.write(descriptor, piece)
+
     def sync(self, descriptor: int) -> None:
         """Force an open file to disk; a failure is final, since the system may have dropped the data."""
         os.fsync(descriptor)
@@ -114,9 +123,9 @@ class TemporaryFile:
 
     def __init__(self, disk: Disk, folder: Path) -> None:
         self._disk = disk
-        self._descriptor, name = tempfile.mkstemp(dir=folder, prefix=TEMPORARY_PREFIX, suffix=TEMPORARY_SUFFIX)
         self._open = True
-        self._path: Path | None = Path(name)
+        self._path: Path | None
+        self._descriptor, self._path = disk.open(folder)
 
     def __enter__(self) -> Self:
         return self
@@ -130,7 +139,7 @@ class TemporaryFile:
         """Append a piece."""
         view = memoryview(piece)
         while view:
-            view = view[os.write(self._descriptor, view) :]
+            view = view[self._disk.write(self._descriptor, view) :]
 
     def become(self, path: Path, step: str | None) -> None:
         """Force the content to disk and give the file its name, readable as the user's mask says."""

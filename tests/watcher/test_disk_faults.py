@@ -34,6 +34,14 @@ class _FailingDisk(Disk):
                 self.failed = True
                 raise OSError(self.code, os.strerror(self.code))
 
+    def open(self, folder: Path) -> tuple[int, Path]:
+        self._pass("open")
+        return super().open(folder)
+
+    def write(self, descriptor: int, piece: memoryview) -> int:
+        self._pass("write")
+        return super().write(descriptor, piece)
+
     def sync(self, descriptor: int) -> None:
         self._pass("sync")
         super().sync(descriptor)
@@ -54,7 +62,11 @@ def _once(bench: Any, disk: Disk) -> Any:
 @pytest.mark.proof
 @pytest.mark.parametrize("code", [errno.EIO, errno.EACCES, errno.ENOSPC, errno.EXDEV], ids=lambda c: errno.errorcode[c])
 @pytest.mark.parametrize(
-    ("step", "place"), [*(("sync", n) for n in range(1, 10)), *(("replace", n) for n in (1, 2, 3))]
+    ("step", "place"),
+    [
+        *(("sync", n) for n in range(1, 10)),
+        *((step, n) for step in ("open", "write", "replace") for n in (1, 2, 3)),
+    ],
 )
 def test_a_failed_step_is_never_done_and_is_made_good(bench: Any, step: str, place: int, code: int) -> None:
     """Whatever step fails, no file is half there; once the disk is well, files and states are as they should be."""
