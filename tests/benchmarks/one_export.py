@@ -12,7 +12,7 @@ from contextlib import contextmanager
 from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
-from watcher.folder import Candidate
+from watcher.folder import Candidate, signature_of
 
 if TYPE_CHECKING:
     from collections.abc import Iterator, Mapping
@@ -46,8 +46,7 @@ def travel(laboratory: Laboratory, path: Path, content: bytes) -> Journey:
 def land(path: Path, content: bytes) -> Candidate:
     """Write an export into its folder, as the instrument's program does."""
     path.write_bytes(content)
-    found = path.stat()
-    return Candidate(path, path.name, (found.st_size, found.st_mtime_ns, found.st_ino))
+    return Candidate(path, path.name, signature_of(path.stat()))
 
 
 def accept(laboratory: Laboratory, candidate: Candidate) -> ExportRow:

@@ -100,7 +100,7 @@ def _evaluate_here(opened: Laboratory, path: Path, staging: Path) -> None:
     inside.handle(opened.service._worker.on_start[0])
     request = {
         "do": "evaluate", "copy": str(path), "name": path.name, "revision": 1, "alerted": [], "final": False,
-        "others": [], "lent": None,
+        "others": [], "lent": None, "seal": None, "previous": None,
         "accepted_at": "2026-12-01T09:00:00.000000Z", "staging": str(staging),
     }  # fmt: skip
     fate = inside.handle(request)["fate"]
