@@ -23,13 +23,15 @@ from parsers.drafting.drawing import Drawing, scalar
 from parsers.drafting.errors import DraftRefused
 from parsers.drafting.example import USUAL, open_example
 from parsers.drafting.headers import take_apart
+from parsers.drafting.lines import block_lines, by_name, header_line, odd_lines, row_rules, skips, until_line
 from parsers.drafting.mapping import element_in, find_columns
 from parsers.drafting.naming import find_labels
 from parsers.drafting.numerals import find_marks, numberish
 from parsers.drafting.oddities import find_oddities
+from parsers.drafting.patterns import literal
 from parsers.drafting.preamble import find_heading
-from parsers.drafting.structure import find_structure, split
-from parsers.drafting.vocabulary import begins_with_statistic, measure, role_of
+from parsers.drafting.structure import find_structure
+from parsers.drafting.vocabulary import measure, role_of
 from parsers.errors import DocumentInvalid
 from parsers.layout import Layout, parse_layout
 from parsers.spelling import fold, listed
@@ -142,7 +144,8 @@ class _Draughtsman:
         texts = ("label", "role", "analyte", "channel", "measured_at", "batch", "analyst", "instrument", "comment",
                  "position", "predilution", "replicate")  # fmt: skip
         named = [at for name, columns in self.mapping.columns.items() if name not in texts for at in columns]
-        return [cell for at in dict.fromkeys([*named, *wide]) for cell in self.together.column(at) if numberish(cell)]
+        cells = (cell for at in dict.fromkeys([*named, *wide]) for cell in self.together.column(at))
+        return [bare for cell in cells if numberish(bare := cell.strip("[] "))]
 
     def _top(self) -> None:
         drawing, example = self.drawing, self.first.example
@@ -163,30 +166,28 @@ class _Draughtsman:
         word = first.separator
         drawing.add(f"separator: {word if word in ('tab', 'blanks') else scalar(word)}")
         if any(structure.header_at != 0 for structure in self.structures):
-            drawing.add(f"header: {scalar(_start_of(first, first.header_at))}")
+            drawing.add(f"header: {scalar(header_line(first))}")
         if first.header_lines > 1:
             drawing.add(f"header_lines: {first.header_lines}")
             if first.repeat_right:
                 drawing.add(f"repeat_right: [{', '.join(map(str, first.repeat_right))}]")
-        if first.block_key:
-            drawing.add(
-                f"blocks: {{begin: {scalar('^' + _escaped(first.block_key))}, heading: {{label: {_after(first)}}}}}"
-            )
+        if first.blocks is not None:
+            drawing.add(f"blocks: {block_lines(first.blocks)}")
         filled = [scalar(first.headers[at]) for at in self.together.fill_down]
         if filled:
             drawing.add(f"fill_down: [{', '.join(filled)}]")
         rules = self._rows()
         if rules:
             drawing.add("rows:", *(f"  - {rule}" for rule in rules))
-        skips = list(dict.fromkeys(skip for structure in self.structures for skip in _skips(structure)))
-        if skips:
-            drawing.add(f"skip: [{', '.join(map(scalar, skips))}]")
+        left_out = list(dict.fromkeys(skip for structure in self.structures for skip in skips(structure)))
+        if left_out:
+            drawing.add(f"skip: [{', '.join(map(scalar, left_out))}]")
         for structure in self.structures:
-            drawing.doubt(_odd_lines(structure))
+            drawing.doubt(odd_lines(structure))
         until = (
             ""
-            if first.block_key
-            else next((found for structure in self.structures if (found := _until(structure))), "")
+            if first.blocks
+            else next((found for structure in self.structures if (found := until_line(structure))), "")
         )
         if until:
             drawing.add(f"until: {scalar(until)}")
@@ -195,16 +196,23 @@ class _Draughtsman:
             drawing.doubt(
                 "this looks like the line that ends every complete export; an export without it is not evaluated"
             )
-            drawing.add(f"finished: {scalar('^' + _escaped(last.strip()))}")
+            drawing.add(f"finished: {scalar('^' + literal(last.strip()))}")
 
     def _rows(self) -> list[str]:
         """Return the rules of rows that are no readings."""
-        rules = list(dict.fromkeys(rule for structure in self.structures for rule in _row_rules(structure)))
+        rules = list(dict.fromkeys(rule for structure in self.structures for rule in row_rules(structure)))
         for at, words in self.mapping.excluded.items():
             name = self.first.headers[at]
             self.drawing.doubt(f"{listed(words)} in {name!r} is taken for: this reading does not count")
-            pattern = "|".join(map(_escaped, words))
+            pattern = "|".join(map(literal, words))
             rules.append(f"{{where: {{{scalar(name)}: {scalar(f'^(?:{pattern})$')}}}, are: excluded}}")
+        if self.mapping.nameless is not None:
+            name = self.first.headers[self.mapping.nameless]
+            self.drawing.doubt(
+                "rows without a label: further readings of the vial above, or statistics? Left out. If they are "
+                f"readings, write fill_down: [{scalar(name)}] instead of this rule"
+            )
+            rules.append(f"{{where: {{{scalar(name)}: '^$'}}, are: left out}}")
         if self.left_out:
             rules.append(self._left_out_rule())
         return rules
@@ -218,12 +226,12 @@ class _Draughtsman:
             If no column holds the labels, so that no such rule can be written.
         """
         at = self.mapping.at("label")
-        if at is None or not _by_name(self.first, at):
+        if at is None or not by_name(self.first, at):
             sentence = (
                 f"{listed(self.left_out[:4])}: it cannot be told what these labels mean. Write the layout by hand."
             )
             raise DraftRefused(self.first.example.name, sentence)
-        pattern = "|".join(map(_escaped, self.left_out))
+        pattern = "|".join(map(literal, self.left_out))
         return f"{{where: {{{scalar(self.first.headers[at])}: {scalar(f'^(?:{pattern})$')}}}, are: left out}}"
 
     def _values(self) -> None:
@@ -237,6 +245,7 @@ class _Draughtsman:
         drawing, mapping = self.drawing, self.mapping
         wide = mapping.wide
         mapped = set(mapping.columns) | ({"analyte", "channel", "signal"} if wide else set())
+        mapped |= set(self.first.blocks.heading) if self.first.blocks else set()
         heading = find_heading(self.first, mapped)
         if heading:
             drawing.add("heading:")
@@ -248,7 +257,7 @@ class _Draughtsman:
         for name, value in lines.items():
             drawing.doubt(mapping.doubts.get(name, ""), "  ")
             drawing.add(f"  {name}: {value}")
-        if wide is None and "analyte" not in mapping.columns and "analyte" not in heading:
+        if wide is None and "analyte" not in mapped and "analyte" not in heading:
             self._analyte()
         for at in mapping.additions:
             name = scalar(mapping.headers[at].written)
@@ -310,7 +319,7 @@ class _Draughtsman:
 
     def _labels(self) -> None:
         drawing, columns = self.drawing, self.mapping.columns
-        cells = self.together.block_names or self.together.column(columns["label"][0])
+        cells = self.together.names or self.together.column(columns["label"][0])
         additions = bool({"added", "spike_volume"} & columns.keys())
         labels = find_labels(
             cells,
@@ -394,103 +403,10 @@ def _joined(structures: Sequence[Structure]) -> Structure:
     """Return the first structure with the rows of all of them."""
     first = structures[0]
     rows = [row for structure in structures for row in structure.rows]
-    names = [name for structure in structures for name in structure.block_names]
-    return replace(first, rows=rows, block_names=names)
+    names = [name for structure in structures for name in structure.names]
+    return replace(first, rows=rows, names=names)
 
 
 def _title(name: str) -> str:
     stem = re.sub(r"[\W\d_]+", " ", name.rpartition(".")[0] or name).strip()
     return f"{stem} exports" if stem else "exports"
-
-
-def _escaped(text: str) -> str:
-    r"""Escape a text for a pattern, readable: ``Rep\. 1`` and no backslash before a blank."""
-    return re.sub(r"\\([ \-#;,:=%&~'\"<>/@!])", r"\1", re.escape(text)).replace("\\\t", r"\t").replace("\t", r"\t")
-
-
-def _start_of(structure: Structure, at: int) -> str:
-    """Return a pattern of the beginning of a line that no other line has."""
-    line, character = structure.example.lines[at], structure.character
-    others = [text for number, text in enumerate(structure.example.lines) if number != at and text != line]
-    end = 0
-    for _ in range(line.count(character)):
-        end = line.find(character, end) + 1
-        if line[:end].strip(f"{character} ") and not any(text.startswith(line[:end]) for text in others):
-            return f"^{_escaped(line[:end])}"
-    return f"^{_escaped(line)}$"
-
-
-def _after(structure: Structure) -> str:
-    """Return a pattern of what stands behind the beginning of a block."""
-    return scalar(f"^{_escaped(structure.block_key)}\\s*([^;\\t,]+)")
-
-
-def _row_rules(structure: Structure) -> Iterable[str]:
-    """Return what the rows are that hold statistics of others, by the column that says so."""
-    said: dict[int, list[str]] = {}
-    for at, column in structure.statistics.items():
-        said.setdefault(column, []).append(split(structure.example.lines[at], structure.character)[column])
-    for column, words in said.items():
-        if _by_name(structure, column):
-            pattern = "|".join(map(_escaped, dict.fromkeys(words)))
-            yield f"{{where: {{{scalar(structure.headers[column])}: {scalar(f'^(?:{pattern})$')}}}, are: left out}}"
-
-
-def _by_name(structure: Structure, column: int) -> bool:
-    """Tell whether a column has a name of its own."""
-    name = structure.headers[column]
-    return bool(name) and structure.headers.count(name) == 1
-
-
-def _skips(structure: Structure) -> list[str]:
-    """Return patterns of the lines among the rows that are none, as far as they are surely none."""
-    found = []
-    if structure.units_at is not None:
-        found.append(f"^{_escaped(structure.example.lines[structure.units_at])}$")
-    separator = _escaped(structure.character)
-    for at, column in structure.statistics.items():
-        if _by_name(structure, column):
-            continue  # told by rows
-        word = _escaped(structure.example.lines[at].split(structure.character)[column].strip())
-        before = f"(?:[^{separator}]*{separator}){{{column}}}" if column else ""
-        found.append(rf"^{before}\s*{word}\s*(?:{separator}|$)")
-    found += [_general(structure.example.lines[at]) for at in structure.stray if _is_text(structure, at)]
-    return list(dict.fromkeys(found))
-
-
-def _general(line: str) -> str:
-    if begins_with_statistic(line):
-        word = re.match(r"[\W\d]*[^\W\d]+", line)
-        return "^" + _escaped(word.group() if word else line) + r"\b"
-    return "^" + re.sub(r"\d+", lambda _: r"\d+", _escaped(line.rstrip())) + r"\s*$"
-
-
-def _is_text(structure: Structure, at: int) -> bool:
-    """Tell whether a line is words only or a statistic, such as the head of a printed page, and no broken row."""
-    if begins_with_statistic(structure.example.lines[at]):
-        return True
-    cells = [cell for cell in structure.example.lines[at].split(structure.character) if cell.strip()]
-    return len(cells) == 1
-
-
-def _odd_lines(structure: Structure) -> Iterable[str]:
-    wrong = [at + 1 for at in structure.stray if not _is_text(structure, at)]
-    if wrong:
-        yield (
-            f"line{'s' if len(wrong) > 1 else ''} {', '.join(map(str, wrong[:10]))} of {structure.example.name}: other "
-            f"fields than the {len(structure.headers)} of the header, so the export is refused. Leave them out with "
-            f"skip only if they are no readings"
-        )
-
-
-def _until(structure: Structure) -> str:
-    """Return a pattern of the first line behind the table, where one stands there."""
-    if structure.tail is None:
-        return ""
-    line = structure.example.lines[structure.tail]
-    before = structure.example.lines[: structure.tail]
-    word = re.match(r"\W*[A-Za-zÄÖÜäöü]+(?: [A-Za-z]+)*", line)
-    for text in ([word.group()] if word else []) + [line]:
-        if text.strip() and not any(other.startswith(text) for other in before):
-            return f"^{_escaped(text)}"
-    return ""

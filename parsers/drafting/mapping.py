@@ -80,6 +80,8 @@ class Mapping:
         Columns that may say what was added, and cannot be read as long as nobody says their unit.
     excluded
         Columns that say which readings do not count, with the words that say so.
+    nameless
+        The column of labels, where some rows have none and nothing says whether they are readings.
     bracketed
         Whether the nominals stand in brackets in a column that holds results otherwise.
     """
@@ -92,6 +94,7 @@ class Mapping:
     left: list[str] = field(default_factory=list)
     additions: list[int] = field(default_factory=list)
     bracketed: bool = False
+    nameless: int | None = None
     excluded: dict[int, list[str]] = field(default_factory=dict)
 
     def at(self, field_name: str) -> int | None:
@@ -142,8 +145,12 @@ def find_columns(structure: Structure) -> Mapping:
     finder.times()
     if "analyte" not in mapping.columns:
         mapping.wide = find_wide(mapping.headers, finder.taken(besides=_OF_READINGS), finder.is_numbers)
+    if mapping.wide is not None and mapping.wide.computed and len(mapping.wide.columns) == 1 and "signal" in mapping.columns:
+        mapping.wide = None  # one analyte, whose result stands beside its signal
     if mapping.wide is None:
         finder.signal()
+    else:  # a mode or a channel may have a word of additions
+        mapping.additions = [at for at in mapping.additions if at not in mapping.wide.columns]
     for name in _OF_READINGS if mapping.wide is not None else ():
         mapping.columns.pop(name, None)
     finder.excluded()
@@ -226,7 +233,7 @@ class _Finder:
         mapping = self.mapping
         if {"added", "spike_volume"} & mapping.columns.keys():
             return
-        labels = self.structure.block_names or self.structure.column(mapping.columns["label"][0])
+        labels = self.structure.names or self.structure.column(mapping.columns["label"][0])
         wide = mapping.wide.columns if mapping.wide else []
         for at in range(len(mapping.headers)):
             if at in self.taken() or at in wide or at in mapping.additions or self.counts(at):
@@ -268,7 +275,7 @@ class _Finder:
             If no column names the vials.
         """
         mapping = self.mapping
-        if self.structure.block_key:
+        if self.structure.names:
             mapping.columns.pop("label", None)
             return
         if "label" in mapping.columns:
@@ -293,13 +300,57 @@ class _Finder:
         raise DraftRefused(self.structure.example.name, sentence, self.structure.header_at + 1)
 
     def _fill_down(self, at: int) -> None:
-        """Fill labels down where the first of every so many rows is named: anything less regular is a missing label."""
+        """Fill labels down where a column tells the rows of each vial apart; else leave rows without label out.
+
+        A row without label may be a further reading of the vial above as well as a statistic of it. Replicate numbers
+        that begin anew with each label, or analytes that recur, prove the former.
+        """
         cells = self.structure.column(at)
         named = [row for row, cell in enumerate(cells) if cell]
-        steps = {after - before for before, after in pairwise([*named, len(cells)])}
-        if named and named[0] == 0 and len(named) > 1 and len(steps) == 1 and steps != {1}:
-            self.structure.fill_down.append(at)
+        if not named or named[0] != 0 or len(named) in (1, len(cells)):
+            return
+        self._counting(named, len(cells))
+        if self._replicates_restart(named, len(cells)) or self._analytes_recur(named, len(cells)):
+            self.structure.fill_down += [one for one in range(len(self.mapping.headers)) if self._as_empty_as(one, at)]
             self.mapping.doubts["label"] = "only the first row of each vial is named; the name is filled down"
+        elif len({after - before for before, after in pairwise([*named, len(cells)])}) == 1:
+            self.mapping.nameless = at
+            self.structure.rows = [row for row in self.structure.rows if row[1][at]]
+
+    def _as_empty_as(self, at: int, label: int) -> bool:
+        """Tell whether a column of texts is filled in the rows that are named, and in no others."""
+        cells, labels = self.structure.column(at), self.structure.column(label)
+        return all(bool(cell) == bool(name) for cell, name in zip(cells, labels, strict=True)) and (
+            at == label or not self.is_numbers(at)
+        )
+
+    def _replicates_restart(self, named: list[int], count: int) -> bool:
+        """Tell whether replicate numbers count from 1 within each vial."""
+        at = self.mapping.at("replicate")
+        return at is not None and self._counts_up(at, named, count)
+
+    def _analytes_recur(self, named: list[int], count: int) -> bool:
+        """Tell whether each vial has one row for each of the same analytes."""
+        at = self.mapping.at("analyte")
+        if at is None:
+            return False
+        cells = self.structure.column(at)
+        groups = [sorted(cells[first:last]) for first, last in pairwise([*named, count])]
+        return all(group == groups[0] and len(set(group)) == len(group) for group in groups)
+
+    def _counting(self, named: list[int], count: int) -> None:
+        """Map a column whose numbers count from 1 within each vial as the replicates, whatever its header says."""
+        if "replicate" in self.mapping.columns:
+            return
+        free = [at for at in range(len(self.mapping.headers)) if self.mapping.headers[at].written]
+        found = [at for at in free if at not in self.taken() and self._counts_up(at, named, count)]
+        if len(found) == 1:
+            self.mapping.columns["replicate"] = found
+
+    def _counts_up(self, at: int, named: list[int], count: int) -> bool:
+        cells = self.structure.column(at)
+        groups = [cells[first:last] for first, last in pairwise([*named, count])]
+        return all(group == [str(number) for number in range(1, len(group) + 1)] for group in groups)
 
     def bracketed(self) -> None:
         """Take nominals out of a column in which they stand in brackets beside results."""

@@ -10,6 +10,7 @@ import re
 from dataclasses import dataclass, field
 from typing import TYPE_CHECKING
 
+from parsers.drafting.blocks import find_blocks
 from parsers.drafting.errors import DraftRefused
 from parsers.drafting.numerals import numberish
 from parsers.drafting.vocabulary import begins_with_statistic, is_mean, is_statistic, is_unit
@@ -17,15 +18,11 @@ from parsers.spelling import fold, shown
 from parsers.splitting import MOST_LINES_IN_CELL
 
 if TYPE_CHECKING:
+    from parsers.drafting.blocks import Blocks
     from parsers.drafting.example import Example
 
 #: Separators by what a layout calls them, the surer ones first: a decimal comma makes commas look regular.
 SEPARATORS = {"tab": "\t", ";": ";", "|": "|", ",": ",", "blanks": " "}
-#: A line that names a vial by itself.
-_NAMING = re.compile(
-    r"(?P<key>(?:Sample(?: ID| [Nn]ame| [Ll]abel)?|Label|Vial|Solution|Vessel|Probe)\s*[:=])\s*"
-    r"(?P<name>[^;\t,]*[^;\t,\s])[;,\t\s]*$"
-)
 #: A line that begins another section.
 _SECTION = re.compile(r"\s*\[[^\[\]]+\][;,\t\s]*")
 #: Fewest rows from which a shape is made out.
@@ -58,9 +55,16 @@ class Structure:
         Index of the first line behind the table that is not blank, or None.
     header_lines, repeat_right
         How many lines the header has, and which of them (from 1) name several columns to their right.
-    block_key, block_names
-        The beginning of a line that names the vial of the rows below it, where there are such lines, and the name of
-        each row.
+    blocks
+        The lines that begin another block of rows, where there are any.
+    names
+        The label of each row, where no column holds it.
+    any_order
+        Whether the headers of blocks have their columns in different orders.
+    table, widths
+        As a layout writes them, where the table is no plain one or has no separator.
+    headless
+        Whether there is no header.
     fill_down
         Columns in which only the first of several rows of a vial is filled.
     """
@@ -77,8 +81,12 @@ class Structure:
     tail: int | None = None
     header_lines: int = 1
     repeat_right: list[int] = field(default_factory=list)
-    block_key: str = ""
-    block_names: list[str] = field(default_factory=list)
+    blocks: Blocks | None = None
+    names: list[str] = field(default_factory=list)
+    any_order: bool = False
+    table: str = ""
+    widths: list[int] = field(default_factory=list)
+    headless: bool = False
     fill_down: list[int] = field(default_factory=list)
 
     def column(self, at: int) -> list[str]:
@@ -92,7 +100,7 @@ class Structure:
     @property
     def character(self) -> str:
         """The separator itself."""
-        return SEPARATORS[self.separator]
+        return SEPARATORS.get(self.separator, self.separator)
 
 
 def find_structure(example: Example) -> Structure:
@@ -182,44 +190,50 @@ class _Trial:
         inside = self._inside(header_at)
         units_at = next((at for at in inside[:1] if self._holds_units(at)), None)
         again = [at for at in inside if self.example.lines[at] == self.example.lines[header_at]]
-        candidates = [at for at in inside if at != units_at and at not in again]
+        ordered = sorted(self.records[header_at])
+        reordered = [at for at in inside if at not in again and sorted(self.records[at]) == ordered]
+        candidates = [at for at in inside if at != units_at and at not in again and at not in reordered]
         statistics = self._statistics(candidates)
         rows = [at for at in candidates if at not in statistics]
         if not rows:
             raise DraftRefused(self.example.name, "expected rows of readings, found statistics only.", header_at + 1)
-        key, starts = self._blocks(header_at, again)
-        last = len(self.example.lines) if key else max([*rows, *statistics])
-        known = {*rows, *again, *statistics, *starts, units_at}
+        heads = sorted([header_at, *again, *reordered])
+        blocks = find_blocks(self.example.lines, heads) if len(header) == 1 else None
+        if reordered and blocks is None:
+            self._refuse_other_order(min(reordered))
+        rows_at = self._in_order(rows, header_at, reordered)
+        last = len(self.example.lines) if blocks else max([*rows, *statistics])
+        known = {*rows, *heads, *statistics, units_at}
+        if blocks is not None:  # what stands between a block's beginning and its header is told by the block
+            known |= {at for start, head in zip(sorted(blocks.starts), heads, strict=True) for at in range(start, head)}
         return Structure(
             example=self.example,
             separator=self.word,
             header_at=header[0],
             headers=self._names(header),
-            rows=[(at, self.records[at]) for at in rows],
+            rows=rows_at,
             units=self.records[units_at] if units_at is not None else [],
             units_at=units_at,
             statistics=statistics,
             stray=[at for at in self.records if header_at < at < last and at not in known],
             tail=next((at for at in self.records if at > last), None),
             header_lines=len(header),
-            block_key=key,
-            block_names=[starts[max(start for start in starts if start < at)] for at in rows] if key else [],
+            blocks=blocks,
+            names=[blocks.starts[blocks.start_of(at)] for at in rows] if blocks and blocks.named else [],
+            any_order=bool(reordered),
             repeat_right=[number for number, at in enumerate(header[:-1], 1) if self._is_group(at, header[-1])],
         )
 
-    def _blocks(self, header_at: int, again: list[int]) -> tuple[str, dict[int, str]]:
-        """Return how a line begins that names the vial of the table below it, and each such line's vial."""
-        found: dict[str, dict[int, str]] = {}
-        for at in self.records:
-            match = _NAMING.match(self.example.lines[at])
-            if match is not None:
-                found.setdefault(match["key"], {})[at] = match["name"].strip()
-        for key, starts in found.items():
-            heads = sorted([header_at, *again])
-            fits = len(starts) == len(heads) > 1
-            if fits and all(start < head for start, head in zip(sorted(starts), heads, strict=True)):
-                return key, starts
-        return "", {}
+    def _in_order(self, rows: list[int], header_at: int, reordered: list[int]) -> list[tuple[int, list[str]]]:
+        """Return the rows with their cells in the order of the first header."""
+        names = self.records[header_at]
+        heads = sorted([header_at, *reordered, *(at for at in self.records if self.records[at] == names)])
+        found = []
+        for at in rows:
+            head = self.records[max(head for head in heads if head < at)]
+            cells = self.records[at]
+            found.append((at, cells if head == names else [cells[head.index(name)] for name in names]))
+        return found
 
     def _statistics(self, rows: list[int]) -> dict[int, int]:
         """Return the rows that hold a statistic of others, each with the column that says so."""
@@ -294,22 +308,18 @@ class _Trial:
                 break
             if at > header_at and len(cells) == self.width:
                 inside.append(at)
-        self._refuse_other_order(header_at, inside)
         rows = set(self.body)
         while inside and (inside[-1] not in rows or any(map(begins_with_statistic, self.records[inside[-1]][:2]))):
             inside.pop()
         return inside
 
-    def _refuse_other_order(self, header_at: int, inside: list[int]) -> None:
+    def _refuse_other_order(self, at: int) -> None:
         """Refuse a second table whose columns stand in another order: its cells would be read as others."""
-        header = self.records[header_at]
-        for at in inside:
-            if sorted(self.records[at]) == sorted(header) and self.records[at] != header:
-                sentence = (
-                    "another header stands here, with its columns in another order. Write the layout by hand, with "
-                    "blocks, or export each part by itself."
-                )
-                raise DraftRefused(self.example.name, sentence, at + 1)
+        sentence = (
+            "another header stands here, with its columns in another order, and no line before each header says where "
+            "a part begins. Write the layout by hand, with blocks, or export each part by itself."
+        )
+        raise DraftRefused(self.example.name, sentence, at + 1)
 
     def _holds_numbers(self, at: int) -> bool:
         cells = [cell for cell in self.records[at] if cell]

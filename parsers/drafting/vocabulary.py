@@ -77,7 +77,7 @@ SERVICE_LABEL = re.compile(
 )
 #: Words of another role in the midst of a label, and dilutions: a person must say what they mean.
 DOUBTFUL_LABEL = re.compile(
-    r"[\s_-](?:std|standard|cal|qc|check|blank|blk)\b|\b(?:x\s?\d+|\d+\s?x|\d+\s?[:+]\s?\d+|dil\w*|df\s?\d+)\b",
+    r"[\s_-](?:std|standard|cal|qc|check|blank|blk)\b|\b(?:x\s?\d+|\d+\s?x|(?<![\w-])\d+\s?[:+]\s?\d+|dil\w*|df\s?\d+)\b",
     re.IGNORECASE,
 )
 SPIKE_WORD = re.compile(r"^(?:spk|spike|spiked|ms|lsp|fsp|add|addition|gespikt|aufgestockt)$", re.IGNORECASE)

@@ -28,6 +28,8 @@ _WRITTEN = (
     r"(?P<analyte>[A-Z][a-z]?)[ _-]?(?P<channel>\d{1,3}(?:\.\d+)?)",
     r"(?P<analyte>[A-Z][a-z]?)",
 )
+#: The mode of an instrument in which an element was measured.
+_MODE = re.compile(r"\[\s*\w+\s*\]")
 #: A numbered reading.
 _REPLICATE = re.compile(r"(?P<stem>R|Rep|rep|Replicate|Reading|reading|Run)[ .]?\s*\d{1,2}")
 _FIELDS = {
@@ -55,6 +57,8 @@ class Wide:
         What is uncertain.
     left
         Headers that name an element and are not read.
+    computed
+        Whether these columns hold what the instrument computed itself, for want of signals.
     """
 
     pattern: str
@@ -62,6 +66,7 @@ class Wide:
     columns: list[int]
     doubts: list[str]
     left: list[str]
+    computed: bool = False
 
 
 @dataclass(frozen=True, slots=True)
@@ -90,6 +95,8 @@ def find_wide(headers: Sequence[Header], taken: set[int], is_numbers: Callable[[
         )
     if not signals:
         return None
+    if any(_MODE.fullmatch(one.rest) for one in signals):
+        return _of_modes([one for one in signals if _MODE.fullmatch(one.rest)], headers, doubts, found)
     replicates = [_REPLICATE.fullmatch(one.rest) for one in signals]
     if signals and all(replicates):
         return _of_replicates(headers, signals, doubts, [one.at for one in found])
@@ -111,12 +118,25 @@ def find_wide(headers: Sequence[Header], taken: set[int], is_numbers: Callable[[
     if matching != {one.at for one in kept}:  # a header that only looks like an element, such as No or In
         symbols = sorted({_symbol(headers[one.at], one) for one in kept})
         pattern = pattern.replace("[A-Z][a-z]?", "|".join(symbols))
-    return Wide(pattern, fields, [one.at for one in kept], doubts, left)
+    return Wide(pattern, fields, [one.at for one in kept], doubts, left, computed=signals[0].field == "concentration")
 
 
 def _symbol(header: Header, found: _Found) -> str:
     match = _FORMS[found.form].fullmatch(header.written)
     return match["analyte"] if match else ""
+
+
+def _of_modes(
+    signals: list[_Found], headers: Sequence[Header], doubts: list[str], found: Sequence[_Found]
+) -> Wide | None:
+    """Read an element measured in several modes: mass, symbol and mode are the channel together."""
+    forms = {one.form for one in signals}
+    if len(forms) > 1:
+        return None
+    start = _WRITTEN[forms.pop()].replace("?P<channel>", "?:")
+    at = [one.at for one in signals]
+    left = [headers[one.at].written for one in found if one.at not in at]
+    return Wide(rf"^(?P<channel>{start}\s*\[\s*\w+\s*\])$", {}, at, doubts, left)
 
 
 def _of_replicates(headers: Sequence[Header], signals: list[_Found], doubts: list[str], named: list[int]) -> Wide:
@@ -158,7 +178,7 @@ def _find(at: int, header: Header) -> _Found | None:
 def _meaning(rest: str, header: Header) -> str | None:
     """Return the field that the words behind the element name, None where they are not known."""
     word = plain(rest).strip("()[] ")
-    if _REPLICATE.fullmatch(rest):
+    if _REPLICATE.fullmatch(rest) or (_MODE.fullmatch(rest) and not measure(rest.strip("[] "))):
         return "signal"
     for field, words in _FIELDS.items():
         if word in words or plain(rest) in words:
