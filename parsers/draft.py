@@ -18,19 +18,24 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
+from parsers.drafting.beside import find_beside
 from parsers.drafting.claiming import claim
 from parsers.drafting.drawing import Drawing, scalar
 from parsers.drafting.errors import DraftRefused
 from parsers.drafting.example import USUAL, open_example
+from parsers.drafting.fixed import find_fixed
 from parsers.drafting.headers import take_apart
 from parsers.drafting.lines import block_lines, by_name, header_line, odd_lines, row_rules, skips, until_line
 from parsers.drafting.mapping import element_in, find_columns
-from parsers.drafting.naming import find_labels
+from parsers.drafting.naming import Labels, find_labels
 from parsers.drafting.numerals import find_marks, numberish
 from parsers.drafting.oddities import find_oddities
+from parsers.drafting.pairs import find_pairs
 from parsers.drafting.patterns import literal
+from parsers.drafting.plate import find_plate
 from parsers.drafting.preamble import find_heading
 from parsers.drafting.structure import find_structure
+from parsers.drafting.turned import find_turned
 from parsers.drafting.vocabulary import measure, role_of
 from parsers.errors import DocumentInvalid
 from parsers.layout import Layout, parse_layout
@@ -39,8 +44,9 @@ from parsers.spelling import fold, listed
 if TYPE_CHECKING:
     from collections.abc import Iterable, Sequence
 
+    from parsers.drafting.beside import Beside
+    from parsers.drafting.example import Example
     from parsers.drafting.mapping import Mapping
-    from parsers.drafting.naming import Labels
     from parsers.drafting.numerals import Marks
     from parsers.drafting.structure import Structure
     from parsers.labels import LabelRule
@@ -81,26 +87,48 @@ def draft(examples: Sequence[tuple[str, bytes]]) -> Draft:
     ----------
     examples
         Name and bytes of each export; the first decides the form, all of them the labels, numbers and odd cells.
+        A text of which one column holds labels or positions of the first is a side table.
 
     Raises
     ------
     DraftRefused
         If their shape is beyond drafting, or they are not of one kind.
     """
-    structures = [find_structure(open_example(name, data)) for name, data in examples]
-    first = structures[0]
+    opened = [open_example(name, data) for name, data in examples]
+    first = _structure(opened[0])
+    keys = _keys(first) if len(opened) > 1 else {}
+    sides = {example.name: side for example in opened[1:] if (side := find_beside(example, keys)) is not None}
+    structures = [first, *(_structure(example) for example in opened[1:] if example.name not in sides)]
     for other in structures[1:]:
         if (other.separator, other.headers) != (first.separator, first.headers):
             sentence = f"its columns are not those of {first.example.name}. Draft each kind of export by itself."
             raise DraftRefused(other.example.name, sentence, other.header_at + 1)
-    return _Draughtsman(structures).draw()
+    return _Draughtsman(structures, list(sides.values())).draw()
+
+
+def _keys(structure: Structure) -> dict[str, list[str]]:
+    """Return what a side table may say more of: the labels and the positions of an export, if they can be told."""
+    try:
+        mapping = find_columns(replace(structure, fill_down=[]))
+    except DraftRefused:
+        return {}
+    columns = {name: mapping.at(name) for name in ("label", "position")}
+    keys = {name: [fold(cell) for cell in structure.column(at)] for name, at in columns.items() if at is not None}
+    return {"label": structure.names, **keys} if structure.names else keys
+
+
+def _structure(example: Example) -> Structure:
+    """Find the table, the more particular forms first."""
+    found = find_pairs(example) or find_plate(example) or find_turned(example) or find_fixed(example)
+    return found or find_structure(example)
 
 
 class _Draughtsman:
     """Writes the layout, key by key."""
 
-    def __init__(self, structures: Sequence[Structure]) -> None:
+    def __init__(self, structures: Sequence[Structure], sides: Sequence[Beside]) -> None:
         self.structures = structures
+        self.sides = sides
         self.first = structures[0]
         self.together = _joined(structures)
         self.mapping: Mapping = find_columns(self.together)
@@ -130,10 +158,11 @@ class _Draughtsman:
         self._lines()
         self._values()
         self._columns()
+        self._lookup()
         self._labels()
         self._cells()
         try:
-            return parse_layout(self.drawing.text, DRAFTED)
+            return parse_layout(self.drawing.text, DRAFTED, {side.name: side.text for side in self.sides})
         except DocumentInvalid as invalid:
             sentence = f"its columns do not make a layout ({invalid.faults[0].sentence}) Write it by hand."
             raise DraftRefused(self.first.example.name, sentence) from invalid
@@ -164,9 +193,17 @@ class _Draughtsman:
         """Write how lines are told apart."""
         drawing, first = self.drawing, self.first
         word = first.separator
-        drawing.add(f"separator: {word if word in ('tab', 'blanks') else scalar(word)}")
-        if any(structure.header_at != 0 for structure in self.structures):
+        if first.widths:
+            drawing.doubt("no separator: the columns are parted where every line is blank. Are names ever longer?")
+            drawing.add(f"widths: [{', '.join(map(str, first.widths))}]")
+        else:
+            drawing.add(f"separator: {word if word in ('tab', 'blanks') else scalar(word)}")
+        if first.headless:
+            drawing.add("header: none")
+        elif any(structure.header_at != 0 for structure in self.structures):
             drawing.add(f"header: {scalar(header_line(first))}")
+        if first.table:
+            drawing.add(f"table: {first.table}")
         if first.header_lines > 1:
             drawing.add(f"header_lines: {first.header_lines}")
             if first.repeat_right:
@@ -250,6 +287,9 @@ class _Draughtsman:
         if heading:
             drawing.add("heading:")
             drawing.add(*(f"  {name}: {scalar(pattern)}" for name, pattern in heading.items()))
+        if self.first.file_name:
+            drawing.doubt("the name of the file says what no line does; every part of it must keep its place")
+            drawing.add(f"file_name: {scalar(self.first.file_name)}")
         drawing.add("columns:")
         lines = mapping.lines(self.together)
         if "role" in lines:
@@ -307,6 +347,11 @@ class _Draughtsman:
 
     def _analyte(self) -> None:
         """Write the one analyte of the export, where something names it."""
+        words = {one.file_words["analyte"] for one in self.structures if "analyte" in one.file_words}
+        if words:
+            pairs = ", ".join(f"{word}: {word.capitalize()}" for word in sorted(words))
+            self.drawing.add(f"  analyte: {{heading: analyte, map: {{{pairs}}}}}")
+            return
         above = self.first.example.lines[: self.first.header_at]
         found = {element for text in [*self.first.headers, *above] if (element := element_in(text))}
         if len(found) == 1:
@@ -317,17 +362,57 @@ class _Draughtsman:
         self.drawing.ask("the analyte, such as Zn: nothing in the export names it", "  ")
         self.drawing.add("  analyte: {constant: '?'}")
 
+    def _lookup(self) -> None:
+        """Write what the side tables say."""
+        if not self.sides:
+            return
+        self.drawing.note("Side tables lie beside the layout, or the names say where.")
+        self.drawing.add("lookup:")
+        for side in self.sides:
+            self.drawing.add(f"  - {side.line(set(self._texts(side.by)))}")
+
+    def _texts(self, name: str) -> list[str]:
+        """Return the label or the position of each row."""
+        at = self.mapping.at(name)
+        return [fold(cell) for cell in (self.together.column(at) if at is not None else self.together.names)]
+
+    def _beside(self, name: str) -> list[str]:
+        """Return what the side tables say of a field, row by row; empty where they say nothing."""
+        found = [""] * len(self.together.rows)
+        for side in self.sides:
+            said = side.said.get(name, {})
+            found = [one or said.get(key, "") for one, key in zip(found, self._texts(side.by), strict=True)]
+        return found
+
+    def _says(self, name: str) -> bool:
+        """Tell whether a column or a side table says a field."""
+        return name in self.mapping.columns or any(name in side.columns for side in self.sides)
+
+    def _doses(self, cells: Sequence[str]) -> dict[str, set[bool]]:
+        """Return for each label whether something was added, as far as columns and side tables say it."""
+        found: dict[str, set[bool]] = {}
+        for name in ("added", "spike_volume"):
+            at = self.mapping.at(name)
+            written = self.together.column(at) if at is not None else [""] * len(cells)
+            for label, cell, beside in zip(cells, written, self._beside(name), strict=True):
+                if cell or beside:
+                    found.setdefault(fold(label), set()).add(any(digit in "123456789" for digit in cell or beside))
+        return found
+
     def _labels(self) -> None:
         drawing, columns = self.drawing, self.mapping.columns
+        if all(any(name in side.columns for side in self.sides) for name in ("sample", "role")):
+            return self._open_questions(Labels(), additions=self._says("added") or self._says("spike_volume"), typed=True)
         cells = self.together.names or self.together.column(columns["label"][0])
-        additions = bool({"added", "spike_volume"} & columns.keys())
+        additions = self._says("added") or self._says("spike_volume")
         labels = find_labels(
             cells,
             self._types(cells),
             self._signals(cells),
             additions=additions,
-            nominals="nominal" in columns,
+            nominals=self._says("nominal"),
             open_roles=bool(self.mapping.additions),
+            doses=self._doses(cells),
         )
         self.set_aside = labels.set_aside
         if labels.rules:
@@ -359,19 +444,14 @@ class _Draughtsman:
         else:
             drawing.ask("aliquot and vessel, here or in the settings, where no column says them:")
             drawing.add("# bench: {aliquot: … mL, made_up_to: … mL}")
-        if "added" not in self.mapping.columns:
+        if not self._says("added"):
             drawing.ask("what the spike contains, here or in the settings:")
             drawing.add("# stocks: [{name: …, contains: {…: … mg/L}}]")
 
     def _types(self, cells: Sequence[str]) -> dict[str, str]:
         at = self.mapping.at("role")
-        if at is None:
-            return {}
-        return {
-            fold(label): role_of(word)
-            for label, word in zip(cells, self.together.column(at), strict=True)
-            if role_of(word)
-        }
+        words = self.together.column(at) if at is not None else self._beside("role")
+        return {fold(label): role_of(word) for label, word in zip(cells, words, strict=True) if role_of(word)}
 
     def _signals(self, cells: Sequence[str]) -> dict[str, float]:
         """Return the mean signal of each label, of the first analyte."""
@@ -391,6 +471,11 @@ class _Draughtsman:
         columns = mapping.wide.columns if mapping.wide else mapping.columns["signal"]
         odd = find_oddities((cell for at in columns for cell in self.together.column(at)), self.marks.grammar)
         self.drawing.doubt(odd.doubt())
+        if mapping.wide and mapping.wide.zero_is_none:
+            odd.zero = True
+            self.drawing.doubt("a signal of 0 has no concentration beside it, so it is taken for: no peak was found")
+        if self.first.table == "pairs":
+            odd.glued = sorted({self.first.units[at] for at in columns if self.first.units[at]})
         if odd.line():
             self.drawing.add(f"cells: {odd.line()}")
 

@@ -21,7 +21,8 @@ _LETTERS = re.compile(r"[^\W\d_]{3,}")
 def claim(structures: Sequence[Structure]) -> tuple[str, str]:
     """Return the value of ``claims`` and what is uncertain about it."""
     names = [structure.example.name for structure in structures]
-    globs = {re.sub(r"\d+(?:[-_.]?\d+)*", "*", name.rpartition(".")[0] or name) for name in names}
+    stems = [_unnamed(structure) for structure in structures]
+    globs = {re.sub(r"\d+(?:[-_.]?\d+)*", "*", stem) for stem in stems}
     endings = {name.rpartition(".")[2] for name in names if "." in name}
     glob, doubt = "", ""
     if len(globs) == 1 and len(endings) <= 1:
@@ -37,10 +38,19 @@ def claim(structures: Sequence[Structure]) -> tuple[str, str]:
     return f"{{file: {scalar(glob)}{text}}}", doubt
 
 
+def _unnamed(structure: Structure) -> str:
+    """Return the stem of a file's name, without the label of a vial where the name says it."""
+    name = structure.example.name
+    stem = name.rpartition(".")[0] or name
+    return stem.replace(structure.names[0], "*") if structure.file_name else stem
+
+
 def _first_line(structures: Sequence[Structure]) -> str:
     """Return a pattern of the first line where it stands above the table and has the same words everywhere."""
     firsts = {
-        structure.example.lines[0] for structure in structures if structure.header_at > 0 and structure.example.lines
+        structure.example.lines[0]
+        for structure in structures
+        if structure.example.lines and min(structure.header_at, structure.rows[0][0]) > 0 or structure.table == "pairs"
     }
     if len(firsts) != 1:
         return ""

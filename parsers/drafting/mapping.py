@@ -14,6 +14,7 @@ from parsers.drafting.drawing import scalar
 from parsers.drafting.errors import DraftRefused
 from parsers.drafting.headers import Header, take_apart
 from parsers.drafting.moments import forms_of_date, forms_of_moment, forms_of_time
+from parsers.drafting.named import find_named
 from parsers.drafting.numerals import numberish
 from parsers.drafting.vocabulary import ADDITION, ELEMENTS, EXCLUDED, NO, USED, field_of, measure, plain, role_of
 from parsers.drafting.wide import Wide, find_wide
@@ -82,6 +83,8 @@ class Mapping:
         Columns that say which readings do not count, with the words that say so.
     nameless
         The column of labels, where some rows have none and nothing says whether they are readings.
+    downwards
+        Whether every signal is negative.
     bracketed
         Whether the nominals stand in brackets in a column that holds results otherwise.
     """
@@ -94,6 +97,7 @@ class Mapping:
     left: list[str] = field(default_factory=list)
     additions: list[int] = field(default_factory=list)
     bracketed: bool = False
+    downwards: bool = False
     nameless: int | None = None
     excluded: dict[int, list[str]] = field(default_factory=dict)
 
@@ -120,8 +124,12 @@ class Mapping:
         unit = self.headers[self.columns[name][0]].unit
         if name == "nominal" and self.bracketed:
             return f"{{from: {several}, pattern: '^\\[(.+)\\]$'{f', unit: {scalar(unit)}' if unit else ''}}}"
+        if unit and name in _MEASURES and structure.table == "pairs":
+            return f"{{from: {several}, unit: in cell}}"
         if unit and name in _MEASURES:
             return f"{{from: {several}, unit: {scalar(unit)}}}"
+        if name == "signal" and self.downwards:
+            return f"{{from: {several}, scale: -1}}"
         gaps = len(names) > 1 and any("" in structure.column(at) for at in self.columns[name])
         return f"{{from: {several}, optional: yes}}" if gaps else several
 
@@ -147,8 +155,11 @@ def find_columns(structure: Structure) -> Mapping:
         mapping.wide = find_wide(mapping.headers, finder.taken(besides=_OF_READINGS), finder.is_numbers)
     if mapping.wide is not None and mapping.wide.computed and len(mapping.wide.columns) == 1 and "signal" in mapping.columns:
         mapping.wide = None  # one analyte, whose result stands beside its signal
+    if mapping.wide is None and "analyte" not in mapping.columns:
+        mapping.wide = find_named(mapping.headers, finder.taken(), finder.is_numbers, structure.column)
     if mapping.wide is None:
         finder.signal()
+        finder.sign()
     else:  # a mode or a channel may have a word of additions
         mapping.additions = [at for at in mapping.additions if at not in mapping.wide.columns]
     for name in _OF_READINGS if mapping.wide is not None else ():
@@ -283,6 +294,7 @@ class _Finder:
             return
         free = [at for at in range(len(mapping.headers)) if at not in self.taken() and not self.is_numbers(at)]
         texts = [at for at in free if any(self.structure.column(at)) and mapping.headers[at].written]
+        texts = [at for at in texts if not self._is_moment(at)]
         if len(texts) == 1:
             mapping.columns["label"] = texts
             mapping.doubts["label"] = f"{mapping.headers[texts[0]].written!r} is the only column of texts left"
@@ -298,6 +310,11 @@ class _Finder:
                 f"Write the layout by hand: columns.label."
             )
         raise DraftRefused(self.structure.example.name, sentence, self.structure.header_at + 1)
+
+    def _is_moment(self, at: int) -> bool:
+        """Tell whether a column holds times or dates."""
+        cells = self.structure.column(at)
+        return bool(forms_of_time(cells) or forms_of_date(cells) or forms_of_moment(cells))
 
     def _fill_down(self, at: int) -> None:
         """Fill labels down where a column tells the rows of each vial apart; else leave rows without label out.
@@ -454,6 +471,13 @@ class _Finder:
                 f"the signal. Export the signal if the instrument can"
             )
         self._statistics()
+
+    def sign(self) -> None:
+        """Count signals upwards where every one of them is negative, as currents are on some instruments."""
+        cells = [cell for at in self.mapping.columns["signal"] for cell in self.structure.column(at) if numberish(cell)]
+        if cells and all(cell[0] in "-−" for cell in cells):
+            self.mapping.downwards = True
+            self.mapping.doubts["signal"] = "every signal is negative, so they are counted downwards (scale: -1)"
 
     def _replicates(self) -> list[int]:
         """Return the columns of replicate readings: one stem, numbered from 1."""

@@ -15,7 +15,7 @@ if TYPE_CHECKING:
 #: Dates, the forms that exclude one another beside each other.
 _DATES = ("%Y-%m-%d", "%Y/%m/%d", "%Y%m%d", "%d.%m.%Y", "%d.%m.%y", "%d-%b-%Y", "%d-%b-%y", "%d %b %Y", "%b %d %Y",
           "%d/%m/%Y", "%m/%d/%Y", "%d-%m-%Y", "%m-%d-%Y", "%d/%m/%y", "%m/%d/%y", "%y%m%d", "%y-%m-%d")  # fmt: skip
-_TIMES = ("%H:%M:%S", "%H:%M", "%I:%M:%S %p", "%I:%M %p", "%H:%M:%S.%f")
+_TIMES = ("%H:%M:%S", "%H:%M", "%I:%M:%S %p", "%I:%M %p", "%H:%M:%S.%f", "%H.%M")
 _JOINTS = (" ", "T", ", ")
 _DIGITS = re.compile(r"\d")
 

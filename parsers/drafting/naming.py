@@ -38,8 +38,8 @@ _SUFFIX = re.compile(r"(?P<sign>[\s_/+\-.]+)(?P<word>.+)")
 _LAST = re.compile(r"(?P<sample>.+?)(?P<sign>[\s_/-]+)(?P<word>[A-Za-z]+)")
 _PREFIX = re.compile(r"(?P<word>[A-Za-z]+)(?P<sign>[\s_/\-]+)")
 _AMOUNT = re.compile(r"\d+(?:[.,]\d+)?\s*(?P<unit>[A-Za-zµμ/]+)")
-_CODE = re.compile(r"(?P<letters>[A-Za-z]{0,6})[ _-]?\d{1,2}")
-_CODES = frozenset({"a", "add", "s", "sp", "spiked", "addn", "spk", "spike", "l", "lev", "level", "m", "ms", "sa"})
+_CODE = re.compile(r"(?P<letters>[A-Za-z]{0,6})\.?[ _-]?\d{1,2}")
+_CODES = frozenset({"a", "add", "s", "sp", "spiked", "addn", "spk", "spike", "aufst", "l", "lev", "level", "m", "ms", "sa"})
 #: Labels that are standards as often as samples: a letter with a digit, a name with a decimal number, a mere number.
 _UNSURE = re.compile(r"[A-Za-z][ _-]?\d|.*\d[.,]\d.*|\d+")
 _RUN = re.compile(r"[A-Za-z]+|\d+|[^A-Za-z\d]+")
@@ -84,6 +84,7 @@ def find_labels(
     additions: bool,
     nominals: bool,
     open_roles: bool = False,
+    doses: Mapping[str, set[bool]] | None = None,
 ) -> Labels:
     """Cluster labels into rules.
 
@@ -99,11 +100,14 @@ def find_labels(
         Whether columns say what was added, and the nominal concentrations.
     open_roles
         Whether a column may say what was added that cannot be read yet: then no sample is called unspiked.
+    doses
+        Label to whether something was added, in each of its rows, where a column says so.
     """
     distinct = [label for label in dict.fromkeys(map(fold, labels)) if label]
     return _Clusters(
-        distinct, types, signals, additions=additions or open_roles, nominals=nominals, open_roles=open_roles
-    ).labels()
+        distinct, types, signals, doses or {}, additions=additions or open_roles, nominals=nominals,
+        open_roles=open_roles,
+    ).labels()  # fmt: skip
 
 
 @dataclass(slots=True)
@@ -111,11 +115,13 @@ class _Clusters:
     distinct: list[str]
     types: Mapping[str, str]
     signals: Mapping[str, float]
+    doses: Mapping[str, set[bool]]
     additions: bool
     nominals: bool
     open_roles: bool
     found: Labels = field(default_factory=Labels)
     spiked_names: set[str] = field(default_factory=set)
+    bases: list[str] = field(default_factory=list)
 
     def labels(self) -> Labels:
         kinds = {label: self._kind(label) for label in self.distinct}
@@ -210,9 +216,10 @@ class _Clusters:
     def _samples(self, labels: list[str]) -> None:
         among = set(labels)
         names = [label for label in labels if not self._is_spiked(label, among)]
+        names = names or self.bases  # of a spiked vial alone: the unspiked one has the name before the sign
         by_column = bool(self.types) or self.additions
         if not self.types:
-            unsure = [name for name in names if _UNSURE.fullmatch(name) and name not in self.spiked_names]
+            unsure = [name for name in names if self._is_unsure(name)]
             names = [name for name in names if name not in unsure]
             self.found.set_aside += unsure
         role = "" if by_column else ", role: unspiked"
@@ -225,6 +232,13 @@ class _Clusters:
         else:
             self.found.add(f"{{like: '{{sample}}'{role}}}")
             self.found.doubts.append("sample names have many shapes, so every label that is left counts as a sample")
+
+    def _is_unsure(self, name: str) -> bool:
+        """Tell whether a name may be no sample: by its look, or because no row of it is without an addition."""
+        doses = self.doses.get(name, set())
+        if name in self.spiked_names or len(doses) == 2:
+            return False
+        return doses == {True} or _UNSURE.fullmatch(name) is not None
 
     def _is_spiked(self, label: str, among: set[str]) -> bool:
         """Write the rule of a label that is another one with an addition; tell whether it is dealt with."""
@@ -239,6 +253,7 @@ class _Clusters:
                     self.spiked_names.add(base)
                 return dealt_with
         if plus is not None:
+            self.bases.append(plus["sample"])
             return self._suffix(label, plus["sign"], plus["word"])
         last = _LAST.fullmatch(label)
         if last is not None and SPIKE_WORD.match(last["word"]):

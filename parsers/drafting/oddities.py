@@ -38,6 +38,8 @@ class Oddities:
     above: list[str] = field(default_factory=list)
     flags: set[str] = field(default_factory=set)
     unknown: list[str] = field(default_factory=list)
+    zero: bool = False
+    glued: list[str] = field(default_factory=list)
 
     def line(self) -> str:
         """Return the value of ``cells`` in a layout, or nothing."""
@@ -46,6 +48,10 @@ class Oddities:
             parts.append(f"missing: [{', '.join(map(_quoted, ['', *self.missing]))}]")
         if self.below:
             parts.append(f"below: {_pattern(self.below, '<')}")
+        if self.glued:
+            parts.append(f"glued: [{', '.join(map(_quoted, self.glued))}]")
+        if self.zero:
+            parts.append("zero: below")
         if self.above:
             parts.append(f"above: {_pattern(self.above, '>')}")
         if self.flags:

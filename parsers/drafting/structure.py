@@ -65,6 +65,8 @@ class Structure:
         As a layout writes them, where the table is no plain one or has no separator.
     headless
         Whether there is no header.
+    file_name, file_words
+        A pattern of the file's name where it says what the lines do not, and what this one says.
     fill_down
         Columns in which only the first of several rows of a vial is filled.
     """
@@ -87,6 +89,8 @@ class Structure:
     table: str = ""
     widths: list[int] = field(default_factory=list)
     headless: bool = False
+    file_name: str = ""
+    file_words: dict[str, str] = field(default_factory=dict)
     fill_down: list[int] = field(default_factory=list)
 
     def column(self, at: int) -> list[str]:

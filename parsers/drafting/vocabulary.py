@@ -19,13 +19,13 @@ ELEMENTS = frozenset(
 
 #: Header words by field, compared without case, blanks and marks.
 HEADERS: dict[str, str] = {
-    "label": "label|sample label|sample|sample id|sample name|sampleid|id|name|vial|vessel|solution|solution label|"
+    "label": "label|sample label|sample|sample id|sample name|sampleid|id|name|vial|vessel|well|solution|solution label|"
     "identifier|flask|tube|probe|probenname|bezeichnung|probenbezeichnung|echantillon|nom|muestra|monster|sample no",
     "role": "type|sample type|solution type|kind|category|class|role|typ|probentyp|art|tipo",
     "analyte": "element|analyte|compound|ion|parameter|metal|component|elem|analyt|elemento|analyse|species",
     "channel": "wavelength|line|isotope|mass number|m/z|view|wellenlange|nm",
-    "signal": "signal|absorbance|abs|intensity|counts|cps|area|peak area|height|peak height|current|emission|reading|"
-    "response|extinction|extinktion|absorbanz|absorption|intensitat|peak|net intensity|net signal|od|"
+    "signal": "signal|value|absorbance|abs|intensity|counts|cps|area|peak area|height|peak height|current|emission|reading|"
+    "response|flache|hohe|peakflache|peakhohe|extinction|extinktion|absorbanz|absorption|intensitat|peak|net intensity|net signal|od|"
     "mean|average|mean signal|mean abs|mean absorbance|mean intensity|mean cps|mittelwert|moyenne|media",
     "signal_sd": "sd|std dev|stdev|standard deviation|stddev|st dev|std deviation|standardabweichung|s",
     "signal_rsd": "rsd|%rsd|rsd %|cv|%cv|cv %|rel sd|relative sd|vk",
@@ -36,11 +36,11 @@ HEADERS: dict[str, str] = {
     "added": "added|addition|spike conc|spike concentration|conc added|added conc|spiked with|zugabe|ajout",
     "spike_volume": "std|spike|spike vol|spike volume|standard added|std added|std vol|standard volume|volume added|"
     "spike added|added volume|added|addition|vol std|standard|zugabe",
-    "aliquot": "aliquot|sample volume|sample vol|aliquot volume|probenvolumen",
+    "aliquot": "aliquot|cell volume|sample volume|sample vol|aliquot volume|probenvolumen",
     "made_up_to": "made up to|final|final volume|final vol|made up|total volume|endvolumen",
     "mass": "mass|weight|sample mass|sample weight|portion|einwaage|weighed",
     "digest_volume": "digest volume|digest vol|digested to",
-    "predilution": "dilution|dilution factor|df|predilution|dil|dil factor|verdunnung",
+    "predilution": "dilution|dilution factor|df|predilution|dil|dil factor|verdunnung|verd",
     "date": "date|datum|fecha|date measured|measured on|run date|acq date|acquisition date",
     "time": "time|zeit|uhrzeit|hora|heure|time measured|run time|acq time|acquisition time",
     "measured_at": "date time|datetime|measured at|measured|acquired|acquired at|timestamp|date/time|acq date time|"
@@ -56,10 +56,10 @@ HEADERS: dict[str, str] = {
 
 #: Words of a type column by the role that they mean.
 ROLE_WORDS_SEEN: dict[str, str] = {
-    "unspiked": "sample|unspiked|unknown|unk|unkn|smp|spl|probe|plain|native|unaltered|s",
-    "spiked": "spiked|spike|addition|std add|standard addition|matrix spike|spk|ms|gespikt|aufgestockt|add",
+    "unspiked": "sample|unspiked|unknown|unk|unkn|smp|spl|probe|plain|native|unaltered|s|ohne|ohne zusatz",
+    "spiked": "spiked|spike|addition|std add|standard addition|matrix spike|spk|ms|gespikt|aufgestockt|add|mit|mit zusatz",
     "standard": "standard|std|cal|calibration|calibrant|calibrator|kal|cal std|calibration standard|etalon",
-    "blank": "blank|blk|reagent blank|calibration blank|blind|blindwert|blanc|bl|method blank|prep blank|cal blank",
+    "blank": "blank|blk|reagent blank|calibration blank|blind|blindwert|blanc|bl|method blank|prep blank|cal blank|leer",
     "check_standard": "check|qc|control|check standard|ccv|icv|verification|kontrolle|qcs|chk|quality control",
 }
 
@@ -68,7 +68,7 @@ EXCLUDED = re.compile(r"(?:excluded?|excl|rejected|reject|rjct|discarded|omit(?:
 USED = re.compile(r"(?:used?|included?|valid|accepted|counts)", re.IGNORECASE)
 NO = frozenset({"no", "n", "0", "false", "nein", "non"})
 
-BLANK_LABEL = re.compile(r"(?:\b|_)(?:blank|blk|blind|blindwert|leerwert|blanc|blanco)(?:\b|_|(?=\d))", re.IGNORECASE)
+BLANK_LABEL = re.compile(r"(?:\b|_)(?:blank|blk|blind|blindwert|leerwert|blanc|blanco|ve-?wasser|reinstwasser|(?:di|deionised|ultrapure) water)(?:\b|_|(?=\d))", re.IGNORECASE)
 CHECK_LABEL = re.compile(r"^(?:chk|check|qc|ccv|icv|qcs|control|kontrolle|verification)(?:\b|_|(?=\d))", re.IGNORECASE)
 STANDARD_LABEL = re.compile(r"^(?:std|standard|cal|calibration|calib|kal|etalon|calstd)(?:\b|_|(?=\d))", re.IGNORECASE)
 #: Vials that are neither samples nor anything that is calculated with.

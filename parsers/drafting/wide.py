@@ -9,12 +9,12 @@ import re
 from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
+from parsers.drafting.headers import Header
 from parsers.drafting.vocabulary import ELEMENTS, measure, plain
 
 if TYPE_CHECKING:
     from collections.abc import Callable, Sequence
 
-    from parsers.drafting.headers import Header
 
 _SYMBOL = r"(?P<analyte>[A-Z][a-z]?)"
 #: How an element and its line or mass are written, the longer forms first.
@@ -41,7 +41,7 @@ _FIELDS = {
 }  # fmt: skip
 
 
-@dataclass(frozen=True, slots=True)
+@dataclass(slots=True)
 class Wide:
     """Columns that become rows.
 
@@ -57,6 +57,8 @@ class Wide:
         What is uncertain.
     left
         Headers that name an element and are not read.
+    zero_is_none
+        Whether a signal of zero says that no peak was found.
     computed
         Whether these columns hold what the instrument computed itself, for want of signals.
     """
@@ -67,6 +69,7 @@ class Wide:
     doubts: list[str]
     left: list[str]
     computed: bool = False
+    zero_is_none: bool = False
 
 
 @dataclass(frozen=True, slots=True)
@@ -161,6 +164,15 @@ def _unnamed_mean(headers: Sequence[Header], signals: list[_Found], doubts: list
         doubts,
         sorted({*left, *others}),
     )
+
+
+def names_element(header: str) -> bool:
+    """Tell whether a header begins with the symbol of an element, alone or with its line or mass.
+
+    >>> names_element("Zn 213.9"), names_element("Zone")
+    (True, False)
+    """
+    return _find(0, Header(header, header)) is not None
 
 
 def _find(at: int, header: Header) -> _Found | None:
