@@ -191,6 +191,25 @@ class _Draughtsman:
 
     def _lines(self) -> None:
         """Write how lines are told apart."""
+        self._form()
+        drawing, first = self.drawing, self.first
+        if first.blocks is not None:
+            drawing.add(f"blocks: {block_lines(first.blocks)}")
+        filled = [scalar(first.headers[at]) for at in self.together.fill_down]
+        if filled:
+            drawing.add(f"fill_down: [{', '.join(filled)}]")
+        rules = self._rows()
+        if rules:
+            drawing.add("rows:", *(f"  - {rule}" for rule in rules))
+        left_out = list(dict.fromkeys(skip for structure in self.structures for skip in skips(structure)))
+        if left_out:
+            drawing.add(f"skip: [{', '.join(map(scalar, left_out))}]")
+        for structure in self.structures:
+            drawing.doubt(odd_lines(structure))
+        self._end()
+
+    def _form(self) -> None:
+        """Write how cells are parted, and where their names stand."""
         drawing, first = self.drawing, self.first
         word = first.separator
         if first.widths:
@@ -208,26 +227,13 @@ class _Draughtsman:
             drawing.add(f"header_lines: {first.header_lines}")
             if first.repeat_right:
                 drawing.add(f"repeat_right: [{', '.join(map(str, first.repeat_right))}]")
-        if first.blocks is not None:
-            drawing.add(f"blocks: {block_lines(first.blocks)}")
-        filled = [scalar(first.headers[at]) for at in self.together.fill_down]
-        if filled:
-            drawing.add(f"fill_down: [{', '.join(filled)}]")
-        rules = self._rows()
-        if rules:
-            drawing.add("rows:", *(f"  - {rule}" for rule in rules))
-        left_out = list(dict.fromkeys(skip for structure in self.structures for skip in skips(structure)))
-        if left_out:
-            drawing.add(f"skip: [{', '.join(map(scalar, left_out))}]")
-        for structure in self.structures:
-            drawing.doubt(odd_lines(structure))
-        until = (
-            ""
-            if first.blocks
-            else next((found for structure in self.structures if (found := until_line(structure))), "")
-        )
-        if until:
-            drawing.add(f"until: {scalar(until)}")
+
+    def _end(self) -> None:
+        """Write where the table ends, and the export."""
+        drawing, first = self.drawing, self.first
+        untils = [] if first.blocks else [found for one in self.structures if (found := until_line(one))]
+        if untils:
+            drawing.add(f"until: {scalar(untils[0])}")
         last = first.example.lines[-1] if first.example.lines else ""
         if first.tail is not None and _FINISHED.search(last) and re.match(r"\W*[A-Za-z]", last):
             drawing.doubt(
@@ -299,6 +305,18 @@ class _Draughtsman:
             drawing.add(f"  {name}: {value}")
         if wide is None and "analyte" not in mapped and "analyte" not in heading:
             self._analyte()
+        self._open_additions()
+        self._not_read()
+        if wide is not None:
+            drawing.doubt(wide.doubts)
+            drawing.add("unfold:", f"  pattern: {scalar(wide.pattern)}")
+            if wide.fields:
+                words = ", ".join(f"{scalar(word)}: {name}" for word, name in wide.fields.items())
+                drawing.add(f"  fields: {{{words}}}")
+
+    def _open_additions(self) -> None:
+        """Ask about columns that may say what was added."""
+        drawing, mapping = self.drawing, self.mapping
         for at in mapping.additions:
             name = scalar(mapping.headers[at].written)
             drawing.ask(
@@ -310,6 +328,10 @@ class _Draughtsman:
                 drawing.add(f"  # role: {{from: {name}, map: {{…: spiked, …: unspiked}}}}")
                 continue
             drawing.add(f"  # added: {{from: {name}, unit: … mg/L}}", f"  # spike_volume: {{from: {name}, unit: … mL}}")
+
+    def _not_read(self) -> None:
+        """Say which columns are not read."""
+        drawing, mapping = self.drawing, self.mapping
         left = [header.written for at, header in enumerate(mapping.headers) if self._is_left(at) and header.written]
         amounts = [name for name in left if measure(take_apart(name).unit) in ("volume", "mass")]
         if amounts:
@@ -324,13 +346,6 @@ class _Draughtsman:
             drawing.note(
                 f"not read: {', '.join(left[:20])}{f' and {len(left) - 20} more' if len(left) > 20 else ''}", "  "
             )
-        if wide is not None:
-            drawing.doubt(wide.doubts)
-            drawing.add("unfold:", f"  pattern: {scalar(wide.pattern)}")
-            if wide.fields:
-                drawing.add(
-                    f"  fields: {{{', '.join(f'{scalar(word)}: {name}' for word, name in wide.fields.items())}}}"
-                )
 
     def _is_left(self, at: int) -> bool:
         read = {one for name, columns in self.mapping.columns.items() if name != _UNREAD for one in columns}
@@ -402,7 +417,9 @@ class _Draughtsman:
     def _labels(self) -> None:
         drawing, columns = self.drawing, self.mapping.columns
         if all(any(name in side.columns for side in self.sides) for name in ("sample", "role")):
-            return self._open_questions(Labels(), additions=self._says("added") or self._says("spike_volume"), typed=True)
+            dosed = self._says("added") or self._says("spike_volume")
+            self._open_questions(Labels(), additions=dosed, typed=True)
+            return
         cells = self.together.names or self.together.column(columns["label"][0])
         additions = self._says("added") or self._says("spike_volume")
         labels = find_labels(

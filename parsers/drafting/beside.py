@@ -24,7 +24,10 @@ if TYPE_CHECKING:
 #: What a side table may say, in the order in which a layout lists it.
 FIELDS = ("sample", "role", "nominal", "added", "spike_volume", "level", "aliquot", "made_up_to", "mass",
           "digest_volume", "predilution")  # fmt: skip
-_VOLUMES = ("spike_volume", "aliquot", "made_up_to", "digest_volume")
+_MEASURES = {
+    "spike_volume": "volume", "aliquot": "volume", "made_up_to": "volume", "digest_volume": "volume", "mass": "mass",
+    "added": "concentration", "nominal": "concentration",
+}  # fmt: skip
 
 
 @dataclass(slots=True)
@@ -95,7 +98,9 @@ def find_beside(example: Example, keys: Mapping[str, Sequence[str]]) -> Beside |
             for at in range(len(rows[0])):
                 cells = [row[at] for row in rows[1:]]
                 if set(cells) <= set(texts) and len(set(cells)) == len(cells):
-                    return _filled(Beside(example.name, "\n".join(example.lines), by, rows[0][at] if at else ""), rows, at)
+                    return _filled(
+                        Beside(example.name, "\n".join(example.lines), by, rows[0][at] if at else ""), rows, at
+                    )
     return None
 
 
@@ -116,17 +121,6 @@ def _field(header: str, cells: list[str]) -> str:
     apart = take_apart(header)
     if cells and all(map(role_of, cells)):
         return "role"
-    unit = apart.unit or next((cell.rpartition(" ")[2] for cell in cells if " " in cell), "")
-    for name in field_of(apart.name):
-        of = measure(unit)
-        if name == "label":
-            return "sample"
-        if name in _VOLUMES and of == "volume":
-            return name
-        if name in ("added", "nominal") and of == "concentration":
-            return name
-        if name == "mass" and of == "mass":
-            return name
-        if name in ("level", "predilution"):
-            return name
-    return ""
+    of = measure(apart.unit or next((cell.rpartition(" ")[2] for cell in cells if " " in cell), ""))
+    choices = ("sample" if name == "label" else name for name in field_of(apart.name))
+    return next((name for name in choices if name in FIELDS and of == _MEASURES.get(name, of)), "")

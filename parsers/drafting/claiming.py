@@ -50,7 +50,7 @@ def _first_line(structures: Sequence[Structure]) -> str:
     firsts = {
         structure.example.lines[0]
         for structure in structures
-        if structure.example.lines and min(structure.header_at, structure.rows[0][0]) > 0 or structure.table == "pairs"
+        if structure.example.lines and (structure.header_at > 0 or structure.table == "pairs")
     }
     if len(firsts) != 1:
         return ""

@@ -30,7 +30,7 @@ def find_fixed(example: Example) -> Structure | None:
     starts = [
         place
         for place in range(length)
-        if not blank[place] and (place == 0 or all(blank[max(place - GUTTER, 0) : place]) and place >= GUTTER)
+        if not blank[place] and (place == 0 or (place >= GUTTER and all(blank[place - GUTTER : place])))
     ]
     if len(starts) < 2 or starts[0] != 0 or any("\t" in line for line in example.lines):
         return None

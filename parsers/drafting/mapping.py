@@ -16,7 +16,21 @@ from parsers.drafting.headers import Header, take_apart
 from parsers.drafting.moments import forms_of_date, forms_of_moment, forms_of_time
 from parsers.drafting.named import find_named
 from parsers.drafting.numerals import numberish
-from parsers.drafting.vocabulary import ADDITION, ELEMENTS, EXCLUDED, NO, USED, field_of, measure, plain, role_of
+from parsers.drafting.vocabulary import (
+    ADDITION,
+    DILUTED_FROM,
+    DILUTED_TO,
+    ELEMENTS,
+    EXCLUDED,
+    NO,
+    UNIT_COLUMN,
+    USED,
+    field_of,
+    is_unit,
+    measure,
+    plain,
+    role_of,
+)
 from parsers.drafting.wide import Wide, find_wide
 from parsers.spelling import listed
 
@@ -85,6 +99,8 @@ class Mapping:
         The column of labels, where some rows have none and nothing says whether they are readings.
     downwards
         Whether every signal is negative.
+    unit_at
+        Field to the column that holds its unit, row by row.
     bracketed
         Whether the nominals stand in brackets in a column that holds results otherwise.
     """
@@ -97,6 +113,7 @@ class Mapping:
     left: list[str] = field(default_factory=list)
     additions: list[int] = field(default_factory=list)
     bracketed: bool = False
+    unit_at: dict[str, int] = field(default_factory=dict)
     downwards: bool = False
     nameless: int | None = None
     excluded: dict[int, list[str]] = field(default_factory=dict)
@@ -113,25 +130,34 @@ class Mapping:
     def _value(self, name: str, structure: Structure) -> str:
         names = [scalar(self.headers[at].written) for at in self.columns[name]]
         several = f"[{', '.join(names)}]" if len(names) > 1 else names[0]
+        parts = {"from": several, **self._how(name, structure)}
+        if len(parts) == 1:
+            return several
+        return f"{{{', '.join(f'{key}: {value}' for key, value in parts.items())}}}"
+
+    def _how(self, name: str, structure: Structure) -> dict[str, str]:
+        """Return the keys of a source beside its columns."""
+        at, unit = self.columns[name][0], self.headers[self.columns[name][0]].unit
+        parts: dict[str, str] = {}
         if name == "measured_at":
-            forms = ", ".join(f"'{form}'" for form in self.formats)
-            return f"{{from: {several}, format: {forms}}}"
-        if name == "role":
-            at = self.columns[name][0]
+            parts["format"] = ", ".join(f"'{form}'" for form in self.formats)
+        elif name == "role":
             words = {word: role_of(word) for word in dict.fromkeys(structure.column(at)) if role_of(word)}
-            pairs = ", ".join(f"{scalar(word)}: {role}" for word, role in words.items())
-            return f"{{from: {several}, map: {{{pairs}}}}}"
-        unit = self.headers[self.columns[name][0]].unit
-        if name == "nominal" and self.bracketed:
-            return f"{{from: {several}, pattern: '^\\[(.+)\\]$'{f', unit: {scalar(unit)}' if unit else ''}}}"
-        if unit and name in _MEASURES and structure.table == "pairs":
-            return f"{{from: {several}, unit: in cell}}"
-        if unit and name in _MEASURES:
-            return f"{{from: {several}, unit: {scalar(unit)}}}"
-        if name == "signal" and self.downwards:
-            return f"{{from: {several}, scale: -1}}"
-        gaps = len(names) > 1 and any("" in structure.column(at) for at in self.columns[name])
-        return f"{{from: {several}, optional: yes}}" if gaps else several
+            parts["map"] = f"{{{', '.join(f'{scalar(word)}: {role}' for word, role in words.items())}}}"
+        elif name == "predilution" and len(self.columns[name]) > 1:
+            parts["as"] = "ratio"
+        elif name == "nominal" and self.bracketed:
+            parts["pattern"] = r"'^\[(.+)\]$'"
+        elif name == "signal" and self.downwards:
+            parts["scale"] = "-1"
+        if name in self.unit_at:
+            parts["unit"] = f"{{from: {scalar(self.headers[self.unit_at[name]].written)}}}"
+        elif unit and name in _MEASURES:
+            parts["unit"] = "in cell" if structure.table == "pairs" else scalar(unit)
+        several = len(self.columns[name]) > 1 and name not in ("measured_at", "predilution")
+        if (several or name in self.unit_at) and any("" in structure.column(one) for one in self.columns[name]):
+            parts["optional"] = "yes"
+        return parts
 
 
 def find_columns(structure: Structure) -> Mapping:
@@ -148,12 +174,18 @@ def find_columns(structure: Structure) -> Mapping:
     finder.by_words()
     finder.symbols()
     finder.bracketed()
+    finder.diluted()
     finder.additions()
     finder.label()
     finder.times()
     if "analyte" not in mapping.columns:
         mapping.wide = find_wide(mapping.headers, finder.taken(besides=_OF_READINGS), finder.is_numbers)
-    if mapping.wide is not None and mapping.wide.computed and len(mapping.wide.columns) == 1 and "signal" in mapping.columns:
+    if (
+        mapping.wide is not None
+        and mapping.wide.computed
+        and len(mapping.wide.columns) == 1
+        and "signal" in mapping.columns
+    ):
         mapping.wide = None  # one analyte, whose result stands beside its signal
     if mapping.wide is None and "analyte" not in mapping.columns:
         mapping.wide = find_named(mapping.headers, finder.taken(), finder.is_numbers, structure.column)
@@ -221,18 +253,44 @@ class _Finder:
         }
         return bool(cells) and agrees.get(name, name not in _NUMERIC or self.is_numbers(at))
 
+    def diluted(self) -> None:
+        """Map two volumes of a dilution, where their headers say that they are such."""
+        words = {plain(header.name): at for at, header in enumerate(self.mapping.headers)}
+        pair = (
+            [at for name, at in words.items() if name in DILUTED_FROM],
+            [at for name, at in words.items() if name in DILUTED_TO],
+        )
+        columns = self.mapping.columns
+        if [len(found) for found in pair] == [1, 1] and "predilution" not in columns:
+            columns["predilution"] = [*pair[0], *pair[1]]
+
+    def _unit_beside(self) -> tuple[int, str] | None:
+        """Return the column that holds the unit of another, and what all of them measure."""
+        for at, header in enumerate(self.mapping.headers):
+            cells = {cell for cell in self.structure.column(at) if cell}
+            if plain(header.name) in UNIT_COLUMN and cells and all(map(is_unit, cells)):
+                kinds = {measure(cell) for cell in cells}
+                return (at, kinds.pop()) if len(kinds) == 1 else None
+        return None
+
     def additions(self) -> None:
         """Map a column whose header speaks of an addition by its unit; without one it waits for a person."""
         columns = self.mapping.columns
         by_unit = {"volume": "spike_volume", "concentration": "added"}
+        beside = self._unit_beside()
         for at, header in enumerate(self.mapping.headers):
-            speaks = ADDITION.search(header.written) is not None and not field_of(header.name)
+            named = field_of(header.name)
+            speaks = ADDITION.search(header.written) is not None and not named
+            speaks |= beside is not None and bool({"added", "spike_volume"} & set(named))
             if speaks and at not in self.taken() and not self.is_numbers(at) and any(self.structure.column(at)):
                 self.mapping.additions.append(at)
             unclear = at in columns.get("added", []) and not header.unit
             if not (speaks and at not in self.taken() and self.is_numbers(at)) and not unclear:
                 continue
             name = by_unit.get(measure(header.unit), "")
+            if not header.unit and beside is not None and beside[1] in by_unit:
+                name = by_unit[beside[1]]
+                self.mapping.unit_at[name], beside = beside[0], None
             if name and name not in columns:
                 columns[name] = [at]
             else:

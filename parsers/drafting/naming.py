@@ -39,7 +39,9 @@ _LAST = re.compile(r"(?P<sample>.+?)(?P<sign>[\s_/-]+)(?P<word>[A-Za-z]+)")
 _PREFIX = re.compile(r"(?P<word>[A-Za-z]+)(?P<sign>[\s_/\-]+)")
 _AMOUNT = re.compile(r"\d+(?:[.,]\d+)?\s*(?P<unit>[A-Za-zµμ/]+)")
 _CODE = re.compile(r"(?P<letters>[A-Za-z]{0,6})\.?[ _-]?\d{1,2}")
-_CODES = frozenset({"a", "add", "s", "sp", "spiked", "addn", "spk", "spike", "aufst", "l", "lev", "level", "m", "ms", "sa"})
+_CODES = frozenset(
+    {"a", "add", "s", "sp", "spiked", "addn", "spk", "spike", "aufst", "l", "lev", "level", "m", "ms", "sa"}
+)
 #: Labels that are standards as often as samples: a letter with a digit, a name with a decimal number, a mere number.
 _UNSURE = re.compile(r"[A-Za-z][ _-]?\d|.*\d[.,]\d.*|\d+")
 _RUN = re.compile(r"[A-Za-z]+|\d+|[^A-Za-z\d]+")

@@ -18,7 +18,7 @@ if TYPE_CHECKING:
 
 #: Fewest lines, and which share of all, that make an export one of pairs.
 FEWEST, MOSTLY = 3, 0.7
-_PAIR = re.compile(r"\s*(?P<name>[A-Za-z][^=:;,\t]{1,40}?)\s*(?P<sign>[=:])\s*(?P<value>\S.*)")
+_PAIR = re.compile(r"\s*(?P<name>[A-Za-z](?:[^=:;,\t ]| (?! )){1,40}?)\s*(?P<sign>[=:])\s*(?P<value>\S.*)")
 _GLUED = re.compile(r"(?P<number>[+\-−]?\d[\d.,]*(?:[eE][+\-]?\d+)?)\s*(?P<unit>\D\S*)")
 _REPLICATE = re.compile(r"(?P<word>(?:r|rep|run|n)-?)(?P<number>\d{1,2})", re.IGNORECASE)
 

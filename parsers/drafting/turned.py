@@ -7,8 +7,8 @@ from __future__ import annotations
 
 from typing import TYPE_CHECKING
 
-from parsers.drafting.structure import SEPARATORS, Structure, split
 from parsers.drafting.numerals import numberish
+from parsers.drafting.structure import SEPARATORS, Structure, split
 from parsers.drafting.vocabulary import field_of
 from parsers.drafting.wide import names_element
 from parsers.spelling import fold

@@ -19,13 +19,16 @@ ELEMENTS = frozenset(
 
 #: Header words by field, compared without case, blanks and marks.
 HEADERS: dict[str, str] = {
-    "label": "label|sample label|sample|sample id|sample name|sampleid|id|name|vial|vessel|well|solution|solution label|"
+    "label": "label|sample label|sample|sample id|sample name|sampleid|id|name|vial|vessel|well|solution|"
+    "solution label|"
     "identifier|flask|tube|probe|probenname|bezeichnung|probenbezeichnung|echantillon|nom|muestra|monster|sample no",
     "role": "type|sample type|solution type|kind|category|class|role|typ|probentyp|art|tipo",
     "analyte": "element|analyte|compound|ion|parameter|metal|component|elem|analyt|elemento|analyse|species",
     "channel": "wavelength|line|isotope|mass number|m/z|view|wellenlange|nm",
-    "signal": "signal|value|absorbance|abs|intensity|counts|cps|area|peak area|height|peak height|current|emission|reading|"
-    "response|flache|hohe|peakflache|peakhohe|extinction|extinktion|absorbanz|absorption|intensitat|peak|net intensity|net signal|od|"
+    "signal": "signal|value|absorbance|abs|intensity|counts|cps|area|peak area|height|peak height|current|"
+    "emission|reading|"
+    "response|flache|hohe|peakflache|peakhohe|extinction|extinktion|absorbanz|absorption|intensitat|peak|"
+    "net intensity|net signal|od|"
     "mean|average|mean signal|mean abs|mean absorbance|mean intensity|mean cps|mittelwert|moyenne|media",
     "signal_sd": "sd|std dev|stdev|standard deviation|stddev|st dev|std deviation|standardabweichung|s",
     "signal_rsd": "rsd|%rsd|rsd %|cv|%cv|cv %|rel sd|relative sd|vk",
@@ -54,12 +57,20 @@ HEADERS: dict[str, str] = {
     "mean conc|sample conc|corrected conc|amount",
 }
 
+#: Headers of the two volumes of a dilution.
+DILUTED_FROM = frozenset({"dil from", "diluted from", "dilution from", "verd von"})
+DILUTED_TO = frozenset({"dil to", "diluted to", "dilution to", "verd auf"})
+#: Headers of columns that hold the units of another.
+UNIT_COLUMN = frozenset({"unit", "units", "einheit"})
+
 #: Words of a type column by the role that they mean.
 ROLE_WORDS_SEEN: dict[str, str] = {
     "unspiked": "sample|unspiked|unknown|unk|unkn|smp|spl|probe|plain|native|unaltered|s|ohne|ohne zusatz",
-    "spiked": "spiked|spike|addition|std add|standard addition|matrix spike|spk|ms|gespikt|aufgestockt|add|mit|mit zusatz",
+    "spiked": "spiked|spike|addition|std add|standard addition|matrix spike|spk|ms|gespikt|aufgestockt|add|"
+    "mit|mit zusatz",
     "standard": "standard|std|cal|calibration|calibrant|calibrator|kal|cal std|calibration standard|etalon",
-    "blank": "blank|blk|reagent blank|calibration blank|blind|blindwert|blanc|bl|method blank|prep blank|cal blank|leer",
+    "blank": "blank|blk|reagent blank|calibration blank|blind|blindwert|blanc|bl|method blank|prep blank|"
+    "cal blank|leer",
     "check_standard": "check|qc|control|check standard|ccv|icv|verification|kontrolle|qcs|chk|quality control",
 }
 
@@ -68,7 +79,11 @@ EXCLUDED = re.compile(r"(?:excluded?|excl|rejected|reject|rjct|discarded|omit(?:
 USED = re.compile(r"(?:used?|included?|valid|accepted|counts)", re.IGNORECASE)
 NO = frozenset({"no", "n", "0", "false", "nein", "non"})
 
-BLANK_LABEL = re.compile(r"(?:\b|_)(?:blank|blk|blind|blindwert|leerwert|blanc|blanco|ve-?wasser|reinstwasser|(?:di|deionised|ultrapure) water)(?:\b|_|(?=\d))", re.IGNORECASE)
+BLANK_LABEL = re.compile(
+    r"(?:\b|_)(?:blank|blk|blind|blindwert|leerwert|blanc|blanco|ve-?wasser|reinstwasser|(?:di|deionised|"
+    r"ultrapure) water)(?:\b|_|(?=\d))",
+    re.IGNORECASE,
+)
 CHECK_LABEL = re.compile(r"^(?:chk|check|qc|ccv|icv|qcs|control|kontrolle|verification)(?:\b|_|(?=\d))", re.IGNORECASE)
 STANDARD_LABEL = re.compile(r"^(?:std|standard|cal|calibration|calib|kal|etalon|calstd)(?:\b|_|(?=\d))", re.IGNORECASE)
 #: Vials that are neither samples nor anything that is calculated with.
@@ -77,7 +92,8 @@ SERVICE_LABEL = re.compile(
 )
 #: Words of another role in the midst of a label, and dilutions: a person must say what they mean.
 DOUBTFUL_LABEL = re.compile(
-    r"[\s_-](?:std|standard|cal|qc|check|blank|blk)\b|\b(?:x\s?\d+|\d+\s?x|(?<![\w-])\d+\s?[:+]\s?\d+|dil\w*|df\s?\d+)\b",
+    r"[\s_-](?:std|standard|cal|qc|check|blank|blk)\b|\b(?:x\s?\d+|\d+\s?x|(?<![\w-])\d+\s?[:+]\s?\d+|dil\w*|"
+    r"df\s?\d+)\b",
     re.IGNORECASE,
 )
 SPIKE_WORD = re.compile(r"^(?:spk|spike|spiked|ms|lsp|fsp|add|addition|gespikt|aufgestockt)$", re.IGNORECASE)

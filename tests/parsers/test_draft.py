@@ -15,7 +15,7 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 from shapes import FLASKS, RACK, SHAPES, Export, Reading, Vial, signal
 
-from parsers.draft import DraftRefused, draft
+from parsers.draft import Draft, DraftRefused, draft
 from parsers.examples import written
 from parsers.layout import parse_layout
 from parsers.read import ExportRefused, claims, read
@@ -124,6 +124,56 @@ def test_a_draft_of_a_difficult_export_is_refused_or_right(case: Path) -> None:
             continue
         fits = [one for one in expected if all(_agrees(name, one.get(name, ""), said[name]) for name in JUDGED)]
         assert fits, (said, drafted.text)
+
+
+COOKBOOK = [case for case in CASES if case.parent.parent.name == "cookbook"]
+
+
+def drafted_beside(case: Path) -> tuple[Path, Draft]:
+    """Draft from an export of the cookbook and the side tables beside it."""
+    beside = [path for path in case.parent.iterdir() if path.name not in ("README.md", "expected.csv", "layout.yaml")]
+    (export,) = [path for path in beside if path.name not in BESIDE_AN_EXPORT]
+    tables = sorted(path for path in beside if path != export)
+    return export, draft([(path.name, path.read_bytes()) for path in (export, *tables)])
+
+
+@pytest.mark.parametrize("case", COOKBOOK, ids=lambda path: path.parent.name)
+def test_a_draft_reads_the_cookbook_without_editing(case: Path) -> None:
+    """Of each family of shapes a draft reads four readings in five right as it stands, and none wrong in silence.
+
+    Right means line, role, all signals, what was added, nominal and dilution, each with its unit; a reading whose
+    signal cannot be used must be an error. Samples may have other names, as long as the same vials belong together.
+    """
+    export, drafted = drafted_beside(case)
+    found = read(export.read_bytes(), drafted.layout, export.name)
+    expected = list(csv.DictReader(case.read_text(encoding="utf-8").splitlines(keepends=True)))
+    faulty = {fault.row for fault in found.faults}
+    pool, right = list(expected), 0
+    samples: dict[str, set[str]] = {}
+    for row, said in enumerate(written(found)):
+        fits = [one for one in pool if all(_is(name, one.get(name, ""), said[name]) for name in JUDGED)]
+        if row in faulty:
+            right += bool(fits) and not fits[0]["signal"]
+            continue
+        assert fits, (said, drafted.text)
+        right += 1
+        pool.remove(fits[0])
+        samples.setdefault(said["sample"], set()).add(fits[0]["sample"])
+
+    assert right >= ENOUGH * len(expected), (right, len(expected), drafted.text)
+    assert all(len(names) == 1 for names in samples.values()), samples
+    assert len({name for names in samples.values() for name in names}) == len(samples)
+
+
+def _is(name: str, wanted: str, got: str) -> bool:
+    """Tell whether a field is what it must be; ppm stands for mg/L, and no dilution for 1."""
+    if name in ("signal", "line"):
+        return [float(one) for one in wanted.split()] == [float(one) for one in got.split()]
+    if name == "role":
+        return got == wanted
+    said, meant = (text.split() or ["1"] * (name == "predilution") for text in (got, wanted))
+    units = [one.casefold().replace("ppm", "mg/l") for one in said[1:]], [one.casefold() for one in meant[1:]]
+    return [float(one) for one in said[:1]] == [float(one) for one in meant[:1]] and units[0] == units[1]
 
 
 def _agrees(name: str, wanted: str, got: str) -> bool:
