@@ -30,6 +30,8 @@ def batch_step(check: str, names: str) -> str:
             f"Stock or spiking suspect: check the stock's concentration and lot and the pipette, then spike {names} "
             f"and the blank again."
         )
+    if check == "stock":
+        return f"Prepare the additions of {names} again from a stock within its dates, or correct its dates."
     return f"Find the contamination or carry-over, measure a clean blank, then {names} again."
 
 
@@ -86,7 +88,7 @@ def _spiked_blank(case: Case, i: int) -> str:
 
 
 def _stock(case: Case, i: int) -> str:
-    return f"Prepare the additions of {case.sample(i)} again from a stock within its dates, or correct its dates."
+    return batch_step("stock", case.sample(i))
 
 
 def _duplicate(case: Case, i: int) -> str:

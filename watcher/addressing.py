@@ -59,4 +59,5 @@ class Addressing:
             recipients=self._settings.to,
             message_id=new_message_id(self._settings.sender),
             due_at=stamp(self._clock.now() + wait),
+            pictures=wanted.pictures,
         )

@@ -23,6 +23,7 @@ from rich.text import Text
 
 from watcher.exit_codes import ALL_PASS, NOT_DONE
 from watcher.health import read_status
+from watcher.letter_html import unfolded
 from watcher.terminal import console, heading, lines, short, table, word
 
 if TYPE_CHECKING:
@@ -167,7 +168,8 @@ def _show(out: Console, folder: Path, mails: list[EmailMessage]) -> None:
         lines(out, [refused["problem"]])
     for number, message in enumerate(mails, start=1):
         heading(out, f"Mail {number} of {len(mails)}, to {message['To']}")
-        body = message.get_content().replace("\r\n", "\n").rstrip()
+        part = message.get_body(("plain",))
+        body = "" if part is None else unfolded(part.get_content().replace("\r\n", "\n")).rstrip()
         lines(out, [f"Subject: {message['Subject']}", "", body])
     heading(out, "Files")
     config = folder / "config.yaml"

@@ -9,6 +9,7 @@ from __future__ import annotations
 import calendar
 import hashlib
 import json
+import sys
 from dataclasses import dataclass, replace
 from functools import partial
 from pathlib import Path
@@ -24,6 +25,7 @@ from watcher.difference import difference
 from watcher.disk import Disk
 from watcher.growth import compare
 from watcher.names import target
+from watcher.pictures import stage_pictures
 from watcher.record import Export, lent, number
 from watcher.scalars import duration
 from watcher.settings import Settings, SettingsInvalid, Snapshot, compile_snapshot, read_files
@@ -301,7 +303,7 @@ class Worker:
             "done",
             layout=evaluated.layout.layout,
             files=stage(evaluated, self._settings, Path(request["staging"]), self._disk),
-            mails=[letter.plain() for letter in letters],
+            mails=[self._illustrated(letter, evaluated, Path(request["staging"])) for letter in letters],
             series=series_index(outcomes),
             verdicts=verdict_counts(outcomes),
             problems=list(evaluated.problems),
@@ -309,6 +311,16 @@ class Worker:
             wants=wants,
             family=family,
         )
+
+    @staticmethod
+    def _illustrated(letter: mail.Mail, evaluated: Evaluated, folder: Path) -> dict[str, Any]:
+        """Return a mail with its plots; one that cannot be drawn must not keep its mail back."""
+        try:
+            pictures = stage_pictures(evaluated.outcomes, evaluated.export, letter.series, folder)
+        except Exception as error:  # noqa: BLE001 - the words are the alert
+            print(f"a plot was not drawn: {type(error).__name__}: {error}", file=sys.stderr)  # noqa: T201
+            pictures = []
+        return letter.plain() | {"pictures": pictures}
 
 
 def _job(plain: Mapping[str, Any]) -> Job:

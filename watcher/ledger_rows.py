@@ -88,6 +88,15 @@ class StagedFile:
 
 
 @dataclass(frozen=True, slots=True)
+class Picture:
+    """A plot that is durable in the records and goes with a mail; `alt` says in words what it shows."""
+
+    staged: Path
+    sha256: str
+    alt: str
+
+
+@dataclass(frozen=True, slots=True)
 class QueuedMail:
     """A mail as it enters the outbox, with everything a repeat must repeat.
 
@@ -101,6 +110,8 @@ class QueuedMail:
         The same for every attempt.
     due_at
         Not before this moment.
+    pictures
+        Plots of what it is about.
     """
 
     kind: str
@@ -110,6 +121,7 @@ class QueuedMail:
     recipients: tuple[str, ...]
     message_id: str
     due_at: str
+    pictures: tuple[Picture, ...] = ()
 
 
 @dataclass(frozen=True, slots=True)
@@ -169,6 +181,8 @@ class DueMail:
         The most attempts made for any of the recipients.
     seal
         Number and seal of the entry that queued it.
+    pictures
+        Plots of what it is about.
     """
 
     id: int
@@ -181,6 +195,7 @@ class DueMail:
     possible_repeat: bool
     attempts: int
     seal: Seal | None = None
+    pictures: tuple[Picture, ...] = ()
 
 
 @dataclass(frozen=True, slots=True)

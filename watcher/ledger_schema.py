@@ -1,4 +1,4 @@
-"""The tables of the ledger, version 3, and the steps from every earlier version.
+"""The tables of the ledger, version 4, and the steps from every earlier version.
 
 Times are texts, ISO 8601 in UTC with microseconds. Nothing is ever deleted from `entries`, `exports`, `mails` or
 `settings`; `alerts` loses a key only together with a mail that was withdrawn before anyone had it. `seal` chains the
@@ -7,7 +7,7 @@ entries by hash.
 
 from __future__ import annotations
 
-VERSION = 3
+VERSION = 4
 
 #: Version to the statements that make the next one of it.
 STEPS = {
@@ -41,6 +41,9 @@ CREATE TABLE requests (
     id TEXT PRIMARY KEY,
     done_at TEXT NOT NULL
 ) STRICT;
+""",
+    3: """
+ALTER TABLE mails ADD COLUMN pictures TEXT NOT NULL DEFAULT '[]';
 """,
 }
 
@@ -115,7 +118,8 @@ CREATE TABLE mails (
     body TEXT NOT NULL,
     created_at TEXT NOT NULL,
     due_at TEXT NOT NULL,
-    entry INTEGER REFERENCES entries (number)
+    entry INTEGER REFERENCES entries (number),
+    pictures TEXT NOT NULL DEFAULT '[]'
 ) STRICT;
 CREATE INDEX mails_by_export ON mails (export_id, kind);
 

@@ -1,27 +1,33 @@
-"""A queued mail as a message: headers that nothing in an export can break, and the text as it was queued.
+"""A queued mail as a message: headers that nothing in an export can break, and its text, plain and as HTML with plots.
 
-The only sentences added here are about the mail itself: that it may be a repeat, and that it is late.
+The only sentences added here are about the mail itself: that it may be a repeat, and that it is late. The text is
+`format=flowed` (RFC 3676): a phone joins its lines and breaks them to its own width.
 """
 
 from __future__ import annotations
 
 import email.policy
 import email.utils
+import hashlib
+import textwrap
 import unicodedata
 from datetime import timedelta
 from email.message import EmailMessage
 from typing import TYPE_CHECKING
 
 from watcher.clock import moment
+from watcher.letter_html import html
 
 if TYPE_CHECKING:
     from collections.abc import Sequence
     from datetime import datetime
 
-    from watcher.ledger_rows import DueMail
+    from watcher.ledger_rows import DueMail, Picture
 
 #: Characters of a subject; a phone shows fewer.
 SUBJECT_LIMIT = 160
+#: Width of the text.
+COLUMNS = 72
 #: A mail that left so much after it was due says so.
 LATE_AFTER = timedelta(minutes=15)
 
@@ -69,8 +75,38 @@ def compose(due: DueMail, sender: str, recipients: Sequence[str], now: datetime)
     message["Date"] = email.utils.format_datetime(now)
     message["Message-ID"] = due.message_id
     message["Auto-Submitted"] = "auto-generated"
-    message.set_content("".join(_remarks(due, now)) + _body(due.body) + _seal(due))
+    remarks, body, seal = _remarks(due, now), _body(due.body), _seal(due)
+    message.set_content(_flowed("".join(remarks) + body + seal), params={"format": "flowed"})
+    pictures = [(picture, content) for picture in due.pictures if (content := _content(picture)) is not None]
+    domain = due.message_id.strip("<>").rpartition("@")[2]
+    named = [(f"plot{number}.{due.id}@{domain}", picture.alt) for number, (picture, _) in enumerate(pictures, 1)]
+    message.add_alternative(html(body, remarks, named, seal), subtype="html")
+    part = message.get_body(("html",))
+    for (cid, _), (_, content) in zip(named, pictures, strict=True):
+        if part is not None:  # it was added a moment ago
+            part.add_related(content, "image", "png", cid=f"<{cid}>", filename=f"{cid.partition('.')[0]}.png")
     return message.as_bytes()
+
+
+def _content(picture: Picture) -> bytes | None:
+    """Return a picture's bytes; None where it is gone or altered: the mail says the same without it."""
+    try:
+        content = picture.staged.read_bytes()
+    except OSError:
+        return None
+    return content if hashlib.sha256(content).hexdigest() == picture.sha256 else None
+
+
+def _flowed(text: str) -> str:
+    """Break lines at 72 columns so that they can be joined again, and protect what would mean something (RFC 3676)."""
+    lines = []
+    for paragraph in text.split("\n"):
+        broken = textwrap.wrap(
+            paragraph, COLUMNS - 1, break_long_words=False, break_on_hyphens=False, drop_whitespace=True
+        )
+        # A line that goes on ends with a blank; the last one of a paragraph must not.
+        lines += [f"{line} " for line in broken[:-1]] + (broken[-1:] or [""])
+    return "\n".join(f" {line}" if line.startswith((" ", ">", "From ")) else line for line in lines)
 
 
 def _is_late(due: DueMail, now: datetime) -> bool:

@@ -1,13 +1,12 @@
 """What a mail says: first what to do, then what is affected, where the vials are, why, the numbers, the record.
 
-Plain text of 72 columns for a phone. One mail for the failures of an export, grouped by cause. Nothing here knows a
+One mail for the failures of an export, grouped by cause. Nothing here knows a
 mail server, a clock or a queue.
 """
 
 from __future__ import annotations
 
 import math
-import textwrap
 from collections import Counter, defaultdict
 from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
@@ -30,13 +29,14 @@ if TYPE_CHECKING:
     from rules.outcomes import Outcomes
     from watcher.record import Export
 
-COLUMNS = 72
 #: Longest subject that a telephone shows to its end.
 MOST_SUBJECT = 120
 #: Causes that one mail spells out; the rest is counted, and stands in the result files.
 MOST_CAUSES = 12
 #: Checks that judge the batch: their failure is one cause for all series of the analyte.
 BATCH_CHECKS = ("check_standard", "bracket", "blank", "spiked_blank")
+#: Series that a mail shows as plots.
+MOST_PICTURES = 3
 
 
 @dataclass(frozen=True, slots=True)
@@ -51,6 +51,8 @@ class Mail:
         What it reports, one key for each; a key is never mailed twice.
     after_seconds
         How long it waits: newer content of the export may settle the matter.
+    series
+        The series to show as plots, the first of each cause that is a series' own.
     """
 
     kind: str
@@ -58,6 +60,7 @@ class Mail:
     body: str
     keys: tuple[str, ...]
     after_seconds: float = 0.0
+    series: tuple[int, ...] = ()
 
     def plain(self) -> dict[str, Any]:
         """Return the mail as JSON values."""
@@ -72,10 +75,10 @@ class Mail:
 
 @dataclass(frozen=True, slots=True)
 class _Cause:
-    """Series that fail for one reason; `batch` is the check that failed for all of them, if it judges the batch."""
+    """Series that fail for one reason; `batch` is the check that failed for all of them, if it is one of a batch."""
 
     series: tuple[int, ...]
-    batch: str | None
+    batch: str | None = None
 
     @property
     def first(self) -> int:
@@ -165,7 +168,7 @@ def _of_series(
     body = _body(
         headline,
         [
-            ("DO", [_do(outcomes, cause) for cause in shown] + tail),
+            ("DO", list(dict.fromkeys(_do(outcomes, cause) for cause in shown)) + tail),
             ("HOLD", _hold(outcomes, series)),
             ("WHERE", [_where(outcomes, cause) for cause in shown] + _people(outcomes)),
             ("WHY", [_why(outcomes, cause) for cause in shown]),
@@ -173,14 +176,16 @@ def _of_series(
             ("RECORD", _record(export, lines)),
         ],
     )
-    return Mail(kind, _cut(headline, MOST_SUBJECT), body, keys, wait)
+    drawn = tuple(cause.first for cause in shown if cause.batch is None)[:MOST_PICTURES]
+    return Mail(kind, _cut(headline, MOST_SUBJECT), body, keys, wait, drawn)
 
 
 def _causes(outcomes: Outcomes, series: list[int]) -> list[_Cause]:
     """Group series by cause.
 
-    A failed batch check is one cause for all series of its analyte, and so are one faulty cell that they share and
-    what the batch lacks; any other cause belongs to its series.
+    A failed batch check is one cause for all series of its analyte, and so are one faulty cell that they share, a
+    stock out of its dates, and what the batch lacks; any other cause belongs to its series. What holds for a whole
+    batch comes first.
     """
     groups: dict[tuple[Any, ...], list[int]] = defaultdict(list)
     for i in series:
@@ -189,14 +194,17 @@ def _causes(outcomes: Outcomes, series: list[int]) -> list[_Cause]:
         faults = tuple(outcomes.case.faults.get(i, ()))
         lacks = outcomes.missing.get(i, "") if failed == ("incomplete",) else ""
         key: tuple[Any, ...] = (None, i)
-        if batch:
+        if "stock" in failed and "inputs" not in failed:
+            key = ("stock", tuple(outcomes.failing_sentences(i)))
+        elif batch:
             key = (batch, int(outcomes.case.key[i]))
         elif faults:
             key = (None, faults)
         elif expectations.of_batch(outcomes.case, i, lacks):
             key = (None, lacks)
         groups[key].append(i)
-    return [_Cause(tuple(group), key[0]) for key, group in groups.items()]
+    causes = [_Cause(tuple(group), key[0]) for key, group in groups.items()]
+    return sorted(causes, key=lambda cause: cause.batch is None)
 
 
 def _names(outcomes: Outcomes, series: list[int]) -> str:
@@ -294,19 +302,18 @@ def _capped(sentences: list[str]) -> list[str]:
 
 
 def _cut(sentence: str, most: int = 90) -> str:
-    """Shorten a sentence for a subject."""
-    return sentence if len(sentence) <= most else f"{sentence[: most - 1].rstrip()}…"
+    """Shorten a sentence for a subject, between words where that leaves the better part of it."""
+    if len(sentence) <= most:
+        return sentence
+    whole, blank, _ = sentence[:most].rpartition(" ")
+    return f"{whole if blank and len(whole) > most // 2 else sentence[: most - 1].rstrip()}…"
 
 
 def _body(headline: str, sections: list[tuple[str, list[str]]]) -> str:
-    parts = [textwrap.fill(headline, COLUMNS, break_long_words=False)]
+    """Return headline and sections, one paragraph a line; the letter breaks lines to a width."""
+    parts = [headline]
     for title, paragraphs in sections:
         if paragraphs:
-            wrapped = [
-                textwrap.fill(p, COLUMNS, initial_indent="- ", subsequent_indent="  ", break_long_words=False)
-                if len(paragraphs) > 1
-                else textwrap.fill(p, COLUMNS, break_long_words=False)
-                for p in paragraphs
-            ]
-            parts.append("\n".join([title, *wrapped]))
+            dash = "- " if len(paragraphs) > 1 else ""
+            parts.append("\n".join([title, *(f"{dash}{paragraph}" for paragraph in paragraphs)]))
     return "\n\n".join(parts) + "\n"

@@ -189,6 +189,9 @@ class Mails:
         at("mail-answered")
         again = stamp(self._clock.now() + self._backoff.after(due.attempts + 1))
         self._outgoing.outcome(due, [self._planned(each, again) for each in outcomes])
+        if due.pictures and self._outgoing.is_settled(due):
+            for picture in due.pictures:
+                picture.staged.unlink(missing_ok=True)
         for each in outcomes:
             _log.log(
                 20 if each.state == "delivered" else 30,

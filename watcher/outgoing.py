@@ -9,6 +9,7 @@ the work of `watcher.delivery` and `watcher.post`.
 
 from __future__ import annotations
 
+import json
 from collections import defaultdict
 from datetime import timedelta
 from pathlib import Path
@@ -16,7 +17,7 @@ from typing import TYPE_CHECKING
 
 from watcher.clock import moment, stamp
 from watcher.ledger_entries import Seal, append_entry
-from watcher.ledger_rows import DueFile, DueMail, UndeliveredFile, UndeliveredMail
+from watcher.ledger_rows import DueFile, DueMail, Picture, UndeliveredFile, UndeliveredMail
 
 if TYPE_CHECKING:
     import sqlite3
@@ -106,16 +107,27 @@ class Outgoing:
         return bool(self._database.rows("SELECT 1 FROM files WHERE state = 'delivered' LIMIT 1"))
 
     def staged_files(self) -> set[Path]:
-        """Files in the records that still wait to be delivered."""
-        return {Path(r[0]) for r in self._database.rows("SELECT staged FROM files WHERE state = 'waiting'")}
+        """Files in the records that still wait to be delivered, and pictures of mails that do."""
+        files = {Path(r[0]) for r in self._database.rows("SELECT staged FROM files WHERE state = 'waiting'")}
+        mails = self._database.rows(
+            "SELECT pictures FROM mails WHERE pictures <> '[]' AND EXISTS (SELECT 1 FROM recipients "
+            "WHERE mail_id = mails.id AND state IN ('waiting', 'sending', 'unknown'))"
+        )
+        return files | {picture.staged for row in mails for picture in _pictures(row["pictures"])}
+
+    def is_settled(self, due: DueMail) -> bool:
+        """Tell whether no recipient of a mail is tried any more."""
+        open_one = "SELECT 1 FROM recipients WHERE mail_id = ? AND state IN ('waiting', 'sending', 'unknown') LIMIT 1"
+        return not self._database.rows(open_one, (due.id,))
 
     # -- mails -------------------------------------------------------------------------------------------------
 
     def due_mails(self, now: datetime) -> list[DueMail]:
         """Mails for which an attempt is due, oldest first; one with recipients of both sorts comes twice."""
         rows = self._database.rows(
-            "SELECT mail_id, message_id, subject, mails.body, created_at, mails.due_at AS first_due_at, address, "
-            "state, recipients.attempts AS attempts, entry, seal FROM recipients JOIN mails ON mails.id = mail_id "
+            "SELECT mail_id, message_id, subject, mails.body, created_at, mails.due_at AS first_due_at, pictures, "
+            "address, state, recipients.attempts AS attempts, entry, seal FROM recipients "
+            "JOIN mails ON mails.id = mail_id "
             "LEFT JOIN entries ON entries.number = mails.entry "
             f"WHERE state IN ('waiting', 'unknown') AND {_DUE.format('recipients')} ORDER BY mail_id, address",
             _due_values(now),
@@ -135,6 +147,7 @@ class Outgoing:
                 possible_repeat=repeat,
                 attempts=max(row["attempts"] for row in found),
                 seal=None if found[0]["seal"] is None else Seal(found[0]["entry"], found[0]["seal"]),
+                pictures=tuple(_pictures(found[0]["pictures"])),
             )
             for (mail_id, repeat), found in together.items()
         ]
@@ -189,6 +202,10 @@ class Outgoing:
 
 #: An attempt is due when its time has come, or when a retry lies further ahead than any is ever planned.
 _DUE = "({0}.due_at <= :now OR ({0}.attempts > 0 AND {0}.due_at > :horizon))"
+
+
+def _pictures(text: str) -> list[Picture]:
+    return [Picture(Path(staged), sha256, alt) for staged, sha256, alt in json.loads(text)]
 
 
 def _due_values(now: datetime) -> dict[str, str]:

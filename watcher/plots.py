@@ -15,13 +15,45 @@ import numpy as np
 from matplotlib.figure import Figure
 from scipy import stats
 
+from rules.figures import figure as figure_of
+
 INK, LINE, SHADE = "#1c2430", "#1f4e8c", "#c9d3df"
 #: Points that a drawn line or band has.
 STEPS = 60
+#: Sizes of a plot in inches: on a page, and in a mail, where its writing must be read on a phone.
+PAGE, PHONE = (6.4, 3.6), (4.2, 3.5)
 _STYLE: Any = {"svg.hashsalt": "spikewarden", "svg.fonttype": "path", "font.size": 9.0, "axes.edgecolor": INK}
 
 
 def additions_plot(series: dict[str, Any], calibration_slope: float | None) -> str | None:
+    """Draw the additions line of a series as a ``data:`` address of an SVG; see `_additions`."""
+    with mpl.rc_context(_STYLE):
+        figure = _additions(series, calibration_slope)
+        return None if figure is None else _address(figure)
+
+
+def additions_picture(series: dict[str, Any], calibration_slope: float | None) -> bytes | None:
+    """Draw the additions line of a series as a PNG, for a mail; see `_additions`."""
+    with mpl.rc_context(_STYLE):
+        figure = _additions(series, calibration_slope, PHONE)
+        if figure is None:
+            return None
+        out = io.BytesIO()
+        figure.savefig(out, format="png", dpi=180, metadata={"Software": None})
+        return out.getvalue()
+
+
+def additions_words(series: dict[str, Any]) -> str:
+    """Say what the plot of a series shows, with its numbers."""
+    fit = series["fit"]
+    name = " ".join(part for part in (series["sample"], series["analyte"], series["channel"]) if part)
+    line = f"slope {figure_of(fit['slope'])}, intercept {figure_of(fit['intercept'])}, {fit['n']} solutions"
+    return f"Additions line of {name}: {line}; result {series['result']['text']}"
+
+
+def _additions(
+    series: dict[str, Any], calibration_slope: float | None, size: tuple[float, float] = PAGE
+) -> Figure | None:
     """Draw the additions line of a series.
 
     Parameters
@@ -30,11 +62,13 @@ def additions_plot(series: dict[str, Any], calibration_slope: float | None) -> s
         An entry of ``series`` in the record.
     calibration_slope
         Slope of the calibration (signal per unit in the vessel), drawn dashed through the same intercept.
+    size
+        Width and height in inches.
 
     Returns
     -------
-    str or None
-        A ``data:`` address of an SVG; none where no line was computed. The axis is the concentration in the aliquot.
+    Figure or None
+        None where no line was computed. The axis is the concentration in the aliquot.
     """
     fit = series["fit"]
     points = [p for p in series["solutions"] if None not in (p["added"], p["signal"]) and p["dilution"]]
@@ -45,28 +79,27 @@ def additions_plot(series: dict[str, Any], calibration_slope: float | None) -> s
     slope, intercept = fit["slope"], fit["intercept"]
     crossing = -intercept / slope if slope > 0 else 0.0
     reach = np.linspace(min(crossing * 1.08, 0.0), x.max() * 1.04, STEPS)
-    with mpl.rc_context(_STYLE):
-        figure = Figure(figsize=(6.4, 3.6), layout="constrained")
-        axes = figure.subplots()
-        axes.axhline(0, color=INK, linewidth=0.8)
-        axes.axvline(0, color=INK, linewidth=0.8, linestyle=":")
-        half = confidence_band(fit, points, reach)
-        if half is not None:
-            middle = intercept + slope * reach
-            axes.fill_between(reach, middle - half, middle + half, color=SHADE, label="95 % band of the line")
-        axes.plot(reach, intercept + slope * reach, color=LINE, label="additions")
-        if calibration_slope is not None:
-            dashed = intercept + calibration_slope * reach
-            axes.plot(reach, dashed, color=INK, linestyle="--", label="slope of the calibration")
-        axes.plot(x, y, "o", color=INK, markersize=5, label="solutions")
-        found = series["additions_result"]
-        if crossing < 0 and found and found["value"] and None not in (found["low"], found["high"]):
-            ends = [found["high"] / found["value"] * crossing, found["low"] / found["value"] * crossing]
-            axes.plot(ends, [0, 0], "|-", color=LINE, linewidth=3, markersize=12, label="interval of the result")
-        axes.set_xlabel(f"concentration in the aliquot ({series['result']['unit']}), below zero: found there")
-        axes.set_ylabel("signal / dilution")
-        axes.legend(frameon=False, fontsize=8)
-        return _address(figure)
+    figure = Figure(figsize=size, layout="constrained")
+    axes = figure.subplots()
+    axes.axhline(0, color=INK, linewidth=0.8)
+    axes.axvline(0, color=INK, linewidth=0.8, linestyle=":")
+    half = confidence_band(fit, points, reach)
+    if half is not None:
+        middle = intercept + slope * reach
+        axes.fill_between(reach, middle - half, middle + half, color=SHADE, label="95 % band of the line")
+    axes.plot(reach, intercept + slope * reach, color=LINE, label="additions")
+    if calibration_slope is not None:
+        dashed = intercept + calibration_slope * reach
+        axes.plot(reach, dashed, color=INK, linestyle="--", label="slope of the calibration")
+    axes.plot(x, y, "o", color=INK, markersize=5, label="solutions")
+    found = series["additions_result"]
+    if crossing < 0 and found and found["value"] and None not in (found["low"], found["high"]):
+        ends = [found["high"] / found["value"] * crossing, found["low"] / found["value"] * crossing]
+        axes.plot(ends, [0, 0], "|-", color=LINE, linewidth=3, markersize=12, label="interval of the result")
+    axes.set_xlabel(f"concentration in the aliquot ({series['result']['unit']}), below zero: found there")
+    axes.set_ylabel("signal / dilution")
+    axes.legend(frameon=False, fontsize=8)
+    return figure
 
 
 def confidence_band(fit: dict[str, Any], points: list[dict[str, Any]], at: np.ndarray) -> np.ndarray | None:

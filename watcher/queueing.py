@@ -7,6 +7,7 @@ to the queue afterwards is told by `watcher.outgoing`.
 from __future__ import annotations
 
 import hashlib
+import json
 from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
@@ -73,9 +74,18 @@ def queue_mail(txn: sqlite3.Connection, export_id: int | None, mail: QueuedMail,
     if mail.keys and known.issuperset(mail.keys):
         return False
     mail_id = txn.execute(
-        "INSERT INTO mails (export_id, kind, message_id, subject, body, created_at, due_at) "
-        "VALUES (?, ?, ?, ?, ?, ?, ?)",
-        (export_id, mail.kind, mail.message_id, mail.subject, mail.body, stamp(now), mail.due_at),
+        "INSERT INTO mails (export_id, kind, message_id, subject, body, created_at, due_at, pictures) "
+        "VALUES (?, ?, ?, ?, ?, ?, ?, ?)",
+        (
+            export_id,
+            mail.kind,
+            mail.message_id,
+            mail.subject,
+            mail.body,
+            stamp(now),
+            mail.due_at,
+            json.dumps([[str(each.staged), each.sha256, each.alt] for each in mail.pictures], ensure_ascii=False),
+        ),
     ).lastrowid
     txn.executemany(
         "INSERT INTO recipients (mail_id, address, state, due_at) VALUES (?, ?, 'waiting', ?)",

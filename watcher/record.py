@@ -81,18 +81,19 @@ def record_parts(outcomes: Outcomes, export: Export, problems: tuple[str, ...]) 
     case = outcomes.case
     yield "format", FORMAT
     yield "export", export.plain()
-    yield "series", (_series(outcomes, i) for i in range(len(case)))
+    yield "series", (series_entry(outcomes, i) for i in range(len(case)))
     yield "blanks", _blanks(case)
     yield "check_standards", _check_standards(outcomes)
     yield "spiked_blanks", _spiked_blanks(case)
-    yield "calibrations", _calibrations(case)
+    yield "calibrations", calibrations(case)
     yield "others", lent(outcomes)
     yield "set_aside", ({"line": a.line, "reason": a.reason, "text": a.text} for a in case.readings.set_aside)
     yield "problems", problems
     yield "seal", export.seal
 
 
-def _series(outcomes: Outcomes, i: int) -> dict[str, Any]:
+def series_entry(outcomes: Outcomes, i: int) -> dict[str, Any]:
+    """Return an entry of ``series``."""
     case = outcomes.case
     reported = outcomes.reported(i)
     by = Reported(int(case.reported[i]))
@@ -339,14 +340,15 @@ def _spiked_blanks(case: Case) -> list[dict[str, Any]]:
     ]
 
 
-def _calibrations(case: Case) -> list[dict[str, Any]]:
-    calibrations = case.calibrations
-    lines, segments = calibrations.lines, calibrations.segments
+def calibrations(case: Case) -> list[dict[str, Any]]:
+    """Return the calibrations of an export with their standards."""
+    found = case.calibrations
+    lines, segments = found.lines, found.segments
     listed = []
-    for at, key in enumerate(calibrations.key[~calibrations.instrument].tolist()):
+    for at, key in enumerate(found.key[~found.instrument].tolist()):
         analyte, channel = case.keys.split(key)
         start, size = int(segments.starts[at]), int(segments.sizes[at])
-        standards = calibrations.solutions[start : start + size].tolist()
+        standards = found.solutions[start : start + size].tolist()
         listed.append(
             {
                 "analyte": case.readings.analyte.names[analyte],
@@ -361,7 +363,7 @@ def _calibrations(case: Case) -> list[dict[str, Any]]:
                 "dof": int(lines.dof[at]),
                 "unit": case.method.vessel_unit,
                 "standards": [
-                    {"label": case.label(s), "nominal": number(calibrations.nominal[start + offset])}
+                    {"label": case.label(s), "nominal": number(found.nominal[start + offset])}
                     | {
                         "signal": number(case.solutions.signal[s]),
                         "export_lines": _lines(case, s),

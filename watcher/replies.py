@@ -12,7 +12,7 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from watcher.errors import WatcherError
-from watcher.ledger_rows import SeriesRow, StagedFile
+from watcher.ledger_rows import Picture, SeriesRow, StagedFile
 
 if TYPE_CHECKING:
     from collections.abc import Mapping
@@ -41,6 +41,7 @@ class WantedMail:
     body: str
     keys: tuple[str, ...]
     after_seconds: float
+    pictures: tuple[Picture, ...] = ()
 
 
 @dataclass(frozen=True, slots=True)
@@ -100,7 +101,7 @@ def read_reply(message: Mapping[str, Any], staging: Path) -> Reply:
         fate=fate,
         layout=_get(message, "layout", str, optional=True),
         files=tuple(_file(each, staging) for each in _maps(message, "files")),
-        mails=tuple(_mail(each) for each in _maps(message, "mails")),
+        mails=tuple(_mail(each, staging) for each in _maps(message, "mails")),
         series=tuple(_series(each) for each in _maps(message, "series")),
         counts=_counts(message),
         problem=_get(message, "problem", str, optional=True) or "\n".join(problems) or None,
@@ -111,13 +112,21 @@ def read_reply(message: Mapping[str, Any], staging: Path) -> Reply:
 
 
 def _file(item: Mapping[str, Any], staging: Path) -> StagedFile:
+    return StagedFile(_get(item, "target", str), _staged(item, staging), _get(item, "sha256", str))
+
+
+def _picture(item: Mapping[str, Any], staging: Path) -> Picture:
+    return Picture(_staged(item, staging), _get(item, "sha256", str), _get(item, "alt", str))
+
+
+def _staged(item: Mapping[str, Any], staging: Path) -> Path:
     staged = Path(_get(item, "staged", str))
     if staged.parent != staging:
-        raise ReplyBroken("files.staged", f"a file in {staging}", str(staged))
-    return StagedFile(_get(item, "target", str), staged, _get(item, "sha256", str))
+        raise ReplyBroken("staged", f"a file in {staging}", str(staged))
+    return staged
 
 
-def _mail(item: Mapping[str, Any]) -> WantedMail:
+def _mail(item: Mapping[str, Any], staging: Path) -> WantedMail:
     keys = _get(item, "keys", list, default=[])
     return WantedMail(
         kind=_get(item, "kind", str),
@@ -125,6 +134,7 @@ def _mail(item: Mapping[str, Any]) -> WantedMail:
         body=_get(item, "body", str),
         keys=tuple(_get({"keys": key}, "keys", str) for key in keys),
         after_seconds=_number(item, "after_seconds") or 0.0,
+        pictures=tuple(_picture(each, staging) for each in _maps(item, "pictures")),
     )
 
 

@@ -9,7 +9,7 @@ import pytest
 
 from watcher.database import PRAGMAS, Database, LedgerUnusable
 from watcher.ledger import Ledger
-from watcher.ledger_entries import broken_at
+from watcher.ledger_entries import broken_at, seal_all
 from watcher.ledger_schema import STEPS, VERSION
 
 
@@ -78,6 +78,9 @@ def test_an_older_ledger_becomes_one_of_this_version(tmp_path: Path, version: in
         )
         old.execute("INSERT INTO entries (kind, at, body) VALUES ('adopt', '2026-03-02', '{\"number\":1}')")
         old.execute("INSERT INTO entries (kind, export_id, at, body) VALUES ('accept', 1, '2026-03-02', '{}')")
+        if version >= 3:  # entries have seals since then
+            old.row_factory = sqlite3.Row
+            seal_all(old)
         old.execute(f"PRAGMA user_version = {version}")
     old.close()
 

@@ -4,15 +4,23 @@ from __future__ import annotations
 
 import email
 import email.policy
+import hashlib
+import re
+from collections import Counter
 from datetime import UTC, datetime
-from typing import Any
+from html.parser import HTMLParser
+from typing import TYPE_CHECKING, Any
 
 import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from watcher.ledger_rows import DueMail
-from watcher.letter import SUBJECT_LIMIT, clean, compose, new_message_id
+from watcher.ledger_rows import DueMail, Picture
+from watcher.letter import COLUMNS, SUBJECT_LIMIT, clean, compose, new_message_id
+from watcher.letter_html import unfolded
+
+if TYPE_CHECKING:
+    from pathlib import Path
 
 NOW = datetime(2026, 12, 1, 7, 30, tzinfo=UTC)
 
@@ -37,14 +45,18 @@ def _message(mail: DueMail) -> Any:
 
 
 def _text_of(sent: Any) -> str:
-    return str(sent.get_content()).replace("\r\n", "\n")
+    return str(sent.get_body(("plain",)).get_content()).replace("\r\n", "\n")
+
+
+def _html_of(sent: Any) -> str:
+    return str(sent.get_body(("html",)).get_content())
 
 
 def test_the_headers_of_a_mail() -> None:
     """Sender, recipients, date, identity, and that no person wrote it."""
     sent = _message(_due(recipients=("lead@example", "deputy@example")))
 
-    assert dict(sent.items()) | {"Content-Type": "", "Content-Transfer-Encoding": "", "MIME-Version": ""} == {
+    assert dict(sent.items()) | {"Content-Type": "", "MIME-Version": ""} == {
         "Subject": "FAIL RIV-17 Zn",
         "From": "bench@example",
         "To": "lead@example, deputy@example",
@@ -52,7 +64,6 @@ def test_the_headers_of_a_mail() -> None:
         "Message-ID": "<1@example>",
         "Auto-Submitted": "auto-generated",
         "Content-Type": "",
-        "Content-Transfer-Encoding": "",
         "MIME-Version": "",
     }
     assert _text_of(sent) == "DO prepare RIV-17 again\n"
@@ -66,7 +77,8 @@ def test_no_subject_or_body_can_break_a_mail(subject: str, body: str) -> None:
     assert sorted(sent.keys()) == sorted(_message(_due()).keys())
     assert len(sent["Subject"]) <= SUBJECT_LIMIT
     assert sent["Subject"].isprintable()
-    sent.get_content().encode("utf-8")
+    _text_of(sent).encode("utf-8")
+    _html_of(sent).encode("utf-8")
 
 
 @pytest.mark.parametrize("end", ["\r\n", "\n", "\r", "\v", "\f", "\x85", "\u2028", "\0"])
@@ -101,8 +113,9 @@ def test_a_long_subject_is_capped_visibly() -> None:
 
 def test_a_possible_repeat_and_a_late_mail_say_so() -> None:
     """The two remarks stand above the text, and only where they are true."""
-    plain = _message(_due()).get_content()
-    remarked = _message(_due(possible_repeat=True, first_due_at="2026-11-28T07:30:00.000000Z")).get_content()
+    plain = _text_of(_message(_due()))
+    late = _message(_due(possible_repeat=True, first_due_at="2026-11-28T07:30:00.000000Z"))
+    remarked = unfolded(_text_of(late))
 
     assert "repeat" not in plain
     assert "late" not in plain
@@ -119,3 +132,74 @@ def test_identities_are_in_the_senders_domain_and_differ() -> None:
     assert len(made) == 50
     assert all(each.endswith("@skerry.example>") for each in made)
     assert new_message_id("bench").endswith("@localhost>")
+
+
+def _picture(folder: Path, content: bytes = b"\x89PNG plot", alt: str = "Additions line of SED-12 Zn") -> Picture:
+    path = folder / "plot.png"
+    path.write_bytes(content)
+    return Picture(path, hashlib.sha256(content).hexdigest(), alt)
+
+
+@given(st.lists(st.text(alphabet="ab >-\tF", max_size=200), max_size=8))
+def test_text_is_broken_at_72_columns_and_can_be_joined_again(paragraphs: list[str]) -> None:
+    """Every line fits 72 columns unless a word does not, and a phone gets the paragraphs back (RFC 3676)."""
+    paragraphs = [" ".join(each.split()) for each in paragraphs]
+
+    sent = _text_of(_message(_due(body="\n".join(["first", *paragraphs]) + "\n")))
+
+    assert all(len(line) <= COLUMNS or " " not in line.strip() for line in sent.split("\n"))
+    unstuffed = "\n".join(line.removeprefix(" ") for line in sent.split("\n"))
+    assert unfolded(unstuffed) == "\n".join(["first", *paragraphs]) + "\n"
+    assert "format=flowed" in str(_message(_due()).get_body(("plain",))["Content-Type"]).replace('"', "")
+
+
+@given(st.text(), st.lists(st.text(min_size=1), min_size=1, max_size=4))
+def test_nothing_in_a_mail_is_markup(headline: str, paragraphs: list[str]) -> None:
+    """Whatever a text holds, the HTML part has the tags that the program writes, and no others."""
+    tags: Counter[str] = Counter()
+
+    class Reader(HTMLParser):
+        def handle_starttag(self, tag: str, attrs: list[tuple[str, str | None]]) -> None:
+            tags[tag] += 1
+            assert {name for name, _ in attrs} <= {"style", "lang", "charset", "name", "content"}
+
+    Reader().feed(_html_of(_message(_due(subject="s", body="\n".join([headline, "", "DO", *paragraphs])))))
+
+    assert tags.keys() <= {"html", "head", "meta", "body", "p", "h1", "h2", "div", "ul", "li", "em"}
+
+
+def test_the_html_part_says_what_the_text_says() -> None:
+    """Headline, sections and sentences are the same words, for people who read the one or the other."""
+    body = "FAIL RIV-17 Zn: recovery 61 %\n\nDO\nPrepare RIV-17 again.\n\nHOLD\n- RIV-17\n- nothing else\n"
+
+    html = _html_of(_message(_due(body=body)))
+
+    words = re.sub(r"<[^>]+>", " ", html.partition("<body")[2].partition(">")[2]).split()
+    assert words == body.replace("- ", "").split()
+
+
+def test_a_plot_stands_in_the_mail_with_its_words(tmp_path: Path) -> None:
+    """The picture travels inside the mail, is referred to by its identity, and has an alternative text."""
+    sent = _message(_due(pictures=(_picture(tmp_path, alt='line of "SED-12" <b>'),)))
+
+    (picture,) = [part for part in sent.walk() if part.get_content_type() == "image/png"]
+    assert picture.get_content() == b"\x89PNG plot"
+    (source,) = re.findall(r'src="cid:([^"]+)"', _html_of(sent))
+    assert picture["Content-ID"] == f"<{source}>"
+    assert 'alt="line of &quot;SED-12&quot; &lt;b&gt;"' in _html_of(sent)
+    assert sent["Message-ID"] == "<1@example>"
+
+
+@pytest.mark.parametrize("fate", ["gone", "altered"])
+def test_a_mail_goes_out_without_a_plot_that_is_gone(tmp_path: Path, fate: str) -> None:
+    """A picture that a power cut took or someone changed keeps no alert back."""
+    picture = _picture(tmp_path)
+    if fate == "gone":
+        picture.staged.unlink()
+    else:
+        picture.staged.write_bytes(b"other")
+
+    sent = _message(_due(pictures=(picture,)))
+
+    assert "img" not in _html_of(sent)
+    assert _text_of(sent) == "DO prepare RIV-17 again\n"

@@ -212,7 +212,7 @@ def test_a_row_without_sample_is_told_three_times(laboratory: Any, mail_server: 
     assert sentence in squeezed(done.stderr)
     assert [problem for problem in record["problems"] if sentence in problem] == record["problems"]
     assert message["Subject"].startswith("PROBLEM FL-0630.csv: line 12, column 'Label'")
-    assert sentence in squeezed(message.get_content())
+    assert sentence in squeezed(message.get_body(("plain",)).get_content())
     assert [one["line"] for one in record["set_aside"]] == [1, 12]
     assert [one["verdict"] for one in record["series"]] == ["pass"]
 

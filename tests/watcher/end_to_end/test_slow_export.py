@@ -103,7 +103,7 @@ def test_any_pause_and_kill_where_the_last_line_is_declared(
     (final,) = [record for record in laboratory.records().values() if record["export"]["name"] == "FL-0801.csv"]
     assert message["Subject"] == "FAIL RIV-17 Zn: recovery 61 % (limits 75 to 125)"
     assert message["To"] == "lead@example"
-    text = message.get_content()
+    text = message.get_body(("plain",)).get_content()
     assert [line for line in text.splitlines() if line in SECTIONS] == SECTIONS
     assert "Do not release RIV-17 Zn." in text
     assert "possible repeat" not in text
