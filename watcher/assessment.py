@@ -77,7 +77,7 @@ class Assessment:
         disk: Disk,
     ) -> None:
         self._adopted = adopted
-        self._staging = settings.records / STAGING_NAME
+        self.staging = settings.records / STAGING_NAME
         self._span_seconds = settings.span_seconds
         self._complete_after = timedelta(seconds=settings.complete_after_seconds)
         self._worker = worker
@@ -95,11 +95,11 @@ class Assessment:
 
     def prepare(self) -> None:
         """Make the folder of result files and remove what an evaluation left that was cut short."""
-        self._staging.mkdir(parents=True, exist_ok=True)
+        self.staging.mkdir(parents=True, exist_ok=True)
         # Without its name on disk, a power cut would take the folder and every staged file with it.
-        self._disk.sync_folder(self._staging.parent)
+        self._disk.sync_folder(self.staging.parent)
         wanted = self._ledger.outgoing.staged_files()
-        for path in self._staging.iterdir():
+        for path in self.staging.iterdir():
             if path not in wanted:
                 path.unlink(missing_ok=True)
 
@@ -133,7 +133,7 @@ class Assessment:
         return self._finish(export, reply, at_once=at_once)
 
     def _ask(self, request: dict[str, Any]) -> Reply:
-        reply = read_reply(self._worker.ask(request), self._staging)
+        reply = read_reply(self._worker.ask(request), self.staging)
         if reply.fate == "waiting" and request["final"]:
             raise ReplyBroken("fate", "another one, since nothing more is waited for", "waiting")
         return reply
@@ -152,7 +152,7 @@ class Assessment:
             "seal": self._ledger.acceptance(export.id).plain(),
             "settings_number": self._adopted.number,
             "settings_sha256": self._adopted.sha256,
-            "staging": str(self._staging),
+            "staging": str(self.staging),
             "final": complete,
             "alerted": sorted(self._ledger.alerted_keys(export.name)),
             "others": [self._other(each) for each in self._ledger.neighbours(export, self._span_seconds)],

@@ -134,6 +134,9 @@ def _work(out: Console, folder: Path, config: Path, catcher: _Catcher) -> None:
         lines(out, ["", "The service waits until each file is complete, evaluates it and mails what fails …"])
         _wait(lambda: len(_records(folder)) == len(EXPORTS) - 1, "results are missing", folder, service)
         _wait(lambda: len(catcher.mails) >= MAILS, "a mail is missing", folder, service)
+        _wait(
+            lambda: len(list(folder.glob("results/*/*.html"))) == len(EXPORTS) - 1, "a page is missing", folder, service
+        )
     finally:
         service.terminate()
         service.wait(timeout=PATIENCE_SECONDS)
@@ -178,6 +181,7 @@ def _show(out: Console, folder: Path, mails: list[EmailMessage]) -> None:
         out,
         [
             "",
+            f"Open in a browser: {folder / 'results' / 'index.html'}",
             f"Settings and layouts to learn from: {config}, {folder / 'layouts'}",
             "Try next:",
         ],

@@ -240,10 +240,26 @@ class Worker:
             case "adopt":
                 self._settings = compile_snapshot(Snapshot.of_plain(request["snapshot"]))
                 return {"ok": True}
+            case "page":
+                return self._draw_page(request)
             case "evaluate":
                 return self._evaluate(request)
             case unknown:
                 raise ValueError(f"unknown request {unknown!r}")
+
+    def _draw_page(self, request: dict[str, Any]) -> dict[str, Any]:
+        """Draw the page of a record; nothing where the record is not to be read now."""
+        from watcher.page import page  # noqa: PLC0415 - templates and plots take longer to import than to evaluate
+
+        content = next(filter(None, (_hashed(Path(path), request["sha256"]) for path in request["records"])), None)
+        if content is None:
+            return {"page": None}
+        newer = request["newer"]
+        written = page(json.loads(content), newer and Path(newer).name).encode()
+        staged = Path(request["staging"]) / f"{request['sha256'][:16]}-{Path(request['target']).name}"
+        self._disk.atomic_write(staged, written, "stage-page")
+        digest = hashlib.sha256(written).hexdigest()
+        return {"page": {"target": request["target"], "staged": str(staged), "sha256": digest}}
 
     def _read_settings(self, config: Path) -> dict[str, Any]:
         """Read and validate the settings, which the service itself cannot, and work with them from now on."""
@@ -321,6 +337,15 @@ class Worker:
             print(f"a plot was not drawn: {type(error).__name__}: {error}", file=sys.stderr)  # noqa: T201
             pictures = []
         return letter.plain() | {"pictures": pictures}
+
+
+def _hashed(path: Path, sha256: str) -> bytes | None:
+    """Return the bytes of a file if it is there and the one that is meant."""
+    try:
+        content = path.read_bytes()
+    except OSError:
+        return None
+    return content if hashlib.sha256(content).hexdigest() == sha256 else None
 
 
 def _job(plain: Mapping[str, Any]) -> Job:

@@ -22,7 +22,7 @@ if TYPE_CHECKING:
 FAILING = ("fail", "incomplete")
 PASSING = ("pass", "warn")
 
-_COLUMNS = "id, name, sample, analyte, channel, attempt, verdict, opened_at"
+_COLUMNS = "id, export_id, name, sample, analyte, channel, attempt, verdict, opened_at"
 
 
 @dataclass(frozen=True, slots=True)
@@ -30,6 +30,7 @@ class Failure:
     """A failure that is open: the export's name, the series, its verdict and since when."""
 
     id: int
+    export_id: int
     name: str
     sample: str
     analyte: str

@@ -5,7 +5,8 @@ third time. Every durable step is surrounded by them:
 
 * a file step has four: ``<step>-begins``, ``<step>-written`` (temporary file is on disk), ``<step>-replaced``
   (it has its name), ``<step>-durable`` (so does the folder). Steps: ``copy`` (our copy of an export), ``stage``
-  (a result file in the records, in the worker), ``deliver`` (a result file in the results folder);
+  (a result file in the records, in the worker), ``stage-page`` (a page, likewise), ``deliver`` (a result file or page
+  in the results folder);
 * a ledger transaction has three: ``<transaction>-begins``, ``<transaction>-commits`` (all rows written, not yet
   committed), ``<transaction>-committed``;
 * ``mail-answered``: the mail server said yes and the ledger does not know it yet; ``staged-removed``: a delivered
@@ -21,7 +22,7 @@ import signal
 
 VARIABLE = "SPIKEWARDEN_KILL_AT"
 
-FILE_STEPS = ("copy", "stage", "deliver")
+FILE_STEPS = ("copy", "stage", "stage-page", "deliver")
 TRANSACTIONS = (
     "adopt",
     "recover",
@@ -35,6 +36,7 @@ TRANSACTIONS = (
     "outcome",
     "recognise",
     "request",
+    "page",
 )
 KILL_POINTS = (
     *(f"{step}-{moment}" for step in FILE_STEPS for moment in ("begins", "written", "replaced", "durable")),

@@ -11,13 +11,14 @@ from __future__ import annotations
 import hashlib
 import json
 from datetime import timedelta
+from pathlib import Path
 from typing import TYPE_CHECKING, Self
 
 from watcher import failures
 from watcher.clock import SystemClock, moment, stamp
 from watcher.database import Database, LedgerUnusable
 from watcher.ledger_entries import Seal, append_entry, broken_at
-from watcher.ledger_rows import AdoptedSettings, ExportRow, RefusedExport, SeriesRow
+from watcher.ledger_rows import AdoptedSettings, ExportRow, Listed, RefusedExport, SeriesRow, WantedPage
 from watcher.outgoing import Outgoing
 from watcher.queueing import (
     WITHDRAWABLE,
@@ -31,10 +32,10 @@ from watcher.requests import RequestRefused
 
 if TYPE_CHECKING:
     import sqlite3
-    from pathlib import Path
+    from collections.abc import Iterable
 
     from watcher.clock import Clock
-    from watcher.ledger_rows import Fate, QueuedMail
+    from watcher.ledger_rows import Fate, QueuedMail, StagedFile
     from watcher.requests import Request
 
 #: The ledger's file in the records folder.
@@ -216,6 +217,26 @@ class Ledger:
         )
         return [_export(row) for row in rows]
 
+    def wanted_pages(self, limit: int = 20) -> list[WantedPage]:
+        """Pages that are still to be drawn, oldest first."""
+        rows = self._database.rows(
+            "SELECT f.id, f.export_id, f.target, f.staged, f.sha256, (SELECT n.target FROM files n JOIN exports m "
+            "ON m.id = n.export_id WHERE m.name = e.name AND n.id > f.id AND n.target LIKE '%.json' "
+            "ORDER BY n.id LIMIT 1) FROM pages JOIN files f ON f.id = file_id "
+            "JOIN exports e ON e.id = f.export_id ORDER BY f.id LIMIT ?",
+            (limit,),
+        )
+        return [
+            WantedPage(r[0], r[1], r[2], Path(r[3]), r[4], _page_of(r[2]), None if r[5] is None else _page_of(r[5]))
+            for r in rows
+        ]
+
+    def page_drawn(self, wanted: WantedPage, file: StagedFile) -> None:
+        """Queue a page for delivery; nothing more is to be drawn for it."""
+        with self._database.transaction("page") as txn:
+            queue_files(txn, wanted.export_id, [file], self._clock.now())
+            txn.execute("DELETE FROM pages WHERE file_id = ?", (wanted.id,))
+
     def unchanged(self, export: ExportRow, *, wants: bool) -> dict[str, int]:
         """Record that an export that was opened again borrows what it borrowed before: its results stand.
 
@@ -292,6 +313,8 @@ class Ledger:
             _index_series(txn, export.id, fate)
             closed = failures.record(txn, export, fate.series, now) if fate.state == "done" else []
             queue_files(txn, export.id, fate.files, now)
+            if fate.state == "done":
+                _want_pages(txn, export, fate.files)
             if fate.state == "done" and export.lent is None and span_seconds:
                 _reopen_borrowers(txn, export, fate.layout, span_seconds)
             withdrawn = withdraw_incomplete(txn, export.name)
@@ -466,6 +489,46 @@ class Ledger:
 
     # -- how things stand ----------------------------------------------------------------------------------------
 
+    def listed(self, limit: int) -> list[Listed]:
+        """Exports with their delivered result files, newest first; contents that others stand for are left out."""
+        rows = self._database.rows(
+            "SELECT id, name, state, accepted_at, problem, counts, last_revision FROM exports "
+            "WHERE state <> 'superseded' ORDER BY id DESC LIMIT ?",
+            (limit,),
+        )
+        if not rows:
+            return []
+        files: dict[int, list[str]] = {}
+        for export_id, target in self._database.rows(
+            "SELECT export_id, target FROM files WHERE state = 'delivered' AND export_id BETWEEN ? AND ? ORDER BY id",
+            (rows[-1]["id"], rows[0]["id"]),
+        ):
+            files.setdefault(export_id, []).append(target)
+        return [
+            Listed(
+                name=row["name"],
+                revision=row["last_revision"],
+                state=row["state"],
+                accepted_at=row["accepted_at"],
+                problem=row["problem"],
+                counts=json.loads(row["counts"]),
+                files=[each for each in files.get(row["id"], []) if f".r{row['last_revision']}." in each],
+            )
+            for row in rows
+        ]
+
+    def pages_of(self, export_ids: Iterable[int]) -> dict[int, str]:
+        """Return the newest delivered page of each export that has one."""
+        found = {}
+        for export_id in export_ids:
+            query = (
+                "SELECT target FROM files WHERE export_id = ? AND state = 'delivered' AND target LIKE '%.html' "
+                "ORDER BY id DESC LIMIT 1"
+            )
+            for (target,) in self._database.rows(query, (export_id,)):
+                found[export_id] = target
+        return found
+
     def counts(self) -> dict[str, int]:
         """State to number of exports."""
         return dict(map(tuple, self._database.rows("SELECT state, count(*) FROM exports GROUP BY state")))
@@ -487,6 +550,11 @@ _EXPORTS = (
     "FROM exports d WHERE d.name = e.name), 0)), e.settings_number, e.attempts, e.accepted_at, e.problem, e.lent "
     "FROM exports e"
 )
+
+
+def _page_of(record: str) -> str:
+    """Return the path of the page that shows a record."""
+    return f"{record.removesuffix('.json')}.html"
 
 
 def _export(row: sqlite3.Row) -> ExportRow:
@@ -517,6 +585,18 @@ def _index_series(txn: sqlite3.Connection, export_id: int, fate: Fate) -> None:
         "INSERT INTO series VALUES (?, ?, ?, ?, ?, ?, ?, ?)",
         [(export_id, s.sample, s.analyte, s.channel, s.attempt, s.verdict, s.result, s.unit) for s in fate.series],
     )
+
+
+def _want_pages(txn: sqlite3.Connection, export: ExportRow, files: Iterable[StagedFile]) -> None:
+    """Have the page of each record drawn, and that of the revision before it, which must name the newer one."""
+    for record in (each.target for each in files if each.target.endswith(".json")):
+        (record_id,) = txn.execute("SELECT id FROM files WHERE target = ?", (record,)).fetchone()
+        txn.execute(
+            "INSERT OR IGNORE INTO pages SELECT :id UNION SELECT max(f.id) FROM files f JOIN exports e "
+            "ON e.id = f.export_id WHERE e.name = :name AND f.id < :id AND f.target LIKE '%.json' "
+            "HAVING max(f.id) IS NOT NULL",
+            {"id": record_id, "name": export.name},
+        )
 
 
 def _facts(export: ExportRow, fate: Fate) -> dict[str, object]:

@@ -9,7 +9,7 @@ from dataclasses import dataclass, field
 from typing import TYPE_CHECKING
 
 if TYPE_CHECKING:
-    from collections.abc import Mapping
+    from collections.abc import Mapping, Sequence
     from pathlib import Path
 
     from watcher.ledger_entries import Seal
@@ -153,6 +153,55 @@ class Fate:
     lent: str = "[]"
     wants: bool = False
     family: str = ""
+
+
+@dataclass(frozen=True, slots=True)
+class Listed:
+    """An export as the list of exports shows it.
+
+    Attributes
+    ----------
+    name, revision, state, accepted_at, problem
+        As the ledger has them; no revision where it has no results.
+    counts
+        Verdict to number of series.
+    files
+        Its delivered result files, paths under the results folder.
+    """
+
+    name: str
+    revision: int | None
+    state: str
+    accepted_at: str
+    problem: str | None
+    counts: Mapping[str, int]
+    files: Sequence[str]
+
+
+@dataclass(frozen=True, slots=True)
+class WantedPage:
+    """A page that is still to be drawn.
+
+    Attributes
+    ----------
+    id, export_id
+        The numbers of the record and of the export in the ledger.
+    record, staged, sha256
+        The result file that it shows: its path under the results folder, where it waits until it is delivered, its
+        hash.
+    target
+        The page's own path under the results folder.
+    newer
+        The page of the next revision, if there is one.
+    """
+
+    id: int
+    export_id: int
+    record: str
+    staged: Path
+    sha256: str
+    target: str
+    newer: str | None
 
 
 @dataclass(frozen=True, slots=True)

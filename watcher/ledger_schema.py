@@ -1,8 +1,8 @@
 """The tables of the ledger, version 4, and the steps from every earlier version.
 
 Times are texts, ISO 8601 in UTC with microseconds. Nothing is ever deleted from `entries`, `exports`, `mails` or
-`settings`; `alerts` loses a key only together with a mail that was withdrawn before anyone had it. `seal` chains the
-entries by hash.
+`settings`; `alerts` loses a key only together with a mail that was withdrawn before anyone had it. `pages` holds what
+is still to be drawn. `seal` chains the entries by hash.
 """
 
 from __future__ import annotations
@@ -44,6 +44,9 @@ CREATE TABLE requests (
 """,
     3: """
 ALTER TABLE mails ADD COLUMN pictures TEXT NOT NULL DEFAULT '[]';
+CREATE TABLE pages (
+    file_id INTEGER PRIMARY KEY REFERENCES files (id)
+) STRICT;
 """,
 }
 
@@ -174,5 +177,9 @@ CREATE INDEX exports_by_content ON exports (sha256, id);
 CREATE TABLE requests (
     id TEXT PRIMARY KEY,
     done_at TEXT NOT NULL
+) STRICT;
+
+CREATE TABLE pages (
+    file_id INTEGER PRIMARY KEY REFERENCES files (id)
 ) STRICT;
 """

@@ -30,6 +30,7 @@ if TYPE_CHECKING:
     from watcher.ledger_rows import DueFile, DueMail, RecipientOutcome
     from watcher.outgoing import Outgoing
     from watcher.post import Post
+    from watcher.shelf import Shelf
 
 #: A spreadsheet that holds a file open is closed within minutes; a share may be away for a day.
 FILE_BACKOFF = Backoff(5.0, 300.0)
@@ -70,11 +71,20 @@ class Files:
         The world.
     backoff
         When to try again.
+    shelf
+        Keeps the list of what lies in the results folder.
     """
 
     def __init__(
-        self, outgoing: Outgoing, results: Path, disk: Disk, clock: Clock, backoff: Backoff = FILE_BACKOFF
+        self,
+        outgoing: Outgoing,
+        results: Path,
+        disk: Disk,
+        clock: Clock,
+        backoff: Backoff = FILE_BACKOFF,
+        shelf: Shelf | None = None,
     ) -> None:
+        self._shelf = shelf
         self._outgoing = outgoing
         self._results = results
         self._disk = disk
@@ -106,11 +116,14 @@ class Files:
             if self._closed:
                 break
             self._deliver(each)
+        if self._shelf is not None:
+            self._shelf.refresh(self._results)
         return len(due)
 
     def seconds_to_next(self) -> float:
         """How long nothing is due."""
-        return _seconds_to_next(self._outgoing, "files", self._clock)
+        due = _seconds_to_next(self._outgoing, "files", self._clock)
+        return due if self._shelf is None else min(due, max(self._shelf.seconds_to_next(), 0.05))
 
     def close(self) -> None:
         """Begin no further attempt; one under way is short."""

@@ -28,13 +28,15 @@ MOST_PLOTS = 12
 MOST_DETAILED = 80
 
 
-def page(record: dict[str, Any]) -> str:
+def page(record: dict[str, Any], newer: str | None = None) -> str:
     """Return the page of one record.
 
     Parameters
     ----------
     record
         The JSON record of an export, as read from its result file (``"format": 1``).
+    newer
+        The file of the page of the next revision, which lies beside this one.
     """
     entries = [_entry(place, series) for place, series in enumerate(record["series"])]
     failing = [entry for entry in entries if entry["series"]["verdict"] != "pass"]
@@ -45,6 +47,7 @@ def page(record: dict[str, Any]) -> str:
     _draw(detailed[:MOST_PLOTS], record)
     return _template().render(
         record=record,
+        newer=newer,
         export=record["export"],
         entries=entries,
         failing=failing,

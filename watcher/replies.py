@@ -111,6 +111,29 @@ def read_reply(message: Mapping[str, Any], staging: Path) -> Reply:
     )
 
 
+@dataclass(frozen=True, slots=True)
+class Drawn:
+    """What the worker says of a page: where it is; or nothing, where its record cannot be read now; or a defect."""
+
+    file: StagedFile | None = None
+    error: str | None = None
+    traceback: str | None = None
+
+
+def read_page(message: Mapping[str, Any], staging: Path) -> Drawn:
+    """Check an answer about a page and make a record of it.
+
+    Raises
+    ------
+    ReplyBroken
+        It is not of the agreed form.
+    """
+    if message.get("fate") == "bug":
+        return Drawn(error=_get(message, "error", str), traceback=_get(message, "traceback", str))
+    file = _get(message, "page", dict, optional=True)
+    return Drawn() if file is None else Drawn(_file(file, staging))
+
+
 def _file(item: Mapping[str, Any], staging: Path) -> StagedFile:
     return StagedFile(_get(item, "target", str), _staged(item, staging), _get(item, "sha256", str))
 
@@ -122,7 +145,7 @@ def _picture(item: Mapping[str, Any], staging: Path) -> Picture:
 def _staged(item: Mapping[str, Any], staging: Path) -> Path:
     staged = Path(_get(item, "staged", str))
     if staged.parent != staging:
-        raise ReplyBroken("staged", f"a file in {staging}", str(staged))
+        raise ReplyBroken("files.staged", f"a file in {staging}", str(staged))
     return staged
 
 

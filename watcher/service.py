@@ -34,10 +34,12 @@ from watcher.folder import Trouble
 from watcher.intake import Intake, Taken
 from watcher.manager import Manager
 from watcher.outbox import Files, Mails, OutboxThread
+from watcher.paging import Pages
 from watcher.post import Post
 from watcher.pulse import Pulse
 from watcher.requests import RequestRefused, waiting
 from watcher.rounds import Rounds
+from watcher.shelf import Shelf
 from watcher.troubles import Troubles
 from watcher.wake import Wake
 from watcher.week import daily, hours
@@ -173,7 +175,11 @@ class Service:
             clock=clock,
             disk=disk,
         )
-        self._files = Files(ledger.outgoing, settings.results, disk, clock)
+        self._shelf = Shelf(settings.laboratory, ledger, self._troubles, disk, clock)
+        self._files = Files(ledger.outgoing, settings.results, disk, clock, shelf=self._shelf)
+        self._pages = Pages(
+            ledger, worker, self._troubles, clock, staging=self._assessment.staging, results=settings.results
+        )
         self._mails = Mails(ledger.outgoing, Post(settings.mail) if settings.mail else None, clock)
         self._pulse = Pulse(settings, ledger, self._troubles, clock, version=version, settings_number=adopted.number)
         self._cut_short = CutShort(settings.records)
@@ -210,6 +216,8 @@ class Service:
             if not self._stopping:
                 self._files.deliver_due()
                 self._mails.deliver_due()
+                while self._draw_page():
+                    self._files.deliver_due()
             return self._report(taken, assessed)
 
     def _round(self) -> float:
@@ -226,7 +234,7 @@ class Service:
         """Adopt what changed, do what people asked for, evaluate for a while; how long to wait then."""
         self._look_after_settings()
         self._do_requests()
-        more = self._evaluate_for_a_while()
+        more = self._evaluate_for_a_while() or self._draw_page()
         self._worker.retire_if_idle()
         if self._settings.backup is not None:
             self._back_up(self._settings.backup)
@@ -273,6 +281,15 @@ class Service:
                 assessed[export.id] = found
         return assessed
 
+    def _draw_page(self) -> bool:
+        """Draw one page; returns whether there was one to draw. An export that came meanwhile is evaluated first."""
+        try:
+            drawn = not self._stopping and self._pages.draw_next()
+        except (WorkerStopped, WorkerUnfit):
+            return False
+        self._ring_deliverers()
+        return drawn
+
     def _look_after_settings(self) -> None:
         if self._adoption is not None and self._adoption.changed():
             self._adopt(self._adoption)
@@ -303,6 +320,8 @@ class Service:
         self._addressing.renew(settings.mail)
         self._assessment.renew(settings, adopted)
         self._files.renew(settings.results)
+        self._shelf.renew(settings.laboratory)
+        self._pages.renew(settings.results)
         self._mails.renew(Post(settings.mail) if settings.mail else None)
         self._pulse.renew(settings, adopted.number)
         self._ring_deliverers()
@@ -474,6 +493,7 @@ class Service:
         finally:
             self._worker.close()
             self._pulse.beat(running=False)
+            self._shelf.refresh(self._settings.results, running=False, now=True)
             _log.info("service ends", stopped=self._stopping)
 
     @contextmanager

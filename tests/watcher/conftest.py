@@ -349,18 +349,28 @@ class _Bench:
         return self.status().get("counts", {})
 
     def delivered(self) -> list[str]:
-        """Names of result files that have their name; those still being written are left out."""
-        return [path.name for path in self.results.rglob("*.r*.*") if not path.name.startswith(".")]
+        """Names of result files that have their name; pages and those still being written are left out."""
+        found = (path.name for path in self.results.rglob("*.r*.*"))
+        return [name for name in found if not name.startswith(".") and not name.endswith(".html")]
 
     def result_files(self) -> dict[str, bytes]:
-        """Every file under the results folder, temporary ones included."""
-        found = (path for path in self.results.rglob("*") if path.is_file())
+        """Every file under the results folder but pages, temporary ones included."""
+        found = (path for path in self.results.rglob("*") if path.is_file() and not _is_view(path))
         return {str(path.relative_to(self.results)): path.read_bytes() for path in found}
+
+    def pages(self) -> dict[str, bytes]:
+        """The pages of exports."""
+        return {path.name: path.read_bytes() for path in self.results.rglob("*.r*.html") if path.name[0] != "."}
 
     def stop(self, process: subprocess.Popen[str]) -> int:
         process.terminate()
         process.communicate(timeout=DEADLINE_SECONDS)
         return process.returncode
+
+
+def _is_view(path: Path) -> bool:
+    """Tell whether a file is a page or the list of exports, finished or not."""
+    return ".html" in path.name or path.read_bytes().startswith((b"<!DOCTYPE html", b'{"of": '))
 
 
 @pytest.fixture

@@ -21,8 +21,23 @@ def _handle(request: dict[str, Any]) -> dict[str, Any]:
         if request["snapshot"].get("broken"):
             raise ValueError("the snapshot is broken")
         return {"ok": True}
+    if request["do"] == "page":
+        return _page(request)
     text = Path(request["copy"]).read_text()
     return _misbehave(text) or _wait(text, request) or _evaluate(text, request)
+
+
+def _page(request: dict[str, Any]) -> dict[str, Any]:
+    """Draw a page as plain as the exports are."""
+    found = [path for path in map(Path, request["records"]) if path.is_file()]
+    if not found:
+        return {"page": None}
+    record = found[0].read_text()
+    _misbehave("die" if "ends the page" in record else "defect" if "spoils the page" in record else "")
+    content = json.dumps({"of": request["sha256"], "newer": request["newer"]}).encode()
+    staged = Path(request["staging"]) / f"{request['sha256'][:16]}-{Path(request['target']).name}"
+    Disk().atomic_write(staged, content, "stage-page")
+    return {"page": {"target": request["target"], "staged": str(staged), "sha256": hashlib.sha256(content).hexdigest()}}
 
 
 def _misbehave(text: str) -> dict[str, Any] | None:

@@ -284,7 +284,7 @@ def test_a_dead_results_share_delays_no_mail(bench: Any, mail_server: Any, event
     bench.mail_to(mail_server)
     bench.results.write_text("a file where the folder should be")
     bench.export("FL-1.csv", "RIV-17,fail")
-    assert len(bench.once()["undelivered_files"]) == 2
+    assert len(bench.once()["undelivered_files"]) == 3  # CSV, JSON and the page
     assert len(mail_server.mailbox.received) == 1
 
     bench.results.unlink()
@@ -451,6 +451,7 @@ def test_kills_at_random_moments_end_in_the_same_state(bench: Any, mail_server: 
         quiet.export(name, f"SED-{number},fail", "BRN-3,pass")
     quiet.once()
     assert bench.result_files() == quiet.result_files()
+    assert bench.pages() == quiet.pages()
     by_subject: dict[str, list[str]] = {}
     for _, text in mail_server.mailbox.received:
         by_subject.setdefault(re.search("Subject: (.*)\r", text)[1], []).append(text)
