@@ -124,14 +124,35 @@ def draft(exports: tuple[Path, ...], output: Path | None) -> None:
 
 @main.command()
 @_with_config
-def status(config: Path) -> None:
-    """Tell how the service is.
+@click.option("--json", "as_json", is_flag=True, help="Print it as JSON.")
+def status(config: Path, *, as_json: bool) -> None:
+    """Tell how the service is, and which failures are open.
 
-    Exit 0: well. 1: something needs attention. 2: it is not running.
+    Exit 0: well. 1: something needs attention, or a failure is open. 2: it is not
+    running.
     """
-    from watcher import inspection  # noqa: PLC0415
+    from watcher import status as state  # noqa: PLC0415
 
-    sys.exit(inspection.status(config))
+    sys.exit(state.run(config, as_json=as_json))
+
+
+@main.command()
+@_with_config
+@click.option("--analyte", help="Only this analyte.")
+@click.option("--since", metavar="MONTH", help="Only from this month on, such as 2026-09.")
+@click.option("--limit", "limits", metavar="CHECK=LIMIT", multiple=True, help="Try another limit; may be repeated.")
+@click.option("--json", "as_json", is_flag=True, help="Print it as JSON.")
+def history(config: Path, analyte: str | None, since: str | None, limits: tuple[str, ...], *, as_json: bool) -> None:
+    """Show recoveries, slopes and scatter over the months.
+
+    With --limit "recovery=80 to 120 %" it counts how many series would fail under
+    another limit. Reads the records in the results folder and writes nothing.
+
+    Exit 0: shown. 2: settings, a limit or a record cannot be read.
+    """
+    from watcher import history as past  # noqa: PLC0415
+
+    sys.exit(past.run(config, analyte=analyte, since=since, limits=limits, as_json=as_json))
 
 
 @main.command()

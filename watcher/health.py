@@ -18,7 +18,7 @@ if TYPE_CHECKING:
     from pathlib import Path
 
     from watcher.failures import Failure
-    from watcher.ledger_rows import RefusedExport
+    from watcher.ledger_rows import Listed, RefusedExport
 
 STATUS_NAME = "status.json"
 
@@ -54,6 +54,8 @@ class Heartbeat:
         What waits to leave, and mails a server refused for good.
     open_failures
         Samples that failed and of which nothing better is known yet, oldest first.
+    latest
+        The newest exports, with what came of them.
     problems
         What is wrong now, in sentences: folders, worker, disk, mail.
     """
@@ -75,6 +77,7 @@ class Heartbeat:
     refused_mails: Undelivered = Undelivered(0, None, None)
     undelivered_files: Undelivered = Undelivered(0, None, None)
     open_failures: list[Failure] = field(default_factory=list)
+    latest: list[Listed] = field(default_factory=list)
     problems: list[str] = field(default_factory=list)
 
 

@@ -1,10 +1,8 @@
-"""Commands that look and change nothing: `check`, `explain`, `status`."""
+"""Commands that look and change nothing: `check`, `explain`."""
 
 from __future__ import annotations
 
 import json
-from dataclasses import dataclass
-from datetime import UTC, datetime
 from typing import TYPE_CHECKING, Any
 
 from parsers.errors import ExportRefused
@@ -12,11 +10,10 @@ from parsers.examples import differences
 from parsers.read import claims, read
 from rules.limits import DEFAULTS
 from watcher import explanation_json, explanation_text
-from watcher.clock import SystemClock, moment, stamp
+from watcher.clock import SystemClock, stamp
 from watcher.evaluation import Job, Unclaimed, evaluate_job, unclaimed_sentence
-from watcher.exit_codes import ALL_PASS, ATTENTION, NOT_DONE, NOT_RUNNING, WELL
+from watcher.exit_codes import ALL_PASS, NOT_DONE
 from watcher.explanation import Explanation
-from watcher.health import read_status
 from watcher.settings import Settings, SettingsInvalid, compile_snapshot, read_files
 from watcher.terminal import console, heading, lines, table
 
@@ -26,17 +23,11 @@ if TYPE_CHECKING:
 
     from rules.method import Bench
 
-#: A heartbeat older than so many scans says that the service hangs.
-STALE_SCANS = 6
-#: … but never sooner than this, since an evaluation may take its time.
-STALE_SECONDS = 180.0
-
-
 #: Checks that judge the calibration's result, and so decide nothing on an additions' result unless stated.
 INFORMING = ("recovery", "spike_size", "matrix_effect")
 
 
-def _settings(config: Path) -> Settings | None:
+def settings_of(config: Path) -> Settings | None:
     """Return the settings, or None after naming their faults on standard error."""
     try:
         return compile_snapshot(read_files(config))
@@ -50,7 +41,7 @@ def _settings(config: Path) -> Settings | None:
 
 def check(config: Path) -> int:
     """Name every fault of settings and layouts, and exports that two layouts claim."""
-    settings = _settings(config)
+    settings = settings_of(config)
     if settings is None:
         return NOT_DONE
     doubled = list(_claimed_twice(settings))
@@ -142,7 +133,7 @@ def _unlike_examples(settings: Settings) -> Iterator[str]:
 
 def explain(config: Path, export: Path, *, with_lines: bool = False, as_json: bool = False) -> int:
     """Show how an export is understood and what would come of it; return the exit code, as of `once`."""
-    settings = _settings(config)
+    settings = settings_of(config)
     if settings is None:
         return NOT_DONE
     try:
@@ -184,84 +175,3 @@ def _name(settings: Settings, export: Path) -> str:
         if export.resolve().is_relative_to(root):
             return export.resolve().relative_to(root).as_posix()
     return export.name
-
-
-def status(config: Path) -> int:
-    """Tell how the service is, from the heartbeat that it leaves and the lock that it holds."""
-    settings = _settings(config)
-    if settings is None:
-        return NOT_RUNNING
-    records = settings.path(settings.file.folders.records)
-    found = read_status(records)
-    out = console()
-    if found.heartbeat is None:
-        lines(
-            out,
-            [f"Not running: no service has worked with {records} yet. Start it with `spikewarden watch`."],
-        )
-        return NOT_RUNNING
-    account = _Account(found.heartbeat, settings)
-    attention = account.attention()
-    age = (datetime.now(UTC) - moment(found.heartbeat["written_at"])).total_seconds()
-    if not found.held:
-        lines(out, [f"Not running. Last heartbeat {account.age(age)} ago, at {found.heartbeat['written_at']}."])
-    elif age > max(STALE_SECONDS, STALE_SCANS * settings.file.watching.scan):
-        attention.insert(0, f"The service holds its records and has not moved for {account.age(age)}: restart it.")
-    else:
-        lines(out, [f"Running since {found.heartbeat['started_at']}, pid {found.heartbeat['pid']}."])
-    account.show()
-    if attention:
-        heading(out, "Needs attention")
-        lines(out, attention)
-    if not found.held:
-        return NOT_RUNNING
-    return ATTENTION if attention else WELL
-
-
-@dataclass(frozen=True, slots=True)
-class _Account:
-    """The heartbeat in words."""
-
-    beat: dict[str, Any]
-    settings: Settings
-
-    def show(self) -> None:
-        out = console()
-        counts = ", ".join(f"{count} {state}" for state, count in sorted(self.beat["counts"].items())) or "none yet"
-        waiting, refused = (self.beat[what]["count"] for what in ("undelivered_mails", "refused_mails"))
-        lines(
-            out,
-            [
-                f"exports      {counts}",
-                f"last export  {self.beat['last_export'] or 'none since start'}",
-                f"last scan    {self.beat['last_scan_at'] or 'none yet'}",
-                f"mails        {waiting} waiting, {refused} refused by the server",
-                f"files        {self.beat['undelivered_files']['count']} waiting",
-            ],
-        )
-
-    def attention(self) -> list[str]:
-        found = list(self.beat["problems"])
-        for export in self.beat["refused"]:
-            problem = export["problem"] or "not evaluated"
-            prefix = "" if problem.startswith(export["name"]) else f"{export['name']}: "
-            found.append(f"{export['state']}: {prefix}{problem}")
-        for what, word in (
-            ("undelivered_mails", "mails wait"),
-            ("refused_mails", "mails were refused for good"),
-        ):
-            waiting = self.beat[what]
-            if waiting["count"] and waiting["last_error"]:
-                found.append(f"{waiting['count']} {word}: {waiting['last_error']}")
-        files = self.beat["undelivered_files"]
-        if files["count"] and files["last_error"]:
-            found.append(f"{files['count']} result files wait: {files['last_error']}")
-        return found
-
-    @staticmethod
-    def age(seconds: float) -> str:
-        """Write a length of time roughly."""
-        for size, unit in ((86400.0, "days"), (3600.0, "hours"), (60.0, "minutes")):
-            if seconds >= 2 * size:
-                return f"{seconds / size:.0f} {unit}"
-        return f"{seconds:.0f} s"

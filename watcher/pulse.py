@@ -29,6 +29,8 @@ if TYPE_CHECKING:
 REREAD_SECONDS = 60.0
 #: Open failures that are listed; the daily mail counts them all.
 MOST_FAILURES = 200
+#: Exports that are listed, the newest.
+MOST_LATEST = 8
 #: How often an idle service shows that it lives.
 BEAT_SECONDS = 30.0
 #: How old the heartbeat may be when an evaluation begins that may take minutes.
@@ -141,6 +143,7 @@ class Pulse:
             counts=self._ledger.counts(),
             refused=self._ledger.refused(),
             open_failures=self._ledger.open_failures()[:MOST_FAILURES],
+            latest=self._ledger.listed(MOST_LATEST),
             undelivered_mails=_undelivered([each for each in mails if each.state != "refused"]),
             refused_mails=_undelivered([each for each in mails if each.state == "refused"]),
             undelivered_files=Undelivered(
