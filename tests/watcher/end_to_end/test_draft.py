@@ -95,4 +95,4 @@ def test_an_export_that_is_not_there_is_named(tmp_path: Path) -> None:
     done = drafted(tmp_path / "ZN-9999.csv")
 
     assert done.exit_code == 2
-    assert "ZN-9999.csv: no such file or directory. Nothing was drafted." in " ".join(done.stderr.split())
+    assert "ZN-9999.csv:nosuchfileordirectory.Nothingwasdrafted." in "".join(done.stderr.split())
