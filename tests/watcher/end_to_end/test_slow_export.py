@@ -67,9 +67,13 @@ def mailed(laboratory: Any, server: Any, done: int) -> bool:
     return settled and status["undelivered_mails"]["count"] == 0 and bool(server.mailbox.received)
 
 
-@pytest.mark.parametrize(
+#: Without events as a proof: the whole suite is run that way there as well.
+BOTH_WAYS = pytest.mark.parametrize(
     "events", ["yes", pytest.param("no", marks=pytest.mark.proof)], ids=["with file events", "by scans alone"]
 )
+
+
+@BOTH_WAYS
 def test_any_pause_and_kill_where_the_last_line_is_declared(
     laboratory: Any, mail_server: Any, eventually: Any, events: str
 ) -> None:
@@ -115,9 +119,7 @@ def test_any_pause_and_kill_where_the_last_line_is_declared(
     assert final["problems"] == []
 
 
-@pytest.mark.parametrize(
-    "events", ["yes", pytest.param("no", marks=pytest.mark.proof)], ids=["with file events", "by scans alone"]
-)
+@BOTH_WAYS
 def test_pauses_shorter_than_settle(laboratory: Any, mail_server: Any, eventually: Any, events: str) -> None:
     """Without a declared last line, an export whose pauses are shorter than `settle` is taken in once and whole."""
     laboratory.mail_to(mail_server.port)
