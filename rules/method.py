@@ -74,6 +74,15 @@ class Preparation:
 
 
 @dataclass(frozen=True, slots=True)
+class Pipette:
+    """A pipette: the volumes that can be set, in mL."""
+
+    least: float
+    most: float
+    step: float
+
+
+@dataclass(frozen=True, slots=True)
 class Bench:
     """How solutions are prepared where the export does not say it row by row.
 
@@ -89,6 +98,8 @@ class Bench:
         ``aliquot``, ``spike_volume``, ``made_up_to``, ``predilution``: half-widths, in a unit of volume or in %.
     preparation
         Scatter of preparations, or None.
+    pipettes
+        What there is to add stock with; plans keep to them.
     """
 
     aliquot: Measure | None = None
@@ -97,6 +108,7 @@ class Bench:
     predilution: float = 1.0
     tolerances: Mapping[str, Measure] = field(default_factory=dict)
     preparation: Preparation | None = None
+    pipettes: tuple[Pipette, ...] = ()
 
 
 @dataclass(frozen=True, slots=True)

@@ -1,6 +1,6 @@
 """What to do next: one sentence for each series that does not pass, written for the person at the bench.
 
-The most telling failed check decides. No pipetting plan is made here.
+The most telling failed check decides. Where new solutions are needed, `rules.pipetting` says which.
 """
 
 from __future__ import annotations
@@ -9,6 +9,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
+from rules import pipetting
 from rules.case import Reported
 from rules.checks import Outcome
 from rules.figures import figure
@@ -19,6 +20,7 @@ if TYPE_CHECKING:
 
     from rules.case import Case
     from rules.outcomes import Outcomes
+    from rules.pipetting import PipettingPlan
 
 
 def batch_step(check: str, names: str) -> str:
@@ -33,6 +35,14 @@ def batch_step(check: str, names: str) -> str:
     if check == "stock":
         return f"Prepare the additions of {names} again from a stock within its dates, or correct its dates."
     return f"Find the contamination or carry-over, measure a clean blank, then {names} again."
+
+
+def solutions(outcomes: Outcomes, series: int) -> PipettingPlan | None:
+    """Return which solutions to prepare, where a check failed that new ones can settle and the plan can be made."""
+    failing = {check.name for check in outcomes.deciding(series, Outcome.FAIL)}
+    if not failing or "inputs" in failing or not failing <= pipetting.SETTLED:
+        return None
+    return pipetting.plan_for(outcomes.case, series)
 
 
 def next_step(outcomes: Outcomes, series: int) -> str:

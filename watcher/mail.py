@@ -14,7 +14,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from parsers.readings import line_ranges
-from rules import expectations, plan
+from rules import expectations, pipetting, plan
 from rules.checks import Outcome
 from rules.figures import several
 from rules.outcomes import Verdict, measured
@@ -22,7 +22,7 @@ from watcher.names import target
 from watcher.record import local_time
 
 if TYPE_CHECKING:
-    from collections.abc import Iterable
+    from collections.abc import Iterable, Iterator
 
     from numpy.typing import NDArray
 
@@ -172,6 +172,7 @@ def _of_series(
             ("HOLD", _hold(outcomes, series)),
             ("WHERE", [_where(outcomes, cause) for cause in shown] + _people(outcomes)),
             ("WHY", [_why(outcomes, cause) for cause in shown]),
+            ("PLAN", list(_plans(outcomes, shown))),
             ("NUMBERS", [line for cause in shown for line in _numbers(outcomes, cause)]),
             ("RECORD", _record(export, lines)),
         ],
@@ -275,6 +276,14 @@ def _people(outcomes: Outcomes) -> list[str]:
 def _why(outcomes: Outcomes, cause: _Cause) -> str:
     reasons = outcomes.failing_sentences(cause.first) or outcomes.reasons(cause.first)
     return f"{_all_names(outcomes, cause.series)}: {'; '.join(reasons)}"
+
+
+def _plans(outcomes: Outcomes, causes: Iterable[_Cause]) -> Iterator[str]:
+    """Yield which solutions to prepare for the series whose causes are their own."""
+    for cause in causes:
+        found = None if cause.batch else plan.solutions(outcomes, cause.first)
+        if found is not None:
+            yield f"{outcomes.case.name(cause.first)}: {pipetting.sentence(found, outcomes.case.method.vessel_unit)}"
 
 
 def _numbers(outcomes: Outcomes, cause: _Cause) -> list[str]:

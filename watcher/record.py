@@ -14,7 +14,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from parsers.readings import Role, line_ranges
-from rules import plan
+from rules import pipetting, plan
 from rules.case import Reported
 from rules.checks import Check, Outcome
 from rules.outcomes import result_text
@@ -117,8 +117,13 @@ def series_entry(outcomes: Outcomes, i: int) -> dict[str, Any]:
         "budget": _budget(case, reported, i, by),
         "detection": _detection(case, i),
         "checks": [_check(check, case, i) for check in outcomes.checks],
-        "next_step": {"sentence": plan.next_step(outcomes, i) or None, "plan": None},
+        "next_step": {"sentence": plan.next_step(outcomes, i) or None, "plan": _plan(outcomes, i)},
     }
+
+
+def _plan(outcomes: Outcomes, i: int) -> dict[str, Any] | None:
+    found = plan.solutions(outcomes, i)
+    return None if found is None else pipetting.plain(found, outcomes.case.method.vessel_unit)
 
 
 def result(outcomes: Outcomes, i: int) -> dict[str, Any]:

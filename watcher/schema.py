@@ -21,6 +21,7 @@ from pydantic import (
 )
 
 from parsers.wording import got
+from rules import units
 from rules.limits import CheckLimits, parse_check_limits
 from rules.method import Measure
 from watcher import scalars, week
@@ -194,6 +195,21 @@ class TolerancesPart(Part):
     digest_volume: PercentTolerance | None = None
 
 
+class PipettePart(Part):
+    """Volumes that a pipette can be set to."""
+
+    from_: Volume = Field(alias="from")
+    to: Volume
+    step: Volume
+
+    @model_validator(mode="after")
+    def _rises(self) -> PipettePart:
+        low, high = (units.of_measure(each, "mL") for each in (self.from_, self.to))
+        if low > high:
+            raise ValueError(f"from {self.from_} is more than to {self.to}\nWrite the smaller volume first")
+        return self
+
+
 class BenchPart(Part):
     """How solutions are prepared."""
 
@@ -203,6 +219,7 @@ class BenchPart(Part):
     predilution: Dilution = 1.0
     tolerances: TolerancesPart = TolerancesPart()
     preparation: PreparationPart | None = None
+    pipettes: list[PipettePart] = []
 
     @model_validator(mode="after")
     def _fits(self) -> BenchPart:

@@ -18,8 +18,9 @@ from typing import TYPE_CHECKING, Any
 from parsers.document import load, validate
 from parsers.errors import DocumentFault, DocumentInvalid
 from parsers.layout import Layout, parse_layout
+from rules import units
 from rules.exceptions import LimitException
-from rules.method import AnalyteRules, Bench, Measure, Method, Preparation, Stock
+from rules.method import AnalyteRules, Bench, Measure, Method, Pipette, Preparation, Stock
 from rules.substances import Substance
 from rules.units import UnitUnusable
 from watcher.errors import WatcherError
@@ -359,4 +360,7 @@ def _bench(part: BenchPart) -> Bench:
         predilution=part.predilution,
         tolerances=tolerances,
         preparation=None if known is None else Preparation(known.rsd, known.dof),
+        pipettes=tuple(
+            Pipette(*(units.of_measure(each, "mL") for each in (one.from_, one.to, one.step))) for one in part.pipettes
+        ),
     )
