@@ -129,7 +129,9 @@ class Assessment:
             return self._attempt_failed(export, str(error))
         if reply.fate == "bug":
             self._troubles.defect(reply.error or "unnamed", reply.traceback or "")
-            return self._finish(export, _refused(f"defect of the program: {reply.error}"), at_once=at_once)
+            # Told in the transaction that refuses the export: between two of them the service may be killed.
+            letter = notices.defect(reply.error or "unnamed", reply.traceback or "")
+            return self._finish(export, _refused(f"defect of the program: {reply.error}", letter), at_once=True)
         return self._finish(export, reply, at_once=at_once)
 
     def _ask(self, request: dict[str, Any]) -> Reply:

@@ -1,7 +1,8 @@
 """Named moments at which the process can be made to die, so that tests can prove what survives.
 
 ``SPIKEWARDEN_KILL_AT=name`` kills the process with SIGKILL the first time it passes that moment, ``name:3`` the
-third time. Every durable step is surrounded by them:
+third time; ``name:3:both`` in the worker kills the service first. Several are separated by commas. Every durable step
+is surrounded by them:
 
 * a file step has four: ``<step>-begins``, ``<step>-written`` (temporary file is on disk), ``<step>-replaced``
   (it has its name), ``<step>-durable`` (so does the folder). Steps: ``copy`` (our copy of an export), ``stage``
@@ -47,23 +48,33 @@ KILL_POINTS = (
 
 
 class _Armed:
-    """The moment at which to die, and how many passings are left until then."""
+    """The moment at which to die, how many passings are left until then, and whether the service dies too."""
 
     def __init__(self, setting: str) -> None:
-        name, _, count = setting.partition(":")
+        name, _, rest = setting.partition(":")
+        count, _, both = rest.partition(":")
         if name not in KILL_POINTS:
             raise ValueError(f"{VARIABLE}={setting}: expected one of {', '.join(KILL_POINTS)}")
         self.name = name
         self.left = int(count or 1)
+        self.both = both == "both"
 
 
-_armed = _Armed(os.environ[VARIABLE]) if os.environ.get(VARIABLE) else None
+_armed = [_Armed(setting) for setting in os.environ.get(VARIABLE, "").split(",") if setting]
 
 
 def at(name: str) -> None:
     """Pass the moment `name`; die here if that was asked for."""
-    if _armed is None or _armed.name != name:
-        return
-    _armed.left -= 1
-    if _armed.left == 0:
-        os.kill(os.getpid(), signal.SIGKILL)
+    for armed in _armed:
+        if armed.name != name:
+            continue
+        armed.left -= 1
+        if armed.left == 0:
+            if armed.both:
+                os.kill(os.getppid(), signal.SIGKILL)
+            os.kill(os.getpid(), signal.SIGKILL)
+
+
+def of_the_worker(setting: str) -> str:
+    """Return the moments of a setting that lie in the worker; those of the service are not its own."""
+    return ",".join(each for each in setting.split(",") if each.startswith("stage-"))

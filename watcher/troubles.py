@@ -92,8 +92,9 @@ class Troubles:
             mails, self._unmailed = self._unmailed, []
         for each in new:
             _log.warning("trouble", sentence=each.sentence)
-        if new:
-            mails.append(notices.troubles(new, tuple(self._lasting_key(each) for each in new)))
+        # A restart knows nothing of what it told: what was mailed before is not said again beside what is new.
+        if news := [each for each in new if not self._ledger.mailed(self._lasting_key(each))]:
+            mails.append(notices.troubles(news, tuple(self._lasting_key(each) for each in news)))
         for wanted in mails:
             mail = self._addressing.address(wanted)
             if mail is not None:

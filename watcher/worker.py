@@ -161,9 +161,8 @@ class Worker:
             DEADLINE_VARIABLE: str(self._deadline_seconds),
             MEMORY_VARIABLE: str(self._memory_bytes),
         }
-        # The moments of the service are not the worker's; it has its own ones.
-        if not environment.get(kill_points.VARIABLE, "").startswith("stage-"):
-            environment.pop(kill_points.VARIABLE, None)
+        if kill_points.VARIABLE in environment:
+            environment[kill_points.VARIABLE] = kill_points.of_the_worker(environment[kill_points.VARIABLE])
         try:
             child = Child(self._command, environment, self._answers)
         except OSError as error:

@@ -1,19 +1,23 @@
 """The worker's side: answer requests one after the other until the service closes the line.
 
-The process bounds itself, since it must not outlive a service that was killed: an alarm whose default action ends
-it, whatever runs, and a limit of memory. It also gives way to other programs. Nothing here knows what is asked.
+The process bounds itself, since it must not outlive a service that was killed: it ends in the middle of whatever it
+does when the line is closed, so that nothing it still writes can meet the files of the next service's worker; an alarm
+whose default action ends it where no Python code runs any more; and a limit of memory. It also gives way to other
+programs. Nothing here knows what is asked.
 """
 
 from __future__ import annotations
 
 import contextlib
 import os
+import queue
 import signal
 import sys
+import threading
 import traceback
 from typing import TYPE_CHECKING, Any
 
-from watcher.frames import read_frame, write_frame
+from watcher.frames import FrameBroken, read_frame, write_frame
 
 if TYPE_CHECKING:
     from collections.abc import Callable
@@ -37,13 +41,29 @@ def serve(handle: Callable[[dict[str, Any]], dict[str, Any]]) -> None:
         ``{"fate": "bug", "error": …, "traceback": …}``, and the worker goes on.
     """
     _bound_memory()
-    requests, answers = _take_over_streams()
+    stream, answers = _take_over_streams()
     deadline_seconds = float(os.environ.get(DEADLINE_VARIABLE, "0"))
-    while (request := read_frame(requests)) is not None:
+    requests: queue.SimpleQueue[dict[str, Any]] = queue.SimpleQueue()
+    threading.Thread(target=_listen, args=(stream, requests), name="requests", daemon=True).start()
+    while True:
+        request = requests.get()
         _set_alarm(deadline_seconds)
         answer = _answer(handle, request)
         _set_alarm(0.0)
         write_frame(answers, answer)
+
+
+def _listen(stream: BinaryIO, requests: queue.SimpleQueue[dict[str, Any]]) -> None:
+    """Take in requests until the service closes the line or is killed; then end the process, whatever it does."""
+    code = 1
+    try:
+        while (request := read_frame(stream)) is not None:
+            requests.put(request)
+        code = 0
+    except (FrameBroken, OSError) as error:
+        print(f"the service cannot be understood: {error}", file=sys.stderr, flush=True)  # noqa: T201 - for its log
+    finally:
+        os._exit(code)
 
 
 def _answer(handle: Callable[[dict[str, Any]], dict[str, Any]], request: dict[str, Any]) -> dict[str, Any]:

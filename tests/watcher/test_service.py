@@ -523,6 +523,21 @@ def test_the_daily_mail_lists_open_failures(bench: Any, mail_server: Any) -> Non
     assert "- RIV-17 Zn: fail in FL-1.csv, since 20" in texts[1]
 
 
+def test_a_defect_is_mailed_although_the_service_is_killed(bench: Any, mail_server: Any) -> None:
+    """Killed right after an export was refused for a defect, the service tells of it at its next start."""
+    bench.mail_to(mail_server)
+    bench.export("A-1.csv", "defect")
+    killed = bench.start("once", SPIKEWARDEN_KILL_AT="finish-committed")
+    killed.communicate(timeout=20)
+    assert killed.returncode == -signal.SIGKILL
+    assert mail_server.mailbox.received == []
+
+    bench.once()
+
+    ((_, text),) = mail_server.mailbox.received
+    assert "Subject: PROBLEM defect of the program: ZeroDivisionError in _misbehave" in text.replace("\r\n ", " ")
+
+
 @pytest.mark.proof
 def test_a_worker_killed_between_its_steps_costs_attempts(bench: Any) -> None:
     """A worker that dies after each staged file is an attempt like any other; the third refuses the export."""

@@ -59,6 +59,21 @@ def test_a_trouble_that_comes_back_is_mailed_again_another_day(troubles: Trouble
     ]
 
 
+def test_after_a_restart_only_what_is_new_is_mailed(troubles: Troubles, ledger: Ledger, clock: Any) -> None:
+    """What was mailed before a restart and still lasts is not said again beside a new trouble."""
+    troubles.set("folders", [ODD])
+    troubles.report_new()
+    mail = MailSettings("mail.example", "bench@example", ("lead@example",))
+    restarted = Troubles(ledger, Addressing(mail, clock), clock)
+
+    restarted.set("folders", [ODD, AWAY])
+    restarted.report_new()
+
+    assert _subjects(ledger) == ["PROBLEM SED-12.csv is a link", "PROBLEM Exports folder /bench/exports is away"]
+    bodies = [row["body"] for row in ledger._database.rows("SELECT body FROM mails ORDER BY id")]
+    assert ODD.sentence not in bodies[1]
+
+
 def test_many_troubles_at_once_are_one_mail(troubles: Troubles, ledger: Ledger) -> None:
     """A hundred odd files are one mail that names twenty and counts the rest."""
     troubles.set("folders", [Trouble(f"odd:{n}", f"ROOF-{n}.csv is a link. Nothing.") for n in range(100)])

@@ -19,7 +19,7 @@ if TYPE_CHECKING:
 REPOSITORY = Path(__file__).parent.parent.parent
 
 SCRIPT = """
-import os, signal, sys, threading
+import os, re, signal, sys, threading
 sys.path.insert(0, {repository!r})
 from watcher.worker_loop import serve
 
@@ -35,6 +35,8 @@ def handle(request):
             os._exit(3)
         case "hang":
             threading.Event().wait(600)
+        case "seize":
+            re.match(r"^(\\w+\\s?)*$", "SED" * 30 + "!")  # never returns, and lets no other thread run
         case "memory":
             return {{"bytes": len(bytearray(10**10))}}
         case "echo":
@@ -181,16 +183,18 @@ def test_an_idle_child_is_retired(make_worker: Any, clock: Any) -> None:
     assert worker.ask({"do": "pid"})["pid"] != before
 
 
-def test_a_worker_does_not_outlive_its_service(tmp_path: Path, eventually: Any, monkeypatch: Any) -> None:
-    """A child that hangs while its service is killed ends by its own alarm, without running any code."""
+@pytest.mark.parametrize(("wish", "alarmed"), [("hang", False), ("seize", True)])
+def test_a_worker_does_not_outlive_its_service(tmp_path: Path, eventually: Any, wish: str, alarmed: bool) -> None:
+    """A child whose service is killed ends in the middle of its work; where no code runs any more, by its alarm."""
     script = tmp_path / "little_worker.py"
-    script.write_text(SCRIPT.format(repository=str(REPOSITORY)).replace("serve(handle)", ALARMED))
+    text = SCRIPT.format(repository=str(REPOSITORY))
+    script.write_text(text.replace("serve(handle)", ALARMED) if alarmed else text)
     service = (
         f"import sys; sys.path.insert(0, {str(REPOSITORY)!r})\n"
         "from watcher.worker import Worker\n"
         f"worker = Worker([sys.executable, {str(script)!r}], deadline_seconds=60.0)\n"
         "print(worker.ask({'do': 'pid'})['pid'], flush=True)\n"
-        "worker.ask({'do': 'hang'})\n"
+        f"worker.ask({{'do': {wish!r}}})\n"
     )
     process = subprocess.Popen([sys.executable, "-c", service], stdout=subprocess.PIPE, text=True)
     assert process.stdout is not None
