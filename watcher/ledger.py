@@ -48,6 +48,16 @@ MOST_NEIGHBOURS = 50
 ARRIVAL_SLACK = timedelta(days=3)
 
 
+def missing(path: Path, shown: str) -> LedgerUnusable:
+    """Return the refusal to begin a ledger anew where something shows that there was one."""
+    return LedgerUnusable(
+        path,
+        f"it is missing, although {shown}",
+        "Put the ledger back from the backup; or, to begin anew and be mailed everything again, "
+        "move the whole records folder and the results away.",
+    )
+
+
 class Ledger:
     """The open ledger of a records folder; use it as a context manager or close it.
 
@@ -70,12 +80,7 @@ class Ledger:
         path = records / LEDGER_NAME
         copies = records / "copies"
         if not path.exists() and copies.is_dir() and any(copies.iterdir()):
-            raise LedgerUnusable(
-                path,
-                f"it is missing, although {copies} holds copies of exports taken in before",
-                "Put the ledger back from the backup; or, to begin anew and be mailed everything again, "
-                "move the whole records folder away.",
-            )
+            raise missing(path, f"{copies} holds copies of exports taken in before")
         self._database = Database(path)
         self.outgoing = Outgoing(self._database, self._clock)
 

@@ -16,9 +16,10 @@ from typing import TYPE_CHECKING, Any
 from watcher import VERSION
 from watcher.adoption import Adoption
 from watcher.clock import SystemClock
+from watcher.copies import COPIES_NAME
 from watcher.errors import WatcherError
 from watcher.instance import Instance
-from watcher.ledger import LEDGER_NAME, Ledger
+from watcher.ledger import LEDGER_NAME, Ledger, missing
 from watcher.log import set_up_log
 from watcher.places import findings, refuse_network
 from watcher.service import Service
@@ -72,6 +73,7 @@ def open_laboratory(config: Path, reason: str) -> Iterator[Laboratory]:
             answer = last
         settings = ServiceSettings.from_plain(answer["service"])
         refuse_network(settings.records)
+        _refuse_missing(settings)
         with Instance(settings.records), Ledger(settings.records) as ledger:
             handler = set_up_log(settings.records)
             try:
@@ -90,6 +92,21 @@ def open_laboratory(config: Path, reason: str) -> Iterator[Laboratory]:
                 handler.close()
     finally:
         worker.close()
+
+
+def _refuse_missing(settings: ServiceSettings) -> None:
+    """Refuse to begin a ledger where results show that there was one: its disk may only not be mounted yet.
+
+    Raises
+    ------
+    LedgerUnusable
+        It would be begun anew, and everything be mailed again.
+    """
+    path = settings.records / LEDGER_NAME
+    if path.exists() or (settings.records / COPIES_NAME).is_dir():  # of copies without it the ledger tells
+        return
+    if next(settings.results.glob("[0-9]*-[0-9]*/*.r[0-9]*.json"), None) is not None:
+        raise missing(path, f"{settings.results} holds results of earlier exports")
 
 
 def _read_settings(worker: Worker, config: Path) -> dict[str, Any]:

@@ -30,6 +30,8 @@ from watcher.ledger_rows import Fate, QueuedMail
 if TYPE_CHECKING:
     from collections.abc import Callable, Iterator
 
+#: Set in the environment: services of these tests find exports by looking alone.
+WITHOUT_EVENTS = "SPIKEWARDEN_TESTS_WITHOUT_EVENTS"
 HERE = Path(__file__).parent
 STUB_WORKER = HERE / "stub_worker.py"
 SERVICE_PROCESS = HERE / "service_process.py"
@@ -301,7 +303,7 @@ class _Bench:
             "deadline_seconds": 20.0,
             "reserve_bytes": 0,
         }
-        self.environment: dict[str, str] = {}
+        self.environment = {"SPIKEWARDEN_NO_EVENTS": "1"} if os.environ.get(WITHOUT_EVENTS) else {}
         self.processes: list[subprocess.Popen[str]] = []
 
     def mail_to(self, server: MailServer, *to: str) -> None:

@@ -10,14 +10,12 @@ import signal
 import subprocess
 import threading
 import time
-from typing import TYPE_CHECKING, Any
+from pathlib import Path
+from typing import Any
 
 import pytest
 
 from watcher.ledger import Ledger
-
-if TYPE_CHECKING:
-    from pathlib import Path
 
 
 @pytest.fixture(params=["events", "looking only"])
@@ -26,6 +24,18 @@ def any_bench(request: pytest.FixtureRequest, bench: Any) -> Any:
     if request.param == "looking only":
         bench.environment["SPIKEWARDEN_NO_EVENTS"] = "1"
     return bench
+
+
+def test_file_events_are_on_or_off_as_asked(any_bench: Any, eventually: Any) -> None:
+    """A service listens to its exports folder, and does not where events are switched off."""
+    handles = Path(f"/proc/{any_bench.start().pid}/fd")
+    if not handles.exists():
+        pytest.skip("open handles are read from /proc")
+    eventually(lambda: any_bench.status().get("last_scan_at"), "the service looks")
+
+    listening = any("inotify" in str(handle.readlink()) for handle in handles.iterdir())
+
+    assert listening is ("SPIKEWARDEN_NO_EVENTS" not in any_bench.environment)
 
 
 def records_of(bench: Any) -> list[dict[str, Any]]:

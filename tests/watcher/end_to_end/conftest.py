@@ -108,6 +108,7 @@ class Laboratory:
 
     def __init__(self, folder: Path) -> None:
         self.folder = folder
+        self.config = "config.yaml"
         self.processes: list[subprocess.Popen[str]] = []
         (folder / "exports").mkdir(parents=True)
         self.write("config.yaml", CONFIG)
@@ -137,15 +138,15 @@ class Laboratory:
             f"mail: {{server: 127.0.0.1, port: {port}, security: none, from: bench@example, to: lead@example}}",
         )
 
-    def start(self, command: str, *arguments: str) -> subprocess.Popen[str]:
+    def start(self, command: str, *arguments: str, **environment: str) -> subprocess.Popen[str]:
         """Start a command in a process of its own."""
         config = (self.folder / "config.yaml").read_text("utf-8")
         if os.environ.get(WITHOUT_EVENTS) and "scan: 100 ms" in config and "events:" not in config:
             self.write("config.yaml", config.replace("scan: 100 ms", "scan: 100 ms, events: no"))
         process = subprocess.Popen(
-            [sys.executable, "-m", "watcher", command, *arguments, "--config", str(self.folder / "config.yaml")],
+            [sys.executable, "-m", "watcher", command, *arguments, "--config", str(self.folder / self.config)],
             cwd=ROOT,
-            env=os.environ | {"COLUMNS": "80", "PYTHONWARNINGS": "error"},
+            env=os.environ | {"COLUMNS": "80", "PYTHONWARNINGS": "error"} | environment,
             stdout=subprocess.PIPE,
             stderr=subprocess.PIPE,
             text=True,

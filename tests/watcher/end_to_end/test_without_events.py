@@ -12,13 +12,21 @@ import pytest
 HERE = Path(__file__).parent
 
 
+#: The real program, and every file of tests that starts the service with a worker of the tests.
+SUITES = {
+    "the real program": [HERE],
+    "the service": [path for path in sorted(HERE.parent.glob("test_*.py")) if "bench." in path.read_text("utf-8")],
+}
+
+
 @pytest.mark.proof
-def test_the_whole_suite_passes_with_file_events_switched_off() -> None:
-    """Every test of the real program passes where its services find exports by looking alone."""
+@pytest.mark.parametrize("suite", SUITES)
+def test_the_whole_suite_passes_with_file_events_switched_off(suite: str) -> None:
+    """Every test that starts a service passes where services find exports by looking alone."""
     without = os.environ | {"SPIKEWARDEN_TESTS_WITHOUT_EVENTS": "yes"}
 
     done = subprocess.run(
-        [sys.executable, "-m", "pytest", "-q", "-p", "no:cacheprovider", str(HERE)],
+        [sys.executable, "-m", "pytest", "-q", "-p", "no:cacheprovider", *map(str, SUITES[suite])],
         cwd=HERE.parents[2],
         env=without,
         capture_output=True,
