@@ -67,8 +67,8 @@ def test_a_second_instance_names_the_first_and_ends(
         assert second.returncode == 2
         assert squeezed(second.stderr) == squeezed(
             f"Records folder {told.folder / 'records'} is in use by process {first.pid} on {socket.gethostname()} "
-            f"since {since}. This program changed nothing and ends. Stop that one first, or use `status` to see what it "
-            "does."
+            f"since {since}. This program changed nothing and ends. Stop that one first, or use `status` to see what "
+            "it does."
         )
     assert told.status()["running"]
     assert first.poll() is None
