@@ -17,6 +17,9 @@ from watcher.ledger_schema import VERSION
 if TYPE_CHECKING:
     from pathlib import Path
 
+#: Each begins the real program several times.
+pytestmark = pytest.mark.proof
+
 
 @pytest.fixture
 def told(laboratory: Any, mail_server: Any) -> Any:
