@@ -202,6 +202,16 @@ def mail_server(start_mail_server: Callable[..., MailServer]) -> MailServer:
     return start_mail_server()
 
 
+@pytest.fixture(scope="module")
+def shared_mail_server() -> Iterator[MailServer]:
+    """A server for a whole file of tests."""
+    mailbox = _Mailbox()
+    controller = OnAnyPort(mailbox, hostname="127.0.0.1", port=0)
+    controller.start()
+    yield MailServer(mailbox, "127.0.0.1", controller.port)
+    controller.stop()
+
+
 @dataclass(frozen=True)
 class Authority:
     """A certificate authority of the tests' own: its certificate, and a server context for 127.0.0.1."""
