@@ -17,12 +17,14 @@ from rules import expectations
 from rules.case import Reported
 from rules.checks import Check, Outcome
 from rules.figures import figure, percent, plus_minus, span
+from rules.slips import find_slips
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
 
     from rules.case import Case
     from rules.result import Results
+    from rules.slips import Slip
     from rules.spanning import Loan
 
 
@@ -86,6 +88,11 @@ class Outcomes:
                 for series in np.flatnonzero((check.outcome == outcome) & counts).tolist():
                     found[outcome].setdefault(series, []).append(check)
         return found
+
+    @cached_property
+    def slips(self) -> dict[int, Slip]:
+        """Series that one vessel explains, which does not fit the line of the others."""
+        return find_slips(self)
 
     def reasons(self, series: int) -> list[str]:
         """Return one sentence for each thing that keeps a series from passing."""

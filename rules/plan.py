@@ -40,7 +40,8 @@ def batch_step(check: str, names: str) -> str:
 def solutions(outcomes: Outcomes, series: int) -> PipettingPlan | None:
     """Return which solutions to prepare, where a check failed that new ones can settle and the plan can be made."""
     failing = {check.name for check in outcomes.deciding(series, Outcome.FAIL)}
-    if not failing or "inputs" in failing or not failing <= pipetting.SETTLED:
+    one_vessel = series in outcomes.slips
+    if not failing or one_vessel or "inputs" in failing or not failing <= pipetting.SETTLED:
         return None
     return pipetting.plan_for(outcomes.case, series)
 
@@ -51,6 +52,8 @@ def next_step(outcomes: Outcomes, series: int) -> str:
     failing = {check.name for check in outcomes.deciding(series, Outcome.FAIL)}
     if not failing and series in outcomes.missing:
         return _complete(outcomes, series)
+    if series in outcomes.slips:
+        return _vessel(outcomes, series)
     warning = {check.name for check in outcomes.deciding(series, Outcome.WARN)}
     for name, step in _STEPS:
         if name in (failing or warning):
@@ -58,6 +61,14 @@ def next_step(outcomes: Outcomes, series: int) -> str:
     if verdict is Verdict.FAIL:
         return f"Prepare and measure {outcomes.case.sample(series)} again."
     return ""
+
+
+def _vessel(outcomes: Outcomes, i: int) -> str:
+    slip = outcomes.slips[i]
+    return (
+        f"{slip.sentence[0].upper()}{slip.sentence[1:]}: prepare it again and measure "
+        f"{outcomes.case.sample(i)} with it. Until then the point stays in the line."
+    )
 
 
 def _complete(outcomes: Outcomes, i: int) -> str:

@@ -184,9 +184,9 @@ def _of_series(
 def _causes(outcomes: Outcomes, series: list[int]) -> list[_Cause]:
     """Group series by cause.
 
-    A failed batch check is one cause for all series of its analyte, and so are one faulty cell that they share, a
-    stock out of its dates, and what the batch lacks; any other cause belongs to its series. What holds for a whole
-    batch comes first.
+    A failed batch check is one cause for all series of its analyte, and so are one vessel that does not fit in several
+    analytes, one faulty cell that they share, a stock out of its dates, and what the batch lacks; any other cause
+    belongs to its series. What holds for a whole batch comes first.
     """
     groups: dict[tuple[Any, ...], list[int]] = defaultdict(list)
     for i in series:
@@ -195,8 +195,12 @@ def _causes(outcomes: Outcomes, series: list[int]) -> list[_Cause]:
         faults = tuple(outcomes.case.faults.get(i, ()))
         lacks = outcomes.missing.get(i, "") if failed == ("incomplete",) else ""
         key: tuple[Any, ...] = (None, i)
-        if "stock" in failed and "inputs" not in failed:
-            key = ("stock", tuple(outcomes.failing_sentences(i)))
+        if i in outcomes.slips:
+            key = (None, outcomes.case.sample(i), outcomes.slips[i])
+        elif "stock" in failed and "inputs" not in failed:
+            members = outcomes.case.series.members_of(i)
+            late = members[outcomes.case.vessels.out_of_date[members]]
+            key = ("stock", tuple(np.unique(outcomes.case.vessels.stock[late]).tolist()), failed)
         elif batch:
             key = (batch, int(outcomes.case.key[i]))
         elif faults:
@@ -225,7 +229,11 @@ def _do(outcomes: Outcomes, cause: _Cause) -> str:
         return plan.batch_step(cause.batch, several(list(samples), most=8))
     sentence = plan.next_step(outcomes, cause.first) or "Look at the result files."
     lacks = outcomes.missing.get(cause.first, "")
-    whole = len(cause.series) == 1 or expectations.of_batch(outcomes.case, cause.first, lacks)
+    whole = (
+        len(cause.series) == 1
+        or cause.first in outcomes.slips
+        or expectations.of_batch(outcomes.case, cause.first, lacks)
+    )
     return sentence if whole else f"{sentence} The same holds for {_all_names(outcomes, cause.series[1:])}."
 
 

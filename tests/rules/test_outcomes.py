@@ -432,7 +432,7 @@ def export(make_additions, make_standards, make_blanks):
     ("rows", "method", "check", "step"),
     [
         (
-            {"signals": ([0.2, 0.4, 0.42, 0.8], [0, 1, 2, 3.0])},
+            {"signals": ([0.2, 0.4, 0.48, 0.8], [0, 1, 2, 3.0])},
             {"limits": {"slope_certainty": parse_check_limits("off"), "correlation": parse_check_limits("off")}},
             "residual",
             "Measure the solutions of RIV-17 again; if they still lie off the line, prepare them again.",

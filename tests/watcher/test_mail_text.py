@@ -52,6 +52,7 @@ labels:
   - {like: '{sample}', role: unspiked}
 """
 SECTIONS = ["DO", "HOLD", "WHERE", "WHY", "NUMBERS", "RECORD"]
+ELEMENTS = ("Zn", "Cu", "Pb", "Cd")
 
 
 def row(label: str, signal: float, added: float = 0, analyte: str = "Zn") -> str:
@@ -73,10 +74,10 @@ def batch(drift: float = 1.0, analyte: str = "Zn") -> list[str]:
     return [*standards, row("BLK 1", 0.0012, analyte=analyte), row("CHK 2", 0.2 * drift, analyte=analyte)]
 
 
-def evaluated(*rows: str, name: str = "PL-0901.csv", more: str = "") -> Evaluated:
+def evaluated(*rows: str, name: str = "PL-0901.csv", more: str = "", layout: str = LAYOUT) -> Evaluated:
     """Evaluate an export of these rows."""
     settings = compile_snapshot(
-        Snapshot("/laboratory", File("config.yaml", CONFIG + more), (File("plain.yaml", LAYOUT),))
+        Snapshot("/laboratory", File("config.yaml", CONFIG + more), (File("plain.yaml", layout),))
     )
     numbered = [f"{number};{text}" for number, text in enumerate(rows, start=1)]
     data = "\n".join(["Run;Label;Element;R1;R2;Added;By", *numbered]).encode()
@@ -286,6 +287,39 @@ def test_another_failed_check_is_news() -> None:
     (second,) = mails(evaluated(*batch(drift=0.8), *additions("RIV-17", recovery=0.6)), known=first.keys)
 
     assert "check standard" in second.subject
+
+
+def test_one_vessel_off_in_every_analyte_is_one_line() -> None:
+    """A vessel that was made up wrongly is one thing to do and one reason, with all its analytes."""
+    rows = [line for analyte in ELEMENTS for line in batch(analyte=analyte)]
+    for number, share in enumerate((1.0, 1.0, 1.4, 1.0)):
+        label = f"RIV-17 A{number} spiked" if number else "RIV-17"
+        rows += [row(label, 0.1 * (2 + number) * share + 0.001 * number, number, analyte) for analyte in ELEMENTS]
+    layout = LAYOUT.replace("(?P<sample>.+) spiked$", r"(?P<sample>\S+) A\d spiked$")
+
+    (one,) = mails(evaluated(*rows, layout=layout))
+
+    told = sections(one.body)
+    assert told["DO"].count("prepare it again") == 1
+    assert "- " not in told["DO"]
+    assert "Vessel 'RIV-17 A2 spiked' reads 1.4 times what the line of the other vessels says" in told["DO"]
+    assert told["WHY"].startswith("RIV-17 Zn, RIV-17 Cu, RIV-17 Pb")
+
+
+def test_a_stock_out_of_its_dates_is_one_line() -> None:
+    """All samples that were spiked from it are named together."""
+    stock = "stocks: [{name: ZN-5, contains: {Zn: 5 mg/L}, until: 2026-01-31}]\n"
+    stock += "bench: {aliquot: 10 mL, made_up_to: 50 mL}\n"
+    layout = LAYOUT.replace(
+        "added: {from: Added, optional: yes}", "spike_volume: {from: Added, unit: mL, optional: yes}"
+    )
+    samples = [line for sample in ("RIV-17", "RIV-18", "SED-12") for line in additions(sample)]
+
+    (one,) = mails(evaluated(*batch(), *samples, more=stock, layout=layout))
+
+    told = sections(one.body)
+    assert "Prepare the additions of RIV-17, RIV-18, SED-12 again from a stock within" in told["DO"]
+    assert "- " not in told["DO"]
 
 
 # -- form ----------------------------------------------------------------------------------------------------------
