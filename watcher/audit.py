@@ -1,6 +1,7 @@
 """`audit` and `replay`: the whole story of a result, whether anything was altered, whether it can be computed again.
 
-Both open the ledger themselves and so need the service stopped, or a backup of its records. Nothing is changed.
+Both may be asked while the service runs, of whose ledger they then take a view, or of a backup of its records. Nothing
+is changed.
 """
 
 from __future__ import annotations
@@ -9,18 +10,19 @@ import hashlib
 import json
 import math
 import tempfile
-from contextlib import contextmanager
+from contextlib import ExitStack, contextmanager
 from dataclasses import dataclass
 from pathlib import Path
-from typing import TYPE_CHECKING, Any
+from typing import TYPE_CHECKING, Any, Protocol
 
 from watcher.copies import COPIES_NAME
 from watcher.database import Database
 from watcher.disk import Disk
 from watcher.evaluation import Job, evaluate_job, stage
-from watcher.instance import Instance
+from watcher.instance import Instance, InstanceHeld
 from watcher.ledger import LEDGER_NAME
 from watcher.ledger_entries import broken_at
+from watcher.ledger_view import view_of
 from watcher.settings import Snapshot, compile_snapshot
 
 if TYPE_CHECKING:
@@ -42,6 +44,14 @@ class Finding:
         return f"{self.where}: {self.what}."
 
 
+class Rows(Protocol):
+    """What answers queries: the ledger, or a view of one."""
+
+    def rows(self, query: str, values: dict[str, Any] | tuple[Any, ...] = ()) -> list[sqlite3.Row]:
+        """Read all rows of a query."""
+        ...
+
+
 class Audit:
     """A look through one laboratory's records.
 
@@ -50,10 +60,13 @@ class Audit:
     records, results
         Its folders.
     database
-        The open ledger.
+        The open ledger, or a view of it.
+    running
+        A service works on meanwhile: what is found missing may have come since, or be on its way.
     """
 
-    def __init__(self, records: Path, results: Path, database: Database) -> None:
+    def __init__(self, records: Path, results: Path, database: Rows, *, running: bool = False) -> None:
+        self.running = running
         self._records = records
         self._results = results
         self._database = database
@@ -173,19 +186,22 @@ def differences(old: Any, new: Any, where: str) -> Iterator[tuple[str, Any, Any]
 
 @contextmanager
 def open_audit(records: Path, results: Path) -> Iterator[Audit]:
-    """Open the records of a laboratory for an audit.
+    """Open the records of a laboratory for an audit; those of a running service are viewed.
 
     Raises
     ------
-    InstanceHeld, LedgerUnusable
-        A service works with them, or the ledger cannot be read.
+    LedgerBusy, LedgerUnusable
+        The ledger cannot be read, or not now.
     """
-    with Instance(records):
-        database = Database(records / LEDGER_NAME)
+    with ExitStack() as stack:
         try:
-            yield Audit(records, results, database)
-        finally:
-            database.close()
+            stack.enter_context(Instance(records))
+        except InstanceHeld:
+            yield Audit(records, results, stack.enter_context(view_of(records)), running=True)
+            return
+        database = Database(records / LEDGER_NAME)
+        stack.callback(database.close)
+        yield Audit(records, results, database)
 
 
 def _sha256(path: Path) -> str | None:

@@ -242,7 +242,7 @@ def note(result: str, words: str, config: Path, by: str) -> None:
 def audit(result: str | None, config: Path, *, everything: bool) -> None:
     """Tell the whole story of RESULT, or check --all for alterations.
 
-    Needs the service stopped. Exit 0: as recorded. 1: altered or missing.
+    The service may run. Exit 0: as recorded. 1: altered or missing. 2: not now.
     """
     from watcher import records_commands  # noqa: PLC0415
 
@@ -258,7 +258,7 @@ def audit(result: str | None, config: Path, *, everything: bool) -> None:
 def replay(result: str | None, last: int | None, config: Path) -> None:
     """Compute RESULT again from its copy and the settings of then.
 
-    Needs the service stopped. Exit 0: the same to 1e-9. 1: not.
+    The service may run. Exit 0: the same to 1e-9. 1: not. 2: not now.
     """
     from watcher import records_commands  # noqa: PLC0415
 

@@ -47,6 +47,11 @@ KILL_POINTS = (
 )
 
 
+def of_the_worker(setting: str) -> str:
+    """Return the moments of a setting that lie in the worker; those of the service are not its own."""
+    return ",".join(each for each in setting.split(",") if each.startswith("stage-"))
+
+
 class _Armed:
     """The moment at which to die, how many passings are left until then, and whether the service dies too."""
 
@@ -57,7 +62,8 @@ class _Armed:
             raise ValueError(f"{VARIABLE}={setting}: expected one of {', '.join(KILL_POINTS)}")
         self.name = name
         self.left = int(count or 1)
-        self.both = both == "both"
+        #: Only the worker's parent is the service.
+        self.both = both == "both" and bool(of_the_worker(name))
 
 
 _armed = [_Armed(setting) for setting in os.environ.get(VARIABLE, "").split(",") if setting]
@@ -73,8 +79,3 @@ def at(name: str) -> None:
             if armed.both:
                 os.kill(os.getppid(), signal.SIGKILL)
             os.kill(os.getpid(), signal.SIGKILL)
-
-
-def of_the_worker(setting: str) -> str:
-    """Return the moments of a setting that lie in the worker; those of the service are not its own."""
-    return ",".join(each for each in setting.split(",") if each.startswith("stage-"))

@@ -81,7 +81,7 @@ def points(*, special: bool) -> Iterator[str]:
             continue
         if step == "attempt":  # one failed attempt: the worker dies while the service lives
             yield f"{point},stage-written"
-        elif step.startswith("stage"):
+        elif point.startswith("stage-"):
             yield f"{point}:1:both"
         else:
             yield point
