@@ -8,6 +8,7 @@ from __future__ import annotations
 import email
 import email.policy
 import hashlib
+import html
 import re
 import shutil
 import sqlite3
@@ -20,12 +21,13 @@ from typing import TYPE_CHECKING, Any
 if TYPE_CHECKING:
     from collections.abc import Iterable
 
-_QUOTE = r"(?:\W|&#39;|&#34;)+"
-#: What is different in every run, and what stands for it.
+#: What is different in every run, and what stands for it. The exports themselves hold no times.
 _MASKS = (
-    (re.compile(r"\d{4}-\d\d-\d\dT\d\d:\d\d:\d\d\.\d{6}Z"), "TIME"),
-    (re.compile(rf"(number|entry){_QUOTE}\d+{_QUOTE}seal{_QUOTE}[0-9a-f]+", re.IGNORECASE), "ENTRY AND SEAL"),
+    (re.compile(r"\d{4}-\d\d-\d\d[T ]\d\d:\d\d(:\d\d(\.\d+)?)?Z?"), "TIME"),
+    (re.compile(r"\d\d \w{3} \d{4} \d\d:\d\d(:\d\d( [+-]\d{4})?)?"), "TIME"),
+    (re.compile(r"(number|entry)\W+\d+\W+seal\W+[0-9a-f]+", re.IGNORECASE), "ENTRY AND SEAL"),
     (re.compile(r"<[\w.]+@[\w.]+>"), "IDENTITY"),
+    (re.compile(r"laboratory\d+/"), "laboratory/"),
 )
 _HASH = re.compile(r"\b[0-9a-f]{64}\b")
 #: What the ledger says of each thing, by the name of its export: numbers of rows depend on the order of arrival.
@@ -58,7 +60,8 @@ def masked(text: str) -> str:
 def results(folder: Path) -> dict[str, str]:
     """Every file under the results folder but the list of exports, which tells the time, as masked text."""
     found = (path for path in (folder / "results").rglob("*") if path.is_file() and path.name != "index.html")
-    return {str(path.relative_to(folder)): masked(path.read_bytes().decode()) for path in found}
+    # pages write quotation marks in their own way; unescaped they hold the same words as records
+    return {str(path.relative_to(folder)): masked(html.unescape(path.read_bytes().decode())) for path in found}
 
 
 def ledger(folder: Path) -> dict[str, Counter[tuple[Any, ...]]]:
