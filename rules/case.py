@@ -48,6 +48,11 @@ class Reported(IntEnum):
     CALIBRATION = 2
 
 
+#: A residual is taken in percent of the fitted signal, but of no less than this fraction of the series' highest: a
+#: native near zero has no percentage worth the name.
+LEAST_OF_HIGHEST = 0.1
+
+
 @dataclass(frozen=True)
 class Case:
     """One export, computed and not yet judged.
@@ -112,6 +117,18 @@ class Case:
         """Which limits hold for each series."""
         readings, series = self.readings, self.series
         return LimitClasses.of(self.method, readings.sample, readings.analyte, series.sample, series.analyte)
+
+    @cached_property
+    def relative_residuals(self) -> Floats:
+        """Residual of each point of the fits in percent of its fitted signal, of no less than a tenth of the highest.
+
+        Each stands for the solution ``series.members[fits.places]``.
+        """
+        fits = self.fits
+        with np.errstate(invalid="ignore", divide="ignore"):
+            fitted = np.abs(fits.fitted_gross)
+            least = LEAST_OF_HIGHEST * fits.segments.spread(fits.segments.max(fitted))
+            return np.asarray(100 * (fits.net - fits.fitted_gross) / np.maximum(fitted, least))
 
     @cached_property
     def brackets(self) -> Brackets:

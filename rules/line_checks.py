@@ -18,9 +18,6 @@ if TYPE_CHECKING:
     from rules.case import Case
     from rules.line import Floats
 
-#: A residual is taken in percent of the fitted signal, but of no less than this fraction of the series' highest: a
-#: native near zero has no percentage worth the name.
-LEAST_OF_HIGHEST = 0.1
 #: Below so many degrees of freedom a droop of 10 % stays unseen more often than not (method, section 8).
 FEW_DOF = 5
 NO_LINE = "no line can be drawn"
@@ -145,10 +142,8 @@ def lack_of_fit(case: Case) -> Check:
 def residual(case: Case) -> Check:
     """Largest residual in percent of the fitted signal (common practice)."""
     fits = case.fits
-    with np.errstate(invalid="ignore", divide="ignore"):
-        fitted = np.abs(fits.fitted_gross)
-        least = LEAST_OF_HIGHEST * fits.segments.spread(fits.segments.max(fitted))
-        each = 100 * np.abs(fits.net - fits.fitted_gross) / np.maximum(fitted, least)
+    each = np.abs(case.relative_residuals)
+    with np.errstate(invalid="ignore"):
         largest = fits.segments.max(each)
     value = np.where(fits.spread(fits.lines.dof.astype(float)) > 0, fits.spread(largest), np.nan)
     shown = percents(case, "residual", value)

@@ -1,4 +1,4 @@
-"""Plots of a page, drawn from the JSON record alone, with bytes that depend on nothing else.
+"""Plots of a page and of mails, drawn from the JSON record alone, with bytes that depend on nothing else.
 
 Greys and one blue, told apart by dash, marker and label: they print in grey and need no colour vision.
 """
@@ -8,7 +8,8 @@ from __future__ import annotations
 import base64
 import io
 import math
-from typing import Any
+import re
+from typing import TYPE_CHECKING, Any
 
 import matplotlib as mpl
 import numpy as np
@@ -16,6 +17,12 @@ from matplotlib.figure import Figure
 from scipy import stats
 
 from rules.figures import figure as figure_of
+from rules.limits import Limit
+
+if TYPE_CHECKING:
+    from collections.abc import Iterable
+
+    from matplotlib.axes import Axes
 
 INK, LINE, SHADE = "#1c2430", "#1f4e8c", "#c9d3df"
 #: Points that a drawn line or band has.
@@ -45,91 +52,97 @@ def additions_picture(series: dict[str, Any], calibration_slope: float | None) -
 
 def additions_words(series: dict[str, Any]) -> str:
     """Say what the plot of a series shows, with its numbers."""
-    fit = series["fit"]
+    fit, effect = series["fit"], series["matrix_effect"]
     name = " ".join(part for part in (series["sample"], series["analyte"], series["channel"]) if part)
     line = f"slope {figure_of(fit['slope'])}, intercept {figure_of(fit['intercept'])}, {fit['n']} solutions"
-    return f"Additions line of {name}: {line}; result {series['result']['text']}"
+    against = "" if effect["value"] is None else f"; matrix effect {figure_of(effect['value'])} % on the slope"
+    return f"Additions line of {name}: {line}{against}; result {series['result']['text']}"
 
 
 def _additions(
     series: dict[str, Any], calibration_slope: float | None, size: tuple[float, float] = PAGE
 ) -> Figure | None:
-    """Draw the additions line of a series.
+    """Draw the additions line of a series over the concentration in the sample.
 
     Parameters
     ----------
     series
         An entry of ``series`` in the record.
     calibration_slope
-        Slope of the calibration (signal per unit in the vessel), drawn dashed through the same intercept.
+        Slope of the calibration (signal per unit in the vessel), drawn dashed through the same intercept: the matrix
+        effect is the angle between both.
     size
         Width and height in inches.
 
     Returns
     -------
     Figure or None
-        None where no line was computed. The axis is the concentration in the aliquot.
+        None where no line was computed.
     """
     fit = series["fit"]
     points = [p for p in series["solutions"] if None not in (p["added"], p["signal"]) and p["dilution"]]
     if fit is None or fit["slope"] is None or fit["intercept"] is None or not points:
         return None
-    x = np.array([p["added"] / p["dilution"] for p in points])
+    # what is added to the aliquot counts in the sample as if it had been diluted with it
+    predilution = max((p["predilution"] or 1.0 for p in points), default=1.0)
+    x = predilution * np.array([p["added"] / p["dilution"] for p in points])
     y = np.array([p["signal"] / p["dilution"] for p in points])
-    slope, intercept = fit["slope"], fit["intercept"]
+    slope, intercept = fit["slope"] / predilution, fit["intercept"]
     crossing = -intercept / slope if slope > 0 else 0.0
-    reach = np.linspace(min(crossing * 1.08, 0.0), x.max() * 1.04, STEPS)
+    found = series["additions_result"]
+    interval = (found["low"], found["high"]) if found and found["value"] else ()
+    ends: list[float] = [-end for end in interval if end is not None]
+    reach = np.linspace(min(crossing * 1.08, *ends, 0.0), x.max() * 1.04, STEPS)
     figure = Figure(figsize=size, layout="constrained")
     axes = figure.subplots()
     axes.axhline(0, color=INK, linewidth=0.8)
     axes.axvline(0, color=INK, linewidth=0.8, linestyle=":")
-    half = confidence_band(fit, points, reach)
+    half = confidence_band(fit, reach / predilution, series["confidence"])
+    middle = intercept + slope * reach
     if half is not None:
-        middle = intercept + slope * reach
-        axes.fill_between(reach, middle - half, middle + half, color=SHADE, label="95 % band of the line")
-    axes.plot(reach, intercept + slope * reach, color=LINE, label="additions")
+        axes.fill_between(
+            reach, middle - half, middle + half, color=SHADE, label=f"{100 * series['confidence']:g} % band of the line"
+        )
+    axes.plot(reach, middle, color=LINE, label="additions")
     if calibration_slope is not None:
-        dashed = intercept + calibration_slope * reach
-        axes.plot(reach, dashed, color=INK, linestyle="--", label="slope of the calibration")
+        dashed = intercept + calibration_slope / predilution * reach
+        effect = series["matrix_effect"]["value"]
+        told = "" if effect is None else f" (matrix effect {figure_of(effect, 2)} %)"
+        axes.plot(reach, dashed, color=INK, linestyle="--", label=f"slope of the calibration{told}")
     axes.plot(x, y, "o", color=INK, markersize=5, label="solutions")
-    found = series["additions_result"]
-    if crossing < 0 and found and found["value"] and None not in (found["low"], found["high"]):
-        ends = [found["high"] / found["value"] * crossing, found["low"] / found["value"] * crossing]
+    if len(ends) == 2:
         axes.plot(ends, [0, 0], "|-", color=LINE, linewidth=3, markersize=12, label="interval of the result")
-    axes.set_xlabel(f"concentration in the aliquot ({series['result']['unit']}), below zero: found there")
+    low, high = min(0.0, float(middle.min())), float(max(y.max(), middle.max()))
+    axes.set_ylim(low - 0.06 * (high - low), high + 0.06 * (high - low))
+    axes.set_xlabel(f"added to the sample ({series['result']['unit']}); left of zero: found in it")
     axes.set_ylabel("signal / dilution")
     axes.legend(frameon=False, fontsize=8)
     return figure
 
 
-def confidence_band(fit: dict[str, Any], points: list[dict[str, Any]], at: np.ndarray) -> np.ndarray | None:
-    """Return half the width of the line's 95 % confidence band.
+def confidence_band(fit: dict[str, Any], at: np.ndarray, confidence: float) -> np.ndarray | None:
+    """Return half the width of the line's confidence band over additions to the aliquot; None without scatter.
 
-    Only where the record determines it: constant variance, equal dilutions, degrees of freedom left. Elsewhere none
-    is drawn rather than a wrong one. Source: the textbook variance of a fitted mean, s² (1/n + (x - x̄)²/Sxx).
+    Source: the variance of a fitted mean, var(a) + 2 x cov(a, b) + x² var(b), with Student's t.
     """
-    dilutions = {p["dilution"] for p in points}
-    determined = fit["variance"] == "constant" and len(dilutions) == 1 and fit["dof"] > 0
-    if not determined or fit["residual_sd"] is None or fit["n"] != len(points):
+    parts = fit["intercept_variance"], fit["covariance"], fit["slope_variance"]
+    if None in parts or fit["dof"] < 1:
         return None
-    x = np.array([p["added"] / p["dilution"] for p in points])
-    spread = float(((x - x.mean()) ** 2).sum())
-    if spread == 0:
-        return None
-    scatter = fit["residual_sd"] / dilutions.pop()
-    factor = float(stats.t.ppf(0.975, fit["dof"]))
-    return np.asarray(factor * scatter * np.sqrt(1 / len(x) + (at - x.mean()) ** 2 / spread))
+    intercept, both, slope = parts
+    factor = float(stats.t.ppf((1 + confidence) / 2, fit["dof"]))
+    return np.asarray(factor * np.sqrt(np.maximum(intercept + 2 * at * both + at**2 * slope, 0.0)))
 
 
 def recoveries_plot(series: dict[str, Any]) -> str | None:
-    """Draw the recovery of each addition with its interval, as a ``data:`` address; none without recoveries."""
+    """Draw the recovery of each addition with its interval between the limits; none without recoveries."""
     listed = series["recoveries"]
     if not listed:
         return None
     with mpl.rc_context(_STYLE):
-        figure = Figure(figsize=(6.4, 0.9 + 0.32 * len(listed)), layout="constrained")
+        figure = Figure(figsize=(PAGE[0], 1.1 + 0.32 * len(listed)), layout="constrained")
         axes = figure.subplots()
         axes.axvline(100, color=INK, linewidth=0.8, linestyle=":")
+        _limits(axes, series, "recovery", vertical=True)
         for place, entry in enumerate(listed):
             width = entry["expanded_uncertainty"]
             axes.errorbar(
@@ -140,11 +153,99 @@ def recoveries_plot(series: dict[str, Any]) -> str | None:
                 color=LINE,
                 capsize=4,
             )
-        # A label is data of the laboratory: a dollar sign in it must not start a formula.
-        axes.set_yticks(range(len(listed)), [entry["label"].replace("$", r"\$") for entry in listed])
-        axes.set_ylim(len(listed) - 0.5, -0.5)
-        axes.set_xlabel("recovery (%)")
+        _names(axes, [entry["label"] for entry in listed])
+        axes.set_xlabel("recovery (%), with its interval")
         return _address(figure)
+
+
+def residuals_plot(series: dict[str, Any]) -> str | None:
+    """Draw the residual of each solution in percent between the limits; none without a line."""
+    listed = [p for p in series["solutions"] if p["residual_percent"] is not None]
+    if not listed:
+        return None
+    with mpl.rc_context(_STYLE):
+        figure = Figure(figsize=(PAGE[0], 1.1 + 0.3 * len(listed)), layout="constrained")
+        axes = figure.subplots()
+        axes.axvline(0, color=INK, linewidth=0.8)
+        _limits(axes, series, "residual", vertical=True, mirrored=True)
+        for place, point in enumerate(listed):
+            axes.plot([0, point["residual_percent"]], [place, place], color=LINE, linewidth=2)
+            axes.plot(point["residual_percent"], place, "o", color=LINE)
+        _names(axes, [point["label"] for point in listed])
+        axes.set_xlabel("residual (% of the fitted signal)")
+        return _address(figure)
+
+
+def run_plot(record: dict[str, Any], analyte: str, channel: str | None) -> str | None:
+    """Draw check standards and spiked blanks of an analyte in percent over the run, and blanks below.
+
+    Failing brackets are shaded. None where there is nothing to draw.
+    """
+
+    def own(key: str) -> list[dict[str, Any]]:
+        return [e for e in record[key] if (e["analyte"], e["channel"]) == (analyte, channel)]
+
+    checks = [e for e in own("check_standards") if e["percent_of_nominal"] is not None]
+    spiked = [e for e in own("spiked_blanks") if e["recovery"] is not None]
+    blanks = [e for e in own("blanks") if e["signal"] is not None]
+    series = [s for s in record["series"] if (s["analyte"], s["channel"]) == (analyte, channel)]
+    if not checks and not spiked:
+        return None
+    with mpl.rc_context(_STYLE):
+        figure = Figure(figsize=(PAGE[0], 3.4 if blanks else 2.4), layout="constrained")
+        rows: Any = figure.subplots(2 if blanks else 1, 1, sharex=True, height_ratios=[3, 2] if blanks else None)
+        axes = rows[0] if blanks else rows
+        axes.axhline(100, color=INK, linewidth=0.8, linestyle=":")
+        if series:
+            _limits(axes, series[0], "check_standard")
+        for begin, end in _failing_brackets(series):
+            axes.axvspan(begin, end, color=SHADE, hatch="///", label="failing bracket")
+        _dots(axes, checks, "percent_of_nominal", "s-", "check standards")
+        _dots(axes, spiked, "recovery", "^", "spiked blanks")
+        axes.set_ylabel("% of nominal")
+        handles = dict(zip(*reversed(axes.get_legend_handles_labels()), strict=True))
+        axes.legend(handles.values(), handles.keys(), frameon=False, fontsize=8)
+        if blanks:
+            _dots(rows[1], blanks, "signal", "o", "blanks")
+            rows[1].axhline(0, color=INK, linewidth=0.8)
+            rows[1].set_ylabel("signal of blanks")
+        (rows[1] if blanks else axes).set_xlabel("place in the run")
+        return _address(figure)
+
+
+def _dots(axes: Axes, entries: Iterable[dict[str, Any]], value: str, form: str, label: str) -> None:
+    ordered = sorted(entries, key=lambda entry: int(entry["run_order"]))
+    if ordered:
+        places = [entry["run_order"] for entry in ordered]
+        axes.plot(places, [entry[value] for entry in ordered], form, color=LINE, linewidth=0.8, label=label)
+
+
+def _failing_brackets(series: Iterable[dict[str, Any]]) -> list[tuple[float, float]]:
+    """Return from where to where in the run the samples lie whose bracket failed."""
+    spans = []
+    for one in series:
+        bracket = next((c for c in one["checks"] if c["check"] == "bracket"), None)
+        places = [p["run_order"] for p in one["solutions"]]
+        if bracket is not None and bracket["outcome"] == "fail" and places:
+            spans.append((min(places) - 0.5, max(places) + 0.5))
+    return spans
+
+
+def _limits(axes: Axes, series: dict[str, Any], check: str, *, vertical: bool = False, mirrored: bool = False) -> None:
+    """Draw the limits of a check, failing solid and warning dashed; `mirrored` for a limit on the absolute value."""
+    text = next((c["limit"] for c in series["checks"] if c["check"] == check), "")
+    for word, limit in re.findall(r"(fail|warn) unless ([^;]+)", text):
+        parsed = Limit.parse(limit)
+        bounds = {b for b in (parsed.low, parsed.high) if math.isfinite(b)}
+        for bound in bounds | ({-b for b in bounds} if mirrored else set()):
+            draw = axes.axvline if vertical else axes.axhline
+            draw(bound, color=INK, linewidth=1.2, linestyle="-" if word == "fail" else "--")
+
+
+def _names(axes: Axes, labels: list[str]) -> None:
+    # A label is data of the laboratory: a dollar sign in it must not start a formula.
+    axes.set_yticks(range(len(labels)), [label.replace("$", r"\$") for label in labels])
+    axes.set_ylim(len(labels) - 0.5, -0.5)
 
 
 def _address(figure: Figure) -> str:

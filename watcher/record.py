@@ -103,6 +103,7 @@ def series_entry(outcomes: Outcomes, i: int) -> dict[str, Any]:
         "channel": case.channel(i),
         "attempt": int(case.series.attempt[i]),
         "verdict": outcomes.verdict_of(i).word,
+        "confidence": case.method.confidence,
         "result": result(outcomes, i),
         "additions_result": _result(case, case.additions, i, result_by(case, i, Reported.ADDITIONS))
         if case.judged[i]
@@ -172,12 +173,16 @@ def _fit(case: Case, i: int) -> dict[str, Any] | None:
         "variance": case.method.variance,
         "g": number(case.interval.g[at]),
         "u_line": number(case.u_line[i] / predilution),
+        "intercept_variance": number(lines.var_intercept[at]),
+        "slope_variance": number(lines.var_slope[at]),
+        "covariance": number(lines.covariance[at]),
     }
 
 
 def _solutions(case: Case, i: int) -> list[dict[str, Any]]:
     readings = case.readings
     listed = []
+    residuals = _residuals(case, i)
     for solution in case.series.members_of(i).tolist():
         row = int(case.solutions.rows[solution])
         values = readings.signals[case.solutions.rows_of(solution)]
@@ -187,14 +192,28 @@ def _solutions(case: Case, i: int) -> list[dict[str, Any]]:
                 "role": Role(int(readings.role[row])).word,
                 "added": number(case.vessels.added[solution]),
                 "dilution": number(case.vessels.fraction[solution]),
+                "predilution": number(case.vessels.predilution[solution]),
                 "signal": number(case.solutions.signal[solution]),
+                "residual_percent": residuals.get(solution),
                 "readings": values[np.isfinite(values)].tolist(),
                 "position": number(readings.position[row]),
                 "measured_at": local_time(float(readings.measured_at[row])),
+                "run_order": solution + 1,
                 "export_lines": _lines(case, solution),
             }
         )
     return listed
+
+
+def _residuals(case: Case, i: int) -> dict[int, float | None]:
+    """Return the residual of each solution that a fit rests on, in percent."""
+    fits, at = case.fits, int(case.fits.of_series[i])
+    if at < 0:
+        return {}
+    start = int(fits.segments.starts[at])
+    points = slice(start, start + int(fits.segments.sizes[at]))
+    solutions = case.series.members[fits.places[points]].tolist()
+    return {s: number(r) for s, r in zip(solutions, case.relative_residuals[points].tolist(), strict=True)}
 
 
 def _recoveries(case: Case, i: int) -> list[dict[str, Any]]:
@@ -282,6 +301,9 @@ def _place(case: Case, solution: int, key: int) -> dict[str, Any]:
         "analyte": case.readings.analyte.names[analyte],
         "channel": None if channel < 0 else case.readings.channel.names[channel],
         "signal": number(case.solutions.signal[solution]),
+        "position": number(case.readings.position[int(case.solutions.rows[solution])]),
+        "measured_at": local_time(float(case.readings.measured_at[int(case.solutions.rows[solution])])),
+        "run_order": solution + 1,
         "export_lines": _lines(case, solution),
     }
 

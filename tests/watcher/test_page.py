@@ -116,7 +116,7 @@ def test_the_band_is_that_of_the_fitted_line() -> None:
     series = record()["series"][0]
     fit = series["fit"]
     crossing = np.array([-fit["intercept"] / fit["slope"]])
-    half = plots.confidence_band(fit, series["solutions"], crossing)
+    half = plots.confidence_band(fit, crossing, series["confidence"])
     assert half is not None
     t_of_two_degrees = 4.302652729911275  # published tables, 97.5 %
     assert half[0] / fit["slope"] / t_of_two_degrees == pytest.approx(fit["u_line"], rel=1e-9)
