@@ -106,7 +106,7 @@ def by_identity(received: Iterable[tuple[tuple[str, ...], str]]) -> dict[str, li
     """Message-ID to the messages that came with it, in the order of arrival."""
     found: dict[str, list[Any]] = {}
     for _, text in received:
-        message = email.message_from_string(text, policy=email.policy.default)
+        message = email.message_from_string(text.replace("\r\n", "\n"), policy=email.policy.default)
         found.setdefault(str(message["Message-ID"]), []).append(message)
     return found
 
@@ -124,4 +124,4 @@ def letter(message: Any) -> tuple[str, str, str, tuple[str, ...]]:
         for part in message.walk()
         if part.get_content_maintype() == "image"
     ]
-    return str(message["To"]), str(message["Subject"]), masked(text), tuple(plots)
+    return str(message["To"]), masked(str(message["Subject"])), masked(text), tuple(plots)
