@@ -31,6 +31,8 @@ _STYLE = (
     "table{border-collapse:collapse;overflow-wrap:normal}th,td{border:1px solid #66707e;padding:.2rem .5rem;"
     "text-align:left;vertical-align:top}.wide{overflow-x:auto}a{color:#1f4e8c}.banner{border:3px solid #1c2430;"
     "padding:.6rem 1rem}.trouble{background:#1c2430;color:#fff}.trouble a{color:#fff}td.look{font-weight:bold}"
+    "@media(max-width:40rem){table,tbody,tr,th,td{display:block;border:0}tr{border:1px solid #66707e;margin:.4rem 0;"
+    "padding:.3rem .4rem}tr:first-of-type{display:none}td:empty{display:none}}"
     "@page{size:A4;margin:15mm}@media print{.wide{overflow:visible}}"
 )
 _WORDS = {

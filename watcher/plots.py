@@ -28,7 +28,7 @@ INK, LINE, SHADE = "#1c2430", "#1f4e8c", "#c9d3df"
 #: Points that a drawn line or band has.
 STEPS = 60
 #: Sizes of a plot in inches: on a page, and in a mail, where its writing must be read on a phone.
-PAGE, PHONE = (6.4, 3.6), (4.2, 3.5)
+PAGE, PHONE = (4.8, 3.7), (4.2, 3.7)
 _STYLE: Any = {"svg.hashsalt": "spikewarden", "svg.fonttype": "path", "font.size": 9.0, "axes.edgecolor": INK}
 
 
@@ -116,7 +116,7 @@ def _additions(
     axes.set_ylim(low - 0.06 * (high - low), high + 0.06 * (high - low))
     axes.set_xlabel(f"added to the sample ({series['result']['unit']}); left of zero: found in it")
     axes.set_ylabel("signal / dilution")
-    axes.legend(frameon=False, fontsize=8)
+    figure.legend(loc="outside upper left", ncols=2, frameon=False, fontsize=8)
     return figure
 
 
