@@ -228,15 +228,17 @@ RECORD = {"format", "export", "series", "blanks", "check_standards", "calibratio
 }
 EXPORT = {"name", "sha256", "bytes", "revision", "accepted_at", "layout", "settings", "program"}
 SERIES = {
-    "sample", "analyte", "channel", "attempt", "verdict", "result", "additions_result", "calibration_result", "fit",
-    "solutions", "recoveries", "matrix_effect", "budget", "checks", "detection", "next_step",
+    "sample", "analyte", "channel", "attempt", "verdict", "confidence", "result", "additions_result",
+    "calibration_result", "fit", "solutions", "recoveries", "matrix_effect", "budget", "checks", "detection", "next_step",
 }  # fmt: skip
 RESULT = {
     "value", "unit", "standard_uncertainty", "expanded_uncertainty", "coverage_factor", "low", "high", "effective_dof",
     "by", "text",
 }  # fmt: skip
 FIT = {"slope", "intercept", "correlation", "residual_sd", "n", "dof", "variance", "g", "u_line"}
+FIT |= {"intercept_variance", "slope_variance", "covariance"}
 SOLUTION = {"label", "role", "added", "dilution", "signal", "readings", "position", "measured_at", "export_lines"}
+SOLUTION |= {"predilution", "residual_percent", "run_order"}
 CHECK = {"check", "value", "limit", "unit", "outcome", "sentence", "export_lines"}
 
 
