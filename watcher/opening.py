@@ -5,6 +5,7 @@ The same for `watch` and `once`. Stays light: what reads YAML and numbers lives 
 
 from __future__ import annotations
 
+import contextlib
 import getpass
 import json
 import logging
@@ -105,7 +106,10 @@ def _refuse_missing(settings: ServiceSettings) -> None:
     path = settings.records / LEDGER_NAME
     if path.exists() or (settings.records / COPIES_NAME).is_dir():  # of copies without it the ledger tells
         return
-    if next(settings.results.glob("[0-9]*-[0-9]*/*.r[0-9]*.json"), None) is not None:
+    results = None
+    with contextlib.suppress(OSError):  # a share that is away shows nothing; deliveries say so
+        results = next(settings.results.glob("[0-9]*-[0-9]*/*.r[0-9]*.json"), None)
+    if results is not None:
         raise missing(path, f"{settings.results} holds results of earlier exports")
 
 
