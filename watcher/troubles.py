@@ -89,9 +89,19 @@ class Troubles:
             present = {each.key: each for source in self._now.values() for each in source}
             new = [each for key, each in present.items() if key not in self._told]
             self._told = set(present)
-            mails, self._unmailed = self._unmailed, []
+            defects, self._unmailed = self._unmailed, []
+        try:
+            self._report(new, defects)
+        except Exception:
+            with self._lock:  # the ledger's disk is full: all of it is told later, what was queued is known by its key
+                self._told.difference_update(each.key for each in new)
+                self._unmailed[:0] = defects
+            raise
+
+    def _report(self, new: list[Trouble], defects: list[WantedMail]) -> None:
         for each in new:
             _log.warning("trouble", sentence=each.sentence)
+        mails = list(defects)
         # A restart knows nothing of what it told: what was mailed before is not said again beside what is new.
         if news := [each for each in new if not self._ledger.mailed(self._lasting_key(each))]:
             mails.append(notices.troubles(news, tuple(self._lasting_key(each) for each in news)))

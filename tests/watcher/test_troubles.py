@@ -74,6 +74,27 @@ def test_after_a_restart_only_what_is_new_is_mailed(troubles: Troubles, ledger: 
     assert ODD.sentence not in bodies[1]
 
 
+def test_what_could_not_be_queued_is_told_later(troubles: Troubles, ledger: Ledger, monkeypatch: Any) -> None:
+    """Where the ledger's disk is full when troubles and a defect are to be mailed, they are mailed when it is not."""
+    troubles.set("folders", [ODD])
+    troubles.defect("ZeroDivisionError in mean (line 3)", "Traceback")
+
+    def full(_mail: Any) -> bool:
+        raise sqlite3.OperationalError("database or disk is full")
+
+    with monkeypatch.context() as patched:
+        patched.setattr(ledger, "report", full)
+        with pytest.raises(sqlite3.OperationalError):
+            troubles.report_new()
+    troubles.report_new()
+    troubles.report_new()
+
+    assert _subjects(ledger) == [
+        "PROBLEM defect of the program: ZeroDivisionError in mean (line 3)",
+        "PROBLEM SED-12.csv is a link",
+    ]
+
+
 def test_many_troubles_at_once_are_one_mail(troubles: Troubles, ledger: Ledger) -> None:
     """A hundred odd files are one mail that names twenty and counts the rest."""
     troubles.set("folders", [Trouble(f"odd:{n}", f"ROOF-{n}.csv is a link. Nothing.") for n in range(100)])
