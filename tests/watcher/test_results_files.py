@@ -229,7 +229,8 @@ RECORD = {"format", "export", "series", "blanks", "check_standards", "calibratio
 EXPORT = {"name", "sha256", "bytes", "revision", "accepted_at", "layout", "settings", "program"}
 SERIES = {
     "sample", "analyte", "channel", "attempt", "verdict", "confidence", "result", "additions_result",
-    "calibration_result", "fit", "solutions", "recoveries", "matrix_effect", "budget", "checks", "detection", "next_step",
+    "calibration_result", "fit", "solutions", "recoveries", "matrix_effect", "budget", "checks", "detection",
+    "next_step",
 }  # fmt: skip
 RESULT = {
     "value", "unit", "standard_uncertainty", "expanded_uncertainty", "coverage_factor", "low", "high", "effective_dof",

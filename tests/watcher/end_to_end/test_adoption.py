@@ -130,6 +130,7 @@ def test_signed_settings_wait_for_a_name(mailed: Any, subjects: Any, eventually:
     assert last["difference"] == "config.yaml: limits.recovery: 75 to 125 % -> 75 to 130 %"
 
 
+@pytest.mark.proof
 def test_a_signature_cannot_be_taken_away_by_the_change_that_needs_it(laboratory: Any) -> None:
     """What is in force decides: a file that says automatic is not adopted while signed is in force."""
     laboratory.change("config.yaml", "mail: none", "mail: none\nadoption: signed")
@@ -217,6 +218,7 @@ def test_altered_old_rows_are_a_problem(mailed: Any, subjects: Any) -> None:
     assert f"1 of them are altered or gone (line 3 '{rows[1]}')" in sentence
 
 
+@pytest.mark.proof
 def test_an_export_that_grows_is_no_problem(laboratory: Any) -> None:
     """Rows that stay, wherever new ones come in between, make a revision and nothing else."""
     rows = laboratory.additions("SED-12")
@@ -229,6 +231,7 @@ def test_an_export_that_grows_is_no_problem(laboratory: Any) -> None:
     assert laboratory.records()["FL-1.csv.r2.json"]["problems"] == []
 
 
+@pytest.mark.proof
 def test_unrelated_content_under_an_old_name_is_alerted_anew(mailed: Any, subjects: Any) -> None:
     """A name that is used again for another run silences no alert, although the same sample fails the same way."""
     rows = [*mailed.standards(), *mailed.additions("RIV-17", recovery=0.5)]
@@ -241,6 +244,7 @@ def test_unrelated_content_under_an_old_name_is_alerted_anew(mailed: Any, subjec
     assert mailed.records()["FL-1.csv.r2.json"]["problems"] == []
 
 
+@pytest.mark.proof
 def test_the_same_content_under_another_name_is_recognised(mailed: Any, subjects: Any) -> None:
     """A copied export gives no second result and no second alert, and the ledger says whose content it is."""
     path = mailed.export("FL-1.csv", *mailed.standards(), *mailed.additions("RIV-17", recovery=0.5))
@@ -256,6 +260,7 @@ def test_the_same_content_under_another_name_is_recognised(mailed: Any, subjects
     assert '{"of":"FL-1.csv"' in "".join(mailed.run("audit", "FL-1 copy.csv").stdout.split())
 
 
+@pytest.mark.proof
 def test_a_replacement_of_the_same_size_and_time_is_noticed(mailed: Any, eventually: Any) -> None:
     """Content changed in place, with size and modification time put back, is a new revision while the service runs."""
     path = mailed.export("FL-1.csv", *mailed.additions("SED-12"))
@@ -271,6 +276,7 @@ def test_a_replacement_of_the_same_size_and_time_is_noticed(mailed: Any, eventua
     assert path.stat().st_size == before.st_size
 
 
+@pytest.mark.proof
 def test_a_restart_over_faulty_files_goes_on_with_what_was_adopted(mailed: Any, subjects: Any, eventually: Any) -> None:
     """Switched off and on while somebody's change is faulty, the service works on, and mails the fault once."""
     assert mailed.run("once").returncode == 0

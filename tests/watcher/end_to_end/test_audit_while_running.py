@@ -5,6 +5,8 @@ from __future__ import annotations
 import json
 from typing import Any
 
+import pytest
+
 
 def is_done(laboratory: Any, number: int) -> bool:
     """Tell whether exports and their pages are done and delivered."""
@@ -12,6 +14,7 @@ def is_done(laboratory: Any, number: int) -> bool:
     return laboratory.status().get("counts") == {"done": number} and len(pages) == number
 
 
+@pytest.mark.proof
 def test_audit_and_replay_answer_while_the_service_runs(laboratory: Any, eventually: Any, squeezed: Any) -> None:
     """The story, the whole audit and a replay are right beside a service that goes on; what is altered is found."""
     service = laboratory.start("watch")
