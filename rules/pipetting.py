@@ -14,7 +14,7 @@ from functools import cached_property
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
-from scipy import stats
+from scipy import special
 
 from rules.figures import figure
 from rules.substances import of_analytes
@@ -134,8 +134,8 @@ class PipettingPlan:
     def unbounded(self) -> float:
         """Probability that the slope is not told from zero, so that there is no finite interval."""
         dof = len(self.volumes) - 2
-        critical, shift = stats.t.ppf(0.975, dof), 1 / math.sqrt(self._covariance[1, 1])
-        return float(stats.nct.cdf(critical, dof, shift) - stats.nct.cdf(-critical, dof, shift))
+        critical, shift = special.stdtrit(dof, 0.975), 1 / math.sqrt(self._covariance[1, 1])
+        return float(special.nctdtr(dof, shift, critical) - special.nctdtr(dof, shift, -critical))
 
     @property
     def top_in_vessel(self) -> float:

@@ -77,6 +77,8 @@ class Assessment:
         disk: Disk,
     ) -> None:
         self._adopted = adopted
+        #: Mails were queued whose plots are still to be drawn.
+        self.undrawn = False
         self.staging = settings.records / STAGING_NAME
         self._span_seconds = settings.span_seconds
         self._complete_after = timedelta(seconds=settings.complete_after_seconds)
@@ -198,6 +200,7 @@ class Assessment:
         )
         try:
             self._ledger.finish(export, fate, self._span_seconds)
+            self.undrawn |= any(mail.pictures for mail in fate.mails)
         except TargetTaken as error:
             return self._refuse(export, str(error))
         _log.info("export evaluated", export=export.name, fate=fate.state, counts=fate.counts, problem=fate.problem)

@@ -25,7 +25,7 @@ from watcher.difference import difference
 from watcher.disk import Disk
 from watcher.growth import compare
 from watcher.names import target
-from watcher.pictures import stage_pictures
+from watcher.pictures import Undrawn, pictures
 from watcher.record import Export, lent, number
 from watcher.scalars import duration
 from watcher.settings import Settings, SettingsInvalid, Snapshot, compile_snapshot, read_files
@@ -226,6 +226,7 @@ class Worker:
     def __init__(self) -> None:
         self._settings: Settings | None = None
         self._disk = Disk()
+        self._undrawn: list[Undrawn] = []
 
     def handle(self, request: dict[str, Any]) -> dict[str, Any]:
         """Answer one request."""
@@ -240,8 +241,8 @@ class Worker:
             case "adopt":
                 self._settings = compile_snapshot(Snapshot.of_plain(request["snapshot"]))
                 return {"ok": True}
-            case "page":
-                return self._draw_page(request)
+            case "page" | "pictures" as what:
+                return self._draw_page(request) if what == "page" else self._draw_pictures()
             case "evaluate":
                 return self._evaluate(request)
             case unknown:
@@ -328,15 +329,21 @@ class Worker:
             family=family,
         )
 
-    @staticmethod
-    def _illustrated(letter: mail.Mail, evaluated: Evaluated, folder: Path) -> dict[str, Any]:
-        """Return a mail with its plots; one that cannot be drawn must not keep its mail back."""
-        try:
-            pictures = stage_pictures(evaluated.outcomes, evaluated.export, letter.series, folder)
-        except Exception as error:  # noqa: BLE001 - the words are the alert
-            print(f"a plot was not drawn: {type(error).__name__}: {error}", file=sys.stderr)  # noqa: T201
-            pictures = []
-        return letter.plain() | {"pictures": pictures}
+    def _illustrated(self, letter: mail.Mail, evaluated: Evaluated, folder: Path) -> dict[str, Any]:
+        """Return a mail with the plots that it will have, and remember to draw them."""
+        undrawn = pictures(evaluated.outcomes, evaluated.export, letter.series, folder)
+        self._undrawn += undrawn
+        return letter.plain() | {"pictures": [picture.plain() for picture in undrawn]}
+
+    def _draw_pictures(self) -> dict[str, Any]:
+        """Draw what was remembered; a plot that cannot be drawn must not keep others back."""
+        undrawn, self._undrawn = self._undrawn, []
+        for picture in undrawn:
+            try:
+                picture.draw()
+            except Exception as error:  # noqa: BLE001 - the words are the alert
+                print(f"a plot was not drawn: {type(error).__name__}: {error}", file=sys.stderr)  # noqa: T201
+        return {"drawn": len(undrawn)}
 
 
 def _hashed(path: Path, sha256: str) -> bytes | None:

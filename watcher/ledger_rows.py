@@ -89,10 +89,9 @@ class StagedFile:
 
 @dataclass(frozen=True, slots=True)
 class Picture:
-    """A plot that is durable in the records and goes with a mail; `alt` says in words what it shows."""
+    """A plot that goes with a mail, where it is drawn to, and in words what it shows."""
 
     staged: Path
-    sha256: str
     alt: str
 
 

@@ -8,7 +8,6 @@ from __future__ import annotations
 
 import email.policy
 import email.utils
-import hashlib
 import textwrap
 import unicodedata
 from datetime import timedelta
@@ -26,6 +25,8 @@ if TYPE_CHECKING:
 
 #: Characters of a subject; a phone shows fewer.
 SUBJECT_LIMIT = 160
+#: How a picture begins (PNG specification, 5.2).
+PNG = b"\x89PNG\r\n\x1a\n"
 #: Width of the text.
 COLUMNS = 72
 #: A mail that left so much after it was due says so.
@@ -89,12 +90,12 @@ def compose(due: DueMail, sender: str, recipients: Sequence[str], now: datetime)
 
 
 def _content(picture: Picture) -> bytes | None:
-    """Return a picture's bytes; None where it is gone or altered: the mail says the same without it."""
+    """Return a picture's bytes; None where it is not there or no picture: the mail says the same without it."""
     try:
         content = picture.staged.read_bytes()
     except OSError:
         return None
-    return content if hashlib.sha256(content).hexdigest() == picture.sha256 else None
+    return content if content.startswith(PNG) else None
 
 
 def _flowed(text: str) -> str:

@@ -8,12 +8,13 @@ from __future__ import annotations
 
 import contextlib
 from dataclasses import replace
+from datetime import timedelta
 from typing import TYPE_CHECKING, Protocol
 
 import structlog
 
 from watcher.backoff import Backoff
-from watcher.clock import stamp
+from watcher.clock import moment, stamp
 from watcher.delivery import deliver
 from watcher.disk import sweep
 from watcher.errors import WatcherError
@@ -36,6 +37,8 @@ if TYPE_CHECKING:
 FILE_BACKOFF = Backoff(5.0, 300.0)
 #: An alert counts while the vials are on the rack: the first retries come fast.
 MAIL_BACKOFF = Backoff(10.0, 900.0)
+#: So long a mail waits for its plots, which are drawn once it is queued.
+PICTURE_PATIENCE = timedelta(seconds=4)
 #: The longest sleep, whatever the ledger says: a clock that was set back must not stop deliveries.
 LONGEST_SLEEP = 60.0
 
@@ -181,7 +184,8 @@ class Mails:
         for each in due:
             if self._closed:
                 break
-            self._send(each, self._post)
+            if not self._awaits_pictures(each):
+                self._send(each, self._post)
         return len(due)
 
     def seconds_to_next(self) -> float:
@@ -193,6 +197,11 @@ class Mails:
         self._closed = True
         if self._post is not None:
             self._post.close()
+
+    def _awaits_pictures(self, due: DueMail) -> bool:
+        """Tell whether a mail's plots are being drawn; it waits for them for a moment only."""
+        fresh = self._clock.now() - moment(due.created_at) < PICTURE_PATIENCE
+        return fresh and not all(picture.staged.exists() for picture in due.pictures)
 
     def _send(self, due: DueMail, post: Post) -> None:
         message = compose(due, post.sender, due.recipients, self._clock.now())

@@ -205,7 +205,7 @@ _DUE = "({0}.due_at <= :now OR ({0}.attempts > 0 AND {0}.due_at > :horizon))"
 
 
 def _pictures(text: str) -> list[Picture]:
-    return [Picture(Path(staged), sha256, alt) for staged, sha256, alt in json.loads(text)]
+    return [Picture(Path(staged), alt) for staged, alt in json.loads(text)]
 
 
 def _due_values(now: datetime) -> dict[str, str]:

@@ -15,6 +15,7 @@ from rules.figures import figure, several
 from rules.plan import batch_step
 from watcher import plots
 from watcher.clock import moment
+from watcher.pictures import line_words
 
 if TYPE_CHECKING:
     from jinja2 import Template
@@ -115,7 +116,7 @@ def _draw(entries: list[dict[str, Any]], record: dict[str, Any]) -> None:
     for entry in entries:
         series = entry["series"]
         entry["line_plot"] = plots.additions_plot(series, slopes.get((series["analyte"], series["channel"])))
-        entry["line_words"] = plots.additions_words(series) if entry["line_plot"] else ""
+        entry["line_words"] = line_words(series) if entry["line_plot"] else ""
         entry["residual_plot"] = plots.residuals_plot(series)
         entry["recovery_plot"] = plots.recoveries_plot(series)
 

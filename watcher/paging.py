@@ -60,6 +60,19 @@ class Pages:
         """Read delivered records in this folder from now on."""
         self._results = results
 
+    def draw_pictures(self) -> None:
+        """Have the plots of mails drawn that were queued since the last time; they are few and small.
+
+        Raises
+        ------
+        WorkerUnfit, WorkerStopped
+            They are not drawn; their mails go without.
+        """
+        try:
+            self._worker.ask({"do": "pictures"})
+        except WorkerFailed as error:
+            _log.warning("pictures not drawn", reason=str(error))
+
     def draw_next(self) -> bool:
         """Draw the oldest page that is still to be drawn; False where none can be drawn now.
 

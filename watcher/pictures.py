@@ -1,14 +1,15 @@
 """Plots that go with a mail: the additions line of a failing series, as a picture that every mail program shows.
 
-They lie beside the result files that wait for delivery. They are not forced to disk: a mail whose picture a power cut
-took says the same without it.
+They are drawn after their mail is queued, while no export waits, and lie beside the result files. A mail waits a moment
+for them and then goes without: its words say the same. They are not forced to disk.
 """
 
 from __future__ import annotations
 
-import hashlib
+from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
 
+from rules.figures import figure
 from watcher.record import calibrations, series_entry
 
 if TYPE_CHECKING:
@@ -19,8 +20,31 @@ if TYPE_CHECKING:
     from watcher.record import Export
 
 
-def stage_pictures(outcomes: Outcomes, export: Export, series: Iterable[int], folder: Path) -> list[dict[str, Any]]:
-    """Draw series that have a line; return where each plot is, its hash, and what it shows in words.
+@dataclass(frozen=True, slots=True)
+class Undrawn:
+    """A plot that is still to be drawn: where it goes, the entry of its series, and the calibration's slope."""
+
+    path: Path
+    entry: dict[str, Any]
+    slope: float | None
+
+    def plain(self) -> dict[str, str]:
+        """Return where the plot will be, and what it shows in words, as JSON values."""
+        return {"staged": str(self.path), "alt": line_words(self.entry)}
+
+    def draw(self) -> None:
+        """Draw it; the file is there whole or not at all."""
+        from watcher import plots  # noqa: PLC0415 - drawing takes longer to import than a small export to evaluate
+
+        content = plots.additions_picture(self.entry, self.slope)
+        if content is not None:
+            part = self.path.with_suffix(".part")
+            part.write_bytes(content)
+            part.replace(self.path)
+
+
+def pictures(outcomes: Outcomes, export: Export, series: Iterable[int], folder: Path) -> list[Undrawn]:
+    """Return the plots of series that have a line.
 
     Parameters
     ----------
@@ -31,20 +55,24 @@ def stage_pictures(outcomes: Outcomes, export: Export, series: Iterable[int], fo
     folder
         Where files wait for delivery.
     """
-    chosen = [series_entry(outcomes, i) for i in series]
-    if not chosen:
-        return []
-    from watcher import plots  # noqa: PLC0415 - drawing takes longer to import than a whole small export to evaluate
-
     slopes = {(c["analyte"], c["channel"]): c["slope"] for c in calibrations(outcomes.case)}
-    staged = []
-    for number, entry in enumerate(chosen, start=1):
-        content = plots.additions_picture(entry, slopes.get((entry["analyte"], entry["channel"])))
-        if content is None:
-            continue
-        path = folder / f"{export.sha256[:16]}-r{export.revision}-plot{number}.png"
-        path.write_bytes(content)
-        staged.append(
-            {"staged": str(path), "sha256": hashlib.sha256(content).hexdigest(), "alt": plots.additions_words(entry)}
-        )
-    return staged
+    entries = [entry for i in series if has_line(entry := series_entry(outcomes, i))]
+    name = f"{export.sha256[:16]}-r{export.revision}"
+    return [
+        Undrawn(folder / f"{name}-plot{number}.png", entry, slopes.get((entry["analyte"], entry["channel"])))
+        for number, entry in enumerate(entries, start=1)
+    ]
+
+
+def has_line(entry: dict[str, Any]) -> bool:
+    """Tell whether a series has a line that can be drawn."""
+    return entry["fit"] is not None and entry["fit"]["slope"] is not None
+
+
+def line_words(entry: dict[str, Any]) -> str:
+    """Say what the plot of a series shows, with its numbers."""
+    fit, effect = entry["fit"], entry["matrix_effect"]
+    name = " ".join(part for part in (entry["sample"], entry["analyte"], entry["channel"]) if part)
+    line = f"slope {figure(fit['slope'])}, intercept {figure(fit['intercept'])}, {fit['n']} solutions"
+    against = "" if effect["value"] is None else f"; matrix effect {figure(effect['value'])} % on the slope"
+    return f"Additions line of {name}: {line}{against}; result {entry['result']['text']}"

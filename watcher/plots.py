@@ -50,15 +50,6 @@ def additions_picture(series: dict[str, Any], calibration_slope: float | None) -
         return out.getvalue()
 
 
-def additions_words(series: dict[str, Any]) -> str:
-    """Say what the plot of a series shows, with its numbers."""
-    fit, effect = series["fit"], series["matrix_effect"]
-    name = " ".join(part for part in (series["sample"], series["analyte"], series["channel"]) if part)
-    line = f"slope {figure_of(fit['slope'])}, intercept {figure_of(fit['intercept'])}, {fit['n']} solutions"
-    against = "" if effect["value"] is None else f"; matrix effect {figure_of(effect['value'])} % on the slope"
-    return f"Additions line of {name}: {line}{against}; result {series['result']['text']}"
-
-
 def _additions(
     series: dict[str, Any], calibration_slope: float | None, size: tuple[float, float] = PAGE
 ) -> Figure | None:

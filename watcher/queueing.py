@@ -84,7 +84,7 @@ def queue_mail(txn: sqlite3.Connection, export_id: int | None, mail: QueuedMail,
             mail.body,
             stamp(now),
             mail.due_at,
-            json.dumps([[str(each.staged), each.sha256, each.alt] for each in mail.pictures], ensure_ascii=False),
+            json.dumps([[str(each.staged), each.alt] for each in mail.pictures], ensure_ascii=False),
         ),
     ).lastrowid
     txn.executemany(

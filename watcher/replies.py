@@ -139,7 +139,7 @@ def _file(item: Mapping[str, Any], staging: Path) -> StagedFile:
 
 
 def _picture(item: Mapping[str, Any], staging: Path) -> Picture:
-    return Picture(_staged(item, staging), _get(item, "sha256", str), _get(item, "alt", str))
+    return Picture(_staged(item, staging), _get(item, "alt", str))
 
 
 def _staged(item: Mapping[str, Any], staging: Path) -> Path:

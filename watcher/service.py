@@ -12,7 +12,7 @@ import os
 import signal
 import sqlite3
 import threading
-from contextlib import contextmanager
+from contextlib import contextmanager, suppress
 from dataclasses import dataclass
 from datetime import timedelta
 from typing import TYPE_CHECKING
@@ -213,6 +213,7 @@ class Service:
             taken = self._take_in()
             assessed = self._evaluate_everything()
             self._tell()
+            self._draw_pictures()
             if not self._stopping:
                 self._files.deliver_due()
                 self._mails.deliver_due()
@@ -283,12 +284,20 @@ class Service:
 
     def _draw_page(self) -> bool:
         """Draw one page; returns whether there was one to draw. An export that came meanwhile is evaluated first."""
+        self._draw_pictures()
         try:
             drawn = not self._stopping and self._pages.draw_next()
         except (WorkerStopped, WorkerUnfit):
             return False
         self._ring_deliverers()
         return drawn
+
+    def _draw_pictures(self) -> None:
+        """Draw the plots of mails that were just queued; the mails wait for them a moment."""
+        if self._assessment.undrawn and not self._stopping:
+            self._assessment.undrawn = False
+            with suppress(WorkerStopped, WorkerUnfit):
+                self._pages.draw_pictures()
 
     def _look_after_settings(self) -> None:
         if self._adoption is not None and self._adoption.changed():

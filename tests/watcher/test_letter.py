@@ -4,7 +4,6 @@ from __future__ import annotations
 
 import email
 import email.policy
-import hashlib
 import re
 from collections import Counter
 from datetime import UTC, datetime
@@ -16,7 +15,7 @@ from hypothesis import given
 from hypothesis import strategies as st
 
 from watcher.ledger_rows import DueMail, Picture
-from watcher.letter import COLUMNS, SUBJECT_LIMIT, clean, compose, new_message_id
+from watcher.letter import COLUMNS, PNG, SUBJECT_LIMIT, clean, compose, new_message_id
 from watcher.letter_html import unfolded
 
 if TYPE_CHECKING:
@@ -134,10 +133,10 @@ def test_identities_are_in_the_senders_domain_and_differ() -> None:
     assert new_message_id("bench").endswith("@localhost>")
 
 
-def _picture(folder: Path, content: bytes = b"\x89PNG plot", alt: str = "Additions line of SED-12 Zn") -> Picture:
+def _picture(folder: Path, content: bytes = PNG + b"plot", alt: str = "Additions line of SED-12 Zn") -> Picture:
     path = folder / "plot.png"
     path.write_bytes(content)
-    return Picture(path, hashlib.sha256(content).hexdigest(), alt)
+    return Picture(path, alt)
 
 
 @given(st.lists(st.text(alphabet="ab >-\tF", max_size=200), max_size=8))
@@ -183,7 +182,7 @@ def test_a_plot_stands_in_the_mail_with_its_words(tmp_path: Path) -> None:
     sent = _message(_due(pictures=(_picture(tmp_path, alt='line of "SED-12" <b>'),)))
 
     (picture,) = [part for part in sent.walk() if part.get_content_type() == "image/png"]
-    assert picture.get_content() == b"\x89PNG plot"
+    assert picture.get_content() == PNG + b"plot"
     (source,) = re.findall(r'src="cid:([^"]+)"', _html_of(sent))
     assert picture["Content-ID"] == f"<{source}>"
     assert 'alt="line of &quot;SED-12&quot; &lt;b&gt;"' in _html_of(sent)

@@ -34,6 +34,8 @@ def told(make_laboratory: Any, shared_mail_server: Any) -> dict[str, str]:
         "page": _words(html.unescape(re.sub(r"<[^>]+>", " ", page.read_text("utf-8")))),
         "CSV": _words("; ".join(row.values())),
         "record": _words(str(laboratory.record("FL-1.csv"))),
+        "plot": " ".join(part.get_content_type() for part in message.walk() if part.get_content_maintype() == "image"),
+        "plot in words": _words(" ".join(re.findall(r'alt="([^"]*)"', rich))),
     }
 
 
@@ -77,3 +79,12 @@ def test_the_csv_rounds_to_the_digits_that_people_see(told: dict[str, str]) -> N
 def test_the_limit_is_named(told: dict[str, str], place: str) -> None:
     """Where the number stands, its limit stands too."""
     assert "75 to 125" in told[place]
+
+
+def test_the_mail_shows_the_line_of_the_failing_series(told: dict[str, str]) -> None:
+    """One picture travels inside the mail, and its words name the series and its result."""
+    result = re.findall(r"RIV-17 Zn: result (\d[\d.]* ± [\d.]+ mg/L)", told["mail"])[0]
+
+    assert told["plot"] == "image/png"
+    assert told["plot in words"].startswith("Additions line of RIV-17 Zn: slope ")
+    assert result in told["plot in words"]
