@@ -2,14 +2,19 @@
 
 from __future__ import annotations
 
+import json
+from contextlib import contextmanager
+from dataclasses import asdict
 from typing import TYPE_CHECKING
+
+from rich.progress import BarColumn, MofNCompleteColumn, Progress, TextColumn
 
 from watcher.exit_codes import ALL_PASS, NOT_DONE, SAMPLE_FAILS
 from watcher.names import target
 from watcher.terminal import console, heading, lines, table, word
 
 if TYPE_CHECKING:
-    from collections.abc import Iterable
+    from collections.abc import Callable, Iterable, Iterator
 
     from rich.text import Text
 
@@ -18,8 +23,24 @@ if TYPE_CHECKING:
     from watcher.service import OnceReport
     from watcher.service_settings import ServiceSettings
 
+#: From so many exports on, progress is shown.
+MANY = 5
 #: Verdicts that keep an export from passing.
 FAILING = ("fail", "incomplete")
+
+
+@contextmanager
+def progress() -> Iterator[Callable[[int, int], None]]:
+    """Show on a terminal how many exports are done, where it takes a while; yields what takes (done, in all)."""
+    err = console(error=True)
+    with Progress(TextColumn("{task.description}"), BarColumn(), MofNCompleteColumn(), console=err, transient=True,
+                  disable=not err.is_terminal) as bar:  # fmt: skip
+        task = bar.add_task("evaluating", total=None, visible=False)
+
+        def told(done: int, count: int) -> None:
+            bar.update(task, completed=done, total=count, visible=count >= MANY)
+
+        yield told
 
 
 def show(report: OnceReport, settings: ServiceSettings, ledger: Ledger) -> int:
@@ -40,6 +61,26 @@ def show(report: OnceReport, settings: ServiceSettings, ledger: Ledger) -> int:
     elif report.assessed:
         lines(out, ["", f"Results are in {settings.results}"])
     return NOT_DONE if undone else SAMPLE_FAILS if failing else ALL_PASS
+
+
+def show_json(report: OnceReport, ledger: Ledger) -> int:
+    """Print what was taken in and what is not done as JSON; return the exit code."""
+    exports = [
+        {
+            "name": each.export.name,
+            "state": each.export.state,
+            "revision": each.export.revision if each.export.state == "done" else None,
+            "counts": dict(each.counts),
+            "problem": each.export.problem,
+            "series": [asdict(series) for series in ledger.series_of(each.export.id)],
+        }
+        for each in report.assessed
+    ]
+    undone = list(_undone(report))
+    fails = any(each.counts.get(verdict) for each in report.assessed for verdict in FAILING)
+    code = NOT_DONE if undone else SAMPLE_FAILS if fails else ALL_PASS
+    print(json.dumps({"exit": code, "exports": exports, "undone": undone}, ensure_ascii=False, indent=1))  # noqa: T201
+    return code
 
 
 def _row(each: Assessed) -> tuple[str | Text, ...]:

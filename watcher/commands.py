@@ -61,7 +61,8 @@ def watch(config: Path) -> None:
 
 @main.command()
 @_with_config
-def once(config: Path) -> None:
+@click.option("--json", "as_json", is_flag=True, help="Print JSON instead of tables.")
+def once(config: Path, *, as_json: bool) -> None:
     """Take in what is there, evaluate it, and end.
 
     Exit 0: all pass. 1: a sample fails or is incomplete. 2: something could not be
@@ -71,8 +72,12 @@ def once(config: Path) -> None:
 
     try:
         with open_laboratory(config, "once") as laboratory:
-            report = laboratory.service.once()
-            code = account_of_once.show(report, laboratory.settings, laboratory.ledger)
+            with account_of_once.progress() as told:
+                report = laboratory.service.once(told)
+            if as_json:
+                code = account_of_once.show_json(report, laboratory.ledger)
+            else:
+                code = account_of_once.show(report, laboratory.settings, laboratory.ledger)
     except WatcherError as error:
         _give_up(error)
     sys.exit(code)
@@ -80,14 +85,18 @@ def once(config: Path) -> None:
 
 @main.command()
 @_with_config
-def check(config: Path) -> None:
+@click.option("--mail", "with_mail", is_flag=True, help="Send a test mail as well.")
+def check(config: Path, *, with_mail: bool) -> None:
     """Check settings and layouts; name all faults at once.
 
-    Exit 0: nothing to find fault with. 2: faults.
-    """
-    from watcher import inspection  # noqa: PLC0415
+    With --mail a test mail goes to everybody whom alerts would reach.
 
-    sys.exit(inspection.check(config))
+    Exit 0: nothing to find fault with. 2: faults, or the mail was not taken.
+    """
+    from watcher import inspection, mail_check  # noqa: PLC0415
+
+    code = inspection.check(config)
+    sys.exit(code or (mail_check.run(config) if with_mail else code))
 
 
 @main.command()

@@ -46,7 +46,7 @@ from watcher.week import daily, hours
 from watcher.worker import WorkerFailed, WorkerStopped, WorkerUnfit
 
 if TYPE_CHECKING:
-    from collections.abc import Iterable, Iterator
+    from collections.abc import Callable, Iterable, Iterator
     from pathlib import Path
 
     from watcher.adoption import Adoption
@@ -204,14 +204,17 @@ class Service:
                 self._show_life()
                 self._rest(self._settings.scan_seconds if seconds is None else seconds)
 
-    def once(self) -> OnceReport:
-        """Take in what is there now, evaluate it, try each delivery that is due once, and end."""
+    def once(self, told: Callable[[int, int], None] = lambda *_: None) -> OnceReport:
+        """Take in what is there now, evaluate it, try each delivery that is due once, and end.
+
+        `told` hears how many exports are done, and how many there are in all.
+        """
         with self._stopped_by_signals(), self._open():
             self._do_requests()
             self._take_in()
             self._halt.wait(self._settings.settle_seconds + 0.01)
             taken = self._take_in()
-            assessed = self._evaluate_everything()
+            assessed = self._evaluate_everything(told)
             self._tell()
             self._draw_pictures()
             if not self._stopping:
@@ -272,11 +275,13 @@ class Service:
                 return True
         return bool(self._pending()) and not self._stopping
 
-    def _evaluate_everything(self) -> dict[int, Assessed]:
+    def _evaluate_everything(self, told: Callable[[int, int], None]) -> dict[int, Assessed]:
         """Evaluate until nothing is pending; for `once`, after which nobody waits for what a sample still lacks."""
         assessed: dict[int, Assessed] = {}
         while exports := self._pending():
+            count = len(assessed) + len(exports)
             for export in exports:
+                told(len(assessed), count)
                 if self._stopping or not (found := self._evaluate(export, at_once=True)):
                     return assessed
                 assessed[export.id] = found
