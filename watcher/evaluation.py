@@ -331,7 +331,7 @@ class Worker:
 
     def _illustrated(self, letter: mail.Mail, evaluated: Evaluated, folder: Path) -> dict[str, Any]:
         """Return a mail with the plots that it will have, and remember to draw them."""
-        undrawn = pictures(evaluated.outcomes, evaluated.export, letter.series, folder)
+        undrawn = pictures(evaluated.outcomes, evaluated.export, letter.kind, letter.series, folder)
         self._undrawn += undrawn
         return letter.plain() | {"pictures": [picture.plain() for picture in undrawn]}
 

@@ -43,23 +43,23 @@ class Undrawn:
             part.replace(self.path)
 
 
-def pictures(outcomes: Outcomes, export: Export, series: Iterable[int], folder: Path) -> list[Undrawn]:
+def pictures(outcomes: Outcomes, export: Export, kind: str, series: Iterable[int], folder: Path) -> list[Undrawn]:
     """Return the plots of series that have a line.
 
     Parameters
     ----------
     outcomes, export
         The export, judged.
-    series
-        Which series.
+    kind, series
+        The mail's kind, since an export may give rise to one of each; which series.
     folder
         Where files wait for delivery.
     """
     slopes = {(c["analyte"], c["channel"]): c["slope"] for c in calibrations(outcomes.case)}
     entries = [entry for i in series if has_line(entry := series_entry(outcomes, i))]
-    name = f"{export.sha256[:16]}-r{export.revision}"
+    name = f"{export.sha256[:16]}-r{export.revision}-{kind}"
     return [
-        Undrawn(folder / f"{name}-plot{number}.png", entry, slopes.get((entry["analyte"], entry["channel"])))
+        Undrawn(folder / f"{name}-{number}.png", entry, slopes.get((entry["analyte"], entry["channel"])))
         for number, entry in enumerate(entries, start=1)
     ]
 

@@ -15,10 +15,12 @@ from watcher import letter, mail
 from watcher.evaluation import Evaluated, Job, evaluate_job
 from watcher.ledger_rows import DueMail
 from watcher.letter_html import unfolded
+from watcher.pictures import pictures
 from watcher.settings import File, Snapshot, compile_snapshot
 
 if TYPE_CHECKING:
     from email.message import EmailMessage
+    from pathlib import Path
 
     from watcher.mail import Mail
 
@@ -320,6 +322,19 @@ def test_a_stock_out_of_its_dates_is_one_line() -> None:
     told = sections(one.body)
     assert "Prepare the additions of RIV-17, RIV-18, SED-12 again from a stock within" in told["DO"]
     assert "- " not in told["DO"]
+
+
+def test_two_mails_of_one_export_have_plots_of_their_own(tmp_path: Path) -> None:
+    """A mail about a failing and one about an incomplete sample never share a picture's place."""
+    found = evaluated(*batch(), *additions("RIV-17", recovery=0.6))
+
+    places = [
+        [one.path for one in pictures(found.outcomes, found.export, kind, (0,), tmp_path)]
+        for kind in ("fail", "incomplete")
+    ]
+
+    assert all(places)
+    assert set(places[0]).isdisjoint(places[1])
 
 
 # -- form ----------------------------------------------------------------------------------------------------------

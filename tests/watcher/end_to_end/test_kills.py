@@ -296,3 +296,9 @@ def test_kills_of_service_and_worker_end_in_the_same_state(
         sorted(what_remains.letter(messages[0]) for messages in each.values()) for each in (received, expected)
     )
     assert told == should_tell
+    # a plot that a kill or a busy computer took is not drawn again: its mail goes without, and none has another plot
+    drawn = {what_remains.letter(each): what_remains.plots(each) for (each,) in expected.values()}
+    assert any(drawn.values())
+    for message in (each for messages in received.values() for each in messages):
+        has, should_have = what_remains.plots(message), drawn[what_remains.letter(message)]
+        assert not has or not should_have or has == should_have

@@ -25,6 +25,7 @@ if TYPE_CHECKING:
 _MASKS = (
     (re.compile(r"\d{4}-\d\d-\d\d[T ]\d\d:\d\d(:\d\d(\.\d+)?)?Z?"), "TIME"),
     (re.compile(r"\d\d \w{3} \d{4} \d\d:\d\d(:\d\d( [+-]\d{4})?)?"), "TIME"),
+    (re.compile(r"Seal [0-9a-f]{64}, entry \d+"), "ENTRY AND SEAL"),
     (re.compile(r"(number|entry)\W+\d+\W+seal\W+[0-9a-f]+", re.IGNORECASE), "ENTRY AND SEAL"),
     (re.compile(r"<[\w.]+@[\w.]+>"), "IDENTITY"),
     (re.compile(r"laboratory\d+/"), "laboratory/"),
@@ -116,12 +117,13 @@ def says_repeat(message: Any) -> bool:
     return message.get_body(("plain",)).get_content().startswith("possible repeat: ")
 
 
-def letter(message: Any) -> tuple[str, str, str, tuple[str, ...]]:
-    """Return what a mail tells: addressee, subject, text without a remark about a repeat, hashes of its plots."""
+def letter(message: Any) -> tuple[str, str, str]:
+    """Return what a mail tells: addressee, subject, text without a remark about a repeat."""
     text = re.sub(r"\Apossible repeat: .*?\n\n", "", message.get_body(("plain",)).get_content(), flags=re.DOTALL)
-    plots = [
-        hashlib.sha256(part.get_content()).hexdigest()
-        for part in message.walk()
-        if part.get_content_maintype() == "image"
-    ]
-    return str(message["To"]), masked(str(message["Subject"])), masked(text), tuple(plots)
+    return str(message["To"]), masked(str(message["Subject"])), masked(text)
+
+
+def plots(message: Any) -> set[str]:
+    """Return the hashes of a mail's plots."""
+    pictures = (part for part in message.walk() if part.get_content_maintype() == "image")
+    return {hashlib.sha256(part.get_content()).hexdigest() for part in pictures}
