@@ -176,15 +176,15 @@ class Mails:
         """Send by this way from now on; an attempt under way is not broken off."""
         self._post = post
 
-    def deliver_due(self) -> int:
-        """Try every due mail once."""
+    def deliver_due(self, *, patient: bool = True) -> int:
+        """Try every due mail once; if patient, a mail whose plots are being drawn only in a moment."""
         if self._post is None:
             return 0
         due = self._outgoing.due_mails(self._clock.now())
         for each in due:
             if self._closed:
                 break
-            if not self._awaits_pictures(each):
+            if not (patient and self._awaits_pictures(each)):
                 self._send(each, self._post)
         return len(due)
 
@@ -200,8 +200,9 @@ class Mails:
 
     def _awaits_pictures(self, due: DueMail) -> bool:
         """Tell whether a mail's plots are being drawn; it waits for them for a moment only."""
-        fresh = self._clock.now() - moment(due.created_at) < PICTURE_PATIENCE
-        return fresh and not all(picture.staged.exists() for picture in due.pictures)
+        age = self._clock.now() - moment(due.created_at)
+        # A mail of the future was queued before the clock was set back: it waits for nothing.
+        return timedelta(0) <= age < PICTURE_PATIENCE and not all(picture.staged.exists() for picture in due.pictures)
 
     def _send(self, due: DueMail, post: Post) -> None:
         message = compose(due, post.sender, due.recipients, self._clock.now())

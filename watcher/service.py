@@ -219,7 +219,7 @@ class Service:
             self._draw_pictures()
             if not self._stopping:
                 self._files.deliver_due()
-                self._mails.deliver_due()
+                self._mails.deliver_due(patient=False)
                 while self._draw_page():
                     self._files.deliver_due()
             return self._report(taken, assessed)

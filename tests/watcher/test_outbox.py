@@ -4,14 +4,16 @@ from __future__ import annotations
 
 import hashlib
 import threading
+from dataclasses import replace
 from typing import TYPE_CHECKING, Any
 
 import pytest
 
 from watcher.backoff import Backoff
 from watcher.disk import Disk
-from watcher.ledger_rows import RecipientOutcome, StagedFile
-from watcher.outbox import Files, Mails, OutboxThread
+from watcher.ledger_rows import Picture, RecipientOutcome, StagedFile
+from watcher.letter import PNG
+from watcher.outbox import PICTURE_PATIENCE, Files, Mails, OutboxThread
 
 if TYPE_CHECKING:
     from pathlib import Path
@@ -82,6 +84,61 @@ def test_a_refused_mail_is_not_tried_again_and_stays_visible(ledger: Ledger, clo
     assert deliverer.deliver_due() == 0
     (left,) = ledger.outgoing.undelivered_mails()
     assert (left.address, left.state, left.last_error) == ("lead@example", "refused", "as scripted")
+
+
+@pytest.fixture
+def mail_with_plot(ledger: Ledger, clock: Any, make_mail: Any, tmp_path: Path) -> Path:
+    """A queued mail whose plot is not drawn yet; returns where it will be."""
+    place = tmp_path / "plot.png"
+    ledger.report(replace(make_mail(), pictures=(Picture(place, "the line"),)))
+    return place
+
+
+def test_a_mail_waits_for_its_plot_and_goes_when_it_is_there(ledger: Ledger, clock: Any, mail_with_plot: Path) -> None:
+    """The mail is held while its plot is drawn, bears it, and the file is gone once nobody needs it."""
+    deliverer, post = _mails(ledger, clock, "delivered")
+    deliverer.deliver_due()
+    assert post.messages == []
+
+    mail_with_plot.write_bytes(PNG + b"plot")
+    deliverer.deliver_due()
+
+    (message,) = post.messages
+    assert "image/png" in message
+    assert not mail_with_plot.exists()
+
+
+def test_a_plot_that_is_never_drawn_keeps_no_alert_back(ledger: Ledger, clock: Any, mail_with_plot: Path) -> None:
+    """After a moment the mail goes without its plot."""
+    deliverer, post = _mails(ledger, clock, "delivered")
+
+    clock.advance(PICTURE_PATIENCE.total_seconds())
+    deliverer.deliver_due()
+
+    assert len(post.messages) == 1
+    assert not mail_with_plot.exists()
+
+
+def test_a_clock_set_back_makes_no_mail_wait_longer(ledger: Ledger, clock: Any, mail_with_plot: Path) -> None:
+    """A mail that seems to be of the future waits for nothing."""
+    deliverer, _ = _mails(ledger, clock)
+    (due,) = ledger.outgoing.due_mails(clock.now())
+    assert deliverer._awaits_pictures(due)
+
+    clock.advance(-3600)
+
+    assert not mail_with_plot.exists()
+    assert not deliverer._awaits_pictures(due)
+
+
+def test_once_waits_for_no_plot(ledger: Ledger, clock: Any, mail_with_plot: Path) -> None:
+    """A single round that nobody follows up sends the mail as it is."""
+    deliverer, post = _mails(ledger, clock, "delivered")
+
+    deliverer.deliver_due(patient=False)
+
+    assert len(post.messages) == 1
+    assert not mail_with_plot.exists()
 
 
 def test_without_mail_nothing_is_sent_and_nothing_is_lost(ledger: Ledger, clock: Any, make_mail: Any) -> None:
