@@ -100,6 +100,10 @@ class OnceReport:
     stopped: bool
 
 
+def _unheard(_done: int, _count: int) -> None:
+    """Nobody wants to hear how far it is."""
+
+
 def _looking(settings: ServiceSettings) -> tuple[object, ...]:
     """What the way of looking through the folders depends on."""
     return settings.exports, settings.settle_seconds, settings.subfolders
@@ -204,7 +208,7 @@ class Service:
                 self._show_life()
                 self._rest(self._settings.scan_seconds if seconds is None else seconds)
 
-    def once(self, told: Callable[[int, int], None] = lambda *_: None) -> OnceReport:
+    def once(self, told: Callable[[int, int], None] = _unheard) -> OnceReport:
         """Take in what is there now, evaluate it, try each delivery that is due once, and end.
 
         `told` hears how many exports are done, and how many there are in all.
@@ -275,7 +279,7 @@ class Service:
                 return True
         return bool(self._pending()) and not self._stopping
 
-    def _evaluate_everything(self, told: Callable[[int, int], None]) -> dict[int, Assessed]:
+    def _evaluate_everything(self, told: Callable[[int, int], None] = _unheard) -> dict[int, Assessed]:
         """Evaluate until nothing is pending; for `once`, after which nobody waits for what a sample still lacks."""
         assessed: dict[int, Assessed] = {}
         while exports := self._pending():
